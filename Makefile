@@ -1,0 +1,154 @@
+# SPDX-License-Identifier: GPL-3.0-or-later
+# Underfoot. `make demo` and `make check` are all a newcomer needs; `make help` lists the rest.
+
+PREFIX  ?= /usr/local
+DESTDIR ?=
+FLAVOUR ?= release
+BUILD   := build/$(FLAVOUR)
+
+# ---- what each flavour is made with -----------------------------------------------------------
+
+CC ?= gcc
+ifeq ($(origin CC),default)
+CC := gcc
+endif
+
+LIBRARIES := libtiff-4 libpng fftw3f jansson libxxhash
+HAVE_LIBRARIES := $(shell pkg-config --exists $(LIBRARIES) 2>/dev/null && echo yes)
+ifeq ($(HAVE_LIBRARIES),yes)
+LIB_CFLAGS := $(shell pkg-config --cflags $(LIBRARIES))
+LIB_LINK   := $(shell pkg-config --libs $(LIBRARIES))
+endif
+
+# The same bytes everywhere: ISO C11 and no contraction of a*b+c, whichever the compiler.
+STANDARD := -std=c11 -D_POSIX_C_SOURCE=200809L -ffp-contract=off
+WARNINGS := -Wall -Wextra -Wconversion -Wshadow -Wstrict-prototypes -Wmissing-prototypes -Wvla $(WERROR)
+COMMON   := $(STANDARD) $(WARNINGS) -fPIC -fvisibility=hidden -pthread -Iinclude -Isrc -I$(BUILD)/generated
+
+HARDENED      := -D_FORTIFY_SOURCE=2 -fstack-protector-strong -fstack-clash-protection
+HARDENED_LINK := -Wl,-z,relro -Wl,-z,now -pie
+
+FLAGS_release := -O3 -g $(HARDENED)
+LINK_release  := $(HARDENED_LINK)
+FLAGS_debug   := -O0 -g3
+FLAGS_asan    := -O1 -g -fno-omit-frame-pointer -fsanitize=address,undefined -fno-sanitize-recover=all
+LINK_asan     := -fsanitize=address,undefined
+FLAGS_tsan    := -O1 -g -fsanitize=thread
+LINK_tsan     := -fsanitize=thread
+# What the tests load: every symbol visible, otherwise the release.
+FLAGS_probe   := -O3 -g -fvisibility=default
+LINK_probe    :=
+
+CFLAGS_ALL = $(COMMON) $(FLAGS_$(FLAVOUR)) $(LIB_CFLAGS) $(CPPFLAGS) $(CFLAGS)
+LINK_ALL   = $(LINK_$(FLAVOUR)) $(LDFLAGS)
+LINK_LIBS  = $(LIB_LINK) -lm -pthread
+
+# ---- sources ----------------------------------------------------------------------------------
+
+LAYERS  := base record settings image fit optics io correct segment gap measure report scene run
+SOURCES := $(sort $(wildcard $(LAYERS:%=src/%/*.c)))
+CLI     := $(sort $(wildcard src/cli/*.c))
+OBJECTS := $(SOURCES:src/%.c=$(BUILD)/obj/%.o)
+CLI_OBJECTS := $(CLI:src/%.c=$(BUILD)/obj/%.o)
+
+# Kernel files are built twice from one source; a table picks at run time (src/image/kernels.h).
+MACHINE := $(shell uname -m)
+KERNELS := $(filter src/image/kernels_rows.c,$(SOURCES))
+ifeq ($(MACHINE),x86_64)
+OBJECTS += $(KERNELS:src/%.c=$(BUILD)/obj/%.v3.o)
+endif
+
+PROGRAM := $(BUILD)/underfoot
+STATIC  := $(BUILD)/libunderfoot.a
+SONAME  := libunderfoot.so.0
+SHARED  := $(BUILD)/$(SONAME)
+
+.DEFAULT_GOAL := all
+.PHONY: all debug asan tsan probe build-flavour check demo bench install uninstall clean help packages docs \
+        check-unit check-compilers check-sanitizers
+
+all: packages ## the command and the libraries, optimised and hardened, in build/release
+	@$(MAKE) --no-print-directory FLAVOUR=release build-flavour
+debug asan tsan probe: packages ## the same for debugging, or with address+undefined / thread sanitizer
+	@$(MAKE) --no-print-directory FLAVOUR=$@ build-flavour
+
+build-flavour: $(PROGRAM) $(STATIC) $(SHARED)
+
+$(PROGRAM): $(CLI_OBJECTS) $(STATIC)
+	$(CC) $(CFLAGS_ALL) $(LINK_ALL) -o $@ $(CLI_OBJECTS) $(STATIC) $(LINK_LIBS)
+$(STATIC): $(OBJECTS)
+	@rm -f $@
+	$(AR) rcs $@ $^
+$(SHARED): $(OBJECTS)
+	$(CC) -shared $(filter-out -pie,$(LINK_ALL)) -Wl,-soname,$(SONAME) -o $@ $^ $(LINK_LIBS)
+	@ln -sf $(SONAME) $(BUILD)/libunderfoot.so
+
+$(BUILD)/obj/%.o: src/%.c $(BUILD)/flags
+	@mkdir -p $(@D)
+	$(CC) $(CFLAGS_ALL) $(KERNEL_FLAGS) -MMD -MP -c -o $@ $<
+$(BUILD)/obj/%.v3.o: src/%.c $(BUILD)/flags
+	@mkdir -p $(@D)
+	$(CC) $(CFLAGS_ALL) $(KERNEL_FLAGS) -march=x86-64-v3 -DUF_KERNELS_V3 -MMD -MP -c -o $@ $<
+# Without these gcc keeps branches in kernels that could be vectors; they change no result.
+$(KERNELS:src/%.c=$(BUILD)/obj/%.o) $(KERNELS:src/%.c=$(BUILD)/obj/%.v3.o): KERNEL_FLAGS := -fno-trapping-math -fno-math-errno
+
+# A change of flags rebuilds everything.
+$(BUILD)/flags: FORCE
+	@mkdir -p $(@D)
+	@echo '$(CC) $(CFLAGS_ALL)' | cmp -s - $@ || echo '$(CC) $(CFLAGS_ALL)' > $@
+.PHONY: FORCE
+
+-include $(shell find $(BUILD)/obj -name '*.d' 2>/dev/null)
+
+# ---- what a fresh machine needs ------------------------------------------------------------------
+
+BUILD_PACKAGES := gcc make pkg-config libc6-dev libtiff-dev libpng-dev libfftw3-dev libjansson-dev libxxhash-dev
+TEST_PACKAGES  := clang libcmocka-dev python3 python3-numpy python3-scipy python3-skimage python3-tifffile python3-pytest
+
+packages:
+	@tests/tools/need-packages $(BUILD_PACKAGES)
+
+# ---- demo, tests, benchmarks ------------------------------------------------------------------------
+
+DEMO := build/demo
+
+demo: all ## write the demo experiment, measure it, say where the results are
+	@tests/tools/run-demo $(PROGRAM) $(DEMO)
+
+check: ## all tests; the last line is "N passed, N failed"
+	@tests/tools/need-packages $(BUILD_PACKAGES) $(TEST_PACKAGES)
+	@$(MAKE) --no-print-directory FLAVOUR=release WERROR=-Werror build-flavour
+	@$(MAKE) --no-print-directory FLAVOUR=probe build-flavour
+	@$(MAKE) --no-print-directory FLAVOUR=asan build-flavour
+	@$(MAKE) --no-print-directory FLAVOUR=tsan build-flavour
+	@$(MAKE) --no-print-directory CC=clang FLAVOUR=release BUILD=build/clang WERROR=-Werror build-flavour
+	@tests/tools/run-tests
+
+bench: all ## speed and peak memory of the main job on a 2048 x 2048 pair
+	@tests/bench/bench-measure $(PROGRAM)
+
+docs: all ## the pages that come from the tables in the code
+	$(PROGRAM) docs settings > docs/settings.md
+	$(PROGRAM) docs columns > docs/columns.md
+
+# ---- install ---------------------------------------------------------------------------------------------
+
+install: all ## into PREFIX (default /usr/local), below DESTDIR
+	install -d $(DESTDIR)$(PREFIX)/bin $(DESTDIR)$(PREFIX)/lib $(DESTDIR)$(PREFIX)/include $(DESTDIR)$(PREFIX)/share/doc/underfoot
+	install -m 755 $(PROGRAM) $(DESTDIR)$(PREFIX)/bin/underfoot
+	install -m 644 $(STATIC) $(DESTDIR)$(PREFIX)/lib/
+	install -m 755 $(SHARED) $(DESTDIR)$(PREFIX)/lib/
+	ln -sf $(SONAME) $(DESTDIR)$(PREFIX)/lib/libunderfoot.so
+	install -m 644 include/underfoot.h $(DESTDIR)$(PREFIX)/include/
+	install -m 644 README.md docs/*.md docs/LICENSE $(DESTDIR)$(PREFIX)/share/doc/underfoot/
+
+uninstall: ## take out what install put in
+	rm -f $(DESTDIR)$(PREFIX)/bin/underfoot $(DESTDIR)$(PREFIX)/lib/libunderfoot.a \
+	      $(DESTDIR)$(PREFIX)/lib/$(SONAME) $(DESTDIR)$(PREFIX)/lib/libunderfoot.so $(DESTDIR)$(PREFIX)/include/underfoot.h
+	rm -rf $(DESTDIR)$(PREFIX)/share/doc/underfoot
+
+clean: ## remove build/
+	rm -rf build
+
+help:
+	@sed -n 's/^\([a-z][a-z -]*\):[^#]*## \(.*\)/  make \1: \2/p' Makefile

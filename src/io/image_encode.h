@@ -1,0 +1,28 @@
+/* SPDX-License-Identifier: GPL-3.0-or-later */
+/* Image files out: encoded into memory, so that one writer (io/output.h) makes every file atomic. The bytes
+ * are a pure function of the arguments: no dates, no host. */
+#ifndef UF_IO_IMAGE_ENCODE_H
+#define UF_IO_IMAGE_ENCODE_H
+
+#include "base/text.h"
+#include "image/plane.h"
+#include "image/indexed.h"
+
+/* A 32-bit float grey TIFF, deflate with the floating-point predictor, NaN kept, resolution tags from
+ * pixel_size_um where it is a number. `description` goes into ImageDescription (NULL: none). */
+UF_MUST_USE uf_status uf_encode_float_tiff(uf_text *out, uf_plane plane, double pixel_size_um,
+                                           const char *description, uf_error *error);
+
+/* A 16-bit unsigned grey TIFF of labels, 32-bit when there are more than 65535. */
+UF_MUST_USE uf_status uf_encode_label_tiff(uf_text *out, uf_labels labels, double pixel_size_um,
+                                           const char *description, uf_error *error);
+
+/* A 16-bit unsigned grey TIFF of counts: values are rounded and must lie in 0 .. 65535 (the demo's images). */
+UF_MUST_USE uf_status uf_encode_count_tiff(uf_text *out, uf_plane plane, double pixel_size_um,
+                                           const char *description, uf_error *error);
+
+/* An 8-bit palette PNG, compression level 1 (on palette images with ordered indices it is as small as
+ * needed and ten times as fast as the default). */
+UF_MUST_USE uf_status uf_encode_indexed_png(uf_text *out, const uf_indexed *image, uf_error *error);
+
+#endif

@@ -1,0 +1,37 @@
+/* SPDX-License-Identifier: GPL-3.0-or-later */
+/*
+ * Image files in: TIFF and BigTIFF, grey, 8- and 16-bit unsigned and 32-bit float, strips or tiles, both
+ * byte orders, the lossless codecs of the system's libtiff, one page of possibly many.
+ *
+ * A file is untrusted. It is never mapped (a file cut short meanwhile would be a SIGBUS), its header is
+ * checked before memory is taken: colour, palette, more pixels than `max_pixels` or than the stored bytes
+ * could hold at the codec's best ratio, strips outside the file, sparse strips. A strip that does not
+ * decode is an error, not a black stripe.
+ */
+#ifndef UF_IO_IMAGE_FILE_H
+#define UF_IO_IMAGE_FILE_H
+
+#include "image/plane.h"
+
+typedef struct uf_image_info {
+    int width, height;
+    int pages;               /* pages in the file */
+    int bits;                /* 8, 16 or 32 (float) */
+    int is_float;
+    double pixel_size_x_um;  /* from the resolution tags, NaN when they say nothing */
+    double pixel_size_y_um;
+    uint64_t file_bytes;
+    uint64_t fingerprint;    /* XXH3 64 of the file's bytes */
+} uf_image_info;
+
+typedef struct uf_image_limits {
+    double max_pixels; /* per page; the default is 1e9 */
+} uf_image_limits;
+
+/* Reads page `page` (from 0) of `path` into a plane of raw values taken from `work`'s arena: counts as
+ * they stand in the file, float values as they are (NaN and infinities are refused: UF_INPUT with the
+ * first one's place). Fills `info` (may be NULL). Errors name the path and the page. */
+UF_MUST_USE uf_status uf_image_read(uf_work *work, const char *path, int page, const uf_image_limits *limits,
+                                    uf_plane *plane, uf_image_info *info, uf_error *error);
+
+#endif

@@ -1,0 +1,52 @@
+/* SPDX-License-Identifier: GPL-3.0-or-later */
+/*
+ * The demo's maker of image pairs with known truth: a physical model from gap topography to camera counts.
+ * It knows nothing of the measuring code (layers.txt): not its optics, not its gap, not its outlines.
+ */
+#ifndef UF_SCENE_SCENE_H
+#define UF_SCENE_SCENE_H
+
+#include <stdint.h>
+
+#include "image/plane.h"
+
+typedef struct uf_scene_settings {
+    uint64_t seed;
+    int width, height;
+    double pixel_size_um;
+    int cells;                              /* wanted; fewer when they do not fit */
+    double radius_min_um, radius_max_um;    /* of a cell's equivalent disc */
+    double touching;                        /* chance that a cell is put against another */
+    double wavelength_nm, substrate_n, medium_n, angle_deg;
+    double base_gap_nm, gap_sd_nm;          /* of the membrane away from contacts */
+    double patch_gap_nm, patch_fraction;    /* broad contact patches */
+    double spot_gap_nm;                     /* focal spots */
+    int spots_min, spots_max;               /* per cell */
+    double lifted;                          /* share of cells that hardly hold on */
+    double near_peak_adu, wide_peak_adu;    /* signal at gap 0; of a full membrane */
+    double near_background_adu, wide_background_adu, offset_adu;
+    double gain_e_per_adu, read_noise_e;
+    double psf_sigma_um;
+    double shift_dx_px, shift_dy_px;        /* of the wide image relative to the near image */
+    double near_unevenness, wide_unevenness; /* fall of illumination to the corner, relative */
+} uf_scene_settings;
+
+typedef struct uf_scene {
+    uf_plane near_adu, wide_adu;   /* camera counts, whole numbers in 0 .. 65535 */
+    uf_plane near_flat, wide_flat; /* illumination, mean 1 */
+    uf_labels labels;              /* true cells */
+    uf_plane gap_nm;               /* true gap; NaN outside cells */
+    int spots;
+    float *spot_x_px, *spot_y_px;
+    int32_t *spot_cell;
+    double reference_ratio;        /* near / wide at gap 0 after flat fields of mean 1 */
+} uf_scene;
+
+/* A reasonable bench and a dozen spread cells at 512 x 512. */
+uf_scene_settings uf_scene_defaults(void);
+
+/* Makes the scene in memory of `work`'s arena; the same settings give the same bytes. UF_MEMORY. */
+UF_MUST_USE uf_status uf_scene_make(uf_work *work, const uf_scene_settings *settings, uf_scene *scene,
+                                    uf_error *error);
+
+#endif
