@@ -1,0 +1,22 @@
+/* SPDX-License-Identifier: GPL-3.0-or-later */
+/* Order statistics. They reorder or copy nothing the caller still needs: values come in scratch. */
+#ifndef UF_FIT_ROBUST_H
+#define UF_FIT_ROBUST_H
+
+#include <stddef.h>
+
+/* Median of `values`, the mean of the middle two for an even count, NaN for none. Sorts `values`. */
+double uf_median(double *values, size_t count);
+
+/* Quantile 0 <= q <= 1 of sorted values by linear interpolation between order statistics at (n - 1) q
+ * (definition 7 of Hyndman and Fan 1996, Am. Stat. 50:361; numpy's default). NaN for none. */
+double uf_sorted_quantile(const double *values, size_t count, double q);
+
+/* Sorts ascending. No NaN. */
+void uf_sort(double *values, size_t count);
+
+/* Mode by repeated halving: the half of the sorted sample with the smallest range, again and again (Bickel and
+ * Fruehwirth 2006, Comput. Stat. Data Anal. 50:3500). Sorted values in, NaN for none. */
+double uf_half_sample_mode(const double *sorted, size_t count);
+
+#endif

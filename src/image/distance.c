@@ -1,0 +1,139 @@
+/* SPDX-License-Identifier: GPL-3.0-or-later */
+#include "image/distance.h"
+
+#include <math.h>
+
+enum { BAND = 64 };
+
+/* ---- first pass: down and up the columns ---------------------------------------------------- */
+
+/* Steps along the column to the nearest other label, UF_FAR when there is none. Rows are walked whole, so
+ * that neighbouring columns share cache lines. */
+static void column_distances(uf_labels labels, uf_plane steps)
+{
+    int width = labels.width, height = labels.height;
+    for (int x = 0; x < width; x++)
+        uf_plane_row(steps, 0)[x] = UF_FAR;
+    for (int y = 1; y < height; y++) {
+        const int32_t *above = uf_labels_row(labels, y - 1), *here = uf_labels_row(labels, y);
+        const float *before = uf_plane_row(steps, y - 1);
+        float *row = uf_plane_row(steps, y);
+        for (int x = 0; x < width; x++)
+            row[x] = above[x] != here[x] ? 1.0f : before[x] < UF_FAR ? before[x] + 1.0f : UF_FAR;
+    }
+    for (int y = height - 2; y >= 0; y--) {
+        const int32_t *below = uf_labels_row(labels, y + 1), *here = uf_labels_row(labels, y);
+        const float *after = uf_plane_row(steps, y + 1);
+        float *row = uf_plane_row(steps, y);
+        for (int x = 0; x < width; x++) {
+            float up = below[x] != here[x] ? 1.0f : after[x] < UF_FAR ? after[x] + 1.0f : UF_FAR;
+            row[x] = up < row[x] ? up : row[x];
+        }
+    }
+}
+
+/* ---- second pass: along the rows ------------------------------------------------------------ */
+
+/* Parabolas of the lower envelope: parabola k is lowest from start[k] to start[k + 1]. */
+typedef struct envelope {
+    float *start;
+    int *centre;
+    float *height;
+    int count;
+} envelope;
+
+static void add_parabola(envelope *e, int centre, float height)
+{
+    float at = -INFINITY;
+    while (e->count) {
+        int last = e->count - 1;
+        double lift = (double)height + (double)centre * centre;
+        double other = (double)e->height[last] + (double)e->centre[last] * e->centre[last];
+        at = (float)((lift - other) / (2.0 * (centre - e->centre[last])));
+        if (at > e->start[last])
+            break;
+        e->count--;
+    }
+    e->start[e->count] = e->count ? at : -INFINITY;
+    e->centre[e->count] = centre;
+    e->height[e->count] = height;
+    e->count++;
+}
+
+static void read_envelope(const envelope *e, int from, int to, float *out)
+{
+    int k = 0;
+    for (int x = from; x < to; x++) {
+        while (k + 1 < e->count && e->start[k + 1] < (float)x)
+            k++;
+        if (!e->count) {
+            out[x] = UF_FAR;
+            continue;
+        }
+        float dx = (float)(x - e->centre[k]);
+        out[x] = sqrtf(dx * dx + e->height[k]);
+    }
+}
+
+/* One run of equal label, from .. to-1; a neighbour beyond either end is another label, at height 0. */
+static void run_distances(envelope *e, const float *steps, int from, int to, int width, float *out)
+{
+    e->count = 0;
+    if (from > 0)
+        add_parabola(e, from - 1, 0.0f);
+    for (int x = from; x < to; x++)
+        if (steps[x] < UF_FAR)
+            add_parabola(e, x, steps[x] * steps[x]);
+    if (to < width)
+        add_parabola(e, to, 0.0f);
+    read_envelope(e, from, to, out);
+}
+
+typedef struct distance_job {
+    uf_labels labels;
+    uf_plane steps, out;
+    int inside_only;
+    float *start, *height;
+    int *centre;
+} distance_job;
+
+static void distance_rows(void *context, int y0, int y1)
+{
+    distance_job *job = context;
+    int width = job->labels.width;
+    size_t offset = (size_t)(y0 / BAND) * (size_t)(width + 2);
+    envelope e = {job->start + offset, job->centre + offset, job->height + offset, 0};
+    for (int y = y0; y < y1; y++) {
+        const int32_t *labels = uf_labels_row(job->labels, y);
+        float *out = uf_plane_row(job->out, y);
+        for (int from = 0, to; from < width; from = to) {
+            for (to = from + 1; to < width && labels[to] == labels[from]; to++)
+                ;
+            if (job->inside_only && labels[from] == 0)
+                for (int x = from; x < to; x++)
+                    out[x] = 0.0f;
+            else
+                run_distances(&e, uf_plane_row(job->steps, y), from, to, width, out);
+        }
+    }
+}
+
+uf_status uf_distance(uf_work *work, uf_labels labels, int inside_only, uf_plane distance_px, uf_error *error)
+{
+    distance_job job = {.labels = labels, .out = distance_px, .inside_only = inside_only};
+    uf_arena_mark mark = uf_arena_now(&work->arena);
+    size_t bands = (size_t)(labels.height + BAND - 1) / BAND, length = bands * (size_t)(labels.width + 2);
+    uf_status status = uf_plane_take(work, labels.width, labels.height, &job.steps, error);
+    if (status == UF_OK)
+        status = uf_take(work, length, sizeof(float), "distances", &job.start, error);
+    if (status == UF_OK)
+        status = uf_take(work, length, sizeof(float), "distances", &job.height, error);
+    if (status == UF_OK)
+        status = uf_take(work, length, sizeof(int), "distances", &job.centre, error);
+    if (status == UF_OK) {
+        column_distances(labels, job.steps);
+        uf_rows_run(work, labels.height, distance_rows, &job);
+    }
+    uf_arena_back(&work->arena, mark);
+    return status;
+}

@@ -1,0 +1,220 @@
+/* SPDX-License-Identifier: GPL-3.0-or-later */
+#include "image/smooth.h"
+
+#include <math.h>
+#include <string.h>
+
+#include "base/text.h"
+#include "image/kernels.h"
+
+enum { BAND = 64, LARGEST_RADIUS = 512 };
+
+/* Index mirrored into 0 .. n-1 with the border pixel repeated, however far outside. */
+static int mirror(int i, int n)
+{
+    int period = 2 * n;
+    i %= period;
+    if (i < 0)
+        i += period;
+    return i < n ? i : period - 1 - i;
+}
+
+static int clamp(int i, int n)
+{
+    return i < 0 ? 0 : i >= n ? n - 1 : i;
+}
+
+/* ---- Gaussian ----------------------------------------------------------------------------- */
+
+typedef struct smoothing {
+    const uf_kernels *kernels;
+    uf_plane in, half, out;
+    float taps[LARGEST_RADIUS + 1];
+    int radius;
+    float *padded; /* one row with its borders for each band */
+    size_t padded_length;
+} smoothing;
+
+static void make_taps(smoothing *s, double sigma)
+{
+    s->radius = (int)(4.0 * sigma + 0.5);
+    if (s->radius > LARGEST_RADIUS)
+        s->radius = LARGEST_RADIUS;
+    double taps[LARGEST_RADIUS + 1], sum = 0;
+    for (int k = 0; k <= s->radius; k++) {
+        taps[k] = exp(-0.5 * k * k / (sigma * sigma));
+        sum += k ? 2 * taps[k] : taps[k];
+    }
+    for (int k = 0; k <= s->radius; k++)
+        s->taps[k] = (float)uf_round_digits(taps[k] / sum, 12);
+}
+
+static void smooth_rows(void *context, int y0, int y1)
+{
+    smoothing *s = context;
+    int width = s->in.width, radius = s->radius;
+    float *padded = s->padded + (size_t)(y0 / BAND) * s->padded_length;
+    for (int y = y0; y < y1; y++) {
+        const float *row = uf_plane_row(s->in, y);
+        memcpy(padded + radius, row, (size_t)width * sizeof *row);
+        for (int k = 1; k <= radius; k++) {
+            padded[radius - k] = row[mirror(-k, width)];
+            padded[radius + width - 1 + k] = row[mirror(width - 1 + k, width)];
+        }
+        s->kernels->convolve_row(uf_plane_row(s->half, y), padded + radius, s->taps, radius, width);
+    }
+}
+
+static void smooth_columns(void *context, int y0, int y1)
+{
+    smoothing *s = context;
+    const float *rows[2 * LARGEST_RADIUS + 1];
+    for (int y = y0; y < y1; y++) {
+        for (int k = -s->radius; k <= s->radius; k++)
+            rows[s->radius + k] = uf_plane_row(s->half, mirror(y + k, s->half.height));
+        s->kernels->convolve_column(uf_plane_row(s->out, y), rows, s->taps, s->radius, s->out.width);
+    }
+}
+
+static void copy_plane(uf_plane in, uf_plane out)
+{
+    for (int y = 0; y < in.height; y++)
+        memmove(uf_plane_row(out, y), uf_plane_row(in, y), (size_t)in.width * sizeof(float));
+}
+
+uf_status uf_smooth(uf_work *work, uf_plane in, double sigma_px, uf_plane out, uf_error *error)
+{
+    smoothing s = {.kernels = uf_kernels_in_use(), .in = in, .out = out};
+    if (!(sigma_px > 0)) {
+        copy_plane(in, out);
+        return UF_OK;
+    }
+    make_taps(&s, sigma_px);
+    uf_arena_mark mark = uf_arena_now(&work->arena);
+    s.padded_length = (size_t)(in.width + 2 * s.radius);
+    size_t bands = (size_t)(in.height + BAND - 1) / BAND;
+    uf_status status = uf_take(work, bands * s.padded_length, sizeof(float), "smoothing", &s.padded, error);
+    if (status == UF_OK)
+        status = uf_plane_take(work, in.width, in.height, &s.half, error);
+    if (status == UF_OK) {
+        uf_rows_run(work, in.height, smooth_rows, &s);
+        uf_rows_run(work, in.height, smooth_columns, &s);
+    }
+    uf_arena_back(&work->arena, mark);
+    return status;
+}
+
+/* ---- coarse grid -------------------------------------------------------------------------- */
+
+typedef struct reduction {
+    uf_plane in, out;
+    int factor;
+} reduction;
+
+static void reduce_rows(void *context, int y0, int y1)
+{
+    reduction *r = context;
+    int factor = r->factor;
+    for (int y = y0; y < y1; y++) {
+        float *out = uf_plane_row(r->out, y);
+        int top = y * factor, bottom = top + factor < r->in.height ? top + factor : r->in.height;
+        for (int x = 0; x < r->out.width; x++) {
+            int left = x * factor, right = left + factor < r->in.width ? left + factor : r->in.width;
+            double sum = 0;
+            for (int v = top; v < bottom; v++)
+                for (int u = left; u < right; u++)
+                    sum += (double)uf_plane_row(r->in, v)[u];
+            out[x] = (float)(sum / ((bottom - top) * (right - left)));
+        }
+    }
+}
+
+void uf_reduce(const uf_work *work, uf_plane in, int factor, uf_plane out)
+{
+    reduction r = {in, out, factor};
+    uf_rows_run(work, out.height, reduce_rows, &r);
+}
+
+float uf_coarse_at(uf_plane coarse, int factor, double x, double y)
+{
+    double u = (x + 0.5) / factor - 0.5, v = (y + 0.5) / factor - 0.5;
+    int x0 = clamp((int)floor(u), coarse.width), y0 = clamp((int)floor(v), coarse.height);
+    int x1 = clamp(x0 + 1, coarse.width), y1 = clamp(y0 + 1, coarse.height);
+    double fx = u - x0, fy = v - y0;
+    fx = fx < 0 ? 0 : fx > 1 ? 1 : fx;
+    fy = fy < 0 ? 0 : fy > 1 ? 1 : fy;
+    const float *a = uf_plane_row(coarse, y0), *b = uf_plane_row(coarse, y1);
+    double top = (double)a[x0] + fx * ((double)a[x1] - (double)a[x0]);
+    double bottom = (double)b[x0] + fx * ((double)b[x1] - (double)b[x0]);
+    return (float)(top + fy * (bottom - top));
+}
+
+/* ---- shift -------------------------------------------------------------------------------- */
+
+enum { POINTS = 6, BEFORE = 2 }; /* points at -2 .. 3 around the whole part */
+
+typedef struct shifting {
+    const uf_kernels *kernels;
+    uf_plane in, half, out;
+    float taps_x[POINTS], taps_y[POINTS];
+    int whole_x, whole_y;
+    float *padded;
+    size_t padded_length;
+} shifting;
+
+/* Lagrange's weights of the points -2 .. 3 at fraction t of the way from 0 to 1. */
+static void lagrange(double t, float *taps)
+{
+    for (int j = 0; j < POINTS; j++) {
+        double weight = 1;
+        for (int k = 0; k < POINTS; k++)
+            if (k != j)
+                weight *= (t - (k - BEFORE)) / (j - k);
+        taps[j] = (float)weight;
+    }
+}
+
+static void shift_rows(void *context, int y0, int y1)
+{
+    shifting *s = context;
+    int width = s->in.width;
+    float *padded = s->padded + (size_t)(y0 / BAND) * s->padded_length;
+    for (int y = y0; y < y1; y++) {
+        const float *row = uf_plane_row(s->in, y);
+        for (int x = 0; x < width + POINTS; x++)
+            padded[x] = row[clamp(x + s->whole_x - BEFORE, width)];
+        s->kernels->six_taps(uf_plane_row(s->half, y), padded, s->taps_x, width);
+    }
+}
+
+static void shift_columns(void *context, int y0, int y1)
+{
+    shifting *s = context;
+    const float *rows[POINTS];
+    for (int y = y0; y < y1; y++) {
+        for (int k = 0; k < POINTS; k++)
+            rows[k] = uf_plane_row(s->half, clamp(y + s->whole_y - BEFORE + k, s->half.height));
+        s->kernels->six_rows(uf_plane_row(s->out, y), rows, s->taps_y, s->out.width);
+    }
+}
+
+uf_status uf_shift(uf_work *work, uf_plane in, double dx, double dy, uf_plane out, uf_error *error)
+{
+    shifting s = {.kernels = uf_kernels_in_use(), .in = in, .out = out};
+    s.whole_x = (int)floor(dx);
+    s.whole_y = (int)floor(dy);
+    lagrange(dx - s.whole_x, s.taps_x);
+    lagrange(dy - s.whole_y, s.taps_y);
+    uf_arena_mark mark = uf_arena_now(&work->arena);
+    s.padded_length = (size_t)in.width + POINTS;
+    size_t bands = (size_t)(in.height + BAND - 1) / BAND;
+    uf_status status = uf_take(work, bands * s.padded_length, sizeof(float), "the shift", &s.padded, error);
+    if (status == UF_OK)
+        status = uf_plane_take(work, in.width, in.height, &s.half, error);
+    if (status == UF_OK) {
+        uf_rows_run(work, in.height, shift_rows, &s);
+        uf_rows_run(work, in.height, shift_columns, &s);
+    }
+    uf_arena_back(&work->arena, mark);
+    return status;
+}

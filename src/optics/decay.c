@@ -1,0 +1,50 @@
+/* SPDX-License-Identifier: GPL-3.0-or-later */
+#include "optics/decay.h"
+
+#include <math.h>
+
+/* The table runs from ln = 0 to ln = -16, an excitation of 1e-7: far below any camera's detection limit. */
+static const double deepest_ln = 16.0;
+
+void uf_decay_exponential(uf_decay *decay, double depth_nm)
+{
+    double step = deepest_ln / (UF_DECAY_NODES - 1);
+    decay->depth_nm = depth_nm;
+    decay->lookup.first_ln = 0.0f;
+    decay->lookup.inverse_step = (float)(1.0 / step);
+    for (int k = 0; k < UF_DECAY_NODES; k++)
+        decay->lookup.gap_nm[k] = (float)(depth_nm * step * k);
+}
+
+double uf_decay_gap(const uf_decay *decay, double ln_relative)
+{
+    const uf_gap_lookup *lookup = &decay->lookup;
+    double at = ((double)lookup->first_ln - ln_relative) * (double)lookup->inverse_step;
+    int last = UF_DECAY_NODES - 2;
+    int node = at < 0 ? 0 : at > last ? last : (int)at;
+    double low = (double)lookup->gap_nm[node], high = (double)lookup->gap_nm[node + 1];
+    return low + (at - node) * (high - low);
+}
+
+double uf_decay_ln(const uf_decay *decay, double gap_nm)
+{
+    const uf_gap_lookup *lookup = &decay->lookup;
+    int low = 0, high = UF_DECAY_NODES - 1;
+    while (high - low > 1) {
+        int middle = (low + high) / 2;
+        if ((double)lookup->gap_nm[middle] <= gap_nm)
+            low = middle;
+        else
+            high = middle;
+    }
+    double a = (double)lookup->gap_nm[low], b = (double)lookup->gap_nm[low + 1];
+    double at = low + (gap_nm - a) / (b - a);
+    return (double)lookup->first_ln - at / (double)lookup->inverse_step;
+}
+
+double uf_layered_effect_nm(const uf_bench *bench, double gap_nm)
+{
+    double depth = uf_depth_nm(bench->wavelength_nm, bench->na_effective, bench->medium_n);
+    double relative = uf_layered_intensity(bench, gap_nm) / uf_layered_intensity(bench, 0.0);
+    return -depth * log(relative) - gap_nm;
+}

@@ -1,0 +1,152 @@
+/* SPDX-License-Identifier: GPL-3.0-or-later */
+/* THE table of settings. A new setting is one member in settings.h and one line here. */
+#include <math.h>
+
+#include "settings/settings.h"
+
+#define AT(member) offsetof(struct uf_settings, member)
+#define NONE ((double)NAN)
+
+#define KEY(file, section, key, kind, member, least, most, initial, choices, group, help) \
+    {UF_##file##_FILE, section, key, UF_SETTING_##kind, member, least, most, initial, choices, group, help}
+
+#define I_REAL(section, key, member, least, most, initial, help) \
+    KEY(INSTRUMENT, section, key, REAL, AT(member), least, most, initial, NULL, NULL, help)
+#define I_CHOICE(section, key, member, choices, initial, help) \
+    KEY(INSTRUMENT, section, key, CHOICE, AT(member), 0, 0, initial, choices, NULL, help)
+#define I_PATH(section, key, member, help) \
+    KEY(INSTRUMENT, section, key, PATH, AT(member), 0, 0, 0, NULL, NULL, help)
+#define I_ONE_OF(group, section, key, member, least, most, help) \
+    KEY(INSTRUMENT, section, key, REAL, AT(member), least, most, NONE, NULL, group, help)
+#define I_LATER(section, key, help) KEY(INSTRUMENT, section, key, LATER, 0, 0, 0, 0, NULL, NULL, help)
+#define A_REAL(section, key, member, least, most, initial, help) \
+    KEY(ASSAY, section, key, REAL, AT(member), least, most, initial, NULL, NULL, help)
+#define A_CHOICE(section, key, member, choices, initial, help) \
+    KEY(ASSAY, section, key, CHOICE, AT(member), 0, 0, initial, choices, NULL, help)
+#define A_LATER(section, key, help) KEY(ASSAY, section, key, LATER, 0, 0, 0, 0, NULL, NULL, help)
+
+#define CAMERA(section, channel)                                                                               \
+    I_REAL(section, "offset_adu", camera[channel].offset_adu, -1e6, 1e6, 0,                                    \
+           "Counts of a pixel in the dark.")                                                                   \
+    , I_REAL(section, "gain_e_per_adu", camera[channel].gain_e_per_adu, 1e-4, 1e4, NONE,                       \
+             "Electrons a count. Without it the noise is estimated from the image.")                           \
+    , I_REAL(section, "read_noise_e", camera[channel].read_noise_e, 0, 1e4, 0,                                 \
+             "Read noise, electrons (1 sigma).")                                                               \
+    , I_REAL(section, "full_scale_adu", camera[channel].full_scale_adu, 1, 1e9, NONE,                          \
+             "Count at which the camera saturates. Default: the largest value the file's bits can hold.")      \
+    , I_REAL(section, "excess_noise", camera[channel].excess_noise, 1, 4, 1,                                   \
+             "Excess noise factor of an amplifying camera (about 1.41), 1 for others.")                        \
+    , I_PATH(section, "dark", camera[channel].dark, "Dark image subtracted instead of offset_adu.")            \
+    , I_PATH(section, "defects", camera[channel].defects,                                                      \
+             "Map of bad pixels: those not 0 are replaced from their neighbours.")
+
+const uf_setting uf_setting_table[] = {
+    I_REAL("light", "wavelength_nm", light.wavelength_nm, 200, 2000, NONE, "Vacuum wavelength of the excitation."),
+    I_CHOICE("light", "polarization", light.polarization, "s|p|mixed", UF_POLARIZATION_MIXED,
+             "Polarization of the beam at the interface."),
+
+    I_CHOICE("interface", "geometry", interface.geometry, "objective|prism", UF_GEOMETRY_OBJECTIVE,
+             "How the beam reaches the interface."),
+    I_REAL("interface", "substrate_n", interface.substrate_n, 1, 4, NONE, "Refractive index of the substrate."),
+    I_LATER("interface", "substrate", "Name of the substrate, index by its dispersion."),
+    I_REAL("interface", "medium_n", interface.medium_n, 1, 2, NONE,
+           "Refractive index of the medium, which fills the gap."),
+    I_LATER("interface", "medium", "Name of the medium, index by its dispersion."),
+    I_LATER("interface", "temperature_c", "Temperature of the medium."),
+    I_REAL("interface", "cell_n", interface.cell_n, 1, 2, 1.37, "Refractive index of the cell."),
+    I_REAL("interface", "cell_n_sd", interface.cell_n_sd, 0, 0.2, 0.01, "1 sigma of cell_n."),
+    I_REAL("interface", "substrate_n_sd", interface.substrate_n_sd, 0, 0.2, 0, "1 sigma of substrate_n."),
+    I_REAL("interface", "medium_n_sd", interface.medium_n_sd, 0, 0.2, 0, "1 sigma of medium_n."),
+    I_LATER("interface", "coating_n", "Refractive index of a thin coating."),
+    I_LATER("interface", "coating_nm", "Thickness of a thin coating."),
+    I_ONE_OF("angle", "interface", "angle_deg", interface.angle_deg, 0, 90,
+             "Angle of incidence, from the normal, in the medium of index angle_n."),
+    I_REAL("interface", "angle_n", interface.angle_n, 1, 4, NONE,
+           "Index the angle is quoted in. Default: substrate_n."),
+    I_ONE_OF("angle", "interface", "na_effective", interface.na_effective, 1, 4,
+             "n sin(angle), the same in every layer; instead of angle_deg."),
+    I_ONE_OF("angle", "interface", "depth_nm", interface.depth_nm, 10, 5000,
+             "Measured 1/e depth of the intensity in medium_n; instead of angle_deg."),
+    I_REAL("interface", "angle_sd_deg", interface.angle_sd_deg, 0, 20, 0, "1 sigma of angle_deg."),
+    I_REAL("interface", "na_effective_sd", interface.na_effective_sd, 0, 0.5, 0, "1 sigma of na_effective."),
+    I_REAL("interface", "depth_sd_nm", interface.depth_sd_nm, 0, 1000, 0, "1 sigma of depth_nm."),
+    I_REAL("interface", "objective_na", interface.objective_na, 0.1, 2, NONE,
+           "Numerical aperture of the objective."),
+
+    I_CHOICE("decay", "model", decay.model, "exponential|!layered|!table", UF_DECAY_EXPONENTIAL,
+             "How excitation falls with the gap."),
+    I_LATER("decay", "file", "Table of a measured decay."),
+    I_LATER("decay", "scattered_fraction", "Share of stray light in the excitation at gap 0."),
+    I_LATER("decay", "scattered_depth_nm", "1/e depth of the stray light."),
+
+    I_REAL("pixel", "size_um", pixel.size_um, 1e-3, 20, NONE,
+           "Side of a pixel in the specimen. Default: from the TIFF's resolution tags."),
+
+    CAMERA("near.camera", UF_NEAR),
+    CAMERA("wide.camera", UF_WIDE),
+    I_PATH("near.flat", "file", flat[UF_NEAR].file, "Flat field of the near channel, any scale."),
+    I_PATH("wide.flat", "file", flat[UF_WIDE].file, "Flat field of the wide channel, any scale."),
+
+    I_REAL("shift", "dx_px", shift.dx_px, -500, 500, 0, "Shift of wide relative to near, to the right."),
+    I_REAL("shift", "dy_px", shift.dy_px, -500, 500, 0, "Shift of wide relative to near, downwards."),
+    I_CHOICE("shift", "estimate", shift.estimate, "check|yes|no", UF_ESTIMATE_CHECK,
+             "Whether each field's own shift is estimated and compared (check), used (yes) or left alone (no)."),
+
+    I_REAL("reference", "ratio", reference.ratio, 1e-9, 1e9, NONE,
+           "near / wide ratio measured where the gap is gap_nm."),
+    I_REAL("reference", "ratio_sd", reference.ratio_sd, 0, 1e9, 0, "1 sigma of ratio."),
+    I_REAL("reference", "gap_nm", reference.gap_nm, 0, 1000, 0, "Gap that the reference ratio stands for."),
+    I_LATER("reference", "gap_sd_nm", "1 sigma of an assumed gap."),
+    I_CHOICE("reference", "kind", reference.kind, "cell|!film", UF_REFERENCE_CELL,
+             "What the reference was measured on."),
+    I_LATER("reference", "from", "Estimating the reference from the experiment."),
+    I_LATER("reference", "exposure_near_ms", "Exposure of the reference's near image."),
+    I_LATER("reference", "exposure_wide_ms", "Exposure of the reference's wide image."),
+    I_REAL("reference", "normalisation_sd", reference.normalisation_sd, 0, 1, 0.05,
+           "Cell-to-cell spread (relative) of what the wide image sees beside the ventral membrane."),
+
+    I_LATER("series", "angles_deg", "Angles of a series."),
+    I_LATER("series", "power", "Relative power at each angle of a series."),
+
+    A_CHOICE("cells", "label", cells.label, "membrane|!cytosol|!adhesion-protein", UF_LABEL_MEMBRANE,
+             "What carries the dye."),
+    A_REAL("cells", "smooth_um", cells.smooth_um, 0, 5, 0.1,
+           "Gaussian smoothing (sigma) of the wide image before outlines are drawn."),
+    A_REAL("cells", "min_area_um2", cells.min_area_um2, 0, 1e6, 50, "Smaller things are debris, not cells."),
+    A_REAL("cells", "max_area_um2", cells.max_area_um2, 1, 1e9, 1e9, "Larger things are not cells either."),
+    A_REAL("cells", "split", cells.split, 0, 1, 0.5,
+           "How eagerly touching cells are split: 0 never, 1 at the slightest neck."),
+    A_CHOICE("cells", "edge_cells", cells.edge_cells, "weight|keep|drop", UF_EDGE_WEIGHT,
+             "Cells cut by the image edge: left out while the others are weighted for it (weight), counted like "
+             "the others (keep), or left out (drop)."),
+
+    A_REAL("contact", "cutoff_nm", contact.cutoff_nm, 1, 1000, 50, "Contact is where the gap is at most this."),
+    A_REAL("contact", "focal_nm", contact.focal_nm, 1, 1000, 25, "Upper end of the focal band."),
+    A_REAL("contact", "close_nm", contact.close_nm, 1, 1000, 50, "Upper end of the close band."),
+    A_REAL("contact", "detection_sigma", contact.detection_sigma, 1, 20, 3,
+           "A signal weaker than this many sigma of its noise gives no gap."),
+    A_REAL("contact", "attached_threshold", contact.attached_threshold, 0, 1, 0.1,
+           "A cell is attached when its attachment fraction reaches this."),
+    A_REAL("contact", "rim_um", contact.rim_um, 0, 100, 2, "Width of the rim."),
+    A_REAL("contact", "min_patch_um2", contact.min_patch_um2, 0, 1e4, 0.1, "Smaller contact patches are noise."),
+
+    A_REAL("spots", "min_length_um", spots.min_length_um, 0.05, 50, 0.3, "Shorter spots are dropped."),
+    A_REAL("spots", "max_length_um", spots.max_length_um, 0.1, 100, 6, "Longer ones are patches, not spots."),
+    A_REAL("spots", "contrast_sigma", spots.contrast_sigma, 1, 50, 4,
+           "A spot's contrast must reach this many sigma of the gap's noise."),
+
+    A_LATER("compare", "primary", "Primary metrics."),
+    A_LATER("compare", "control", "Treatment that the others are compared to."),
+    A_LATER("compare", "block", "Column that pairs the arms."),
+    A_LATER("compare", "min_cells_per_well", "Wells with fewer cells leave per-cell metrics."),
+    A_LATER("compare", "drop_flags", "Flags whose cells are left out."),
+
+    A_CHOICE("output", "overlay", output.overlay, "yes|flagged|full|no", UF_OVERLAY_YES,
+             "Overlay pictures: of every field, of flagged fields only, at full size, none."),
+    A_CHOICE("output", "maps", output.maps, "yes|no", UF_NO, "Gap and label TIFFs."),
+};
+
+const int uf_setting_count = (int)(sizeof uf_setting_table / sizeof uf_setting_table[0]);
+
+_Static_assert(sizeof uf_setting_table / sizeof uf_setting_table[0] <= UF_SETTINGS_LIMIT,
+               "UF_SETTINGS_LIMIT must hold every entry of the table");
