@@ -24,9 +24,6 @@ typedef struct uf_gap_lookup {
 typedef struct uf_kernels {
     const char *name; /* "baseline" or "x86-64-v3" */
 
-    /* out = (raw - dark) * gain; dark and gain are rows. */
-    void (*correct)(float *out, const float *raw, const float *dark, const float *gain, int n);
-
     /* out[x] = taps[0] in[x] + sum over k of taps[k] (in[x-k] + in[x+k]); `in` reaches radius beyond both ends. */
     void (*convolve_row)(float *out, const float *in, const float *taps, int radius, int n);
 

@@ -1,0 +1,46 @@
+/* SPDX-License-Identifier: GPL-3.0-or-later */
+/* What steps hand on: a corrected channel, and the cells found in a field. Plain data; planes live in the
+ * arena of the worker that made them. */
+#ifndef UF_IMAGE_CHANNEL_H
+#define UF_IMAGE_CHANNEL_H
+
+#include "image/plane.h"
+
+/* Camera noise: variance (ADU^2) of a signal = excess2 * signal / gain + read_adu^2, the background included
+ * in the signal (EMVA 1288's photon transfer model). */
+typedef struct uf_noise {
+    double gain_e_per_adu;
+    double read_adu;
+    double excess2;
+} uf_noise;
+
+typedef struct uf_channel {
+    uf_plane image;            /* ADU, offset subtracted, flat-fielded, bad pixels replaced; background still in */
+    uf_mask saturated;         /* 1 where the camera was at full scale; data NULL when nowhere */
+    uf_noise noise;
+    double background_adu;
+    double background_sd_adu;  /* 1 sigma of background_adu */
+    double noise_adu;          /* 1 sigma noise of a pixel at the background level */
+    double saturated_fraction;
+    int64_t replaced;          /* bad pixels replaced */
+    int display_scaled;        /* looks contrast-stretched to 8 bits */
+} uf_channel;
+
+static inline double uf_noise_variance(const uf_noise *noise, double signal_adu)
+{
+    double shot = signal_adu > 0 ? noise->excess2 * signal_adu / noise->gain_e_per_adu : 0.0;
+    return shot + noise->read_adu * noise->read_adu;
+}
+
+/* The cells of a field. The coarse planes have one pixel for factor x factor image pixels. */
+typedef struct uf_cell_map {
+    uf_labels labels;
+    uf_plane distance_px;      /* distance to the nearest pixel outside the own cell, 0 outside cells */
+    uf_plane to_background_px; /* distance to the nearest pixel outside all cells */
+    int factor;
+    uf_plane plateau_adu;  /* coarse: wide level just inside the nearest outline, background included */
+    uf_plane outside_adu;  /* coarse: wide level just outside it */
+    uf_plane outside_px;   /* coarse: distance from the nearest cell in image pixels, 0 inside */
+} uf_cell_map;
+
+#endif

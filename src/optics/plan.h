@@ -1,0 +1,22 @@
+/* SPDX-License-Identifier: GPL-3.0-or-later */
+/* What is fixed for a whole run before the first pixel: the numbers that turn intensity into gap, with their
+ * uncertainties. Built once (run/plan.c), rounded to 12 digits, and only read afterwards. */
+#ifndef UF_OPTICS_PLAN_H
+#define UF_OPTICS_PLAN_H
+
+#include "optics/decay.h"
+
+typedef struct uf_plan {
+    uf_bench bench;
+    uf_decay decay;
+    double pixel_size_um;
+    double psf_sigma_um;          /* of the near image: 0.21 emission wavelength / NA */
+    double depth_nm, depth_sd_nm;
+    double reference_ratio;       /* near / wide that stands for gap 0 */
+    double reference_gap_nm;      /* gap it was measured at: a depth error is a gap error around this gap */
+    double reference_sd;          /* relative 1 sigma of the ratio */
+    double normalisation_sd;      /* relative, from cell to cell */
+    double layered_effect_nm;     /* layered minus exponential at the contact cutoff */
+} uf_plan;
+
+#endif

@@ -1,0 +1,247 @@
+/* SPDX-License-Identifier: GPL-3.0-or-later */
+#include "segment/split.h"
+
+#include <string.h>
+
+#include "image/components.h"
+
+/* Depths are sorted into steps of a quarter pixel, row by row within a step. */
+enum { STEPS_PER_PX = 4, MOST_STEPS = 1 << 16 };
+
+typedef struct basin {
+    int parent;
+    float depth; /* of its deepest pixel */
+} basin;
+
+typedef struct flood {
+    uf_plane distance;
+    uf_labels labels;
+    basin *basins; /* 1 .. count */
+    int count;
+    float neck;
+} flood;
+
+static int root_of(basin *basins, int k)
+{
+    while (basins[k].parent != k) {
+        basins[k].parent = basins[basins[k].parent].parent;
+        k = basins[k].parent;
+    }
+    return k;
+}
+
+/* ---- order of the flood ---------------------------------------------------------------------------------- */
+
+static int step_of(float distance)
+{
+    float step = distance * STEPS_PER_PX;
+    return step < (float)(MOST_STEPS - 1) ? (int)step : MOST_STEPS - 1;
+}
+
+/* Counting sort of the foreground pixels (y * width + x), deepest step first. Returns how many. */
+static size_t sort_pixels(uf_plane distance, uf_labels labels, size_t *place, uint32_t *order)
+{
+    memset(place, 0, (MOST_STEPS + 1) * sizeof *place);
+    for (int y = 0; y < distance.height; y++)
+        for (int x = 0; x < distance.width; x++)
+            if (uf_labels_row(labels, y)[x])
+                place[MOST_STEPS - step_of(uf_plane_row(distance, y)[x])]++;
+    for (int k = 1; k <= MOST_STEPS; k++)
+        place[k] += place[k - 1];
+    size_t count = place[MOST_STEPS];
+    for (int y = 0; y < distance.height; y++)
+        for (int x = 0; x < distance.width; x++)
+            if (uf_labels_row(labels, y)[x]) {
+                int step = MOST_STEPS - step_of(uf_plane_row(distance, y)[x]);
+                order[place[step - 1]++] = (uint32_t)y * (uint32_t)distance.width + (uint32_t)x;
+            }
+    return count;
+}
+
+/* ---- flood ------------------------------------------------------------------------------------------------- */
+
+/* The roots of the cells around (x, y), each once; at most 8. */
+static int roots_around(flood *f, int x, int y, int *roots)
+{
+    int count = 0;
+    for (int v = y - 1; v <= y + 1; v++)
+        for (int u = x - 1; u <= x + 1; u++) {
+            if (u < 0 || v < 0 || u >= f->labels.width || v >= f->labels.height)
+                continue;
+            int label = uf_labels_row(f->labels, v)[u];
+            if (label <= 0)
+                continue;
+            int root = root_of(f->basins, label), known = 0;
+            for (int k = 0; k < count; k++)
+                known |= roots[k] == root;
+            if (!known)
+                roots[count++] = root;
+        }
+    return count;
+}
+
+static int is_one_cell(const flood *f, int a, int b, float saddle)
+{
+    float shallower = f->basins[a].depth < f->basins[b].depth ? f->basins[a].depth : f->basins[b].depth;
+    return saddle >= f->neck * shallower;
+}
+
+static void flood_pixel(flood *f, int x, int y)
+{
+    int roots[8], count = roots_around(f, x, y, roots);
+    float here = uf_plane_row(f->distance, y)[x];
+    if (!count) {
+        int fresh = ++f->count;
+        f->basins[fresh] = (basin){fresh, here};
+        uf_labels_row(f->labels, y)[x] = fresh;
+        return;
+    }
+    int owner = roots[0];
+    for (int k = 1; k < count; k++)
+        if (f->basins[roots[k]].depth > f->basins[owner].depth)
+            owner = roots[k];
+    for (int k = 0; k < count; k++)
+        if (roots[k] != owner && is_one_cell(f, owner, roots[k], here))
+            f->basins[roots[k]].parent = owner;
+    uf_labels_row(f->labels, y)[x] = owner;
+}
+
+/* ---- afterwards ---------------------------------------------------------------------------------------------- */
+
+static void resolve(flood *f)
+{
+    for (int y = 0; y < f->labels.height; y++) {
+        int32_t *row = uf_labels_row(f->labels, y);
+        for (int x = 0; x < f->labels.width; x++)
+            if (row[x])
+                row[x] = root_of(f->basins, row[x]);
+    }
+    f->labels.count = f->count;
+}
+
+/* The label that shares the longest border with `small`, 0 when it stands alone. borders has count + 1 places
+ * of zeros and is left so. */
+static int longest_border(uf_labels labels, int small, uf_box box, int *borders)
+{
+    int best = 0;
+    for (int pass = 0; pass < 2; pass++)
+        for (int y = box.y0; y < box.y1; y++)
+            for (int x = box.x0; x < box.x1; x++) {
+                if (uf_labels_row(labels, y)[x] != small)
+                    continue;
+                int right = x + 1 < labels.width ? uf_labels_row(labels, y)[x + 1] : 0;
+                int left = x > 0 ? uf_labels_row(labels, y)[x - 1] : 0;
+                int below = y + 1 < labels.height ? uf_labels_row(labels, y + 1)[x] : 0;
+                int above = y > 0 ? uf_labels_row(labels, y - 1)[x] : 0;
+                int around[4] = {left, right, above, below};
+                for (int k = 0; k < 4; k++) {
+                    if (!around[k] || around[k] == small)
+                        continue;
+                    borders[around[k]] = pass ? 0 : borders[around[k]] + 1;
+                    if (!pass && (!best || borders[around[k]] > borders[best]))
+                        best = around[k];
+                }
+            }
+    return best;
+}
+
+static void relabel(uf_labels labels, uf_box box, int from, int to)
+{
+    for (int y = box.y0; y < box.y1; y++) {
+        int32_t *row = uf_labels_row(labels, y);
+        for (int x = box.x0; x < box.x1; x++)
+            if (row[x] == from)
+                row[x] = to;
+    }
+}
+
+static uf_status join_small(uf_work *work, flood *f, double min_pixels, uf_error *error)
+{
+    size_t places = (size_t)f->count + 1;
+    int64_t *areas;
+    uf_box *boxes;
+    int *borders;
+    uf_status status = uf_take(work, places, sizeof *areas, "segmentation", &areas, error);
+    if (status == UF_OK)
+        status = uf_take(work, places, sizeof *boxes, "segmentation", &boxes, error);
+    if (status == UF_OK)
+        status = uf_take(work, places, sizeof *borders, "segmentation", &borders, error);
+    if (status != UF_OK)
+        return status;
+    memset(borders, 0, places * sizeof *borders);
+    uf_label_areas(f->labels, areas);
+    uf_label_boxes(f->labels, boxes);
+    for (int k = 1; k <= f->count; k++) {
+        if (!areas[k] || (double)areas[k] >= min_pixels)
+            continue;
+        int other = longest_border(f->labels, k, boxes[k], borders);
+        if (!other)
+            continue;
+        relabel(f->labels, boxes[k], k, other);
+        areas[other] += areas[k];
+        areas[k] = 0;
+        uf_box *a = &boxes[other], b = boxes[k];
+        *a = (uf_box){a->x0 < b.x0 ? a->x0 : b.x0, a->y0 < b.y0 ? a->y0 : b.y0, a->x1 > b.x1 ? a->x1 : b.x1,
+                      a->y1 > b.y1 ? a->y1 : b.y1};
+    }
+    return UF_OK;
+}
+
+/* Drops what is too small or too large and numbers the rest in the order of first pixels. */
+static uf_status renumber(uf_work *work, flood *f, double min_pixels, double max_pixels, uf_error *error)
+{
+    size_t places = (size_t)f->count + 1;
+    int64_t *areas;
+    int32_t *number;
+    uf_status status = uf_take(work, places, sizeof *areas, "segmentation", &areas, error);
+    if (status == UF_OK)
+        status = uf_take(work, places, sizeof *number, "segmentation", &number, error);
+    if (status != UF_OK)
+        return status;
+    uf_label_areas(f->labels, areas);
+    memset(number, 0, places * sizeof *number);
+    int count = 0;
+    for (int y = 0; y < f->labels.height; y++) {
+        int32_t *row = uf_labels_row(f->labels, y);
+        for (int x = 0; x < f->labels.width; x++) {
+            int k = row[x];
+            if (!k)
+                continue;
+            if (!number[k])
+                number[k] = (double)areas[k] >= min_pixels && (double)areas[k] <= max_pixels ? ++count : -1;
+            row[x] = number[k] > 0 ? number[k] : 0;
+        }
+    }
+    f->labels.count = count;
+    return UF_OK;
+}
+
+uf_status uf_split(uf_work *work, uf_plane distance_px, double neck, double min_pixels, double max_pixels,
+                   uf_labels *labels, uf_error *error)
+{
+    uf_arena_mark mark = uf_arena_now(&work->arena);
+    size_t pixels = (size_t)labels->width * (size_t)labels->height;
+    flood f = {.distance = distance_px, .labels = *labels, .neck = (float)neck};
+    size_t *place;
+    uint32_t *order;
+    uf_status status = uf_take(work, MOST_STEPS + 1, sizeof *place, "segmentation", &place, error);
+    if (status == UF_OK)
+        status = uf_take(work, pixels, sizeof *order, "segmentation", &order, error);
+    if (status == UF_OK)
+        /* A cell starts at a local maximum, so at most every second pixel of every second row. */
+        status = uf_take(work, pixels / 2 + 2, sizeof *f.basins, "segmentation", &f.basins, error);
+    if (status == UF_OK) {
+        size_t count = sort_pixels(distance_px, *labels, place, order);
+        for (int y = 0; y < labels->height; y++)
+            memset(uf_labels_row(*labels, y), 0, (size_t)labels->width * sizeof(int32_t));
+        for (size_t k = 0; k < count; k++)
+            flood_pixel(&f, (int)(order[k] % (uint32_t)labels->width), (int)(order[k] / (uint32_t)labels->width));
+        resolve(&f);
+        status = join_small(work, &f, min_pixels, error);
+    }
+    if (status == UF_OK)
+        status = renumber(work, &f, min_pixels, max_pixels, error);
+    labels->count = f.labels.count;
+    uf_arena_back(&work->arena, mark);
+    return status;
+}
