@@ -19,4 +19,12 @@ void uf_sort(double *values, size_t count);
  * Fruehwirth 2006, Comput. Stat. Data Anal. 50:3500). Sorted values in, NaN for none. */
 double uf_half_sample_mode(const double *sorted, size_t count);
 
+/* Moves the k-th smallest (from 0) of `count` floats to values[k], smaller ones before it and larger ones after
+ * (Hoare 1961, Commun. ACM 4:321), in linear time on average. No NaN. Returns it. */
+float uf_select(float *values, size_t count, size_t k);
+
+/* Quantiles at ascending q[0 .. n-1] of `count` floats out of `total`, the missing ones counting as larger than
+ * all: as uf_sorted_quantile over all `total`; NaN where the answer lies among the missing. Reorders values. */
+void uf_quantiles(float *values, size_t count, size_t total, const double *q, double *out, int n);
+
 #endif

@@ -43,4 +43,24 @@ typedef struct uf_cell_map {
     uf_plane outside_px;   /* coarse: distance from the nearest cell in image pixels, 0 inside */
 } uf_cell_map;
 
+/* What is known of one pixel's gap. */
+typedef enum uf_gap_state {
+    UF_GAP_OUTSIDE,    /* not in a cell */
+    UF_GAP_RESOLVED,
+    UF_GAP_UNRESOLVED  /* near or wide too weak: the gap is at least what the map holds */
+} uf_gap_state;
+
+typedef struct uf_gap_map {
+    uf_plane gap_nm;    /* signed; the detection limit where unresolved; NaN outside cells */
+    uf_mask state;      /* uf_gap_state */
+    uf_plane near_adu;  /* near signal, background subtracted */
+    uf_plane dye_adu;   /* wide signal that stands for dye density: background subtracted, the fall of the wide
+                           blur towards outlines taken out */
+    uf_plane smooth_gap_nm; /* at the scale of the point spread function, for spots; UF_GAP_NOWHERE outside */
+} uf_gap_map;
+
+/* Value of smooth_gap_nm where there is no gap: lower than any gap, so that an outside neighbour never
+ * counts as a higher surrounding. */
+#define UF_GAP_NOWHERE (-1e6f)
+
 #endif

@@ -2,13 +2,13 @@
 #include <math.h>
 #include <string.h>
 
+#include "image/basins.h"
 #include "image/components.h"
 #include "image/distance.h"
 #include "image/kernels.h"
 #include "image/smooth.h"
 #include "segment/levels.h"
 #include "segment/segment.h"
-#include "segment/split.h"
 
 /* ---- cut at the middle of the two levels -------------------------------------------------------------- */
 
@@ -57,7 +57,7 @@ static void cut_rows(void *context, int y0, int y1)
     }
 }
 
-/* Middle of plateau and outside, nowhere below what can be a cell. */
+/* Middle of plateau and outside: never below what can be a cell (uf_levels_find sees to it). */
 static uf_status middle_level(uf_work *work, const uf_cell_map *map, uf_plane *level, uf_error *error)
 {
     uf_status status = uf_plane_take(work, map->plateau_adu.width, map->plateau_adu.height, level, error);
@@ -108,7 +108,7 @@ static uf_status find_labels(uf_work *work, const uf_settings *settings, double 
     if (status == UF_OK)
         status = uf_distance(work, map->labels, 1, map->distance_px, error);
     if (status == UF_OK)
-        status = uf_split(work, map->distance_px, neck_of_setting(settings->cells.split), min_pixels, max_pixels,
+        status = uf_basins(work, map->distance_px, neck_of_setting(settings->cells.split), min_pixels, max_pixels,
                           &map->labels, error);
     return status;
 }

@@ -209,6 +209,19 @@ static uf_status take_planes(levels *l, int width, int height, uf_error *error)
     return status;
 }
 
+/* Raises the plateau where the middle of the two levels lies below what can be a cell. */
+static void hold_floor(const levels *l, uf_cell_map *map)
+{
+    for (int y = 0; y < map->plateau_adu.height; y++) {
+        float *inside = uf_plane_row(map->plateau_adu, y);
+        const float *outside = uf_plane_row(map->outside_adu, y);
+        for (int x = 0; x < map->plateau_adu.width; x++) {
+            float least = 2.0f * (float)l->floor - outside[x];
+            inside[x] = inside[x] > least ? inside[x] : least;
+        }
+    }
+}
+
 static int coarse_size(int pixels, int factor)
 {
     return (pixels + factor - 1) / factor;
@@ -236,6 +249,8 @@ uf_status uf_levels_find(uf_work *work, const uf_channel *wide, double pixel_siz
         status = rough_level(&l, error);
     for (int round = 0; status == UF_OK && round < ROUNDS; round++)
         status = one_round(&l, map, error);
+    if (status == UF_OK)
+        hold_floor(&l, map);
     uf_arena_back(&work->arena, mark);
     return status;
 }

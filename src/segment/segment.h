@@ -12,7 +12,7 @@
  * A cell ends where its image falls to half of its own level just inside, over the local level just outside:
  * blur, however wide, leaves that place alone, while one threshold for all puts bright cells' outlines too
  * far out. Both levels are mapped on a coarse grid (segment/levels.c), the image is cut at their middle,
- * holes are filled, touching cells are split at their necks (segment/split.c), debris is dropped.
+ * holes are filled, touching cells are split at their necks (image/basins.h), debris is dropped.
  *
  * Fills `map`: labels 1 .. count in the order of their first pixel, row by row. Errors: UF_MEMORY.
  */

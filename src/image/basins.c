@@ -1,12 +1,12 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
-#include "segment/split.h"
+#include "image/basins.h"
 
 #include <string.h>
 
 #include "image/components.h"
 
-/* Depths are sorted into steps of a quarter pixel, row by row within a step. */
-enum { STEPS_PER_PX = 4, MOST_STEPS = 1 << 16 };
+/* Depths are sorted into steps of a quarter, row by row within a step. */
+enum { STEPS_PER_UNIT = 4, MOST_STEPS = 1 << 16 };
 
 typedef struct basin {
     int parent;
@@ -14,7 +14,7 @@ typedef struct basin {
 } basin;
 
 typedef struct flood {
-    uf_plane distance;
+    uf_plane depth;
     uf_labels labels;
     basin *basins; /* 1 .. count */
     int count;
@@ -32,28 +32,28 @@ static int root_of(basin *basins, int k)
 
 /* ---- order of the flood ---------------------------------------------------------------------------------- */
 
-static int step_of(float distance)
+static int step_of(float depth)
 {
-    float step = distance * STEPS_PER_PX;
+    float step = depth * STEPS_PER_UNIT;
     return step < (float)(MOST_STEPS - 1) ? (int)step : MOST_STEPS - 1;
 }
 
 /* Counting sort of the foreground pixels (y * width + x), deepest step first. Returns how many. */
-static size_t sort_pixels(uf_plane distance, uf_labels labels, size_t *place, uint32_t *order)
+static size_t sort_pixels(uf_plane depth, uf_labels labels, size_t *place, uint32_t *order)
 {
     memset(place, 0, (MOST_STEPS + 1) * sizeof *place);
-    for (int y = 0; y < distance.height; y++)
-        for (int x = 0; x < distance.width; x++)
+    for (int y = 0; y < depth.height; y++)
+        for (int x = 0; x < depth.width; x++)
             if (uf_labels_row(labels, y)[x])
-                place[MOST_STEPS - step_of(uf_plane_row(distance, y)[x])]++;
+                place[MOST_STEPS - step_of(uf_plane_row(depth, y)[x])]++;
     for (int k = 1; k <= MOST_STEPS; k++)
         place[k] += place[k - 1];
     size_t count = place[MOST_STEPS];
-    for (int y = 0; y < distance.height; y++)
-        for (int x = 0; x < distance.width; x++)
+    for (int y = 0; y < depth.height; y++)
+        for (int x = 0; x < depth.width; x++)
             if (uf_labels_row(labels, y)[x]) {
-                int step = MOST_STEPS - step_of(uf_plane_row(distance, y)[x]);
-                order[place[step - 1]++] = (uint32_t)y * (uint32_t)distance.width + (uint32_t)x;
+                int step = MOST_STEPS - step_of(uf_plane_row(depth, y)[x]);
+                order[place[step - 1]++] = (uint32_t)y * (uint32_t)depth.width + (uint32_t)x;
             }
     return count;
 }
@@ -89,7 +89,7 @@ static int is_one_cell(const flood *f, int a, int b, float saddle)
 static void flood_pixel(flood *f, int x, int y)
 {
     int roots[8], count = roots_around(f, x, y, roots);
-    float here = uf_plane_row(f->distance, y)[x];
+    float here = uf_plane_row(f->depth, y)[x];
     if (!count) {
         int fresh = ++f->count;
         f->basins[fresh] = (basin){fresh, here};
@@ -161,11 +161,11 @@ static uf_status join_small(uf_work *work, flood *f, double min_pixels, uf_error
     int64_t *areas;
     uf_box *boxes;
     int *borders;
-    uf_status status = uf_take(work, places, sizeof *areas, "segmentation", &areas, error);
+    uf_status status = uf_take(work, places, sizeof *areas, "basins", &areas, error);
     if (status == UF_OK)
-        status = uf_take(work, places, sizeof *boxes, "segmentation", &boxes, error);
+        status = uf_take(work, places, sizeof *boxes, "basins", &boxes, error);
     if (status == UF_OK)
-        status = uf_take(work, places, sizeof *borders, "segmentation", &borders, error);
+        status = uf_take(work, places, sizeof *borders, "basins", &borders, error);
     if (status != UF_OK)
         return status;
     memset(borders, 0, places * sizeof *borders);
@@ -193,9 +193,9 @@ static uf_status renumber(uf_work *work, flood *f, double min_pixels, double max
     size_t places = (size_t)f->count + 1;
     int64_t *areas;
     int32_t *number;
-    uf_status status = uf_take(work, places, sizeof *areas, "segmentation", &areas, error);
+    uf_status status = uf_take(work, places, sizeof *areas, "basins", &areas, error);
     if (status == UF_OK)
-        status = uf_take(work, places, sizeof *number, "segmentation", &number, error);
+        status = uf_take(work, places, sizeof *number, "basins", &number, error);
     if (status != UF_OK)
         return status;
     uf_label_areas(f->labels, areas);
@@ -216,22 +216,22 @@ static uf_status renumber(uf_work *work, flood *f, double min_pixels, double max
     return UF_OK;
 }
 
-uf_status uf_split(uf_work *work, uf_plane distance_px, double neck, double min_pixels, double max_pixels,
+uf_status uf_basins(uf_work *work, uf_plane depth, double neck, double min_pixels, double max_pixels,
                    uf_labels *labels, uf_error *error)
 {
     uf_arena_mark mark = uf_arena_now(&work->arena);
     size_t pixels = (size_t)labels->width * (size_t)labels->height;
-    flood f = {.distance = distance_px, .labels = *labels, .neck = (float)neck};
+    flood f = {.depth = depth, .labels = *labels, .neck = (float)neck};
     size_t *place;
     uint32_t *order;
-    uf_status status = uf_take(work, MOST_STEPS + 1, sizeof *place, "segmentation", &place, error);
+    uf_status status = uf_take(work, MOST_STEPS + 1, sizeof *place, "basins", &place, error);
     if (status == UF_OK)
-        status = uf_take(work, pixels, sizeof *order, "segmentation", &order, error);
+        status = uf_take(work, pixels, sizeof *order, "basins", &order, error);
     if (status == UF_OK)
         /* A cell starts at a local maximum, so at most every second pixel of every second row. */
-        status = uf_take(work, pixels / 2 + 2, sizeof *f.basins, "segmentation", &f.basins, error);
+        status = uf_take(work, pixels / 2 + 2, sizeof *f.basins, "basins", &f.basins, error);
     if (status == UF_OK) {
-        size_t count = sort_pixels(distance_px, *labels, place, order);
+        size_t count = sort_pixels(depth, *labels, place, order);
         for (int y = 0; y < labels->height; y++)
             memset(uf_labels_row(*labels, y), 0, (size_t)labels->width * sizeof(int32_t));
         for (size_t k = 0; k < count; k++)

@@ -1,0 +1,127 @@
+/* SPDX-License-Identifier: GPL-3.0-or-later */
+#include "gap/gap.h"
+
+#include <math.h>
+
+#include "gap/edge_fall.h"
+#include "base/text.h"
+#include "image/smooth.h"
+#include "optics/detection.h"
+
+typedef struct gap_job {
+    const uf_kernels *kernels;
+    const uf_plan *plan;
+    const uf_channel *near, *wide;
+    const uf_cell_map *cells;
+    uf_gap_map *map;
+    uf_edge_fall fall;
+    uf_plane near_smooth, dye_smooth;
+    float ln_reference;
+    double detection_sigma;
+} gap_job;
+
+/* ---- signals ------------------------------------------------------------------------------------------- */
+
+static void signal_rows(void *context, int y0, int y1)
+{
+    gap_job *job = context;
+    float near_background = (float)job->near->background_adu, wide_background = (float)job->wide->background_adu;
+    int width = job->near->image.width;
+    for (int y = y0; y < y1; y++) {
+        const float *near = uf_plane_row(job->near->image, y), *wide = uf_plane_row(job->wide->image, y);
+        const float *distance = uf_plane_row(job->cells->to_background_px, y);
+        const int32_t *labels = uf_labels_row(job->cells->labels, y);
+        float *near_out = uf_plane_row(job->map->near_adu, y), *dye = uf_plane_row(job->map->dye_adu, y);
+        for (int x = 0; x < width; x++) {
+            near_out[x] = near[x] - near_background;
+            dye[x] = wide[x] - wide_background;
+            if (labels[x])
+                dye[x] /= uf_edge_fall_at(&job->fall, distance[x]);
+        }
+    }
+}
+
+/* ---- gaps ------------------------------------------------------------------------------------------------ */
+
+/* An unresolved pixel's gap is at least where its near signal would just be detected. */
+static float limit_at(const gap_job *job, float dye)
+{
+    return (float)uf_gap_limit_nm(job->plan, job->detection_sigma, job->near, job->wide, (double)dye);
+}
+
+static void judge_row(gap_job *job, int y)
+{
+    const int32_t *labels = uf_labels_row(job->cells->labels, y);
+    const float *near = uf_plane_row(job->near_smooth, y), *dye = uf_plane_row(job->dye_smooth, y);
+    float *gap = uf_plane_row(job->map->gap_nm, y), *smooth = uf_plane_row(job->map->smooth_gap_nm, y);
+    uint8_t *state = uf_mask_row(job->map->state, y);
+    double sigma = job->detection_sigma;
+    float near_least = (float)(sigma * uf_smoothed_sd(job->plan, job->near, 0));
+    float wide_least = (float)(sigma * uf_smoothed_sd(job->plan, job->wide, 0));
+    for (int x = 0; x < job->cells->labels.width; x++) {
+        if (!labels[x]) {
+            gap[x] = NAN;
+            smooth[x] = UF_GAP_NOWHERE;
+            state[x] = UF_GAP_OUTSIDE;
+            continue;
+        }
+        int seen = near[x] > near_least && dye[x] > wide_least;
+        state[x] = seen ? UF_GAP_RESOLVED : UF_GAP_UNRESOLVED;
+        float limit = seen ? 0.0f : limit_at(job, dye[x]);
+        /* A resolved place may still hold a single dark pixel without a logarithm: it takes its surroundings. */
+        gap[x] = !seen ? limit : isnan(gap[x]) ? smooth[x] : gap[x];
+        smooth[x] = !seen ? limit : smooth[x];
+    }
+}
+
+static void gap_rows(void *context, int y0, int y1)
+{
+    gap_job *job = context;
+    const uf_gap_lookup *lookup = &job->plan->decay.lookup;
+    int width = job->cells->labels.width;
+    for (int y = y0; y < y1; y++) {
+        job->kernels->gap(uf_plane_row(job->map->gap_nm, y), uf_plane_row(job->map->near_adu, y),
+                          uf_plane_row(job->map->dye_adu, y), job->ln_reference, lookup, width);
+        job->kernels->gap(uf_plane_row(job->map->smooth_gap_nm, y), uf_plane_row(job->near_smooth, y),
+                          uf_plane_row(job->dye_smooth, y), job->ln_reference, lookup, width);
+        judge_row(job, y);
+    }
+}
+
+/* ---- all of it ------------------------------------------------------------------------------------------- */
+
+static uf_status take_map(uf_work *work, int width, int height, uf_gap_map *map, uf_error *error)
+{
+    uf_plane *planes[] = {&map->gap_nm, &map->near_adu, &map->dye_adu, &map->smooth_gap_nm};
+    uf_status status = uf_mask_take(work, width, height, &map->state, error);
+    for (size_t k = 0; status == UF_OK && k < sizeof planes / sizeof planes[0]; k++)
+        status = uf_plane_take(work, width, height, planes[k], error);
+    return status;
+}
+
+uf_status uf_gap_find(uf_work *work, const uf_plan *plan, double detection_sigma, const uf_channel *near,
+                      const uf_channel *wide, const uf_cell_map *cells, uf_gap_map *map, uf_error *error)
+{
+    int width = near->image.width, height = near->image.height;
+    double psf_px = plan->psf_sigma_um / plan->pixel_size_um;
+    gap_job job = {.kernels = uf_kernels_in_use(), .plan = plan, .near = near, .wide = wide, .cells = cells,
+                   .map = map, .detection_sigma = detection_sigma};
+    job.ln_reference = (float)uf_round_digits(log(plan->reference_ratio), 12);
+    uf_status status = take_map(work, width, height, map, error);
+    if (status != UF_OK)
+        return status;
+    uf_edge_fall_measure(wide, cells, plan->pixel_size_um, psf_px, &job.fall);
+    uf_rows_run(work, height, signal_rows, &job);
+    uf_arena_mark mark = uf_arena_now(&work->arena);
+    status = uf_plane_take(work, width, height, &job.near_smooth, error);
+    if (status == UF_OK)
+        status = uf_plane_take(work, width, height, &job.dye_smooth, error);
+    if (status == UF_OK)
+        status = uf_smooth(work, map->near_adu, psf_px, job.near_smooth, error);
+    if (status == UF_OK)
+        status = uf_smooth(work, map->dye_adu, psf_px, job.dye_smooth, error);
+    if (status == UF_OK)
+        uf_rows_run(work, height, gap_rows, &job);
+    uf_arena_back(&work->arena, mark);
+    return status;
+}

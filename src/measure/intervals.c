@@ -1,0 +1,87 @@
+/* SPDX-License-Identifier: GPL-3.0-or-later */
+#include "measure/intervals.h"
+
+#include <math.h>
+
+#include "optics/detection.h"
+
+static const double two_sided_95 = 1.959963984540054;
+static const double outline_sd_um = 0.03;
+
+double uf_area_under(const uf_cell *row, double gap_nm)
+{
+    double at = (gap_nm - UF_GAP_HISTOGRAM_FROM_NM) / UF_GAP_BIN_NM, sum = 0;
+    for (int k = 0; k < UF_GAP_BINS && k < at; k++)
+        sum += k + 1 <= at ? (double)row->gap_histogram[k] : (double)row->gap_histogram[k] * (at - k);
+    return sum;
+}
+
+/* The near signal that a gap stands for in a cell of this mean dye. */
+static double near_at(const uf_plan *plan, double gap_nm, double dye_adu)
+{
+    return dye_adu * plan->reference_ratio * exp(uf_decay_ln(&plan->decay, gap_nm));
+}
+
+/* 1 sigma that both backgrounds' uncertainties move a gap by. */
+static double background_part(const uf_measure_input *in, const uf_cell *row, double gap_nm)
+{
+    double dye = row->wide_mean_adu, near = near_at(in->plan, gap_nm, dye);
+    if (!(dye > 0) || !(near > 0))
+        return 0;
+    return uf_gap_per_ln(in->plan, gap_nm) *
+           hypot(in->near->background_sd_adu / near, in->wide->background_sd_adu / dye);
+}
+
+static double systematic_part(const uf_plan *plan, double gap_nm)
+{
+    double ratio = uf_gap_per_ln(plan, gap_nm) * hypot(plan->reference_sd, plan->normalisation_sd);
+    double depth = fabs(gap_nm - plan->reference_gap_nm) * plan->depth_sd_nm / plan->depth_nm;
+    return hypot(ratio, depth);
+}
+
+static void fill_gap_sds(const uf_measure_input *in, uf_cell *row)
+{
+    double gap = row->gap_median_nm, px = in->plan->pixel_size_um;
+    row->gap_random_nm = row->gap_systematic_nm = (double)NAN;
+    if (isnan(gap))
+        return;
+    double pixels = row->spread_area_um2 / (px * px);
+    double near = near_at(in->plan, gap, row->wide_mean_adu);
+    double noise = uf_gap_noise_nm(in->plan, in->near, in->wide, near, row->wide_mean_adu);
+    double median_part = isnan(noise) ? 0 : 1.2533 * noise / sqrt(pixels);
+    row->gap_random_nm = hypot(median_part, background_part(in, row, gap));
+    row->gap_systematic_nm = systematic_part(in->plan, gap);
+}
+
+/* Pixels within a noise sigma of the cutoff fall to either side by chance: their number's standard deviation.
+ * The variance of a sum of coin tosses over a band of even density n a nm and normal noise s is n s / sqrt pi. */
+static double chance_pixels(const uf_measure_input *in, const uf_cell *row, double cutoff)
+{
+    double near = near_at(in->plan, cutoff, row->wide_mean_adu);
+    double noise = uf_gap_noise_nm(in->plan, in->near, in->wide, near, row->wide_mean_adu);
+    double density = (uf_area_under(row, cutoff + 2) - uf_area_under(row, cutoff - 2)) / 4;
+    return isnan(noise) ? 0 : sqrt(density * noise / 1.7724538509055159);
+}
+
+void uf_fill_intervals(const uf_measure_input *in, uf_cell *row)
+{
+    double cutoff = in->settings->contact.cutoff_nm, um2 = in->plan->pixel_size_um * in->plan->pixel_size_um;
+    fill_gap_sds(in, row);
+    row->contact_area_low_um2 = row->contact_area_high_um2 = (double)NAN;
+    row->attachment_fraction_low = row->attachment_fraction_high = (double)NAN;
+    if (isnan(row->contact_area_um2))
+        return;
+    double moved = two_sided_95 * hypot(systematic_part(in->plan, cutoff), background_part(in, row, cutoff));
+    double at = uf_area_under(row, cutoff);
+    double below = (at - uf_area_under(row, cutoff - moved)) * um2;
+    double above = (uf_area_under(row, cutoff + moved) - at) * um2;
+    double chance = two_sided_95 * chance_pixels(in, row, cutoff) * um2;
+    double edge_area = two_sided_95 * outline_sd_um * row->perimeter_um;
+    double outline = edge_area * row->attachment_fraction;
+    double other = hypot(chance, outline);
+    double area = row->spread_area_um2, contact = row->contact_area_um2;
+    row->contact_area_low_um2 = fmax(0, contact - hypot(below, other));
+    row->contact_area_high_um2 = fmin(area + edge_area, contact + hypot(above, other));
+    row->attachment_fraction_low = fmax(0, (contact - hypot(below, other)) / area);
+    row->attachment_fraction_high = fmin(1, (contact + hypot(above, other)) / area);
+}

@@ -1,0 +1,351 @@
+/* SPDX-License-Identifier: GPL-3.0-or-later */
+/*
+ * Focal spots: compact minima of the gap against their own surroundings, on both sides of them.
+ *
+ * At each pixel the gap (at the scale of the point spread function) is compared with the gap at a distance
+ * either way along a line, and the higher of the two contrasts is not enough: the lower one counts. Over
+ * eight directions the best is kept. So the rim of a wide patch, which is low on one side, has none; a dip
+ * inside a patch has one; a long spot has one across its length. The map of this contrast is cut at a level
+ * above the noise, its pieces are parted at saddles (image/basins.h), and each part is a spot with the
+ * region of at least half its largest contrast.
+ */
+#include <math.h>
+#include <stdlib.h>
+#include <string.h>
+
+#include "fit/robust.h"
+#include "image/basins.h"
+#include "image/components.h"
+#include "image/kernels.h"
+#include "measure/measure.h"
+#include "measure/shape.h"
+#include "optics/detection.h"
+
+/* Distances at which surroundings are looked at: a spot is up to about this wide on either side. */
+static const double reaches_um[] = {0.45, 0.7};
+enum { REACHES = 2, DIRECTIONS = 8 };
+
+/* Two maxima of contrast are one spot when the saddle between them reaches this share of the lower one. */
+static const double one_spot_saddle = 0.6;
+
+/* Natural unevenness of a membrane reaches some nm of contrast; a spot must stand out of it. */
+static const double least_contrast_nm = 7.0;
+
+/* ---- contrast -------------------------------------------------------------------------------------------- */
+
+typedef struct offset {
+    int dx, dy;
+} offset;
+
+typedef struct contrast_job {
+    const uf_kernels *kernels;
+    uf_plane gap, contrast;
+    offset offsets[REACHES * DIRECTIONS];
+    int count;
+} contrast_job;
+
+static void make_offsets(contrast_job *job, double pixel_size_um)
+{
+    for (int r = 0; r < REACHES; r++)
+        for (int k = 0; k < DIRECTIONS; k++) {
+            double angle = 3.14159265358979323846 * k / DIRECTIONS, px = reaches_um[r] / pixel_size_um;
+            px = px < 1 ? 1 : px;
+            job->offsets[job->count++] = (offset){(int)lround(px * cos(angle)), (int)lround(px * sin(angle))};
+        }
+}
+
+static void contrast_rows(void *context, int y0, int y1)
+{
+    contrast_job *job = context;
+    int width = job->gap.width, height = job->gap.height;
+    for (int y = y0; y < y1; y++) {
+        float *best = uf_plane_row(job->contrast, y);
+        const float *here = uf_plane_row(job->gap, y);
+        for (int x = 0; x < width; x++)
+            best[x] = 0.0f;
+        for (int k = 0; k < job->count; k++) {
+            int dx = job->offsets[k].dx, dy = job->offsets[k].dy, reach = abs(dx), n = width - 2 * reach;
+            if (y - dy < 0 || y + dy >= height || n <= 0)
+                continue;
+            job->kernels->two_sided(best + reach, here + reach, uf_plane_row(job->gap, y - dy) + reach - dx,
+                                    uf_plane_row(job->gap, y + dy) + reach + dx, n);
+        }
+    }
+}
+
+/* ---- cut ---------------------------------------------------------------------------------------------------- */
+
+/* Contrast that noise alone does not reach in this cell, by gap: the noise grows with the gap. */
+static double needed_contrast(const uf_measure_input *in, const uf_cell *row, double gap_nm)
+{
+    double dye = row->wide_mean_adu;
+    double near = dye * in->plan->reference_ratio * exp(uf_decay_ln(&in->plan->decay, gap_nm));
+    double noise = uf_gap_noise_nm(in->plan, in->near, in->wide, near, dye) * sqrt(uf_psf_smoothing(in->plan));
+    double by_noise = in->settings->spots.contrast_sigma * noise;
+    return by_noise > least_contrast_nm || isnan(by_noise) ? by_noise : least_contrast_nm;
+}
+
+enum { GAP_STEPS = 64, GAP_STEP_NM = 8 };
+
+/* needed_contrast of one cell as a small table over gaps from 0 in steps of GAP_STEP_NM. */
+static void tabulate_needed(const uf_measure_input *in, const uf_cell *row, float *needed)
+{
+    for (int k = 0; k < GAP_STEPS; k++) {
+        double value = needed_contrast(in, row, k * GAP_STEP_NM);
+        needed[k] = isnan(value) ? INFINITY : (float)value;
+    }
+}
+
+static float needed_at(const float *needed, float gap)
+{
+    int k = gap < 0.0f ? 0 : (int)(gap / (float)GAP_STEP_NM);
+    return needed[k < GAP_STEPS ? k : GAP_STEPS - 1];
+}
+
+/* Contrast counts from half of what a spot's top must reach. */
+static void cut_contrast(const uf_measure_input *in, uf_plane contrast, const float *needed, uf_mask mask)
+{
+    for (int y = 0; y < contrast.height; y++) {
+        const int32_t *labels = uf_labels_row(in->cells->labels, y);
+        const uint8_t *state = uf_mask_row(in->gaps->state, y);
+        const float *gap = uf_plane_row(in->gaps->smooth_gap_nm, y);
+        float *row = uf_plane_row(contrast, y);
+        uint8_t *out = uf_mask_row(mask, y);
+        for (int x = 0; x < contrast.width; x++) {
+            out[x] = labels[x] && state[x] == UF_GAP_RESOLVED &&
+                     row[x] >= 0.5f * needed_at(needed + (size_t)labels[x] * GAP_STEPS, gap[x]);
+            if (!out[x])
+                row[x] = 0.0f;
+        }
+    }
+}
+
+/* ---- spots --------------------------------------------------------------------------------------------------- */
+
+/* Sums over one basin: first its top, then the region at half the top. */
+typedef struct spot_sums {
+    float top, least_gap, near_peak;
+    int cell;
+    int top_x, top_y;
+    double weight, x, y;           /* weighted by contrast */
+    double area, ux, uy, xx, yy, xy; /* of the region, unweighted, about the top */
+} spot_sums;
+
+static void find_tops(const uf_measure_input *in, uf_plane contrast, uf_labels basins, spot_sums *sums)
+{
+    for (int k = 0; k <= basins.count; k++)
+        sums[k] = (spot_sums){.least_gap = INFINITY, .near_peak = -INFINITY};
+    for (int y = 0; y < basins.height; y++) {
+        const int32_t *row = uf_labels_row(basins, y);
+        for (int x = 0; x < basins.width; x++) {
+            if (!row[x] || uf_plane_row(contrast, y)[x] <= sums[row[x]].top)
+                continue;
+            spot_sums *s = &sums[row[x]];
+            s->top = uf_plane_row(contrast, y)[x];
+            s->cell = uf_labels_row(in->cells->labels, y)[x];
+            s->top_x = x;
+            s->top_y = y;
+        }
+    }
+}
+
+static void sum_regions(const uf_measure_input *in, uf_plane contrast, uf_labels basins, spot_sums *sums)
+{
+    for (int y = 0; y < basins.height; y++) {
+        const int32_t *row = uf_labels_row(basins, y);
+        for (int x = 0; x < basins.width; x++) {
+            spot_sums *s = &sums[row[x]];
+            float c = uf_plane_row(contrast, y)[x];
+            if (!row[x] || c < 0.5f * s->top || uf_labels_row(in->cells->labels, y)[x] != s->cell)
+                continue;
+            double dx = x - s->top_x, dy = y - s->top_y;
+            s->weight += (double)c;
+            s->x += (double)c * dx;
+            s->y += (double)c * dy;
+            s->area++;
+            s->ux += dx;
+            s->uy += dy;
+            s->xx += dx * dx;
+            s->yy += dy * dy;
+            s->xy += dx * dy;
+            float gap = uf_plane_row(in->gaps->smooth_gap_nm, y)[x], near = uf_plane_row(in->gaps->near_adu, y)[x];
+            s->least_gap = gap < s->least_gap ? gap : s->least_gap;
+            s->near_peak = near > s->near_peak ? near : s->near_peak;
+        }
+    }
+}
+
+static int is_spot(const uf_measure_input *in, const spot_sums *s, const float *needed, const uf_spot *spot)
+{
+    const uf_settings *settings = in->settings;
+    return s->cell && s->top >= needed_at(needed + (size_t)s->cell * GAP_STEPS, s->least_gap) &&
+           spot->length_um >= settings->spots.min_length_um && spot->length_um <= settings->spots.max_length_um &&
+           (double)s->least_gap <= settings->contact.cutoff_nm;
+}
+
+static uf_spot make_spot(const uf_measure_input *in, const spot_sums *s)
+{
+    double px = in->plan->pixel_size_um, mx = s->ux / s->area, my = s->uy / s->area;
+    uf_shape shape;
+    uf_shape_ellipse(s->xx / s->area - mx * mx + 1.0 / 12, s->yy / s->area - my * my + 1.0 / 12,
+                     s->xy / s->area - mx * my, &shape);
+    uf_spot spot = {.cell = s->cell, .x_px = s->top_x + s->x / s->weight, .y_px = s->top_y + s->y / s->weight};
+    spot.x_um = spot.x_px * px;
+    spot.y_um = spot.y_px * px;
+    spot.area_um2 = s->area * px * px;
+    spot.length_um = shape.axis_long_px * px;
+    spot.width_um = shape.axis_short_px * px;
+    spot.orientation_deg = shape.orientation_deg;
+    spot.gap_nm = (double)s->least_gap;
+    spot.contrast_nm = (double)s->top;
+    spot.near_peak_adu = (double)s->near_peak;
+    int x = (int)lround(spot.x_px), y = (int)lround(spot.y_px);
+    spot.rim_distance_um = fmax(0, ((double)uf_plane_row(in->cells->distance_px, y)[x] - 0.5)) * px;
+    return spot;
+}
+
+static int by_cell(const void *a, const void *b)
+{
+    const uf_spot *s = a, *t = b;
+    if (s->cell != t->cell)
+        return s->cell < t->cell ? -1 : 1;
+    if (s->y_px != t->y_px)
+        return s->y_px < t->y_px ? -1 : 1;
+    return (s->x_px > t->x_px) - (s->x_px < t->x_px);
+}
+
+/* ---- the cells' columns ---------------------------------------------------------------------------------------- */
+
+/* Length of the mean vector of doubled angles, with the part that chance gives taken out: for n random
+ * directions the square of the length is 1/n on average, so sqrt((n R^2 - 1)/(n - 1)), 0 when negative. */
+static double alignment(const uf_spot *spots, int count)
+{
+    if (count < 5)
+        return (double)NAN;
+    double c = 0, s = 0, n = count;
+    for (int k = 0; k < count; k++) {
+        double doubled = spots[k].orientation_deg * 3.14159265358979323846 / 90.0;
+        c += cos(doubled);
+        s += sin(doubled);
+    }
+    double corrected = ((c * c + s * s) / n - 1) / (n - 1);
+    return corrected > 0 ? sqrt(corrected) : 0;
+}
+
+static void fill_cell(uf_cell *row, uf_spot *spots, int count, double *scratch)
+{
+    double area = 0;
+    row->spot_count = count;
+    row->spots_per_100um2 = 100 * count / row->spread_area_um2;
+    for (int k = 0; k < count; k++) {
+        spots[k].spot = k + 1;
+        area += spots[k].area_um2;
+        scratch[k] = spots[k].area_um2;
+    }
+    row->spot_area_total_um2 = area;
+    row->spot_area_median_um2 = uf_median(scratch, (size_t)count);
+    for (int k = 0; k < count; k++)
+        scratch[k] = spots[k].length_um;
+    row->spot_length_median_um = uf_median(scratch, (size_t)count);
+    row->spot_alignment = alignment(spots, count);
+}
+
+static uf_status fill_cells(uf_work *work, uf_cell *rows, int cells, uf_spot *spots, int count, uf_error *error)
+{
+    double *scratch;
+    uf_status status = uf_take(work, (size_t)count + 1, sizeof *scratch, "spots", &scratch, error);
+    if (status != UF_OK)
+        return status;
+    for (int k = 0, from = 0; k < cells; k++) {
+        int to = from;
+        while (to < count && spots[to].cell == rows[k].cell)
+            to++;
+        fill_cell(&rows[k], spots + from, to - from, scratch);
+        from = to;
+    }
+    return UF_OK;
+}
+
+/* ---- all of it -------------------------------------------------------------------------------------------------- */
+
+/* Contrast, cut and parted into basins. `needed` has a table for each cell. */
+static uf_status find_basins(uf_work *work, const uf_measure_input *in, const float *needed, uf_plane contrast,
+                             uf_labels *basins, uf_error *error)
+{
+    uf_mask mask;
+    contrast_job job = {.kernels = uf_kernels_in_use(), .gap = in->gaps->smooth_gap_nm, .contrast = contrast};
+    make_offsets(&job, in->plan->pixel_size_um);
+    uf_rows_run(work, contrast.height, contrast_rows, &job);
+    uf_status status = uf_mask_take(work, contrast.width, contrast.height, &mask, error);
+    if (status == UF_OK) {
+        cut_contrast(in, contrast, needed, mask);
+        status = uf_components(work, mask, UF_EIGHT_NEIGHBOURS, basins, error);
+    }
+    return status == UF_OK ? uf_basins(work, contrast, one_spot_saddle, 1, 1e9, basins, error) : status;
+}
+
+static int collect(const uf_measure_input *in, const float *needed, const spot_sums *sums, int basins, uf_spot *spots)
+{
+    int count = 0;
+    for (int k = 1; k <= basins; k++) {
+        if (!(sums[k].area > 0))
+            continue;
+        uf_spot spot = make_spot(in, &sums[k]);
+        if (is_spot(in, &sums[k], needed, &spot))
+            spots[count++] = spot;
+    }
+    qsort(spots, (size_t)count, sizeof *spots, by_cell);
+    return count;
+}
+
+static uf_status find_spots(uf_work *work, const uf_measure_input *in, const uf_cell *rows, uf_plane contrast,
+                            uf_labels *basins, uf_spot **spots, int *count, uf_error *error)
+{
+    int cells = in->cells->labels.count;
+    float *needed;
+    spot_sums *sums;
+    uf_status status = uf_take(work, ((size_t)cells + 1) * GAP_STEPS, sizeof *needed, "spots", &needed, error);
+    for (int k = 1; status == UF_OK && k <= cells; k++)
+        tabulate_needed(in, &rows[k - 1], needed + (size_t)k * GAP_STEPS);
+    if (status == UF_OK)
+        status = find_basins(work, in, needed, contrast, basins, error);
+    if (status == UF_OK)
+        status = uf_take(work, (size_t)basins->count + 1, sizeof *sums, "spots", &sums, error);
+    if (status == UF_OK)
+        status = uf_take(work, (size_t)basins->count + 1, sizeof **spots, "spots", spots, error);
+    if (status != UF_OK)
+        return status;
+    find_tops(in, contrast, *basins, sums);
+    sum_regions(in, contrast, *basins, sums);
+    *count = collect(in, needed, sums, basins->count, *spots);
+    return UF_OK;
+}
+
+uf_status uf_measure_spots(uf_work *work, const uf_measure_input *input, uf_cell *rows, uf_spot **spots, int *count,
+                           uf_error *error)
+{
+    int width = input->near->image.width, height = input->near->image.height;
+    uf_plane contrast;
+    uf_labels basins;
+    *count = 0;
+    *spots = NULL;
+    /* The list is found below scratch and copied once its length is known, so that it costs what it holds. */
+    uf_arena_mark mark = uf_arena_now(&work->arena);
+    uf_spot *found = NULL, *kept = NULL;
+    uf_status status = uf_plane_take(work, width, height, &contrast, error);
+    if (status == UF_OK)
+        status = uf_labels_take(work, width, height, &basins, error);
+    if (status == UF_OK)
+        status = find_spots(work, input, rows, contrast, &basins, &found, count, error);
+    if (status == UF_OK)
+        status = fill_cells(work, rows, input->cells->labels.count, found, *count, error);
+    if (status == UF_OK) {
+        uf_arena_back(&work->arena, mark);
+        status = uf_take(work, (size_t)*count + 1, sizeof *kept, "spots", &kept, error);
+    }
+    if (status == UF_OK) {
+        memmove(kept, found, (size_t)*count * sizeof *kept);
+        *spots = kept;
+    }
+    return status;
+}
