@@ -22,7 +22,8 @@ typedef struct uf_measure_input {
 UF_MUST_USE uf_status uf_measure_cells(uf_work *work, const uf_measure_input *input, uf_cell **rows,
                                        uf_mask *contact, uf_error *error);
 
-/* One row a spot (made in the arena), by cell and then top to bottom; fills the cells' spot columns. UF_MEMORY. */
+/* One row a spot, by cell and then top to bottom, in memory that the caller frees with free(); fills the cells'
+ * spot columns. UF_MEMORY. */
 UF_MUST_USE uf_status uf_measure_spots(uf_work *work, const uf_measure_input *input, uf_cell *rows, uf_spot **spots,
                                        int *count, uf_error *error);
 

@@ -321,17 +321,26 @@ static uf_status find_spots(uf_work *work, const uf_measure_input *in, const uf_
     return UF_OK;
 }
 
+/* The list outlives the arena's scratch, so it has memory of its own. */
+static uf_status keep(const uf_spot *found, int count, uf_spot **spots, uf_error *error)
+{
+    *spots = malloc(((size_t)count + 1) * sizeof **spots);
+    if (!*spots)
+        return uf_fail_memory(error, "spots");
+    memcpy(*spots, found, (size_t)count * sizeof **spots);
+    return UF_OK;
+}
+
 uf_status uf_measure_spots(uf_work *work, const uf_measure_input *input, uf_cell *rows, uf_spot **spots, int *count,
                            uf_error *error)
 {
     int width = input->near->image.width, height = input->near->image.height;
     uf_plane contrast;
     uf_labels basins;
+    uf_spot *found;
     *count = 0;
     *spots = NULL;
-    /* The list is found below scratch and copied once its length is known, so that it costs what it holds. */
     uf_arena_mark mark = uf_arena_now(&work->arena);
-    uf_spot *found = NULL, *kept = NULL;
     uf_status status = uf_plane_take(work, width, height, &contrast, error);
     if (status == UF_OK)
         status = uf_labels_take(work, width, height, &basins, error);
@@ -339,13 +348,8 @@ uf_status uf_measure_spots(uf_work *work, const uf_measure_input *input, uf_cell
         status = find_spots(work, input, rows, contrast, &basins, &found, count, error);
     if (status == UF_OK)
         status = fill_cells(work, rows, input->cells->labels.count, found, *count, error);
-    if (status == UF_OK) {
-        uf_arena_back(&work->arena, mark);
-        status = uf_take(work, (size_t)*count + 1, sizeof *kept, "spots", &kept, error);
-    }
-    if (status == UF_OK) {
-        memmove(kept, found, (size_t)*count * sizeof *kept);
-        *spots = kept;
-    }
+    if (status == UF_OK)
+        status = keep(found, *count, spots, error);
+    uf_arena_back(&work->arena, mark);
     return status;
 }

@@ -6,6 +6,7 @@
 #include <stdlib.h>
 #include <string.h>
 
+#include "base/text.h"
 #include "report/overlay_parts.h"
 
 /* ---- round numbers ------------------------------------------------------------------------------- */
@@ -26,11 +27,11 @@ static const double ramp_ends[] = {1, 2, 3, 4, 5, 6, 8, 10, 100};
 /* The 1-2-5 number that is nearest to `value` > 0 as a ratio. */
 static double round_near(double value)
 {
-    double up = round_up(value, one_two_five);
-    double down = round_up(up * 0.45, one_two_five); /* the step before: half of it, or two fifths */
-    if (down >= up)
-        down = round_up(up * 0.35, one_two_five);
-    return value * value < up * down ? down : up;
+    const double power = pow(10.0, floor(log10(value)));
+    int k = 0; /* up one step where the value lies above the geometric mean of this step and the next */
+    while (k < 3 && value * value > one_two_five[k] * one_two_five[k + 1] * power * power)
+        k++;
+    return one_two_five[k] * power;
 }
 
 double overlay_gap_end_nm(double cutoff_nm, bool has_cutoff)
@@ -83,7 +84,7 @@ static int draw_wrapped(uf_canvas canvas, int x, int y, int width, const char *t
 
 /* ---- colour bar ------------------------------------------------------------------------------------ */
 
-enum { BAR = 16, TICK = 5, AFTER_TICK = 4, LABEL_APART = 13, ARROW = 6 };
+enum { BAR = 16, TICK = 5, AFTER_TICK = 4, LABEL_APART = 13, ARROW = 8 };
 
 static void cutoff_label(const overlay_scene *scene, char *out, size_t size)
 {
@@ -265,7 +266,7 @@ static int draw_near_words(uf_canvas canvas, const overlay_scene *scene, int x, 
 
 int overlay_draw_footer(uf_canvas canvas, const overlay_scene *scene, int x, int y, int width)
 {
-    enum { PARAGRAPH = 4 };
+    enum { PARAGRAPH = 8 };
     legend at = {canvas, x, x + width, x, y + uf_font_faces[UF_FONT_SMALL].cap_height};
     scale_entry(&at, scene);
     outline_entry(&at, scene);

@@ -60,13 +60,19 @@ static oklab gap_colour(double t)
     return lch(0.97 - 0.75 * t, 0.15 - (0.15 - end) * off * off, 190.0 + 185.0 * t);
 }
 
+/* Nearly the grey it covers, so that brightness can still be read, but plainly aqua: chroma close to what the
+ * gamut allows in the dark, and half of it in the light. */
+static oklab contact_colour(oklab level)
+{
+    return lch(0.14 + 0.80 * level.L, 0.022 + 0.040 * level.L, 190.0);
+}
+
 static void put_ramps(uint8_t palette[256][3])
 {
-    const oklab tint = lch(0.80, 0.14, 190.0);
     for (int k = 0; k < UF_NEAR_LEVELS; k++) {
         oklab level = grey((double)k / (UF_NEAR_LEVELS - 1));
         put(palette[UF_INK_NEAR + k], level);
-        put(palette[UF_INK_CONTACT + k], mix(level, tint, 0.32));
+        put(palette[UF_INK_CONTACT + k], contact_colour(level));
     }
     for (int k = 0; k < UF_GAP_LEVELS; k++)
         put(palette[UF_INK_GAP + k], gap_colour((double)k / (UF_GAP_LEVELS - 1)));

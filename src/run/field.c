@@ -1,0 +1,111 @@
+/* SPDX-License-Identifier: GPL-3.0-or-later */
+/*
+ * near, wide -> offset, dark, bad pixels, flat -> background and noise -> shift (the wide image is resampled,
+ * never the near) -> cells -> ratio -> gap -> contact, spots -> rows. Data flows one way.
+ */
+#include "run/field.h"
+
+#include <math.h>
+#include <stdlib.h>
+
+#include "correct/shift.h"
+#include "gap/gap.h"
+#include "image/smooth.h"
+#include "segment/segment.h"
+
+/* Beyond this distance from cells their halo is gone from the background. */
+static const double clear_um = 4.0;
+
+/* A field's own shift may differ this far from the bench's before it is worth a look. */
+static const double shift_tolerance_px = 1.0;
+
+static uf_status correct(uf_work *work, const uf_raw_channel *raw, uf_channel *channel, uf_error *error)
+{
+    uf_status status = uf_correct_channel(work, raw, channel, error);
+    return status == UF_OK ? uf_background_first(work, channel, error) : status;
+}
+
+/* Which shift to use: the bench's, or this field's own where asked for and where it can be trusted. */
+static void choose_shift(const uf_settings *s, const uf_shift_estimate *found, uf_field *field)
+{
+    field->shift_dx_px = s->shift.dx_px;
+    field->shift_dy_px = s->shift.dy_px;
+    field->shift_score = (double)NAN;
+    if (s->shift.estimate == UF_ESTIMATE_NO)
+        return;
+    field->shift_score = found->score;
+    double differs = hypot(found->dx_px - s->shift.dx_px, found->dy_px - s->shift.dy_px);
+    if (found->trusted && s->shift.estimate == UF_ESTIMATE_YES) {
+        field->shift_dx_px = found->dx_px;
+        field->shift_dy_px = found->dy_px;
+    } else if (found->trusted && differs > shift_tolerance_px)
+        field->flags |= 1u << UF_FLAG_SHIFT_DIFFERS;
+    else if (!found->trusted && s->shift.estimate == UF_ESTIMATE_YES)
+        field->flags |= 1u << UF_FLAG_SHIFT_UNSURE;
+}
+
+static uf_status align(uf_work *work, const uf_settings *settings, uf_field_result *r, uf_error *error)
+{
+    uf_shift_estimate found = {0};
+    uf_status status = UF_OK;
+    if (settings->shift.estimate != UF_ESTIMATE_NO)
+        status = uf_shift_find(work, &r->near, &r->wide, &found, error);
+    if (status != UF_OK)
+        return status;
+    choose_shift(settings, &found, &r->field);
+    if (r->field.shift_dx_px == 0 && r->field.shift_dy_px == 0)
+        return UF_OK;
+    return uf_shift(work, r->wide.image, r->field.shift_dx_px, r->field.shift_dy_px, r->wide.image, error);
+}
+
+static uf_status find_cells(uf_work *work, const uf_plan *plan, const uf_settings *settings, uf_field_result *r,
+                            uf_error *error)
+{
+    double clear_px = clear_um / plan->pixel_size_um;
+    uf_status status = uf_segment(work, &r->wide, settings, plan->pixel_size_um, &r->cells, error);
+    if (status == UF_OK)
+        status = uf_background_refine(work, &r->cells, clear_px, &r->near, error);
+    if (status == UF_OK)
+        status = uf_background_refine(work, &r->cells, clear_px, &r->wide, error);
+    return status;
+}
+
+static uf_status measure(uf_work *work, const uf_plan *plan, const uf_settings *settings, uf_field_result *r,
+                         uf_error *error)
+{
+    uf_measure_input in = {plan, settings, &r->near, &r->wide, &r->cells, &r->gaps};
+    int spots = 0;
+    uf_status status = uf_measure_cells(work, &in, &r->rows, &r->contact, error);
+    if (status == UF_OK)
+        status = uf_measure_spots(work, &in, r->rows, &r->spots, &spots, error);
+    if (status == UF_OK)
+        uf_measure_field(&in, r->rows, spots, &r->field);
+    return status;
+}
+
+uf_status uf_field_run(uf_work *work, const uf_plan *plan, const uf_settings *settings,
+                       const uf_raw_channel raw[UF_CHANNELS], uf_field_result *result, uf_error *error)
+{
+    *result = (uf_field_result){0};
+    uf_status status = correct(work, &raw[UF_NEAR], &result->near, error);
+    if (status == UF_OK)
+        status = correct(work, &raw[UF_WIDE], &result->wide, error);
+    if (status == UF_OK)
+        status = align(work, settings, result, error);
+    if (status == UF_OK)
+        status = find_cells(work, plan, settings, result, error);
+    if (status == UF_OK)
+        status = uf_gap_find(work, plan, settings->contact.detection_sigma, &result->near, &result->wide,
+                             &result->cells, &result->gaps, error);
+    if (status == UF_OK)
+        status = measure(work, plan, settings, result, error);
+    if (status == UF_OK)
+        result->field.status = result->field.flags ? UF_FIELD_FLAGGED : UF_FIELD_OK;
+    return status;
+}
+
+void uf_field_result_free(uf_field_result *result)
+{
+    free(result->spots);
+    result->spots = NULL;
+}

@@ -1,0 +1,413 @@
+/* SPDX-License-Identifier: GPL-3.0-or-later */
+/* The job `measure`: two image files in, tables and pictures out. */
+#include <math.h>
+#include <stdio.h>
+#include <stdlib.h>
+#include <string.h>
+#include <time.h>
+
+#include "fit/robust.h"
+#include "io/csv.h"
+#include "io/image_encode.h"
+#include "io/image_file.h"
+#include "io/output.h"
+#include "report/overlay.h"
+#include "run/field.h"
+#include "run/plan.h"
+#include "run/run_json.h"
+
+static const uf_image_limits limits = {.max_pixels = 1e9};
+
+enum { MOST_INPUTS = 10 };
+
+typedef struct measure_job {
+    const uf_settings *settings;
+    const uf_measure_request *request;
+    uf_work work;
+    uf_plan plan;
+    uf_raw_channel raw[UF_CHANNELS];
+    uf_field_result result;
+    uf_run_input inputs[MOST_INPUTS];
+    int input_count;
+    uf_text warnings;
+    uf_text name; /* of this field's pictures, without ending */
+    uf_output output;
+    char overlay_name[256];
+} measure_job;
+
+/* ---- reading ------------------------------------------------------------------------------------------------ */
+
+static uf_status read_image(measure_job *job, const char *role, const char *path, uf_plane *plane,
+                            uf_image_info *info, uf_error *error)
+{
+    uf_status status = uf_image_read(&job->work, path, 0, &limits, plane, info, error);
+    if (status == UF_OK)
+        job->inputs[job->input_count++] = (uf_run_input){role, path, info->file_bytes, info->fingerprint};
+    return status;
+}
+
+/* A correction image must fit the image it corrects; a path of NULL leaves the plane empty. */
+static uf_status read_companion(measure_job *job, const char *role, const char *path, uf_plane like, uf_plane *plane,
+                                uf_error *error)
+{
+    uf_image_info info;
+    *plane = (uf_plane){0};
+    if (!path)
+        return UF_OK;
+    uf_status status = read_image(job, role, path, plane, &info, error);
+    if (status == UF_OK && (plane->width != like.width || plane->height != like.height))
+        status = uf_fail(error, UF_INPUT,
+                         "%s: the %s is %d x %d px, the images are %d x %d; take one with the same camera settings",
+                         path, role, plane->width, plane->height, like.width, like.height);
+    return status;
+}
+
+static double full_scale(const uf_camera_settings *camera, const uf_image_info *info)
+{
+    if (!isnan(camera->full_scale_adu))
+        return camera->full_scale_adu;
+    return info->is_float ? (double)INFINITY : info->bits == 8 ? 255.0 : 65535.0;
+}
+
+static uf_status read_channel(measure_job *job, uf_channel_name which, double *pixel_um, uf_error *error)
+{
+    static const char *const names[] = {"near", "wide"};
+    static const char *const flats[] = {"near flat", "wide flat"}, *const darks[] = {"near dark", "wide dark"};
+    static const char *const maps[] = {"near defect map", "wide defect map"};
+    const char *path = which == UF_NEAR ? job->request->near_path : job->request->wide_path;
+    const uf_camera_settings *camera = &job->settings->camera[which];
+    uf_raw_channel *raw = &job->raw[which];
+    uf_image_info info;
+    raw->camera = camera;
+    raw->name = names[which];
+    uf_status status = read_image(job, names[which], path, &raw->counts, &info, error);
+    if (status != UF_OK)
+        return status;
+    if (info.pages > 1)
+        return uf_fail(error, UF_INPUT, "%s: has %d pages, expected one; save the page to measure as a file of its own",
+                       path, info.pages);
+    raw->full_scale_adu = full_scale(camera, &info);
+    *pixel_um = info.pixel_size_x_um;
+    status = read_companion(job, darks[which], camera->dark, raw->counts, &raw->dark, error);
+    if (status == UF_OK)
+        status = read_companion(job, flats[which], job->settings->flat[which].file, raw->counts, &raw->flat, error);
+    if (status == UF_OK)
+        status = read_companion(job, maps[which], camera->defects, raw->counts, &raw->defects, error);
+    return status;
+}
+
+static uf_status read_inputs(measure_job *job, uf_error *error)
+{
+    double near_um = (double)NAN, wide_um = (double)NAN;
+    uf_status status = read_channel(job, UF_NEAR, &near_um, error);
+    if (status == UF_OK)
+        status = read_channel(job, UF_WIDE, &wide_um, error);
+    if (status != UF_OK)
+        return status;
+    uf_plane near = job->raw[UF_NEAR].counts, wide = job->raw[UF_WIDE].counts;
+    if (near.width != wide.width || near.height != wide.height)
+        return uf_fail(error, UF_INPUT,
+                       "%s is %d x %d px, but %s is %d x %d; the two images of a field must have the same size",
+                       job->request->near_path, near.width, near.height, job->request->wide_path, wide.width,
+                       wide.height);
+    return uf_plan_make(job->settings, near_um, &job->plan, error);
+}
+
+/* ---- warnings --------------------------------------------------------------------------------------------------- */
+
+static void warn_optics(measure_job *job)
+{
+    const uf_plan *plan = &job->plan;
+    if (uf_bench_leaks_into_cell(&plan->bench))
+        uf_text_printf(&job->warnings,
+                       "n sin(angle) %.4f does not exceed cell_n + 2 sd (%.3f): light may pass into the cell where it "
+                       "touches; a steeper angle avoids it\n",
+                       plan->bench.na_effective, plan->bench.cell_n + 2 * plan->bench.cell_n_sd);
+    if (fabs(plan->layered_effect_nm) > 3)
+        uf_text_printf(&job->warnings,
+                       "a layered model reads the %.4g nm cutoff %+.1f nm differently from the exponential in force; "
+                       "from n sin(angle) 1.43 up they agree better\n",
+                       job->settings->contact.cutoff_nm, -plan->layered_effect_nm);
+}
+
+static void warn_settings(measure_job *job)
+{
+    for (int k = 0; k < UF_CHANNELS; k++) {
+        if (isnan(job->settings->camera[k].gain_e_per_adu))
+            uf_text_printf(&job->warnings,
+                           "no gain_e_per_adu in [%s.camera]: noise and detection limit are estimated from the image\n",
+                           job->raw[k].name);
+        if (!job->settings->flat[k].file)
+            uf_text_printf(&job->warnings, "no [%s.flat]: uneven light goes into the gaps\n", job->raw[k].name);
+    }
+}
+
+static void warn_field(measure_job *job)
+{
+    const uf_field *field = &job->result.field;
+    if (field->flags >> UF_FLAG_DISPLAY_SCALED & 1u)
+        uf_text_add(&job->warnings, "the images look contrast-stretched to 8 bits: their ratios mean nothing; save the "
+                                    "camera's own counts\n");
+    if (field->flags >> UF_FLAG_SHIFT_UNSURE & 1u)
+        uf_text_add(&job->warnings, "the shift between near and wide could not be found with confidence; the bench's "
+                                    "value was used\n");
+    if (field->flags >> UF_FLAG_SHIFT_DIFFERS & 1u)
+        uf_text_add(&job->warnings, "this field's own shift differs from the bench's by more than a pixel; check [shift] "
+                                    "or set estimate = yes\n");
+    if (field->flags >> UF_FLAG_EMPTY & 1u)
+        uf_text_add(&job->warnings, "no cells were found\n");
+}
+
+/* ---- writing ------------------------------------------------------------------------------------------------------ */
+
+static uf_status write_text(measure_job *job, const char *folder, const char *name, const uf_text *text,
+                            uf_error *error)
+{
+    uf_status status = uf_text_check(text, name, error);
+    return status == UF_OK ? uf_output_write(&job->output, folder, name, text->bytes, text->length, error) : status;
+}
+
+static uf_status write_tables(measure_job *job, uf_error *error)
+{
+    const char *id = job->result.field.field_id;
+    uf_text cells = {0}, spots = {0}, fields = {0};
+    uf_csv_header(&cells, &uf_table_cells);
+    for (int k = 0; k < job->result.cells.labels.count; k++)
+        uf_csv_row(&cells, &uf_table_cells, id, &job->result.rows[k]);
+    uf_csv_header(&spots, &uf_table_spots);
+    for (int k = 0; k < job->result.field.spots; k++)
+        uf_csv_row(&spots, &uf_table_spots, id, &job->result.spots[k]);
+    uf_csv_header(&fields, &uf_table_fields);
+    uf_csv_row(&fields, &uf_table_fields, id, &job->result.field);
+    uf_status status = write_text(job, NULL, "cells.csv", &cells, error);
+    if (status == UF_OK)
+        status = write_text(job, NULL, "spots.csv", &spots, error);
+    if (status == UF_OK)
+        status = write_text(job, NULL, "fields.csv", &fields, error);
+    uf_text_free(&cells);
+    uf_text_free(&spots);
+    uf_text_free(&fields);
+    return status;
+}
+
+/* Pictures that an earlier run left and this one does not make must not be taken for this one's. */
+static uf_status write_or_remove(measure_job *job, const char *folder, const char *ending, const uf_text *bytes,
+                                 uf_error *error)
+{
+    uf_text name = {0};
+    uf_text_add(&name, job->name.bytes);
+    uf_text_add(&name, ending);
+    uf_status status = uf_text_check(&name, "file names", error);
+    if (status == UF_OK)
+        status = bytes ? write_text(job, folder, name.bytes, bytes, error)
+                       : uf_output_remove(&job->output, folder, name.bytes, error);
+    if (status == UF_OK && bytes && strcmp(folder, "overlay") == 0)
+        (void)snprintf(job->overlay_name, sizeof job->overlay_name, "%s/%s", folder, name.bytes);
+    uf_text_free(&name);
+    return status;
+}
+
+static uf_status write_maps(measure_job *job, uf_error *error)
+{
+    uf_text gap = {0}, labels = {0};
+    double px = job->plan.pixel_size_um;
+    int wanted = job->settings->output.maps == UF_YES;
+    uf_status status = UF_OK;
+    if (wanted)
+        status = uf_encode_float_tiff(&gap, job->result.gaps.gap_nm, px, "gap, nm", error);
+    if (status == UF_OK)
+        status = write_or_remove(job, "gap", ".tif", wanted ? &gap : NULL, error);
+    if (status == UF_OK && wanted)
+        status = uf_encode_label_tiff(&labels, job->result.cells.labels, px, "cell numbers", error);
+    if (status == UF_OK)
+        status = write_or_remove(job, "labels", ".tif", wanted ? &labels : NULL, error);
+    uf_text_free(&gap);
+    uf_text_free(&labels);
+    return status;
+}
+
+static void settings_line(const measure_job *job, uf_text *line)
+{
+    const uf_settings *s = job->settings;
+    uf_text_printf(line, "exponential decay, depth %.1f nm, contact at most %.4g nm, reference %.4g at gap 0",
+                   job->plan.depth_nm, s->contact.cutoff_nm, job->plan.reference_ratio);
+}
+
+static void flag_words(uf_flags flags, uf_text *words)
+{
+    for (int k = 0; k < UF_FLAG_COUNT; k++)
+        if (flags >> k & 1u)
+            uf_text_printf(words, "%s%s", words->length ? ", " : "", uf_flag_word((uf_flag)k));
+}
+
+static int overlay_wanted(const measure_job *job)
+{
+    switch (job->settings->output.overlay) {
+    case UF_OVERLAY_NO:
+        return 0;
+    case UF_OVERLAY_FLAGGED:
+        return job->result.field.flags != 0;
+    default:
+        return 1;
+    }
+}
+
+static uf_status draw_overlay(measure_job *job, uf_text *png, uf_error *error)
+{
+    const uf_field_result *r = &job->result;
+    uf_text line = {0}, flags = {0};
+    settings_line(job, &line);
+    flag_words(r->field.flags, &flags);
+    uf_overlay_input input = {.near_adu = r->near.image,
+                              .labels = r->cells.labels,
+                              .gap_nm = r->gaps.gap_nm,
+                              .contact = r->contact,
+                              .cells = r->rows,
+                              .spots = r->spots,
+                              .spot_count = r->field.spots,
+                              .pixel_size_um = job->plan.pixel_size_um,
+                              .near_background_adu = r->near.background_adu,
+                              .cutoff_nm = job->settings->contact.cutoff_nm,
+                              .title = uf_base_name(job->request->near_path),
+                              .settings = line.bytes ? line.bytes : "",
+                              .flags = flags.bytes ? flags.bytes : "",
+                              .full = job->settings->output.overlay == UF_OVERLAY_FULL};
+    uf_arena_mark mark = uf_arena_now(&job->work.arena);
+    uf_indexed picture;
+    uf_overlay_layout layout;
+    uf_status status = uf_overlay_draw(&job->work, &input, &picture, &layout, error);
+    if (status == UF_OK)
+        status = uf_encode_indexed_png(png, &picture, error);
+    uf_arena_back(&job->work.arena, mark);
+    uf_text_free(&line);
+    uf_text_free(&flags);
+    return status;
+}
+
+static uf_status write_overlay(measure_job *job, uf_error *error)
+{
+    uf_text png = {0};
+    int wanted = overlay_wanted(job);
+    uf_status status = wanted ? draw_overlay(job, &png, error) : UF_OK;
+    if (status == UF_OK)
+        status = write_or_remove(job, "overlay", ".png", wanted ? &png : NULL, error);
+    uf_text_free(&png);
+    return status;
+}
+
+static uf_status write_story(measure_job *job, double seconds, uf_error *error)
+{
+    uf_text json = {0};
+    uf_run_story story = {job->settings, &job->plan, job->inputs, job->input_count,
+                          job->warnings.bytes ? job->warnings.bytes : "", job->request->command, seconds};
+    uf_status status = uf_run_json(&json, &story, error);
+    if (status == UF_OK)
+        status = write_text(job, NULL, "run.json", &json, error);
+    uf_text_free(&json);
+    return status;
+}
+
+/* Name of the field's pictures: the near file's name without its ending, as a safe key. */
+static uf_status name_field(measure_job *job, uf_error *error)
+{
+    const char *base = uf_base_name(job->request->near_path);
+    const char *dot = strrchr(base, '.');
+    uf_text stem = {0};
+    uf_text_bytes(&stem, base, dot && dot != base ? (size_t)(dot - base) : strlen(base));
+    if (!stem.failed)
+        uf_output_key(&job->name, stem.bytes);
+    job->name.failed |= stem.failed;
+    uf_text_free(&stem);
+    return uf_text_check(&job->name, "file names", error);
+}
+
+/* ---- summary -------------------------------------------------------------------------------------------------------- */
+
+static double median_of(const measure_job *job, size_t member, double *scratch)
+{
+    size_t count = 0;
+    for (int k = 0; k < job->result.cells.labels.count; k++) {
+        const uf_cell *row = &job->result.rows[k];
+        double value = *(const double *)(const void *)((const char *)row + member);
+        if (row->used && !isnan(value))
+            scratch[count++] = value;
+    }
+    return uf_median(scratch, count);
+}
+
+static uf_status summarise(measure_job *job, uf_measure_summary *summary, uf_error *error)
+{
+    double *scratch;
+    int cells = job->result.cells.labels.count;
+    uf_status status = uf_take(&job->work, (size_t)cells + 1, sizeof *scratch, "the summary", &scratch, error);
+    if (status != UF_OK)
+        return status;
+    summary->cells = cells;
+    summary->spots = job->result.field.spots;
+    for (int k = 0; k < cells; k++)
+        summary->cells_used += job->result.rows[k].used;
+    summary->spread_area_median_um2 = median_of(job, offsetof(uf_cell, spread_area_um2), scratch);
+    summary->contact_area_median_um2 = median_of(job, offsetof(uf_cell, contact_area_um2), scratch);
+    summary->attachment_fraction_median = median_of(job, offsetof(uf_cell, attachment_fraction), scratch);
+    summary->gap_median_nm = median_of(job, offsetof(uf_cell, gap_median_nm), scratch);
+    summary->depth_nm = job->plan.depth_nm;
+    (void)snprintf(summary->overlay, sizeof summary->overlay, "%s", job->overlay_name);
+    (void)snprintf(summary->warnings, sizeof summary->warnings, "%s", job->warnings.bytes ? job->warnings.bytes : "");
+    return UF_OK;
+}
+
+/* ---- all of it ---------------------------------------------------------------------------------------------------------- */
+
+static double now_seconds(void)
+{
+    struct timespec t;
+    clock_gettime(CLOCK_MONOTONIC, &t);
+    return (double)t.tv_sec + (double)t.tv_nsec * 1e-9;
+}
+
+static uf_status measure_and_write(measure_job *job, double started, uf_measure_summary *summary, uf_error *error)
+{
+    uf_status status = read_inputs(job, error);
+    if (status == UF_OK)
+        status = name_field(job, error);
+    if (status == UF_OK)
+        status = uf_output_open(&job->output, job->request->out_dir, error);
+    if (status == UF_OK)
+        status = uf_field_run(&job->work, &job->plan, job->settings, job->raw, &job->result, error);
+    if (status != UF_OK)
+        return status;
+    job->result.field.field_id = job->request->near_path;
+    warn_optics(job);
+    warn_settings(job);
+    warn_field(job);
+    /* run.json goes last: where it stands, the rest stands too. An older one must not vouch for new tables. */
+    status = uf_output_remove(&job->output, NULL, "run.json", error);
+    if (status == UF_OK)
+        status = write_overlay(job, error);
+    if (status == UF_OK)
+        status = write_maps(job, error);
+    if (status == UF_OK)
+        status = write_tables(job, error);
+    if (status == UF_OK)
+        status = summarise(job, summary, error);
+    summary->seconds = now_seconds() - started;
+    return status == UF_OK ? write_story(job, summary->seconds, error) : status;
+}
+
+uf_status uf_measure(const uf_settings *settings, const uf_measure_request *request, uf_measure_summary *summary,
+                     uf_error *error)
+{
+    measure_job job = {.settings = settings, .request = request};
+    double started = now_seconds();
+    *summary = (uf_measure_summary){0};
+    uf_status status = uf_pool_new(&job.work.pool, request->threads, error);
+    if (status == UF_OK)
+        status = measure_and_write(&job, started, summary, error);
+    uf_field_result_free(&job.result);
+    uf_output_close(&job.output);
+    uf_text_free(&job.warnings);
+    uf_text_free(&job.name);
+    uf_pool_free(&job.work.pool);
+    uf_arena_free(&job.work.arena);
+    return status;
+}
