@@ -64,8 +64,7 @@ SONAME  := libunderfoot.so.0
 SHARED  := $(BUILD)/$(SONAME)
 
 .DEFAULT_GOAL := all
-.PHONY: all debug asan tsan probe build-flavour check demo bench install uninstall clean help packages docs \
-        check-unit check-compilers check-sanitizers
+.PHONY: all debug asan tsan probe build-flavour unit check demo bench install uninstall clean help packages docs
 
 all: packages ## the command and the libraries, optimised and hardened, in build/release
 	@$(MAKE) --no-print-directory FLAVOUR=release build-flavour
@@ -115,13 +114,25 @@ DEMO := build/demo
 demo: all ## write the demo experiment, measure it, say where the results are
 	@tests/tools/run-demo $(PROGRAM) $(DEMO)
 
+# Test programs, one a file, linked with the flavour's static library.
+TEST_SOURCES  := $(sort $(wildcard tests/*/test_*.c))
+TEST_PROGRAMS := $(TEST_SOURCES:tests/%.c=$(BUILD)/tests/%)
+
+unit: $(TEST_PROGRAMS)
+
+$(BUILD)/tests/%: tests/%.c $(STATIC)
+	@mkdir -p $(@D)
+	$(CC) $(CFLAGS_ALL) -Itests $(LINK_ALL) -MMD -MP -o $@ $< $(STATIC) $(LINK_LIBS) -lcmocka
+
+-include $(TEST_PROGRAMS:%=%.d)
+
 check: ## all tests; the last line is "N passed, N failed"
 	@tests/tools/need-packages $(BUILD_PACKAGES) $(TEST_PACKAGES)
-	@$(MAKE) --no-print-directory FLAVOUR=release WERROR=-Werror build-flavour
+	@$(MAKE) --no-print-directory FLAVOUR=release WERROR=-Werror build-flavour unit
 	@$(MAKE) --no-print-directory FLAVOUR=probe build-flavour
-	@$(MAKE) --no-print-directory FLAVOUR=asan build-flavour
+	@$(MAKE) --no-print-directory FLAVOUR=asan WERROR=-Werror build-flavour unit
 	@$(MAKE) --no-print-directory FLAVOUR=tsan build-flavour
-	@$(MAKE) --no-print-directory CC=clang FLAVOUR=release BUILD=build/clang WERROR=-Werror build-flavour
+	@$(MAKE) --no-print-directory CC=clang BUILD=build/clang WERROR=-Werror build-flavour
 	@tests/tools/run-tests
 
 bench: all ## speed and peak memory of the main job on a 2048 x 2048 pair

@@ -60,10 +60,12 @@ static size_t sort_pixels(uf_plane depth, uf_labels labels, size_t *place, uint3
 
 /* ---- flood ------------------------------------------------------------------------------------------------- */
 
-/* The roots of the cells around (x, y), each once; at most 8. */
+/* The roots of the basins around (x, y), each once, at most 8; the first is that of the deepest neighbour, the
+ * one that (x, y) runs down to. */
 static int roots_around(flood *f, int x, int y, int *roots)
 {
     int count = 0;
+    float deepest = -1.0f;
     for (int v = y - 1; v <= y + 1; v++)
         for (int u = x - 1; u <= x + 1; u++) {
             if (u < 0 || v < 0 || u >= f->labels.width || v >= f->labels.height)
@@ -71,19 +73,23 @@ static int roots_around(flood *f, int x, int y, int *roots)
             int label = uf_labels_row(f->labels, v)[u];
             if (label <= 0)
                 continue;
-            int root = root_of(f->basins, label), known = 0;
-            for (int k = 0; k < count; k++)
-                known |= roots[k] == root;
-            if (!known)
+            int root = root_of(f->basins, label), at = 0;
+            while (at < count && roots[at] != root)
+                at++;
+            if (at == count)
                 roots[count++] = root;
+            if (uf_plane_row(f->depth, v)[u] > deepest) {
+                deepest = uf_plane_row(f->depth, v)[u];
+                roots[at] = roots[0];
+                roots[0] = root;
+            }
         }
     return count;
 }
 
-static int is_one_cell(const flood *f, int a, int b, float saddle)
+static int is_one_basin(const flood *f, int shallower, float saddle)
 {
-    float shallower = f->basins[a].depth < f->basins[b].depth ? f->basins[a].depth : f->basins[b].depth;
-    return saddle >= f->neck * shallower;
+    return saddle >= f->neck * f->basins[shallower].depth;
 }
 
 static void flood_pixel(flood *f, int x, int y)
@@ -96,14 +102,13 @@ static void flood_pixel(flood *f, int x, int y)
         uf_labels_row(f->labels, y)[x] = fresh;
         return;
     }
-    int owner = roots[0];
-    for (int k = 1; k < count; k++)
-        if (f->basins[roots[k]].depth > f->basins[owner].depth)
-            owner = roots[k];
-    for (int k = 0; k < count; k++)
-        if (roots[k] != owner && is_one_cell(f, owner, roots[k], here))
-            f->basins[roots[k]].parent = owner;
-    uf_labels_row(f->labels, y)[x] = owner;
+    uf_labels_row(f->labels, y)[x] = roots[0];
+    for (int k = 1; k < count; k++) {
+        int a = root_of(f->basins, roots[0]), b = root_of(f->basins, roots[k]);
+        int deeper = f->basins[a].depth >= f->basins[b].depth ? a : b, shallower = deeper == a ? b : a;
+        if (a != b && is_one_basin(f, shallower, here))
+            f->basins[shallower].parent = deeper;
+    }
 }
 
 /* ---- afterwards ---------------------------------------------------------------------------------------------- */
@@ -116,7 +121,6 @@ static void resolve(flood *f)
             if (row[x])
                 row[x] = root_of(f->basins, row[x]);
     }
-    f->labels.count = f->count;
 }
 
 /* The label that shares the longest border with `small`, 0 when it stands alone. borders has count + 1 places
@@ -155,9 +159,9 @@ static void relabel(uf_labels labels, uf_box box, int from, int to)
     }
 }
 
-static uf_status join_small(uf_work *work, flood *f, double min_pixels, uf_error *error)
+static uf_status join_small(uf_work *work, uf_labels labels, double min_pixels, uf_error *error)
 {
-    size_t places = (size_t)f->count + 1;
+    size_t places = (size_t)labels.count + 1;
     int64_t *areas;
     uf_box *boxes;
     int *borders;
@@ -169,15 +173,15 @@ static uf_status join_small(uf_work *work, flood *f, double min_pixels, uf_error
     if (status != UF_OK)
         return status;
     memset(borders, 0, places * sizeof *borders);
-    uf_label_areas(f->labels, areas);
-    uf_label_boxes(f->labels, boxes);
-    for (int k = 1; k <= f->count; k++) {
+    uf_label_areas(labels, areas);
+    uf_label_boxes(labels, boxes);
+    for (int k = 1; k <= labels.count; k++) {
         if (!areas[k] || (double)areas[k] >= min_pixels)
             continue;
-        int other = longest_border(f->labels, k, boxes[k], borders);
+        int other = longest_border(labels, k, boxes[k], borders);
         if (!other)
             continue;
-        relabel(f->labels, boxes[k], k, other);
+        relabel(labels, boxes[k], k, other);
         areas[other] += areas[k];
         areas[k] = 0;
         uf_box *a = &boxes[other], b = boxes[k];
@@ -188,9 +192,10 @@ static uf_status join_small(uf_work *work, flood *f, double min_pixels, uf_error
 }
 
 /* Drops what is too small or too large and numbers the rest in the order of first pixels. */
-static uf_status renumber(uf_work *work, flood *f, double min_pixels, double max_pixels, uf_error *error)
+static uf_status renumber(uf_work *work, uf_labels *labels, double min_pixels, double max_pixels,
+                          uf_error *error)
 {
-    size_t places = (size_t)f->count + 1;
+    size_t places = (size_t)labels->count + 1;
     int64_t *areas;
     int32_t *number;
     uf_status status = uf_take(work, places, sizeof *areas, "basins", &areas, error);
@@ -198,12 +203,12 @@ static uf_status renumber(uf_work *work, flood *f, double min_pixels, double max
         status = uf_take(work, places, sizeof *number, "basins", &number, error);
     if (status != UF_OK)
         return status;
-    uf_label_areas(f->labels, areas);
+    uf_label_areas(*labels, areas);
     memset(number, 0, places * sizeof *number);
     int count = 0;
-    for (int y = 0; y < f->labels.height; y++) {
-        int32_t *row = uf_labels_row(f->labels, y);
-        for (int x = 0; x < f->labels.width; x++) {
+    for (int y = 0; y < labels->height; y++) {
+        int32_t *row = uf_labels_row(*labels, y);
+        for (int x = 0; x < labels->width; x++) {
             int k = row[x];
             if (!k)
                 continue;
@@ -212,8 +217,18 @@ static uf_status renumber(uf_work *work, flood *f, double min_pixels, double max
             row[x] = number[k] > 0 ? number[k] : 0;
         }
     }
-    f->labels.count = count;
+    labels->count = count;
     return UF_OK;
+}
+
+uf_status uf_labels_tidy(uf_work *work, double min_pixels, double max_pixels, uf_labels *labels, uf_error *error)
+{
+    uf_arena_mark mark = uf_arena_now(&work->arena);
+    uf_status status = join_small(work, *labels, min_pixels, error);
+    if (status == UF_OK)
+        status = renumber(work, labels, min_pixels, max_pixels, error);
+    uf_arena_back(&work->arena, mark);
+    return status;
 }
 
 uf_status uf_basins(uf_work *work, uf_plane depth, double neck, double min_pixels, double max_pixels,
@@ -237,11 +252,8 @@ uf_status uf_basins(uf_work *work, uf_plane depth, double neck, double min_pixel
         for (size_t k = 0; k < count; k++)
             flood_pixel(&f, (int)(order[k] % (uint32_t)labels->width), (int)(order[k] / (uint32_t)labels->width));
         resolve(&f);
-        status = join_small(work, &f, min_pixels, error);
+        labels->count = f.count;
     }
-    if (status == UF_OK)
-        status = renumber(work, &f, min_pixels, max_pixels, error);
-    labels->count = f.labels.count;
     uf_arena_back(&work->arena, mark);
-    return status;
+    return status == UF_OK ? uf_labels_tidy(work, min_pixels, max_pixels, labels, error) : status;
 }

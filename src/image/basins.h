@@ -20,4 +20,8 @@
 UF_MUST_USE uf_status uf_basins(uf_work *work, uf_plane depth, double neck, double min_pixels, double max_pixels,
                                 uf_labels *labels, uf_error *error);
 
+/* The tidying alone: small labels join, what is left too small or too large goes, numbers follow first pixels. */
+UF_MUST_USE uf_status uf_labels_tidy(uf_work *work, double min_pixels, double max_pixels, uf_labels *labels,
+                                     uf_error *error);
+
 #endif

@@ -1,5 +1,5 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
-/* CSV out, RFC 4180: CRLF line ends are not used, a field is quoted only when it has to be. */
+/* CSV out, RFC 4180 except that lines end in LF; a field is quoted only when it has to be. */
 #ifndef UF_IO_CSV_H
 #define UF_IO_CSV_H
 

@@ -1,6 +1,7 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
 /* Image files out: encoded into memory, so that one writer (io/output.h) makes every file atomic. The bytes
- * are a pure function of the arguments: no dates, no host. */
+ * are a pure function of the arguments (and of the versions of libtiff, zlib and libpng): no dates, no host.
+ * Bytes are appended to `out`; after a failure what it holds is of no use. */
 #ifndef UF_IO_IMAGE_ENCODE_H
 #define UF_IO_IMAGE_ENCODE_H
 
@@ -8,8 +9,8 @@
 #include "image/plane.h"
 #include "image/indexed.h"
 
-/* A 32-bit float grey TIFF, deflate with the floating-point predictor, NaN kept, resolution tags from
- * pixel_size_um where it is a number. `description` goes into ImageDescription (NULL: none). */
+/* A 32-bit float grey TIFF, deflate without predictor (readers without extra codecs must open it). NaN is
+ * kept, as one bit pattern whatever the processor made; resolution tags where pixel_size_um is a number. `description` goes into ImageDescription (NULL: none). */
 UF_MUST_USE uf_status uf_encode_float_tiff(uf_text *out, uf_plane plane, double pixel_size_um,
                                            const char *description, uf_error *error);
 
@@ -17,7 +18,8 @@ UF_MUST_USE uf_status uf_encode_float_tiff(uf_text *out, uf_plane plane, double 
 UF_MUST_USE uf_status uf_encode_label_tiff(uf_text *out, uf_labels labels, double pixel_size_um,
                                            const char *description, uf_error *error);
 
-/* A 16-bit unsigned grey TIFF of counts: values are rounded and must lie in 0 .. 65535 (the demo's images). */
+/* A 16-bit unsigned grey TIFF of counts, uncompressed (the demo's images): values are rounded and must lie in
+ * 0 .. 65535; UF_USAGE names the place of one that does not. */
 UF_MUST_USE uf_status uf_encode_count_tiff(uf_text *out, uf_plane plane, double pixel_size_um,
                                            const char *description, uf_error *error);
 

@@ -6,7 +6,8 @@
  * A file is untrusted. It is never mapped (a file cut short meanwhile would be a SIGBUS), its header is
  * checked before memory is taken: colour, palette, more pixels than `max_pixels` or than the stored bytes
  * could hold at the codec's best ratio, strips outside the file, sparse strips. A strip that does not
- * decode is an error, not a black stripe.
+ * decode is an error, not a black stripe. Grey means 0 is black and row 0 is on top: an inverted or a turned
+ * image is refused, not converted behind the user's back. The whole file is read for its fingerprint.
  */
 #ifndef UF_IO_IMAGE_FILE_H
 #define UF_IO_IMAGE_FILE_H
@@ -18,19 +19,22 @@ typedef struct uf_image_info {
     int pages;               /* pages in the file */
     int bits;                /* 8, 16 or 32 (float) */
     int is_float;
-    double pixel_size_x_um;  /* from the resolution tags, NaN when they say nothing */
+    double pixel_size_x_um;  /* from the resolution tags; NaN when they say nothing, or a placeholder: no
+                                unit, above 20 um (72 and 300 pixels an inch are), below 1e-4 um */
     double pixel_size_y_um;
     uint64_t file_bytes;
     uint64_t fingerprint;    /* XXH3 64 of the file's bytes */
 } uf_image_info;
 
 typedef struct uf_image_limits {
-    double max_pixels; /* per page; the default is 1e9 */
+    double max_pixels; /* per page; NULL limits mean 1e9 */
 } uf_image_limits;
 
-/* Reads page `page` (from 0) of `path` into a plane of raw values taken from `work`'s arena: counts as
- * they stand in the file, float values as they are (NaN and infinities are refused: UF_INPUT with the
- * first one's place). Fills `info` (may be NULL). Errors name the path and the page. */
+/* Reads page `page` (from 0; messages count pages from 1) of `path` into a plane of raw values taken from
+ * `work`'s arena: counts as they stand in the file, float values as they are (NaN and infinities are refused:
+ * UF_INPUT with the first one's place). Fills `info` (may be NULL: then no fingerprint is taken either).
+ * UF_INPUT names the path and the page; after a failure the arena stands where it stood and the plane is
+ * empty. */
 UF_MUST_USE uf_status uf_image_read(uf_work *work, const char *path, int page, const uf_image_limits *limits,
                                     uf_plane *plane, uf_image_info *info, uf_error *error);
 

@@ -68,23 +68,21 @@ static uf_status cannot_write(uf_error *error, const place *at, int number)
 
 /* ---- folders ------------------------------------------------------------------------------ */
 
-/* Makes every folder of `path` in turn; what is there already is fine. Returns 0 or an error number. */
+/* Makes every folder of `path` in turn. Returns 0 or the first error number other than "exists". It is no
+ * more than a reason: an existing folder may answer with anything (read-only file system, no rights above
+ * it), and whether the last one opens is the test that counts. */
 static int make_folders(char *path)
 {
-    for (char *p = path + strspn(path, "/"); *p;) {
+    int first = 0;
+    for (char *p = path + strspn(path, "/"); *p; p += strspn(p, "/")) {
         p += strcspn(p, "/");
         char kept = *p;
         *p = '\0';
-        int made = mkdir(path, 0777);
-        int number = errno;
+        if (mkdir(path, 0777) != 0 && errno != EEXIST && !first)
+            first = errno;
         *p = kept;
-        /* A folder that exists may answer with anything (read-only file system, no rights above it);
-         * opening the last one is the test that counts. */
-        if (made != 0 && number != EEXIST && kept == '\0')
-            return number;
-        p += strspn(p, "/");
     }
-    return 0;
+    return first;
 }
 
 uf_status uf_output_open(uf_output *output, const char *path, uf_error *error)

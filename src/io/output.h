@@ -21,7 +21,8 @@ UF_MUST_USE uf_status uf_output_open(uf_output *output, const char *path, uf_err
 void uf_output_close(uf_output *output);
 
 /* Writes `bytes` as `folder/name` below the output; folder may be NULL and is made when missing. `name` is
- * one path component (uf_output_key makes one from anything). */
+ * one path component of at most 249 bytes (uf_output_key makes one from anything), and so is folder. On
+ * UF_OUTPUT the file that was there before is still there. */
 UF_MUST_USE uf_status uf_output_write(const uf_output *output, const char *folder, const char *name,
                                       const void *bytes, size_t count, uf_error *error);
 
@@ -30,7 +31,8 @@ UF_MUST_USE uf_status uf_output_remove(const uf_output *output, const char *fold
                                        uf_error *error);
 
 /* Appends `key` as one safe file name: ASCII letters, digits, '_', '-' and inner '.' stay, every other byte
- * becomes "=XX" in hexadecimal. Different keys give different names. */
+ * becomes "=XX" in hexadecimal; the empty key becomes "=". A name of more than 200 bytes is cut and ends in a
+ * 128-bit hash of the key. Different keys give different names, on file systems that tell a from A. */
 void uf_output_key(uf_text *out, const char *key);
 
 #endif

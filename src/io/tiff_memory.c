@@ -29,14 +29,10 @@ static int keep_first(TIFF *tiff, void *user, const char *module, const char *fo
     return 1; /* handled: the process's own handler is not called */
 }
 
-static int drop(TIFF *tiff, void *user, const char *module, const char *format, va_list arguments)
+static int keep_warning(TIFF *tiff, void *user, const char *module, const char *format, va_list arguments)
 {
-    (void)tiff;
-    (void)user;
-    (void)module;
-    (void)format;
-    (void)arguments;
-    return 1;
+    const uf_tiff_complaint *complaint = user;
+    return complaint->warnings_too ? keep_first(tiff, user, module, format, arguments) : 1;
 }
 
 TIFFOpenOptions *uf_tiff_options(uf_tiff_complaint *complaint, uint64_t max_bytes)
@@ -45,7 +41,7 @@ TIFFOpenOptions *uf_tiff_options(uf_tiff_complaint *complaint, uint64_t max_byte
     if (!options)
         return NULL;
     TIFFOpenOptionsSetErrorHandlerExtR(options, keep_first, complaint);
-    TIFFOpenOptionsSetWarningHandlerExtR(options, drop, NULL);
+    TIFFOpenOptionsSetWarningHandlerExtR(options, keep_warning, complaint);
     TIFFOpenOptionsSetMaxSingleMemAlloc(options, (tmsize_t)(max_bytes < INT64_MAX ? max_bytes : INT64_MAX));
     return options;
 }

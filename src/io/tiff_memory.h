@@ -9,14 +9,16 @@
 
 #include "base/text.h"
 
-/* The first error libtiff reported, printable ASCII on one line; empty when there was none. */
+/* The first error libtiff reported, printable ASCII on one line; empty when there was none. Warnings count
+ * only while `warnings_too` is set. */
 typedef struct uf_tiff_complaint {
+    bool warnings_too;
     char text[240];
 } uf_tiff_complaint;
 
-/* Open options that send errors to `complaint` and drop warnings: nothing is printed and no handler of the
- * process is touched. `max_bytes` bounds any single allocation, 0 leaves it open. NULL without memory;
- * free with TIFFOpenOptionsFree as soon as the file is open. */
+/* Open options that send errors to `complaint`: nothing is printed and no handler of the process is touched.
+ * `max_bytes` bounds any single allocation, 0 leaves it open. NULL without memory; free with
+ * TIFFOpenOptionsFree as soon as the file is open. */
 TIFFOpenOptions *uf_tiff_options(uf_tiff_complaint *complaint, uint64_t max_bytes);
 
 /* A file in memory: it begins where `out` ended when this was made. */

@@ -50,7 +50,8 @@ void uf_canvas_blit_row(uf_canvas canvas, int x, int y, const uint8_t *indices, 
 void uf_canvas_line(uf_canvas canvas, int x0, int y0, int x1, int y1, uint8_t index);
 
 /* An open rhombus around (x, y): half diagonals `along` and `across` pixels, the first turned `angle_deg`
- * counter-clockwise (as seen) from the x axis. */
+ * counter-clockwise (as seen) from the x axis. NaN, or a size beyond all the canvas could show, draws
+ * nothing. */
 void uf_canvas_diamond(uf_canvas canvas, double x, double y, double along, double across, double angle_deg,
                        uint8_t index);
 

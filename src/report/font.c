@@ -68,11 +68,13 @@ static void draw_glyph(uf_canvas canvas, const uf_font_face *face, const uf_glyp
         for (int column = 0; column < glyph->width; column++) {
             int level = level_at(face, glyph, column, row);
             if (level)
-                uf_canvas_put(canvas, x + glyph->left + column, y - glyph->top + row, (uint8_t)(ink + level - 1));
+                uf_canvas_put(canvas, x + glyph->left + column, y - glyph->top + row,
+                              (uint8_t)(ink + level - 1));
         }
 }
 
-int uf_font_draw_bytes(uf_canvas canvas, uf_font font, int x, int y, const char *text, size_t count, uint8_t ink)
+int uf_font_draw_bytes(uf_canvas canvas, uf_font font, int x, int y, const char *text, size_t count,
+                       uint8_t ink)
 {
     const uf_font_face *face = &uf_font_faces[font];
     size_t used;

@@ -41,12 +41,13 @@ int uf_font_width(uf_font font, const char *text);
 /* Bytes of the longest beginning of `text` that is at most `width` pixels wide; whole characters only. */
 size_t uf_font_fit(uf_font font, const char *text, int width);
 
-/* Draws with the pen starting at x on the baseline y (the first row below capital letters). Grey level k, 1 ..
- * UF_FONT_LEVELS, becomes index ink + k - 1; level 0 leaves what is there. Returns where the pen ends. */
+/* Draws with the pen starting at x on the baseline y (the first row below capital letters). Grey level k, 1
+ * .. UF_FONT_LEVELS, becomes index ink + k - 1; level 0 leaves what is there. Returns where the pen ends. */
 int uf_font_draw(uf_canvas canvas, uf_font font, int x, int y, const char *text, uint8_t ink);
 
 /* The same for the first `count` bytes. */
-int uf_font_draw_bytes(uf_canvas canvas, uf_font font, int x, int y, const char *text, size_t count, uint8_t ink);
+int uf_font_draw_bytes(uf_canvas canvas, uf_font font, int x, int y, const char *text, size_t count,
+                       uint8_t ink);
 
 /* Puts index `halo` on the text's pixels and their eight neighbours: drawn first, it keeps text readable on
  * any ground. */

@@ -1,8 +1,8 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
 /*
- * The two panels. Images are reduced row by row while they are drawn, so a picture needs a few rows of scratch
- * and no reduced copies: near values are averaged, a pixel counts as contact when at least half of what it
- * shows is, labels are taken from the upper left pixel, and gaps are averaged where there are any.
+ * The two panels. Images are reduced row by row while they are drawn, so a picture needs a few rows of
+ * scratch and no reduced copies: near values are averaged, a pixel counts as contact when at least half of
+ * what it shows is, labels are taken from the upper left pixel, and gaps are averaged where there are any.
  */
 #include <math.h>
 #include <stdbool.h>
@@ -148,7 +148,8 @@ uf_status overlay_measure_near(uf_work *work, overlay_scene *scene, uf_error *er
     if (status != UF_OK)
         return status;
     memset(bins, 0, BINS * sizeof *bins);
-    scene->black = isfinite(scene->input->near_background_adu) ? (float)scene->input->near_background_adu : 0.0f;
+    scene->black =
+        isfinite(scene->input->near_background_adu) ? (float)scene->input->near_background_adu : 0.0f;
     for (int y = 0; y < scene->height; y++)
         count_row(near_row(scene, y, scratch), scene->width, scene->black, bins);
     double wanted = white_share * scene->width * scene->height, seen = 0.0;
@@ -209,7 +210,8 @@ static uf_status take_scratch(uf_work *work, int width, row_scratch *rows, uf_er
     return status;
 }
 
-static void draw_row(const overlay_scene *scene, const row_scratch *rows, uf_canvas near, uf_canvas gap, int y)
+static void draw_row(const overlay_scene *scene, const row_scratch *rows, uf_canvas near, uf_canvas gap,
+                     int y)
 {
     uint8_t *near_out = uf_canvas_row(near, y), *gap_out = uf_canvas_row(gap, y);
     outline_row(scene, y, rows->label, rows->outline);
@@ -223,8 +225,8 @@ static void draw_row(const overlay_scene *scene, const row_scratch *rows, uf_can
 
 /* ---- marks ------------------------------------------------------------------------------------------ */
 
-/* Half a diagonal of the mark around a spot, one of whose axes is `axis_um` long. The rhombus around an ellipse
- * has diagonals sqrt(2) times its axes; one pixel more keeps the line off the spot. */
+/* Half a diagonal of the mark around a spot, one of whose axes is `axis_um` long. The rhombus around an
+ * ellipse has diagonals sqrt(2) times its axes; one pixel more keeps the line off the spot. */
 static double half_diagonal(const overlay_scene *scene, double axis_um)
 {
     const double least = 3.0, root_two = 1.4142135623730951;
@@ -255,27 +257,40 @@ static bool has_number(uf_canvas panel, uf_box box)
     return false;
 }
 
+/* The label shown at a panel pixel, 0 beyond the panel. */
+static int32_t label_at(const overlay_scene *scene, int x, int y)
+{
+    if (x < 0 || y < 0 || x >= scene->width || y >= scene->height)
+        return 0;
+    return uf_labels_row(scene->input->labels, y * scene->reduction)[x * scene->reduction];
+}
+
 static int within(int value, int low, int high)
 {
     return value > high ? (high < low ? low : high) : value < low ? low : value;
 }
 
-/* Where a number of `width` x `height` pixels goes: as near its cell's centroid as other numbers allow, wholly
- * inside the panel; where all places are taken, at the centroid. */
-static uf_box number_place(uf_canvas panel, int centre_x, int centre_y, int width, int height)
+/* Finds where the number of `cell`, `width` x `height` pixels, goes: as near its centroid as other numbers
+ * allow, wholly inside the panel. Away from the centroid its middle must lie on the cell, or it would name
+ * another one. False where there is no such place: a number left out can be looked up, a heap of them cannot
+ * be read. */
+static bool number_place(const overlay_scene *scene, uf_canvas panel, const uf_cell *cell, int width,
+                         int height, uf_box *place)
 {
-    static const int step[][2] = {{0, 0}, {0, -1}, {0, 1}, {-1, 0}, {1, 0}, {-1, -1}, {1, 1}, {1, -1}, {-1, 1}};
-    uf_box first = {0};
+    /* In half widths and whole heights. */
+    static const int step[][2] = {{0, 0}, {0, -1}, {0, 1},  {-1, 0}, {1, 0}, {-1, -1},
+                                  {1, 1}, {1, -1}, {-1, 1}, {0, -2}, {0, 2}};
+    const int centre_x = (int)lround(overlay_at(scene, cell->x_px)),
+              centre_y = (int)lround(overlay_at(scene, cell->y_px));
     for (size_t k = 0; k < sizeof step / sizeof step[0]; k++) {
-        int x = within(centre_x - width / 2 + step[k][0] * width, 0, panel.width - width);
+        int x = within(centre_x - width / 2 + step[k][0] * (width / 2 + 1), 0, panel.width - width);
         int y = within(centre_y - height / 2 + step[k][1] * height, 0, panel.height - height);
-        uf_box box = {x, y, x + width, y + height};
-        if (!has_number(panel, box))
-            return box;
-        if (k == 0)
-            first = box;
+        *place = (uf_box){x, y, x + width, y + height};
+        if ((k == 0 || label_at(scene, x + width / 2, y + height / 2) == cell->cell) &&
+            !has_number(panel, *place))
+            return true;
     }
-    return first;
+    return false;
 }
 
 /* Cells that do not count have their number in brackets. */
@@ -284,10 +299,16 @@ static void number_text(char *out, size_t size, const uf_cell *cell)
     (void)snprintf(out, size, cell->used ? "%d" : "(%d)", cell->cell);
 }
 
+static void draw_number(uf_canvas panel, int x, int y, const char *text)
+{
+    uf_font_halo(panel, UF_FONT_SMALL, x, y, text, UF_INK_HALO);
+    uf_font_draw(panel, UF_FONT_SMALL, x, y, text, UF_INK_NUMBER);
+}
+
 static void draw_numbers(const overlay_scene *scene, uf_canvas near, uf_canvas gap)
 {
-    enum { HALO = 1 };
-    const int height = uf_font_faces[UF_FONT_SMALL].cap_height + 2 * HALO;
+    enum { HALO = 1, BRACKET = 2 }; /* brackets reach below the baseline */
+    const int height = uf_font_faces[UF_FONT_SMALL].cap_height + BRACKET + 2 * HALO;
     for (int k = 0; scene->input->cells && k < scene->input->labels.count; k++) {
         const uf_cell *cell = &scene->input->cells[k];
         double x = overlay_at(scene, cell->x_px), y = overlay_at(scene, cell->y_px);
@@ -296,12 +317,11 @@ static void draw_numbers(const overlay_scene *scene, uf_canvas near, uf_canvas g
         char text[24];
         number_text(text, sizeof text, cell);
         int width = uf_font_width(UF_FONT_SMALL, text) + 2 * HALO;
-        uf_box box = number_place(near, (int)lround(x), (int)lround(y), width, height);
-        const uf_canvas panels[2] = {near, gap};
-        for (int p = 0; p < 2; p++) {
-            uf_font_halo(panels[p], UF_FONT_SMALL, box.x0 + HALO, box.y1 - HALO, text, UF_INK_HALO);
-            uf_font_draw(panels[p], UF_FONT_SMALL, box.x0 + HALO, box.y1 - HALO, text, UF_INK_NUMBER);
-        }
+        uf_box box;
+        if (!number_place(scene, near, cell, width, height, &box))
+            continue;
+        draw_number(near, box.x0 + HALO, box.y1 - HALO - BRACKET, text);
+        draw_number(gap, box.x0 + HALO, box.y1 - HALO - BRACKET, text);
     }
 }
 

@@ -10,11 +10,11 @@
 /* The input, and what is decided before anything is drawn. */
 typedef struct overlay_scene {
     const uf_overlay_input *input;
-    int reduction;       /* image pixels a picture pixel, along each axis */
-    int width, height;   /* of a panel */
-    float black, white;  /* near values drawn black and white */
-    float gap_max_nm;    /* far end of the gap ramp, a round number */
-    bool has_cutoff;     /* the cutoff is a number above 0 */
+    int reduction;      /* image pixels a picture pixel, along each axis */
+    int width, height;  /* of a panel */
+    float black, white; /* near values drawn black and white */
+    float gap_max_nm;   /* far end of the gap ramp, a round number */
+    bool has_cutoff;    /* the cutoff is a number above 0 */
     uf_gap_kind gap_kind;
 } overlay_scene;
 
@@ -43,8 +43,8 @@ void overlay_draw_bar(uf_canvas canvas, const overlay_scene *scene, int x, int t
 /* Draws one line with the baseline y; the middle of what is too long becomes an ellipsis. */
 void overlay_draw_line(uf_canvas canvas, uf_font font, int x, int y, int width, const char *text);
 
-/* Draws scale bar, legend, near scale, settings and flags below row y, wrapped to `width`, and returns the row
- * below them. On the zeroed canvas it only measures. */
+/* Draws scale bar, legend, near scale, settings and flags below row y, wrapped to `width`, and returns the
+ * row below them. On the zeroed canvas it only measures. */
 int overlay_draw_footer(uf_canvas canvas, const overlay_scene *scene, int x, int y, int width);
 
 #endif

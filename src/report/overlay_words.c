@@ -11,7 +11,8 @@
 
 /* ---- round numbers ------------------------------------------------------------------------------- */
 
-/* The smallest of the given mantissas (1 first, 10 last) times a power of ten that is at least `value` > 0. */
+/* The smallest of the given mantissas (1 first, 10 last) times a power of ten that is at least `value` > 0.
+ */
 static double round_up(double value, const double *mantissas)
 {
     const double slack = 1.0 - 1e-9; /* 0.3 / 0.1 is not quite 3 */
@@ -171,7 +172,8 @@ typedef struct legend {
 
 enum { SAMPLE = 18, AFTER_SAMPLE = 6, BETWEEN = 20, LEGEND_LINE = 20 };
 
-/* Makes room for a sample `width` pixels wide and its words, draws the words, and returns the sample's box. */
+/* Makes room for a sample `width` pixels wide and its words, draws the words, and returns the sample's box.
+ */
 static uf_box legend_entry(legend *at, int width, const char *words)
 {
     int whole = width + (width ? AFTER_SAMPLE : 0) + uf_font_width(UF_FONT_SMALL, words);
@@ -208,8 +210,9 @@ static void outline_entry(legend *at, const overlay_scene *scene)
     bool all_used = true;
     for (int k = 0; scene->input->cells && k < scene->input->labels.count; k++)
         all_used = all_used && scene->input->cells[k].used;
-    uf_box box = legend_entry(at, SAMPLE, all_used ? "cell outline and number"
-                                                   : "cell outline and number, (in brackets): not counted");
+    uf_box box = legend_entry(at, SAMPLE,
+                              all_used ? "cell outline and number"
+                                       : "cell outline and number, (in brackets): not counted");
     uf_canvas_fill(at->canvas, box, UF_INK_OUTSIDE);
     uf_canvas_frame(at->canvas, box, UF_INK_OUTLINE);
 }
@@ -257,10 +260,10 @@ static int draw_near_words(uf_canvas canvas, const overlay_scene *scene, int x, 
     char black[UF_NUMBER_TEXT], white[UF_NUMBER_TEXT], words[300];
     uf_format_number(black, (double)scene->black, 3);
     uf_format_number(white, (double)scene->white, 3);
-    (void)snprintf(words, sizeof words,
-                   "Near image, square-root scale: black at %s ADU (background), white at %s ADU (99.7th percentile).%s",
-                   black, white,
-                   scene->reduction == 2 ? " Drawn 2:1, one pixel for 2 × 2 of the image." : "");
+    (void)snprintf(
+        words, sizeof words,
+        "Near image, square-root scale: black at %s ADU (background), white at %s ADU (99.7th percentile).%s",
+        black, white, scene->reduction == 2 ? " Drawn 2:1, one pixel for 2 × 2 of the image." : "");
     return draw_wrapped(canvas, x, y, width, words);
 }
 

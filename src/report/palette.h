@@ -3,9 +3,9 @@
  * The one palette of all overlays. Ramps lie in order of lightness, so that neighbouring pixels have
  * neighbouring indices, which is what makes the PNG small.
  *
- * The gap ramp is light at the substrate and dark far from it, evenly in OKLab lightness, so that it keeps its
- * order in grey print and to colour-blind eyes; its hue runs from aqua through blue and violet to wine. The
- * contact tint has the hue of the ramp's close end: aqua means close in both panels. Outlines are orange,
+ * The gap ramp is light at the substrate and dark far from it, evenly in OKLab lightness, so that it keeps
+ * its order in grey print and to colour-blind eyes; its hue runs from aqua through blue and violet to wine.
+ * The contact tint has the hue of the ramp's close end: aqua means close in both panels. Outlines are orange,
  * which occurs nowhere else.
  */
 #ifndef UF_REPORT_PALETTE_H
@@ -17,19 +17,19 @@
 enum { UF_NEAR_LEVELS = 76, UF_GAP_LEVELS = 80 };
 
 enum uf_ink {
-    UF_INK_NEAR = 0,                                  /* near image, black to white */
-    UF_INK_CONTACT = UF_INK_NEAR + UF_NEAR_LEVELS,    /* the same levels, tinted */
-    UF_INK_GAP = UF_INK_CONTACT + UF_NEAR_LEVELS,     /* close to far */
+    UF_INK_NEAR = 0,                               /* near image, black to white */
+    UF_INK_CONTACT = UF_INK_NEAR + UF_NEAR_LEVELS, /* the same levels, tinted */
+    UF_INK_GAP = UF_INK_CONTACT + UF_NEAR_LEVELS,  /* close to far */
     UF_INK_PAGE = UF_INK_GAP + UF_GAP_LEVELS,
-    UF_INK_TEXT,                                      /* text on the page, by grey level */
-    UF_INK_HALO = UF_INK_TEXT + UF_FONT_LEVELS,       /* around numbers */
-    UF_INK_NUMBER,                                    /* numbers on their halo, by grey level */
-    UF_INK_OUTSIDE = UF_INK_NUMBER + UF_FONT_LEVELS,  /* gap panel: no cell */
-    UF_INK_NO_GAP,                                    /* gap panel: hatching of cells without a gap */
+    UF_INK_TEXT,                                     /* text on the page, by grey level */
+    UF_INK_HALO = UF_INK_TEXT + UF_FONT_LEVELS,      /* around numbers */
+    UF_INK_NUMBER,                                   /* numbers on their halo, by grey level */
+    UF_INK_OUTSIDE = UF_INK_NUMBER + UF_FONT_LEVELS, /* gap panel: no cell */
+    UF_INK_NO_GAP,                                   /* gap panel: hatching of cells without a gap */
     UF_INK_OUTLINE,
     UF_INK_SPOT,
-    UF_INK_LINE,                                      /* frames, ticks, scale bar */
-    UF_INK_CUTOFF,                                    /* contact cutoff on the colour bar */
+    UF_INK_LINE,   /* frames, ticks, scale bar */
+    UF_INK_CUTOFF, /* contact cutoff on the colour bar */
     UF_INK_COUNT
 };
 

@@ -2,12 +2,12 @@
 #include <math.h>
 #include <string.h>
 
-#include "image/basins.h"
 #include "image/components.h"
 #include "image/distance.h"
 #include "image/kernels.h"
 #include "image/smooth.h"
 #include "segment/levels.h"
+#include "segment/part.h"
 #include "segment/segment.h"
 
 /* ---- cut at the middle of the two levels -------------------------------------------------------------- */
@@ -97,8 +97,8 @@ static double neck_of_setting(double split)
     return sqrt(split);
 }
 
-static uf_status find_labels(uf_work *work, const uf_settings *settings, double pixel_size_um, uf_mask mask,
-                             uf_cell_map *map, uf_error *error)
+static uf_status find_labels(uf_work *work, const uf_channel *wide, const uf_settings *settings,
+                             double pixel_size_um, uf_mask mask, uf_cell_map *map, uf_error *error)
 {
     double um2 = pixel_size_um * pixel_size_um;
     double min_pixels = settings->cells.min_area_um2 / um2, max_pixels = settings->cells.max_area_um2 / um2;
@@ -108,8 +108,8 @@ static uf_status find_labels(uf_work *work, const uf_settings *settings, double 
     if (status == UF_OK)
         status = uf_distance(work, map->labels, 1, map->distance_px, error);
     if (status == UF_OK)
-        status = uf_basins(work, map->distance_px, neck_of_setting(settings->cells.split), min_pixels, max_pixels,
-                          &map->labels, error);
+        status = uf_part_cells(work, wide, map->distance_px, pixel_size_um, neck_of_setting(settings->cells.split),
+                               min_pixels, max_pixels, &map->labels, error);
     return status;
 }
 
@@ -132,7 +132,7 @@ uf_status uf_segment(uf_work *work, const uf_channel *wide, const uf_settings *s
     if (status == UF_OK)
         status = cut_image(work, wide, map, settings->cells.smooth_um / pixel_size_um, &mask, error);
     if (status == UF_OK)
-        status = find_labels(work, settings, pixel_size_um, mask, map, error);
+        status = find_labels(work, wide, settings, pixel_size_um, mask, map, error);
     uf_arena_back(&work->arena, mark);
     if (status == UF_OK) {
         /* What was the distance to the outside of a piece is now split by cells too. */
