@@ -43,6 +43,11 @@ typedef struct uf_kernels {
     /* best[x] = max(best[x], min(before[x], after[x]) - here[x]): contrast that holds on both sides. */
     void (*two_sided)(float *best, const float *here, const float *before, const float *after, int n);
 
+    /* closed[x] = max(closed[x], min(before, after) - here): as two_sided, but a side where there is nothing (at
+     * or below `nowhere`) asks nothing. */
+    void (*closed_sides)(float *closed, const float *here, const float *before, const float *after, float nowhere,
+                         int n);
+
     /* out[x] = in[x] > (level0[x] + t (level1[x] - level0[x])). */
     void (*above)(uint8_t *out, const float *in, const float *level0, const float *level1, float t, int n);
 } uf_kernels;

@@ -114,6 +114,16 @@ static void two_sided(float *restrict best, const float *restrict here, const fl
     }
 }
 
+static void closed_sides(float *restrict closed, const float *restrict here, const float *restrict before,
+                         const float *restrict after, float nowhere, int n)
+{
+    for (int x = 0; x < n; x++) {
+        float b = before[x] > nowhere ? before[x] : 1e6f, a = after[x] > nowhere ? after[x] : 1e6f;
+        float contrast = (b < a ? b : a) - here[x];
+        closed[x] = contrast > closed[x] ? contrast : closed[x];
+    }
+}
+
 static void above(uint8_t *restrict out, const float *restrict in, const float *restrict level0,
                   const float *restrict level1, float t, int n)
 {
@@ -126,4 +136,5 @@ const uf_kernels uf_kernels_v3 = {"x86-64-v3",
 #else
 const uf_kernels uf_kernels_baseline = {"baseline",
 #endif
-                                  convolve_row, convolve_column, six_taps, six_rows, gap, two_sided, above};
+                                  convolve_row, convolve_column, six_taps, six_rows, gap, two_sided, closed_sides,
+                                  above};

@@ -267,6 +267,7 @@ static void write_header(png_job *job, const uf_indexed *image)
         palette[k] = (png_color){image->palette[k][0], image->palette[k][1], image->palette[k][2]};
     png_set_write_fn(job->png, job, png_append, png_flushed);
     png_set_user_limits(job->png, PNG_UINT_31_MAX, PNG_UINT_31_MAX);
+    png_set_benign_errors(job->png, 0); /* an index beyond the palette is an error, not a warning */
     png_set_compression_level(job->png, 1);
     png_set_filter(job->png, PNG_FILTER_TYPE_BASE, PNG_FILTER_NONE);
     png_set_IHDR(job->png, job->info, (png_uint_32)image->width, (png_uint_32)image->height, 8,

@@ -10,7 +10,8 @@
 #include "image/indexed.h"
 
 /* A 32-bit float grey TIFF, deflate without predictor (readers without extra codecs must open it). NaN is
- * kept, as one bit pattern whatever the processor made; resolution tags where pixel_size_um is a number. `description` goes into ImageDescription (NULL: none). */
+ * kept, as one bit pattern whatever the processor made; resolution tags where pixel_size_um is a number.
+ * `description` goes into ImageDescription (NULL: none). */
 UF_MUST_USE uf_status uf_encode_float_tiff(uf_text *out, uf_plane plane, double pixel_size_um,
                                            const char *description, uf_error *error);
 

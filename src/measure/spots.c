@@ -2,12 +2,10 @@
 /*
  * Focal spots: compact minima of the gap against their own surroundings, on both sides of them.
  *
- * At each pixel the gap (at the scale of the point spread function) is compared with the gap at a distance
- * either way along a line, and the higher of the two contrasts is not enough: the lower one counts. Over
- * eight directions the best is kept. So the rim of a wide patch, which is low on one side, has none; a dip
- * inside a patch has one; a long spot has one across its length. The map of this contrast is cut at a level
- * above the noise, its pieces are parted at saddles (image/basins.h), and each part is a spot with the
- * region of at least half its largest contrast.
+ * The smaller of the narrow and the closed contrast (measure/contrast.h) is the score. Its map is cut above the
+ * noise and parted at saddles (image/basins.h): each part is a spot, a long one too, since only its middle is
+ * closed. The spot's region is where the narrow contrast is at least half of that at its top, connected to the
+ * top.
  */
 #include <math.h>
 #include <stdlib.h>
@@ -16,62 +14,16 @@
 #include "fit/robust.h"
 #include "image/basins.h"
 #include "image/components.h"
-#include "image/kernels.h"
+#include "measure/contrast.h"
 #include "measure/measure.h"
 #include "measure/shape.h"
 #include "optics/detection.h"
-
-/* Distances at which surroundings are looked at: a spot is up to about this wide on either side. */
-static const double reaches_um[] = {0.45, 0.7};
-enum { REACHES = 2, DIRECTIONS = 8 };
 
 /* Two maxima of contrast are one spot when the saddle between them reaches this share of the lower one. */
 static const double one_spot_saddle = 0.6;
 
 /* Natural unevenness of a membrane reaches some nm of contrast; a spot must stand out of it. */
 static const double least_contrast_nm = 7.0;
-
-/* ---- contrast -------------------------------------------------------------------------------------------- */
-
-typedef struct offset {
-    int dx, dy;
-} offset;
-
-typedef struct contrast_job {
-    const uf_kernels *kernels;
-    uf_plane gap, contrast;
-    offset offsets[REACHES * DIRECTIONS];
-    int count;
-} contrast_job;
-
-static void make_offsets(contrast_job *job, double pixel_size_um)
-{
-    for (int r = 0; r < REACHES; r++)
-        for (int k = 0; k < DIRECTIONS; k++) {
-            double angle = 3.14159265358979323846 * k / DIRECTIONS, px = reaches_um[r] / pixel_size_um;
-            px = px < 1 ? 1 : px;
-            job->offsets[job->count++] = (offset){(int)lround(px * cos(angle)), (int)lround(px * sin(angle))};
-        }
-}
-
-static void contrast_rows(void *context, int y0, int y1)
-{
-    contrast_job *job = context;
-    int width = job->gap.width, height = job->gap.height;
-    for (int y = y0; y < y1; y++) {
-        float *best = uf_plane_row(job->contrast, y);
-        const float *here = uf_plane_row(job->gap, y);
-        for (int x = 0; x < width; x++)
-            best[x] = 0.0f;
-        for (int k = 0; k < job->count; k++) {
-            int dx = job->offsets[k].dx, dy = job->offsets[k].dy, reach = abs(dx), n = width - 2 * reach;
-            if (y - dy < 0 || y + dy >= height || n <= 0)
-                continue;
-            job->kernels->two_sided(best + reach, here + reach, uf_plane_row(job->gap, y - dy) + reach - dx,
-                                    uf_plane_row(job->gap, y + dy) + reach + dx, n);
-        }
-    }
-}
 
 /* ---- cut ---------------------------------------------------------------------------------------------------- */
 
@@ -102,46 +54,46 @@ static float needed_at(const float *needed, float gap)
     return needed[k < GAP_STEPS ? k : GAP_STEPS - 1];
 }
 
-/* Contrast counts from half of what a spot's top must reach. */
-static void cut_contrast(const uf_measure_input *in, uf_plane contrast, const float *needed, uf_mask mask)
+/* score := the smaller contrast where it can belong to a spot (at least half of what a spot's top must reach), 0
+ * elsewhere; mask says where. `narrow` is left whole. */
+static void cut_score(const uf_measure_input *in, uf_plane narrow, uf_plane score, const float *needed, uf_mask mask)
 {
-    for (int y = 0; y < contrast.height; y++) {
+    for (int y = 0; y < score.height; y++) {
         const int32_t *labels = uf_labels_row(in->cells->labels, y);
         const uint8_t *state = uf_mask_row(in->gaps->state, y);
-        const float *gap = uf_plane_row(in->gaps->smooth_gap_nm, y);
-        float *row = uf_plane_row(contrast, y);
+        const float *gap = uf_plane_row(in->gaps->smooth_gap_nm, y), *best = uf_plane_row(narrow, y);
+        float *row = uf_plane_row(score, y);
         uint8_t *out = uf_mask_row(mask, y);
-        for (int x = 0; x < contrast.width; x++) {
+        for (int x = 0; x < score.width; x++) {
+            float value = best[x] < row[x] ? best[x] : row[x];
             out[x] = labels[x] && state[x] == UF_GAP_RESOLVED &&
-                     row[x] >= 0.5f * needed_at(needed + (size_t)labels[x] * GAP_STEPS, gap[x]);
-            if (!out[x])
-                row[x] = 0.0f;
+                     value >= 0.5f * needed_at(needed + (size_t)labels[x] * GAP_STEPS, gap[x]);
+            row[x] = out[x] ? value : 0.0f;
         }
     }
 }
 
 /* ---- spots --------------------------------------------------------------------------------------------------- */
 
-/* Sums over one basin: first its top, then the region at half the top. */
+/* One candidate: where its score is highest, and sums over its region. */
 typedef struct spot_sums {
     float top, least_gap, near_peak;
-    int cell;
-    int top_x, top_y;
-    double weight, x, y;           /* weighted by contrast */
+    int cell, top_x, top_y;
+    double weight, x, y;             /* weighted by contrast */
     double area, ux, uy, xx, yy, xy; /* of the region, unweighted, about the top */
 } spot_sums;
 
-static void find_tops(const uf_measure_input *in, uf_plane contrast, uf_labels basins, spot_sums *sums)
+static void find_tops(const uf_measure_input *in, uf_plane score, uf_labels basins, spot_sums *sums)
 {
     for (int k = 0; k <= basins.count; k++)
         sums[k] = (spot_sums){.least_gap = INFINITY, .near_peak = -INFINITY};
     for (int y = 0; y < basins.height; y++) {
         const int32_t *row = uf_labels_row(basins, y);
         for (int x = 0; x < basins.width; x++) {
-            if (!row[x] || uf_plane_row(contrast, y)[x] <= sums[row[x]].top)
+            if (!row[x] || uf_plane_row(score, y)[x] <= sums[row[x]].top)
                 continue;
             spot_sums *s = &sums[row[x]];
-            s->top = uf_plane_row(contrast, y)[x];
+            s->top = uf_plane_row(score, y)[x];
             s->cell = uf_labels_row(in->cells->labels, y)[x];
             s->top_x = x;
             s->top_y = y;
@@ -149,36 +101,68 @@ static void find_tops(const uf_measure_input *in, uf_plane contrast, uf_labels b
     }
 }
 
-static void sum_regions(const uf_measure_input *in, uf_plane contrast, uf_labels basins, spot_sums *sums)
+static void add_pixel(const uf_measure_input *in, float contrast, int x, int y, spot_sums *s)
 {
-    for (int y = 0; y < basins.height; y++) {
-        const int32_t *row = uf_labels_row(basins, y);
-        for (int x = 0; x < basins.width; x++) {
-            spot_sums *s = &sums[row[x]];
-            float c = uf_plane_row(contrast, y)[x];
-            if (!row[x] || c < 0.5f * s->top || uf_labels_row(in->cells->labels, y)[x] != s->cell)
-                continue;
-            double dx = x - s->top_x, dy = y - s->top_y;
-            s->weight += (double)c;
-            s->x += (double)c * dx;
-            s->y += (double)c * dy;
-            s->area++;
-            s->ux += dx;
-            s->uy += dy;
-            s->xx += dx * dx;
-            s->yy += dy * dy;
-            s->xy += dx * dy;
-            float gap = uf_plane_row(in->gaps->smooth_gap_nm, y)[x], near = uf_plane_row(in->gaps->near_adu, y)[x];
-            s->least_gap = gap < s->least_gap ? gap : s->least_gap;
-            s->near_peak = near > s->near_peak ? near : s->near_peak;
-        }
+    double dx = x - s->top_x, dy = y - s->top_y;
+    s->weight += (double)contrast;
+    s->x += (double)contrast * dx;
+    s->y += (double)contrast * dy;
+    s->area++;
+    s->ux += dx;
+    s->uy += dy;
+    s->xx += dx * dx;
+    s->yy += dy * dy;
+    s->xy += dx * dy;
+    float gap = uf_plane_row(in->gaps->smooth_gap_nm, y)[x], near = uf_plane_row(in->gaps->near_adu, y)[x];
+    s->least_gap = gap < s->least_gap ? gap : s->least_gap;
+    s->near_peak = near > s->near_peak ? near : s->near_peak;
+}
+
+/* Grows the region of candidate `number` from its top over unclaimed pixels of its cell; claimed holds whose each
+ * pixel is. `waiting` has room for every pixel of the image once. */
+static void grow_region(const uf_measure_input *in, uf_plane narrow, uf_labels claimed, int number, int *waiting,
+                        spot_sums *s)
+{
+    float least = 0.5f * uf_plane_row(narrow, s->top_y)[s->top_x];
+    int count = 0, done = 0, width = claimed.width;
+    waiting[count++] = s->top_y * width + s->top_x;
+    uf_labels_row(claimed, s->top_y)[s->top_x] = number;
+    while (done < count) {
+        int x = waiting[done] % width, y = waiting[done] / width;
+        done++;
+        add_pixel(in, uf_plane_row(narrow, y)[x], x, y, s);
+        for (int v = y - 1; v <= y + 1; v++)
+            for (int u = x - 1; u <= x + 1; u++) {
+                if (u < 0 || v < 0 || u >= width || v >= claimed.height || uf_labels_row(claimed, v)[u] ||
+                    uf_labels_row(in->cells->labels, v)[u] != s->cell || uf_plane_row(narrow, v)[u] < least)
+                    continue;
+                uf_labels_row(claimed, v)[u] = number;
+                waiting[count++] = v * width + u;
+            }
     }
+}
+
+/* Regions of all candidates, which never share a pixel. */
+static uf_status grow_regions(uf_work *work, const uf_measure_input *in, uf_plane narrow, uf_labels basins,
+                              spot_sums *sums, uf_error *error)
+{
+    int *waiting;
+    size_t pixels = (size_t)basins.width * (size_t)basins.height;
+    uf_status status = uf_take(work, pixels, sizeof *waiting, "spots", &waiting, error);
+    if (status != UF_OK)
+        return status;
+    for (int y = 0; y < basins.height; y++)
+        memset(uf_labels_row(basins, y), 0, (size_t)basins.width * sizeof(int32_t));
+    for (int k = 1; k <= basins.count; k++)
+        if (sums[k].cell && !uf_labels_row(basins, sums[k].top_y)[sums[k].top_x])
+            grow_region(in, narrow, basins, k, waiting, &sums[k]);
+    return UF_OK;
 }
 
 static int is_spot(const uf_measure_input *in, const spot_sums *s, const float *needed, const uf_spot *spot)
 {
     const uf_settings *settings = in->settings;
-    return s->cell && s->top >= needed_at(needed + (size_t)s->cell * GAP_STEPS, s->least_gap) &&
+    return s->top >= needed_at(needed + (size_t)s->cell * GAP_STEPS, s->least_gap) &&
            spot->length_um >= settings->spots.min_length_um && spot->length_um <= settings->spots.max_length_um &&
            (double)s->least_gap <= settings->contact.cutoff_nm;
 }
@@ -268,20 +252,20 @@ static uf_status fill_cells(uf_work *work, uf_cell *rows, int cells, uf_spot *sp
 
 /* ---- all of it -------------------------------------------------------------------------------------------------- */
 
-/* Contrast, cut and parted into basins. `needed` has a table for each cell. */
-static uf_status find_basins(uf_work *work, const uf_measure_input *in, const float *needed, uf_plane contrast,
-                             uf_labels *basins, uf_error *error)
+/* Score, cut and parted into basins. `needed` has a table for each cell. */
+static uf_status find_basins(uf_work *work, const uf_measure_input *in, const float *needed, uf_plane narrow,
+                             uf_plane score, uf_labels *basins, uf_error *error)
 {
     uf_mask mask;
-    contrast_job job = {.kernels = uf_kernels_in_use(), .gap = in->gaps->smooth_gap_nm, .contrast = contrast};
-    make_offsets(&job, in->plan->pixel_size_um);
-    uf_rows_run(work, contrast.height, contrast_rows, &job);
-    uf_status status = uf_mask_take(work, contrast.width, contrast.height, &mask, error);
+    uf_status status =
+        uf_contrast_find(work, in->gaps->smooth_gap_nm, in->plan->pixel_size_um, narrow, score, error);
+    if (status == UF_OK)
+        status = uf_mask_take(work, score.width, score.height, &mask, error);
     if (status == UF_OK) {
-        cut_contrast(in, contrast, needed, mask);
+        cut_score(in, narrow, score, needed, mask);
         status = uf_components(work, mask, UF_EIGHT_NEIGHBOURS, basins, error);
     }
-    return status == UF_OK ? uf_basins(work, contrast, one_spot_saddle, 1, 1e9, basins, error) : status;
+    return status == UF_OK ? uf_basins(work, score, one_spot_saddle, 1, 1e9, basins, error) : status;
 }
 
 static int collect(const uf_measure_input *in, const float *needed, const spot_sums *sums, int basins, uf_spot *spots)
@@ -298,27 +282,36 @@ static int collect(const uf_measure_input *in, const float *needed, const spot_s
     return count;
 }
 
-static uf_status find_spots(uf_work *work, const uf_measure_input *in, const uf_cell *rows, uf_plane contrast,
-                            uf_labels *basins, uf_spot **spots, int *count, uf_error *error)
+static uf_status find_spots(uf_work *work, const uf_measure_input *in, const uf_cell *rows, uf_spot **spots,
+                            int *count, uf_error *error)
 {
-    int cells = in->cells->labels.count;
+    int cells = in->cells->labels.count, width = in->near->image.width, height = in->near->image.height;
+    uf_plane narrow, score;
+    uf_labels basins;
     float *needed;
     spot_sums *sums;
-    uf_status status = uf_take(work, ((size_t)cells + 1) * GAP_STEPS, sizeof *needed, "spots", &needed, error);
+    uf_status status = uf_plane_take(work, width, height, &narrow, error);
+    if (status == UF_OK)
+        status = uf_plane_take(work, width, height, &score, error);
+    if (status == UF_OK)
+        status = uf_labels_take(work, width, height, &basins, error);
+    if (status == UF_OK)
+        status = uf_take(work, ((size_t)cells + 1) * GAP_STEPS, sizeof *needed, "spots", &needed, error);
     for (int k = 1; status == UF_OK && k <= cells; k++)
         tabulate_needed(in, &rows[k - 1], needed + (size_t)k * GAP_STEPS);
     if (status == UF_OK)
-        status = find_basins(work, in, needed, contrast, basins, error);
+        status = find_basins(work, in, needed, narrow, score, &basins, error);
     if (status == UF_OK)
-        status = uf_take(work, (size_t)basins->count + 1, sizeof *sums, "spots", &sums, error);
+        status = uf_take(work, (size_t)basins.count + 1, sizeof *sums, "spots", &sums, error);
     if (status == UF_OK)
-        status = uf_take(work, (size_t)basins->count + 1, sizeof **spots, "spots", spots, error);
+        status = uf_take(work, (size_t)basins.count + 1, sizeof **spots, "spots", spots, error);
     if (status != UF_OK)
         return status;
-    find_tops(in, contrast, *basins, sums);
-    sum_regions(in, contrast, *basins, sums);
-    *count = collect(in, needed, sums, basins->count, *spots);
-    return UF_OK;
+    find_tops(in, score, basins, sums);
+    status = grow_regions(work, in, narrow, basins, sums, error);
+    if (status == UF_OK)
+        *count = collect(in, needed, sums, basins.count, *spots);
+    return status;
 }
 
 /* The list outlives the arena's scratch, so it has memory of its own. */
@@ -334,18 +327,11 @@ static uf_status keep(const uf_spot *found, int count, uf_spot **spots, uf_error
 uf_status uf_measure_spots(uf_work *work, const uf_measure_input *input, uf_cell *rows, uf_spot **spots, int *count,
                            uf_error *error)
 {
-    int width = input->near->image.width, height = input->near->image.height;
-    uf_plane contrast;
-    uf_labels basins;
     uf_spot *found;
     *count = 0;
     *spots = NULL;
     uf_arena_mark mark = uf_arena_now(&work->arena);
-    uf_status status = uf_plane_take(work, width, height, &contrast, error);
-    if (status == UF_OK)
-        status = uf_labels_take(work, width, height, &basins, error);
-    if (status == UF_OK)
-        status = find_spots(work, input, rows, contrast, &basins, &found, count, error);
+    uf_status status = find_spots(work, input, rows, &found, count, error);
     if (status == UF_OK)
         status = fill_cells(work, rows, input->cells->labels.count, found, *count, error);
     if (status == UF_OK)

@@ -72,7 +72,7 @@ def files():
     yield "empty.tif", b""
     yield "text.tif", b"near,wide\nnear_01.tif,wide_01.tif\n"
     yield "cut-in-header.tif", good[:-40]
-    yield "cut-in-pixels.tif", b"II*\0" + good[4:8] + b"\x21\x43"
+    yield "cut-after-header.tif", b"II*\0" + good[4:8] + b"\x21\x43"
     yield "strip-beyond-end.tif", tiff(counts(), [two[0], (100000, two[1][1])])
     yield "strip-count-too-large.tif", tiff(counts(), [two[0], (two[1][0], 4000000000)])
     yield "strip-count-too-small.tif", tiff(counts(), [two[0], (two[1][0], 5)])
