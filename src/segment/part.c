@@ -13,6 +13,7 @@ static const double relief_smooth_um = 0.15;
 static const double shape_weight = 0.15;    /* relief of a vanishing neck, 1/um */
 static const double level_difference = 0.08; /* relative, between neighbours that are two cells */
 static const double ridge_ratio = 2.2;      /* relief along the border over the relief inside */
+static const double unevenness_ratio = 2.5; /* relief up to this many times the usual is the dye's own unevenness */
 
 typedef struct part_job {
     uf_work *work;
@@ -21,6 +22,8 @@ typedef struct part_job {
     uf_labels labels;
     double px_um;
     float *depth; /* of each part, greatest distance */
+    float deepest; /* of all parts */
+    float usual;   /* mean relief well inside cells */
 } part_job;
 
 /* ---- relief ------------------------------------------------------------------------------------------------ */
@@ -95,11 +98,12 @@ static int32_t pop(queue *q)
     return pixel;
 }
 
-static int level_of(const part_job *job, int x, int y, int part)
+/* The same for every part, or a shallow part would run over a deep one as soon as it passes the neck. */
+static int level_of(const part_job *job, int x, int y)
 {
-    float distance = uf_plane_row(job->distance, y)[x], depth = job->depth[part];
-    float shape = distance < depth ? 1.0f - distance / depth : 0.0f;
-    float level = (uf_plane_row(job->relief, y)[x] + (float)shape_weight * shape) * levels_per_relief;
+    float shape = 1.0f - uf_plane_row(job->distance, y)[x] / job->deepest;
+    float ridge = uf_plane_row(job->relief, y)[x] - (float)unevenness_ratio * job->usual;
+    float level = ((ridge > 0.0f ? ridge : 0.0f) + (float)shape_weight * shape) * levels_per_relief;
     return level < (float)(LEVELS - 1) ? (int)level : LEVELS - 1;
 }
 
@@ -128,7 +132,7 @@ static void flood_neighbours(part_job *job, queue *q, int x, int y)
         if (*label != -1)
             continue;
         *label = part;
-        int level = level_of(job, u, v, part);
+        int level = level_of(job, u, v);
         /* Water does not run back down past the level already reached. */
         push(q, v * job->labels.width + u, level > q->lowest ? level : q->lowest);
     }
@@ -203,40 +207,71 @@ static border *border_of(graph *g, int a, int b)
     return &g->borders[g->count++];
 }
 
-static void note_border(part_job *job, graph *g, int x, int y, int u, int v)
+/* What a pass over the borders notes. */
+typedef void border_note(part_job *job, border *between, int x, int y, int u, int v);
+
+static void note_saddle(part_job *job, border *between, int x, int y, int u, int v)
 {
-    int a = uf_labels_row(job->labels, y)[x], b = uf_labels_row(job->labels, v)[u];
-    border *between = a > 0 && b > 0 && a != b ? border_of(g, a, b) : NULL;
-    if (!between)
-        return;
     float near = uf_plane_row(job->distance, y)[x], far = uf_plane_row(job->distance, v)[u];
     float lower = near < far ? near : far;
-    between->length++;
-    between->relief += (double)fmaxf(uf_plane_row(job->relief, y)[x], uf_plane_row(job->relief, v)[u]);
     between->saddle = lower > between->saddle ? lower : between->saddle;
 }
 
-static void build_graph(part_job *job, graph *g)
+static void note_relief(part_job *job, border *between, int x, int y, int u, int v)
 {
-    float inside = (float)(1.5 / job->px_um); /* beyond the fall of the blur towards the outside */
+    between->length++;
+    between->relief += (double)fmaxf(uf_plane_row(job->relief, y)[x], uf_plane_row(job->relief, v)[u]);
+}
+
+static void look_across(part_job *job, graph *g, border_note *note, int x, int y, int u, int v)
+{
+    int a = uf_labels_row(job->labels, y)[x], b = uf_labels_row(job->labels, v)[u];
+    border *between = a > 0 && b > 0 && a != b ? border_of(g, a, b) : NULL;
+    if (between)
+        note(job, between, x, y, u, v);
+}
+
+static void walk_borders(part_job *job, graph *g, border_note *note)
+{
+    for (int y = 0; y < job->labels.height; y++)
+        for (int x = 0; x < job->labels.width; x++) {
+            if (x + 1 < job->labels.width)
+                look_across(job, g, note, x, y, x + 1, y);
+            if (y + 1 < job->labels.height)
+                look_across(job, g, note, x, y, x, y + 1);
+        }
+}
+
+/* Beyond the fall of the blur towards the outside. */
+static float inside_px(const part_job *job)
+{
+    return (float)(1.5 / job->px_um);
+}
+
+static void sum_parts(part_job *job, graph *g)
+{
     for (int y = 0; y < job->labels.height; y++)
         for (int x = 0; x < job->labels.width; x++) {
             int k = uf_labels_row(job->labels, y)[x];
-            if (k <= 0)
+            if (k <= 0 || uf_plane_row(job->distance, y)[x] < inside_px(job))
                 continue;
-            float distance = uf_plane_row(job->distance, y)[x];
             part *p = &g->parts[k];
-            p->depth = distance > p->depth ? distance : p->depth;
-            if (distance >= inside) {
-                p->pixels++;
-                p->level += (double)uf_plane_row(job->wide->image, y)[x] - job->wide->background_adu;
-                p->relief += (double)uf_plane_row(job->relief, y)[x];
-            }
-            if (x + 1 < job->labels.width)
-                note_border(job, g, x, y, x + 1, y);
-            if (y + 1 < job->labels.height)
-                note_border(job, g, x, y, x, y + 1);
+            p->pixels++;
+            p->level += (double)uf_plane_row(job->wide->image, y)[x] - job->wide->background_adu;
+            p->relief += (double)uf_plane_row(job->relief, y)[x];
         }
+}
+
+static float usual_relief(part_job *job)
+{
+    double sum = 0, count = 0;
+    for (int y = 0; y < job->labels.height; y += 2)
+        for (int x = 0; x < job->labels.width; x += 2)
+            if (uf_plane_row(job->distance, y)[x] >= inside_px(job)) {
+                sum += (double)uf_plane_row(job->relief, y)[x];
+                count++;
+            }
+    return count > 0 ? (float)(sum / count) : 0.0f;
 }
 
 /* ---- joining --------------------------------------------------------------------------------------------------- */
@@ -248,7 +283,7 @@ static int differ_in_brightness(const part *a, const part *b, const border *betw
     double level_a = a->level / a->pixels, level_b = b->level / b->pixels;
     double inside = (a->relief + b->relief) / (a->pixels + b->pixels);
     return fabs(level_a - level_b) > level_difference * (level_a + level_b) / 2 &&
-           between->relief / between->length > ridge_ratio * inside;
+           between->length > 0 && between->relief > ridge_ratio * inside * between->length;
 }
 
 /* The border between two roots, summed over all borders between their parts. */
@@ -266,7 +301,7 @@ static border whole_border(const graph *g, int a, int b)
     return sum;
 }
 
-/* The pair of roots with the widest neck that nothing holds apart, as a border; length 0 when there is none. */
+/* The pair of roots with the widest neck that nothing holds apart, as a border; saddle 0 when there is none. */
 static border best_pair(const graph *g, double neck)
 {
     border best = {0};
@@ -290,7 +325,7 @@ static void join_alike(graph *g, double neck)
 {
     for (;;) {
         border pair = best_pair(g, neck);
-        if (!(pair.length > 0))
+        if (!(pair.saddle > 0.0f))
             return;
         part *a = &g->parts[pair.a], *b = &g->parts[pair.b];
         b->parent = pair.a;
@@ -301,25 +336,25 @@ static void join_alike(graph *g, double neck)
     }
 }
 
-static uf_status join_parts(part_job *job, double neck, uf_error *error)
+static uf_status take_graph(part_job *job, graph *g, uf_error *error)
 {
     size_t places = (size_t)job->labels.count + 1;
-    graph g = {.limit = 16 * job->labels.count + 16};
-    uf_status status = uf_take(job->work, places, sizeof *g.parts, "segmentation", &g.parts, error);
+    *g = (graph){.limit = 16 * job->labels.count + 16};
+    uf_status status = uf_take(job->work, places, sizeof *g->parts, "segmentation", &g->parts, error);
     if (status == UF_OK)
-        status = uf_take(job->work, (size_t)g.limit, sizeof *g.borders, "segmentation", &g.borders, error);
-    if (status != UF_OK)
-        return status;
-    for (int k = 0; k < (int)places; k++)
-        g.parts[k] = (part){.parent = k};
-    build_graph(job, &g);
-    join_alike(&g, neck);
+        status = uf_take(job->work, (size_t)g->limit, sizeof *g->borders, "segmentation", &g->borders, error);
+    for (int k = 0; status == UF_OK && k < (int)places; k++)
+        g->parts[k] = (part){.parent = k, .depth = job->depth[k]};
+    return status;
+}
+
+static void relabel(part_job *job, const graph *g)
+{
     for (int y = 0; y < job->labels.height; y++) {
         int32_t *row = uf_labels_row(job->labels, y);
         for (int x = 0; x < job->labels.width; x++)
-            row[x] = row[x] > 0 ? root_of(g.parts, row[x]) : 0;
+            row[x] = row[x] > 0 ? root_of(g->parts, row[x]) : 0;
     }
-    return UF_OK;
 }
 
 /* ---- all of it --------------------------------------------------------------------------------------------------- */
@@ -337,6 +372,9 @@ static uf_status find_depths(part_job *job, uf_error *error)
         for (int x = 0; x < job->labels.width; x++)
             job->depth[row[x]] = distance[x] > job->depth[row[x]] ? distance[x] : job->depth[row[x]];
     }
+    job->deepest = 1.0f;
+    for (size_t k = 1; k < places; k++)
+        job->deepest = fmaxf(job->deepest, job->depth[k]);
     return UF_OK;
 }
 
@@ -357,10 +395,21 @@ uf_status uf_part_cells(uf_work *work, const uf_channel *wide, uf_plane distance
         status = make_relief(&job, error);
     if (status == UF_OK)
         status = find_depths(&job, error);
+    graph g;
     if (status == UF_OK)
+        status = take_graph(&job, &g, error);
+    if (status == UF_OK) {
+        /* Necks are those of the shape, before brightness moves the borders. */
+        walk_borders(&job, &g, note_saddle);
+        job.usual = usual_relief(&job);
         status = flood(&job, error);
-    if (status == UF_OK)
-        status = join_parts(&job, neck, error);
+    }
+    if (status == UF_OK) {
+        walk_borders(&job, &g, note_relief);
+        sum_parts(&job, &g);
+        join_alike(&g, neck);
+        relabel(&job, &g);
+    }
     uf_arena_back(&work->arena, mark);
     return status == UF_OK ? uf_labels_tidy(work, min_pixels, max_pixels, labels, error) : status;
 }
