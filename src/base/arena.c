@@ -1,10 +1,12 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
+#define _DEFAULT_SOURCE /* madvise */
 #include "base/arena.h"
 
 #include <stdint.h>
 #include <stdlib.h>
+#include <sys/mman.h>
 
-enum { ALIGNMENT = 64 };
+enum { ALIGNMENT = 64, HUGE_PAGE = 2 << 20 };
 
 /* Untouched memory costs address space only, so blocks are generous. */
 static const size_t block_bytes = (size_t)64 << 20;
@@ -19,14 +21,17 @@ struct uf_arena_block {
 static uf_arena_block *new_block(size_t bytes)
 {
     size_t capacity = bytes > block_bytes ? bytes : block_bytes;
+    capacity = (capacity + HUGE_PAGE - 1) / HUGE_PAGE * HUGE_PAGE;
     uf_arena_block *block = malloc(sizeof *block);
     if (!block)
         return NULL;
-    *block = (uf_arena_block){.capacity = capacity, .bytes = aligned_alloc(ALIGNMENT, capacity)};
+    *block = (uf_arena_block){.capacity = capacity, .bytes = aligned_alloc(HUGE_PAGE, capacity)};
     if (!block->bytes) {
         free(block);
         return NULL;
     }
+    /* Asking for huge pages saves hundreds of faults for one; a kernel that has none goes on as before. */
+    (void)madvise(block->bytes, capacity, MADV_HUGEPAGE);
     return block;
 }
 

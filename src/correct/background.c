@@ -106,14 +106,13 @@ uf_status uf_background_first(uf_work *work, uf_channel *channel, uf_error *erro
 /* ---- once cells are known --------------------------------------------------------------------------- */
 
 /* The distance beyond which at least a hundredth of the coarse pixels lie, at most `clear_px`. */
-static double distance_that_leaves_enough(const uf_cell_map *cells, double clear_px, double *scratch)
+static double distance_that_leaves_enough(const uf_cell_map *cells, double clear_px, float *scratch)
 {
     size_t count = 0;
     for (int y = 0; y < cells->outside_px.height; y++)
         for (int x = 0; x < cells->outside_px.width; x++)
-            scratch[count++] = (double)uf_plane_row(cells->outside_px, y)[x];
-    uf_sort(scratch, count);
-    double farthest = uf_sorted_quantile(scratch, count, 0.99);
+            scratch[count++] = uf_plane_row(cells->outside_px, y)[x];
+    double farthest = (double)uf_select(scratch, count, (size_t)(0.99 * (double)(count - 1)));
     return farthest < clear_px ? farthest : clear_px;
 }
 
@@ -140,11 +139,13 @@ uf_status uf_background_refine(uf_work *work, const uf_cell_map *cells, double c
     uf_arena_mark mark = uf_arena_now(&work->arena);
     size_t coarse = (size_t)cells->outside_px.width * (size_t)cells->outside_px.height;
     double *values;
-    uf_status status =
-        uf_take(work, coarse > SAMPLE ? coarse : SAMPLE, sizeof *values, "the background", &values, error);
+    float *distances;
+    uf_status status = uf_take(work, SAMPLE, sizeof *values, "the background", &values, error);
+    if (status == UF_OK)
+        status = uf_take(work, coarse, sizeof *distances, "the background", &distances, error);
     if (status != UF_OK)
         return status;
-    double clear = distance_that_leaves_enough(cells, clear_px, values);
+    double clear = distance_that_leaves_enough(cells, clear_px, distances);
     size_t count = sample_outside(channel->image, cells, clear, values);
     if (count >= 16) {
         channel->background_adu = uf_median(values, count);

@@ -99,8 +99,10 @@ static void gap(float *restrict gap_nm, const float *restrict near, const float 
         int node = (int)inside;
         float low = lookup->gap_nm[node], high = lookup->gap_nm[node + 1];
         float value = low + (at - (float)node) * (high - low);
-        value = near[x] > 1e-30f ? value : NAN;
-        gap_nm[x] = wide[x] > 1e-30f ? value : NAN;
+        uint32_t bits, missing = (uint32_t)(!(near[x] > 1e-30f) | !(wide[x] > 1e-30f));
+        memcpy(&bits, &value, sizeof bits);
+        bits |= (0u - missing) & 0x7fc00000u; /* NaN */
+        memcpy(&gap_nm[x], &bits, sizeof bits);
     }
 }
 

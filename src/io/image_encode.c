@@ -267,7 +267,6 @@ static void write_header(png_job *job, const uf_indexed *image)
         palette[k] = (png_color){image->palette[k][0], image->palette[k][1], image->palette[k][2]};
     png_set_write_fn(job->png, job, png_append, png_flushed);
     png_set_user_limits(job->png, PNG_UINT_31_MAX, PNG_UINT_31_MAX);
-    png_set_benign_errors(job->png, 0); /* an index beyond the palette is an error, not a warning */
     png_set_compression_level(job->png, 1);
     png_set_filter(job->png, PNG_FILTER_TYPE_BASE, PNG_FILTER_NONE);
     png_set_IHDR(job->png, job->info, (png_uint_32)image->width, (png_uint_32)image->height, 8,
@@ -290,11 +289,21 @@ static bool write_png(png_job *job, const uf_indexed *image)
     return true;
 }
 
+static int largest_index(const uf_indexed *image)
+{
+    size_t count = (size_t)image->width * (size_t)image->height;
+    int largest = 0;
+    for (size_t k = 0; k < count; k++)
+        largest = image->data[k] > largest ? image->data[k] : largest;
+    return largest;
+}
+
 uf_status uf_encode_indexed_png(uf_text *out, const uf_indexed *image, uf_error *error)
 {
     png_job job = {.out = out};
     bool good = false;
     assert(image->colours >= 1 && image->colours <= 256);
+    assert(largest_index(image) < image->colours);
     job.png = png_create_write_struct(PNG_LIBPNG_VER_STRING, &job, png_failed, png_warned);
     if (job.png)
         job.info = png_create_info_struct(job.png);

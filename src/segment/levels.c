@@ -32,7 +32,7 @@ typedef struct levels {
     uf_plane distance;     /* to the other side, coarse pixels */
     double background, floor; /* nothing below `floor` is a cell */
     double grid_px_um;     /* size of a coarse pixel */
-    uf_plane value, weight, spread_value, spread_weight; /* scratch */
+    uf_plane value, weight, spread_value, spread_weight; /* scratch; the last two on a coarser grid still */
 } levels;
 
 /* ---- rough foreground ------------------------------------------------------------------------------ */
@@ -114,19 +114,32 @@ static double pick_band(levels *l, int side)
     return total;
 }
 
-/* out := blurred value / blurred weight where there is weight within reach; else out is left alone. */
+/* A view of the top left of a scratch plane. */
+static uf_plane reduced_view(uf_plane plane, int step, int width, int height)
+{
+    return (uf_plane){plane.data, (width + step - 1) / step, (height + step - 1) / step, (width + step - 1) / step};
+}
+
+/* out := blurred value / blurred weight where there is weight within reach; else out is left alone. A blur this
+ * wide needs no fine grid: it is done on one of about a third of its sigma and read back between the points. */
 static uf_status spread(levels *l, double reach_um, uf_plane out, uf_error *error)
 {
     double sigma = reach_um / l->grid_px_um;
-    uf_status status = uf_smooth(l->work, l->value, sigma, l->spread_value, error);
+    int step = sigma >= 6 ? (int)(sigma / 3) : 1;
+    uf_plane value = reduced_view(l->spread_value, step, out.width, out.height);
+    uf_plane weight = reduced_view(l->spread_weight, step, out.width, out.height);
+    uf_reduce(l->work, l->value, step, value);
+    uf_reduce(l->work, l->weight, step, weight);
+    uf_status status = uf_smooth(l->work, value, sigma / step, value, error);
     if (status == UF_OK)
-        status = uf_smooth(l->work, l->weight, sigma, l->spread_weight, error);
+        status = uf_smooth(l->work, weight, sigma / step, weight, error);
     for (int y = 0; status == UF_OK && y < out.height; y++) {
-        const float *value = uf_plane_row(l->spread_value, y), *weight = uf_plane_row(l->spread_weight, y);
         float *row = uf_plane_row(out, y);
-        for (int x = 0; x < out.width; x++)
-            if (weight[x] > 0.01f)
-                row[x] = value[x] / weight[x];
+        for (int x = 0; x < out.width; x++) {
+            float w = uf_coarse_at(weight, step, x, y);
+            if (w > 0.01f)
+                row[x] = uf_coarse_at(value, step, x, y) / w;
+        }
     }
     return status;
 }
@@ -182,21 +195,13 @@ static uf_status one_round(levels *l, uf_cell_map *map, uf_error *error)
 
 /* Below this nothing is a cell: 6 sigma of a coarse pixel's noise, and a twentieth of the field's bright end,
  * below which stray reflections and haze live. */
-static uf_status find_floor(levels *l, const uf_channel *wide, int factor, uf_error *error)
+static void find_floor(levels *l, const uf_channel *wide, int factor)
 {
-    size_t count = (size_t)l->image.width * (size_t)l->image.height, taken = 0;
-    double *values;
-    uf_status status = uf_take(l->work, count, sizeof *values, "segmentation", &values, error);
-    if (status != UF_OK)
-        return status;
-    for (int y = 0; y < l->image.height; y++)
-        for (int x = 0; x < l->image.width; x++)
-            values[taken++] = (double)uf_plane_row(l->image, y)[x];
-    uf_sort(values, taken);
-    double bright = uf_sorted_quantile(values, taken, 0.995) - l->background;
+    size_t count = (size_t)l->image.width * (size_t)l->image.height, bright_at = (size_t)(0.995 * (double)(count - 1));
+    memcpy(l->value.data, l->image.data, count * sizeof *l->value.data);
+    double bright = (double)uf_select(l->value.data, count, bright_at) - l->background;
     double noise = 6.0 * wide->noise_adu / factor + 3.0 * wide->background_sd_adu;
     l->floor = l->background + (0.05 * bright > noise ? 0.05 * bright : noise);
-    return UF_OK;
 }
 
 static uf_status take_planes(levels *l, int width, int height, uf_error *error)
@@ -243,10 +248,9 @@ uf_status uf_levels_find(uf_work *work, const uf_channel *wide, double pixel_siz
         status = take_planes(&l, width, height, error);
     if (status == UF_OK) {
         uf_reduce(work, wide->image, factor, l.image);
-        status = find_floor(&l, wide, factor, error);
-    }
-    if (status == UF_OK)
+        find_floor(&l, wide, factor);
         status = rough_level(&l, error);
+    }
     for (int round = 0; status == UF_OK && round < ROUNDS; round++)
         status = one_round(&l, map, error);
     if (status == UF_OK)
