@@ -14,9 +14,10 @@ typedef struct uf_edge_fall {
     int steps; /* beyond them the fall is 1 */
 } uf_edge_fall;
 
-/* Measures the fall over all outlines of the field. psf_px is the near image's sigma. */
-void uf_edge_fall_measure(const uf_channel *wide, const uf_cell_map *cells, double pixel_size_um, double psf_px,
-                          uf_edge_fall *fall);
+/* Measures the fall over all outlines of the field. psf_px is the near image's sigma. UF_MEMORY. */
+UF_MUST_USE uf_status uf_edge_fall_measure(uf_work *work, const uf_channel *wide, const uf_cell_map *cells,
+                                           double pixel_size_um, double psf_px, uf_edge_fall *fall,
+                                           uf_error *error);
 
 /* The factor at a distance as uf_distance gives it (outline at half a pixel). */
 static inline float uf_edge_fall_at(const uf_edge_fall *fall, float distance_px)

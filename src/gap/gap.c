@@ -74,16 +74,29 @@ static void judge_row(gap_job *job, int y)
     }
 }
 
+/* First and last + 1 column that any cell has in row y; equal when none. */
+static void cell_span(uf_labels labels, int y, int *from, int *to)
+{
+    const int32_t *row = uf_labels_row(labels, y);
+    *from = 0;
+    *to = labels.width;
+    while (*from < labels.width && !row[*from])
+        ++*from;
+    while (*to > *from && !row[*to - 1])
+        --*to;
+}
+
 static void gap_rows(void *context, int y0, int y1)
 {
     gap_job *job = context;
     const uf_gap_lookup *lookup = &job->plan->decay.lookup;
-    int width = job->cells->labels.width;
     for (int y = y0; y < y1; y++) {
-        job->kernels->gap(uf_plane_row(job->map->gap_nm, y), uf_plane_row(job->map->near_adu, y),
-                          uf_plane_row(job->map->dye_adu, y), job->ln_reference, lookup, width);
-        job->kernels->gap(uf_plane_row(job->map->smooth_gap_nm, y), uf_plane_row(job->near_smooth, y),
-                          uf_plane_row(job->dye_smooth, y), job->ln_reference, lookup, width);
+        int from, to;
+        cell_span(job->cells->labels, y, &from, &to);
+        job->kernels->gap(uf_plane_row(job->map->gap_nm, y) + from, uf_plane_row(job->map->near_adu, y) + from,
+                          uf_plane_row(job->map->dye_adu, y) + from, job->ln_reference, lookup, to - from);
+        job->kernels->gap(uf_plane_row(job->map->smooth_gap_nm, y) + from, uf_plane_row(job->near_smooth, y) + from,
+                          uf_plane_row(job->dye_smooth, y) + from, job->ln_reference, lookup, to - from);
         judge_row(job, y);
     }
 }
@@ -108,9 +121,10 @@ uf_status uf_gap_find(uf_work *work, const uf_plan *plan, double detection_sigma
                    .map = map, .detection_sigma = detection_sigma};
     job.ln_reference = (float)uf_round_digits(log(plan->reference_ratio), 12);
     uf_status status = take_map(work, width, height, map, error);
+    if (status == UF_OK)
+        status = uf_edge_fall_measure(work, wide, cells, plan->pixel_size_um, psf_px, &job.fall, error);
     if (status != UF_OK)
         return status;
-    uf_edge_fall_measure(wide, cells, plan->pixel_size_um, psf_px, &job.fall);
     uf_rows_run(work, height, signal_rows, &job);
     uf_arena_mark mark = uf_arena_now(&work->arena);
     status = uf_plane_take(work, width, height, &job.near_smooth, error);

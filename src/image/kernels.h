@@ -48,8 +48,8 @@ typedef struct uf_kernels {
     void (*closed_sides)(float *closed, const float *here, const float *before, const float *after, float nowhere,
                          int n);
 
-    /* out[x] = in[x] > (level0[x] + t (level1[x] - level0[x])). */
-    void (*above)(uint8_t *out, const float *in, const float *level0, const float *level1, float t, int n);
+    /* out[x] = in[x] > level[x]. */
+    void (*above)(uint8_t *out, const float *in, const float *level, int n);
 } uf_kernels;
 
 /* The fastest table this processor can run; UNDERFOOT_KERNELS=baseline in the environment picks the other,

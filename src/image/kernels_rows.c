@@ -87,22 +87,34 @@ static inline float natural_log(float v)
     return (float)exponent * 0.693147181f + 2.0f * (s + s * series);
 }
 
+enum { GAP_BLOCK = 256 };
+
+/* Place in the lookup of each pixel's ratio. Values that have no logarithm are replaced first; no branch. */
+static void lookup_places(float *restrict at, const float *restrict near, const float *restrict wide,
+                          float ln_reference, const uf_gap_lookup *restrict lookup, int n)
+{
+    for (int x = 0; x < n; x++) {
+        float n0 = near[x] > 1e-30f ? near[x] : 1e-30f, w0 = wide[x] > 1e-30f ? wide[x] : 1e-30f;
+        at[x] = (lookup->first_ln - (natural_log(n0) - natural_log(w0) - ln_reference)) * lookup->inverse_step;
+    }
+}
+
+/* In two steps, since reading a table at scattered places is the one thing vectors are no good at. */
 static void gap(float *restrict gap_nm, const float *restrict near, const float *restrict wide,
                 float ln_reference, const uf_gap_lookup *restrict lookup, int n)
 {
     const float last = (float)(UF_DECAY_NODES - 2);
-    for (int x = 0; x < n; x++) {
-        /* Values that have no logarithm are replaced first and the result dropped last: no branch. */
-        float n0 = near[x] > 1e-30f ? near[x] : 1e-30f, w0 = wide[x] > 1e-30f ? wide[x] : 1e-30f;
-        float at = (lookup->first_ln - (natural_log(n0) - natural_log(w0) - ln_reference)) * lookup->inverse_step;
-        float inside = at < 0.0f ? 0.0f : at > last ? last : at;
-        int node = (int)inside;
-        float low = lookup->gap_nm[node], high = lookup->gap_nm[node + 1];
-        float value = low + (at - (float)node) * (high - low);
-        uint32_t bits, missing = (uint32_t)(!(near[x] > 1e-30f) | !(wide[x] > 1e-30f));
-        memcpy(&bits, &value, sizeof bits);
-        bits |= (0u - missing) & 0x7fc00000u; /* NaN */
-        memcpy(&gap_nm[x], &bits, sizeof bits);
+    float places[GAP_BLOCK];
+    for (int from = 0; from < n; from += GAP_BLOCK) {
+        int count = n - from < GAP_BLOCK ? n - from : GAP_BLOCK;
+        lookup_places(places, near + from, wide + from, ln_reference, lookup, count);
+        for (int k = 0; k < count; k++) {
+            float inside = places[k] > 0.0f ? places[k] : 0.0f;
+            int node = (int)(inside < last ? inside : last), x = from + k;
+            float low = lookup->gap_nm[node], high = lookup->gap_nm[node + 1];
+            float value = low + (places[k] - (float)node) * (high - low);
+            gap_nm[x] = near[x] > 1e-30f && wide[x] > 1e-30f ? value : NAN;
+        }
     }
 }
 
@@ -126,11 +138,10 @@ static void closed_sides(float *restrict closed, const float *restrict here, con
     }
 }
 
-static void above(uint8_t *restrict out, const float *restrict in, const float *restrict level0,
-                  const float *restrict level1, float t, int n)
+static void above(uint8_t *restrict out, const float *restrict in, const float *restrict level, int n)
 {
     for (int x = 0; x < n; x++)
-        out[x] = in[x] > level0[x] + t * (level1[x] - level0[x]);
+        out[x] = in[x] > level[x];
 }
 
 #ifdef UF_KERNELS_V3

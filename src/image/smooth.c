@@ -135,18 +135,35 @@ void uf_reduce(const uf_work *work, uf_plane in, int factor, uf_plane out)
     uf_rows_run(work, out.height, reduce_rows, &r);
 }
 
-float uf_coarse_at(uf_plane coarse, int factor, double x, double y)
+/* Where a full-resolution index lies between two coarse ones. */
+static uf_expand_column between(int i, int factor, int coarse_size)
 {
-    double u = (x + 0.5) / factor - 0.5, v = (y + 0.5) / factor - 0.5;
-    int x0 = clamp((int)floor(u), coarse.width), y0 = clamp((int)floor(v), coarse.height);
-    int x1 = clamp(x0 + 1, coarse.width), y1 = clamp(y0 + 1, coarse.height);
-    double fx = u - x0, fy = v - y0;
-    fx = fx < 0 ? 0 : fx > 1 ? 1 : fx;
-    fy = fy < 0 ? 0 : fy > 1 ? 1 : fy;
-    const float *a = uf_plane_row(coarse, y0), *b = uf_plane_row(coarse, y1);
-    double top = (double)a[x0] + fx * ((double)a[x1] - (double)a[x0]);
-    double bottom = (double)b[x0] + fx * ((double)b[x1] - (double)b[x0]);
-    return (float)(top + fy * (bottom - top));
+    float at = ((float)i + 0.5f) / (float)factor - 0.5f;
+    int left = at < 0.0f ? 0 : (int)at;
+    left = left > coarse_size - 2 ? coarse_size - 2 : left;
+    left = left < 0 ? 0 : left;
+    float part = at - (float)left;
+    return (uf_expand_column){left, part < 0.0f || coarse_size < 2 ? 0.0f : part > 1.0f ? 1.0f : part};
+}
+
+void uf_expand_columns(int coarse_width, int factor, int width, uf_expand_column *columns)
+{
+    for (int x = 0; x < width; x++)
+        columns[x] = between(x, factor, coarse_width);
+}
+
+void uf_expand_row(uf_plane coarse, int factor, int y, const uf_expand_column *columns, float *out, int width)
+{
+    uf_expand_column v = between(y, factor, coarse.height);
+    const float *upper = uf_plane_row(coarse, v.left);
+    const float *lower = coarse.height > 1 ? uf_plane_row(coarse, v.left + 1) : upper;
+    int step = coarse.width > 1;
+    for (int x = 0; x < width; x++) {
+        int left = columns[x].left;
+        float a = upper[left] + v.part * (lower[left] - upper[left]);
+        float b = upper[left + step] + v.part * (lower[left + step] - upper[left + step]);
+        out[x] = a + columns[x].part * (b - a);
+    }
 }
 
 /* ---- shift -------------------------------------------------------------------------------- */

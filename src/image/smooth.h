@@ -18,7 +18,14 @@ void uf_reduce(const uf_work *work, uf_plane in, int factor, uf_plane out);
  * polynomials up to degree 5); beyond the border the border pixel goes on. Whole-pixel shifts are copies. */
 UF_MUST_USE uf_status uf_shift(uf_work *work, uf_plane in, double dx, double dy, uf_plane out, uf_error *error);
 
-/* Bilinear value of a coarse plane (as uf_reduce makes it with `factor`) at the full-resolution point (x, y). */
-float uf_coarse_at(uf_plane coarse, int factor, double x, double y);
+/* Row y of a coarse plane (as uf_reduce makes it with `factor`) at full resolution: bilinear between the centres
+ * of its pixels, the outermost going on beyond them. `columns` is `width` pixels wide at uf_expand_columns. */
+typedef struct uf_expand_column {
+    int32_t left;
+    float part; /* of the way to the next */
+} uf_expand_column;
+
+void uf_expand_columns(int coarse_width, int factor, int width, uf_expand_column *columns);
+void uf_expand_row(uf_plane coarse, int factor, int y, const uf_expand_column *columns, float *out, int width);
 
 #endif

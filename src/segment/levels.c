@@ -33,6 +33,8 @@ typedef struct levels {
     double background, floor; /* nothing below `floor` is a cell */
     double grid_px_um;     /* size of a coarse pixel */
     uf_plane value, weight, spread_value, spread_weight; /* scratch; the last two on a coarser grid still */
+    uf_expand_column *columns;
+    float *row; /* two rows */
 } levels;
 
 /* ---- rough foreground ------------------------------------------------------------------------------ */
@@ -125,7 +127,7 @@ static uf_plane reduced_view(uf_plane plane, int step, int width, int height)
 static uf_status spread(levels *l, double reach_um, uf_plane out, uf_error *error)
 {
     double sigma = reach_um / l->grid_px_um;
-    int step = sigma >= 6 ? (int)(sigma / 3) : 1;
+    int step = sigma >= 5 ? (int)(sigma / 2.5) : 1;
     uf_plane value = reduced_view(l->spread_value, step, out.width, out.height);
     uf_plane weight = reduced_view(l->spread_weight, step, out.width, out.height);
     uf_reduce(l->work, l->value, step, value);
@@ -133,15 +135,18 @@ static uf_status spread(levels *l, double reach_um, uf_plane out, uf_error *erro
     uf_status status = uf_smooth(l->work, value, sigma / step, value, error);
     if (status == UF_OK)
         status = uf_smooth(l->work, weight, sigma / step, weight, error);
-    for (int y = 0; status == UF_OK && y < out.height; y++) {
+    if (status != UF_OK)
+        return status;
+    uf_expand_columns(value.width, step, out.width, l->columns);
+    for (int y = 0; y < out.height; y++) {
         float *row = uf_plane_row(out, y);
-        for (int x = 0; x < out.width; x++) {
-            float w = uf_coarse_at(weight, step, x, y);
-            if (w > 0.01f)
-                row[x] = uf_coarse_at(value, step, x, y) / w;
-        }
+        uf_expand_row(value, step, y, l->columns, l->row, out.width);
+        uf_expand_row(weight, step, y, l->columns, l->row + out.width, out.width);
+        for (int x = 0; x < out.width; x++)
+            if (l->row[out.width + x] > 0.01f)
+                row[x] = l->row[x] / l->row[out.width + x];
     }
-    return status;
+    return UF_OK;
 }
 
 static double band_mean(const levels *l, double total)
@@ -209,6 +214,10 @@ static uf_status take_planes(levels *l, int width, int height, uf_error *error)
     uf_plane *planes[] = {&l->image, &l->level, &l->distance, &l->value, &l->weight, &l->spread_value,
                           &l->spread_weight};
     uf_status status = uf_labels_take(l->work, width, height, &l->side, error);
+    if (status == UF_OK)
+        status = uf_take(l->work, (size_t)width, sizeof *l->columns, "segmentation", &l->columns, error);
+    if (status == UF_OK)
+        status = uf_take(l->work, 2 * (size_t)width, sizeof *l->row, "segmentation", &l->row, error);
     for (size_t k = 0; status == UF_OK && k < sizeof planes / sizeof planes[0]; k++)
         status = uf_plane_take(l->work, width, height, planes[k], error);
     return status;

@@ -6,160 +6,145 @@
 
 #include "image/basins.h"
 #include "image/smooth.h"
+#include "segment/flood.h"
 
+static const double coarse_um = 0.25;
 static const double slightest_neck = 0.93;
-static const double core_share = 0.75;      /* of a part's greatest depth */
-static const double relief_smooth_um = 0.15;
-static const double shape_weight = 0.15;    /* relief of a vanishing neck, 1/um */
+static const float core_share = 0.75f;       /* of a part's greatest depth */
 static const double level_difference = 0.08; /* relative, between neighbours that are two cells */
-static const double ridge_ratio = 2.2;      /* relief along the border over the relief inside */
-static const double unevenness_ratio = 2.5; /* relief up to this many times the usual is the dye's own unevenness */
+static const double ridge_ratio = 2.2;       /* relief along the border over the relief inside */
+static const double inside_um = 1.5;         /* beyond the fall of the blur towards the outside */
 
+/* `coarse` has one point for step x step pixels; its distances are in pixels of the image. */
 typedef struct part_job {
     uf_work *work;
     const uf_channel *wide;
-    uf_plane distance, relief; /* relief in 1/um */
-    uf_labels labels;
-    double px_um;
-    float *depth; /* of each part, greatest distance */
-    float deepest; /* of all parts */
-    float usual;   /* mean relief well inside cells */
+    uf_plane smooth, distance;
+    const uf_part_settings *settings;
+    uf_labels labels; /* pieces, at full resolution */
+    int step;
+    uf_flood_grid coarse;
+    float *depth;     /* of each part, greatest distance */
+    int *piece_parts; /* how many parts each piece has */
 } part_job;
 
-/* ---- relief ------------------------------------------------------------------------------------------------ */
+/* ---- parts -------------------------------------------------------------------------------------------------- */
 
-static void relief_rows(void *context, int y0, int y1)
+/* The pixel that stands for a coarse point. */
+static int fine_of(int i, int step, int size)
 {
-    part_job *job = context;
-    int width = job->labels.width, height = job->labels.height;
-    float background = (float)job->wide->background_adu, least = (float)(3.0 * job->wide->noise_adu);
-    float per_um = (float)(0.5 / job->px_um);
-    for (int y = y0; y < y1; y++) {
-        const float *here = uf_plane_row(job->wide->image, y);
-        const float *above = uf_plane_row(job->wide->image, y ? y - 1 : y);
-        const float *below = uf_plane_row(job->wide->image, y + 1 < height ? y + 1 : y);
-        float *out = uf_plane_row(job->relief, y);
-        for (int x = 0; x < width; x++) {
-            float dx = here[x + 1 < width ? x + 1 : x] - here[x ? x - 1 : x], dy = below[x] - above[x];
-            float level = here[x] - background;
-            level = level > least ? level : least;
-            out[x] = sqrtf(dx * dx + dy * dy) * per_um / level;
-        }
-    }
+    int at = i * step + step / 2;
+    return at < size ? at : size - 1;
 }
 
-static uf_status make_relief(part_job *job, uf_error *error)
+static int piece_at(const part_job *job, int x, int y)
 {
-    uf_channel smooth = *job->wide;
-    uf_arena_mark mark = uf_arena_now(&job->work->arena);
-    uf_status status = uf_plane_take(job->work, job->labels.width, job->labels.height, &smooth.image, error);
+    int v = fine_of(y, job->step, job->labels.height);
+    return uf_labels_row(job->labels, v)[fine_of(x, job->step, job->labels.width)];
+}
+
+static uf_status make_coarse(part_job *job, uf_error *error)
+{
+    uf_flood_grid *grid = &job->coarse;
+    int step = job->step, width = (job->labels.width + step - 1) / step, height = (job->labels.height + step - 1) / step;
+    uf_status status = uf_labels_take(job->work, width, height, &grid->labels, error);
     if (status == UF_OK)
-        status = uf_smooth(job->work, job->wide->image, relief_smooth_um / job->px_um, smooth.image, error);
-    if (status == UF_OK) {
-        const uf_channel *wide = job->wide;
-        job->wide = &smooth;
-        uf_rows_run(job->work, job->labels.height, relief_rows, job);
-        job->wide = wide;
-    }
-    uf_arena_back(&job->work->arena, mark);
-    return status;
+        status = uf_plane_take(job->work, width, height, &grid->distance_px, error);
+    if (status == UF_OK)
+        status = uf_plane_take(job->work, width, height, &grid->image_adu, error);
+    if (status != UF_OK)
+        return status;
+    uf_reduce(job->work, job->wide->image, step, grid->image_adu);
+    for (int y = 0; y < height; y++)
+        for (int x = 0; x < width; x++) {
+            int v = fine_of(y, step, job->labels.height), u = fine_of(x, step, job->labels.width);
+            uf_labels_row(grid->labels, y)[x] = uf_labels_row(job->labels, v)[u];
+            uf_plane_row(grid->distance_px, y)[x] = uf_plane_row(job->distance, v)[u];
+        }
+    grid->labels.count = job->labels.count;
+    grid->background_adu = (float)job->wide->background_adu;
+    grid->least_adu = (float)(3.0 * job->wide->noise_adu);
+    grid->pixel_um = job->settings->pixel_size_um * step;
+    return UF_OK;
 }
 
-/* ---- flood from the cores ------------------------------------------------------------------------------------ */
-
-enum { LEVELS = 4096 };
-static const float levels_per_relief = 1000.0f;
-
-/* Pixels waiting at each level, first come first served. */
-typedef struct queue {
-    int32_t head[LEVELS], tail[LEVELS], *next;
-    int lowest;
-} queue;
-
-static void push(queue *q, int32_t pixel, int level)
+static void find_depths(part_job *job)
 {
-    q->next[pixel] = -1;
-    if (q->head[level] < 0)
-        q->head[level] = pixel;
-    else
-        q->next[q->tail[level]] = pixel;
-    q->tail[level] = pixel;
-    q->lowest = level < q->lowest ? level : q->lowest;
+    uf_flood_grid *grid = &job->coarse;
+    memset(job->depth, 0, ((size_t)grid->labels.count + 1) * sizeof *job->depth);
+    grid->deepest_px = 1.0f;
+    for (int y = 0; y < grid->labels.height; y++)
+        for (int x = 0; x < grid->labels.width; x++) {
+            float distance = uf_plane_row(grid->distance_px, y)[x];
+            float *depth = &job->depth[uf_labels_row(grid->labels, y)[x]];
+            *depth = fmaxf(*depth, distance);
+            grid->deepest_px = fmaxf(grid->deepest_px, distance);
+        }
 }
 
-static int32_t pop(queue *q)
+/* Counts the parts of each piece; a part is counted where its first point is met. Returns the pieces of several. */
+static int count_parts(part_job *job, uint8_t *met)
 {
-    while (q->lowest < LEVELS && q->head[q->lowest] < 0)
-        q->lowest++;
-    if (q->lowest == LEVELS)
-        return -1;
-    int32_t pixel = q->head[q->lowest];
-    q->head[q->lowest] = q->next[pixel];
-    return pixel;
+    int several = 0;
+    memset(job->piece_parts, 0, ((size_t)job->labels.count + 1) * sizeof *job->piece_parts);
+    memset(met, 0, (size_t)job->coarse.labels.count + 1);
+    for (int y = 0; y < job->coarse.labels.height; y++)
+        for (int x = 0; x < job->coarse.labels.width; x++) {
+            int part = uf_labels_row(job->coarse.labels, y)[x];
+            if (!part || met[part])
+                continue;
+            met[part] = 1;
+            several += ++job->piece_parts[piece_at(job, x, y)] == 2;
+        }
+    return several;
 }
 
-/* The same for every part, or a shallow part would run over a deep one as soon as it passes the neck. */
-static int level_of(const part_job *job, int x, int y)
+static uf_status find_parts(part_job *job, int *several, uf_error *error)
 {
-    float shape = 1.0f - uf_plane_row(job->distance, y)[x] / job->deepest;
-    float ridge = uf_plane_row(job->relief, y)[x] - (float)unevenness_ratio * job->usual;
-    float level = ((ridge > 0.0f ? ridge : 0.0f) + (float)shape_weight * shape) * levels_per_relief;
-    return level < (float)(LEVELS - 1) ? (int)level : LEVELS - 1;
+    const uf_part_settings *s = job->settings;
+    uint8_t *met;
+    uf_status status = make_coarse(job, error);
+    if (status == UF_OK)
+        status = uf_basins(job->work, job->coarse.distance_px, fmax(s->neck, slightest_neck),
+                           s->min_pixels / 4 / (job->step * job->step), 1e18, &job->coarse.labels, error);
+    size_t parts = (size_t)job->coarse.labels.count + 1, pieces = (size_t)job->labels.count + 1;
+    if (status == UF_OK)
+        status = uf_take(job->work, pieces, sizeof *job->piece_parts, "segmentation", &job->piece_parts, error);
+    if (status == UF_OK)
+        status = uf_take(job->work, parts, sizeof *job->depth, "segmentation", &job->depth, error);
+    if (status == UF_OK)
+        status = uf_take(job->work, parts, sizeof *met, "segmentation", &met, error);
+    if (status != UF_OK)
+        return status;
+    find_depths(job);
+    *several = count_parts(job, met);
+    return UF_OK;
 }
 
-/* Outside the cores labels become -1: to be flooded. */
+/* Mean relief well inside cells: what the dye's own unevenness makes. */
+static float usual_relief(const part_job *job)
+{
+    const uf_flood_grid *grid = &job->coarse;
+    float inside = (float)(inside_um / job->settings->pixel_size_um);
+    double sum = 0, count = 0;
+    for (int y = 0; y < grid->labels.height; y++)
+        for (int x = 0; x < grid->labels.width; x++)
+            if (uf_plane_row(grid->distance_px, y)[x] >= inside) {
+                sum += (double)uf_flood_relief(grid, x, y);
+                count++;
+            }
+    return count > 0 ? (float)(sum / count) : 0.0f;
+}
+
 static void keep_cores(part_job *job)
 {
-    for (int y = 0; y < job->labels.height; y++) {
-        int32_t *row = uf_labels_row(job->labels, y);
-        const float *distance = uf_plane_row(job->distance, y);
-        for (int x = 0; x < job->labels.width; x++)
-            if (row[x] && distance[x] < (float)core_share * job->depth[row[x]])
+    for (int y = 0; y < job->coarse.labels.height; y++) {
+        int32_t *row = uf_labels_row(job->coarse.labels, y);
+        const float *distance = uf_plane_row(job->coarse.distance_px, y);
+        for (int x = 0; x < job->coarse.labels.width; x++)
+            if (row[x] && distance[x] < core_share * job->depth[row[x]])
                 row[x] = -1;
     }
-}
-
-/* Gives the waiting neighbours of a labelled pixel its label and queues them. */
-static void flood_neighbours(part_job *job, queue *q, int x, int y)
-{
-    static const int dx[] = {-1, 1, 0, 0}, dy[] = {0, 0, -1, 1};
-    int part = uf_labels_row(job->labels, y)[x];
-    for (int k = 0; k < 4; k++) {
-        int u = x + dx[k], v = y + dy[k];
-        if (u < 0 || v < 0 || u >= job->labels.width || v >= job->labels.height)
-            continue;
-        int32_t *label = &uf_labels_row(job->labels, v)[u];
-        if (*label != -1)
-            continue;
-        *label = part;
-        int level = level_of(job, u, v);
-        /* Water does not run back down past the level already reached. */
-        push(q, v * job->labels.width + u, level > q->lowest ? level : q->lowest);
-    }
-}
-
-static uf_status flood(part_job *job, uf_error *error)
-{
-    queue *q;
-    size_t pixels = (size_t)job->labels.width * (size_t)job->labels.height;
-    uf_arena_mark mark = uf_arena_now(&job->work->arena);
-    uf_status status = uf_take(job->work, 1, sizeof *q, "segmentation", &q, error);
-    if (status == UF_OK)
-        status = uf_take(job->work, pixels, sizeof *q->next, "segmentation", &q->next, error);
-    if (status == UF_OK) {
-        for (int k = 0; k < LEVELS; k++)
-            q->head[k] = -1;
-        q->lowest = 0;
-        keep_cores(job);
-        for (int y = 0; y < job->labels.height; y++)
-            for (int x = 0; x < job->labels.width; x++)
-                if (uf_labels_row(job->labels, y)[x] > 0)
-                    push(q, y * job->labels.width + x, 0);
-        for (int32_t pixel; (pixel = pop(q)) >= 0;)
-            flood_neighbours(job, q, pixel % job->labels.width, pixel / job->labels.width);
-    }
-    uf_arena_back(&job->work->arena, mark);
-    return status;
 }
 
 /* ---- what lies between neighbours ------------------------------------------------------------------------------ */
@@ -207,71 +192,54 @@ static border *border_of(graph *g, int a, int b)
     return &g->borders[g->count++];
 }
 
-/* What a pass over the borders notes. */
-typedef void border_note(part_job *job, border *between, int x, int y, int u, int v);
+/* What a walk along the borders notes of two neighbouring points. */
+typedef void border_note(const uf_flood_grid *grid, border *between, int x, int y, int u, int v);
 
-static void note_saddle(part_job *job, border *between, int x, int y, int u, int v)
+static void note_saddle(const uf_flood_grid *grid, border *between, int x, int y, int u, int v)
 {
-    float near = uf_plane_row(job->distance, y)[x], far = uf_plane_row(job->distance, v)[u];
-    float lower = near < far ? near : far;
-    between->saddle = lower > between->saddle ? lower : between->saddle;
+    float here = uf_plane_row(grid->distance_px, y)[x], there = uf_plane_row(grid->distance_px, v)[u];
+    between->saddle = fmaxf(between->saddle, fminf(here, there));
 }
 
-static void note_relief(part_job *job, border *between, int x, int y, int u, int v)
+static void note_relief(const uf_flood_grid *grid, border *between, int x, int y, int u, int v)
 {
     between->length++;
-    between->relief += (double)fmaxf(uf_plane_row(job->relief, y)[x], uf_plane_row(job->relief, v)[u]);
+    between->relief += (double)fmaxf(uf_flood_relief(grid, x, y), uf_flood_relief(grid, u, v));
 }
 
-static void look_across(part_job *job, graph *g, border_note *note, int x, int y, int u, int v)
+static void look_across(const uf_flood_grid *grid, graph *g, border_note *note, int x, int y, int u, int v)
 {
-    int a = uf_labels_row(job->labels, y)[x], b = uf_labels_row(job->labels, v)[u];
+    int a = uf_labels_row(grid->labels, y)[x], b = uf_labels_row(grid->labels, v)[u];
     border *between = a > 0 && b > 0 && a != b ? border_of(g, a, b) : NULL;
     if (between)
-        note(job, between, x, y, u, v);
+        note(grid, between, x, y, u, v);
 }
 
-static void walk_borders(part_job *job, graph *g, border_note *note)
+static void walk_borders(const uf_flood_grid *grid, graph *g, border_note *note)
 {
-    for (int y = 0; y < job->labels.height; y++)
-        for (int x = 0; x < job->labels.width; x++) {
-            if (x + 1 < job->labels.width)
-                look_across(job, g, note, x, y, x + 1, y);
-            if (y + 1 < job->labels.height)
-                look_across(job, g, note, x, y, x, y + 1);
+    for (int y = 0; y < grid->labels.height; y++)
+        for (int x = 0; x < grid->labels.width; x++) {
+            if (x + 1 < grid->labels.width)
+                look_across(grid, g, note, x, y, x + 1, y);
+            if (y + 1 < grid->labels.height)
+                look_across(grid, g, note, x, y, x, y + 1);
         }
 }
 
-/* Beyond the fall of the blur towards the outside. */
-static float inside_px(const part_job *job)
+static void sum_parts(const part_job *job, graph *g)
 {
-    return (float)(1.5 / job->px_um);
-}
-
-static void sum_parts(part_job *job, graph *g)
-{
-    for (int y = 0; y < job->labels.height; y++)
-        for (int x = 0; x < job->labels.width; x++) {
-            int k = uf_labels_row(job->labels, y)[x];
-            if (k <= 0 || uf_plane_row(job->distance, y)[x] < inside_px(job))
+    const uf_flood_grid *grid = &job->coarse;
+    float inside = (float)(inside_um / job->settings->pixel_size_um);
+    for (int y = 0; y < grid->labels.height; y++)
+        for (int x = 0; x < grid->labels.width; x++) {
+            int k = uf_labels_row(grid->labels, y)[x];
+            if (k <= 0 || uf_plane_row(grid->distance_px, y)[x] < inside)
                 continue;
             part *p = &g->parts[k];
             p->pixels++;
-            p->level += (double)uf_plane_row(job->wide->image, y)[x] - job->wide->background_adu;
-            p->relief += (double)uf_plane_row(job->relief, y)[x];
+            p->level += (double)(uf_plane_row(grid->image_adu, y)[x] - grid->background_adu);
+            p->relief += (double)uf_flood_relief(grid, x, y);
         }
-}
-
-static float usual_relief(part_job *job)
-{
-    double sum = 0, count = 0;
-    for (int y = 0; y < job->labels.height; y += 2)
-        for (int x = 0; x < job->labels.width; x += 2)
-            if (uf_plane_row(job->distance, y)[x] >= inside_px(job)) {
-                sum += (double)uf_plane_row(job->relief, y)[x];
-                count++;
-            }
-    return count > 0 ? (float)(sum / count) : 0.0f;
 }
 
 /* ---- joining --------------------------------------------------------------------------------------------------- */
@@ -282,8 +250,8 @@ static int differ_in_brightness(const part *a, const part *b, const border *betw
         return 0;
     double level_a = a->level / a->pixels, level_b = b->level / b->pixels;
     double inside = (a->relief + b->relief) / (a->pixels + b->pixels);
-    return fabs(level_a - level_b) > level_difference * (level_a + level_b) / 2 &&
-           between->length > 0 && between->relief > ridge_ratio * inside * between->length;
+    return fabs(level_a - level_b) > level_difference * (level_a + level_b) / 2 && between->length > 0 &&
+           between->relief > ridge_ratio * inside * between->length;
 }
 
 /* The border between two roots, summed over all borders between their parts. */
@@ -338,8 +306,8 @@ static void join_alike(graph *g, double neck)
 
 static uf_status take_graph(part_job *job, graph *g, uf_error *error)
 {
-    size_t places = (size_t)job->labels.count + 1;
-    *g = (graph){.limit = 16 * job->labels.count + 16};
+    size_t places = (size_t)job->coarse.labels.count + 1;
+    *g = (graph){.limit = 16 * job->coarse.labels.count + 16};
     uf_status status = uf_take(job->work, places, sizeof *g->parts, "segmentation", &g->parts, error);
     if (status == UF_OK)
         status = uf_take(job->work, (size_t)g->limit, sizeof *g->borders, "segmentation", &g->borders, error);
@@ -348,68 +316,126 @@ static uf_status take_graph(part_job *job, graph *g, uf_error *error)
     return status;
 }
 
-static void relabel(part_job *job, const graph *g)
+/* Coarse labels become cells: the roots of their parts. */
+static uf_status join_parts(part_job *job, uf_error *error)
+{
+    graph g;
+    uf_flood_grid *grid = &job->coarse;
+    uf_status status = take_graph(job, &g, error);
+    if (status != UF_OK)
+        return status;
+    /* Necks are those of the shape, before brightness moves the borders. */
+    walk_borders(grid, &g, note_saddle);
+    grid->usual = usual_relief(job);
+    keep_cores(job);
+    status = uf_flood_run(job->work, grid, error);
+    if (status != UF_OK)
+        return status;
+    walk_borders(grid, &g, note_relief);
+    sum_parts(job, &g);
+    join_alike(&g, job->settings->neck);
+    for (int y = 0; y < grid->labels.height; y++) {
+        int32_t *row = uf_labels_row(grid->labels, y);
+        for (int x = 0; x < grid->labels.width; x++)
+            row[x] = row[x] > 0 ? root_of(g.parts, row[x]) : 0;
+    }
+    for (int k = 1; k <= grid->labels.count; k++)
+        job->depth[k] = g.parts[root_of(g.parts, k)].depth;
+    return UF_OK;
+}
+
+/* ---- borders in full resolution ------------------------------------------------------------------------------------ */
+
+/* Whether a coarse point and all around it are of one cell. */
+static int amid_one_cell(uf_labels cells, int x, int y)
+{
+    int here = uf_labels_row(cells, y)[x];
+    for (int v = y - 1; v <= y + 1; v++)
+        for (int u = x - 1; u <= x + 1; u++) {
+            if (u < 0 || v < 0 || u >= cells.width || v >= cells.height)
+                continue;
+            int other = uf_labels_row(cells, v)[u];
+            if (other && other != here)
+                return 0;
+        }
+    return here != 0;
+}
+
+/* Coarse points that are sure of their cell keep its number, others become 0. The deepest ones always are. */
+static void keep_sure(part_job *job, uf_labels sure)
+{
+    uf_labels cells = job->coarse.labels;
+    for (int y = 0; y < cells.height; y++)
+        for (int x = 0; x < cells.width; x++) {
+            int cell = uf_labels_row(cells, y)[x];
+            float distance = uf_plane_row(job->coarse.distance_px, y)[x];
+            uf_labels_row(sure, y)[x] =
+                cell && (amid_one_cell(cells, x, y) || distance >= core_share * job->depth[cell]) ? cell : 0;
+        }
+}
+
+/* Pieces of one part keep a number of their own; in the others a pixel takes its point's cell, or waits. */
+static void seed_pixels(part_job *job, uf_labels sure)
 {
     for (int y = 0; y < job->labels.height; y++) {
         int32_t *row = uf_labels_row(job->labels, y);
-        for (int x = 0; x < job->labels.width; x++)
-            row[x] = row[x] > 0 ? root_of(g->parts, row[x]) : 0;
+        const int32_t *points = uf_labels_row(sure, y / job->step);
+        for (int x = 0; x < job->labels.width; x++) {
+            if (!row[x])
+                continue;
+            int cell = points[x / job->step];
+            row[x] = job->piece_parts[row[x]] < 2 ? job->coarse.labels.count + row[x] : cell ? cell : -1;
+        }
     }
+}
+
+static uf_status draw_borders(part_job *job, uf_error *error)
+{
+    uf_labels sure;
+    uf_flood_grid fine = job->coarse;
+    uf_status status =
+        uf_labels_take(job->work, job->coarse.labels.width, job->coarse.labels.height, &sure, error);
+    if (status != UF_OK)
+        return status;
+    keep_sure(job, sure);
+    seed_pixels(job, sure);
+    fine.labels = job->labels;
+    fine.distance_px = job->distance;
+    fine.image_adu = job->smooth;
+    fine.pixel_um = job->settings->pixel_size_um;
+    return uf_flood_run(job->work, &fine, error);
 }
 
 /* ---- all of it --------------------------------------------------------------------------------------------------- */
 
-static uf_status find_depths(part_job *job, uf_error *error)
+/* What no flood reached (a piece whose only points are too thin for the coarse grid) is nobody's. */
+static void drop_waiting(uf_labels labels)
 {
-    size_t places = (size_t)job->labels.count + 1;
-    uf_status status = uf_take(job->work, places, sizeof *job->depth, "segmentation", &job->depth, error);
-    if (status != UF_OK)
-        return status;
-    memset(job->depth, 0, places * sizeof *job->depth);
-    for (int y = 0; y < job->labels.height; y++) {
-        const int32_t *row = uf_labels_row(job->labels, y);
-        const float *distance = uf_plane_row(job->distance, y);
-        for (int x = 0; x < job->labels.width; x++)
-            job->depth[row[x]] = distance[x] > job->depth[row[x]] ? distance[x] : job->depth[row[x]];
+    for (int y = 0; y < labels.height; y++) {
+        int32_t *row = uf_labels_row(labels, y);
+        for (int x = 0; x < labels.width; x++)
+            row[x] = row[x] > 0 ? row[x] : 0;
     }
-    job->deepest = 1.0f;
-    for (size_t k = 1; k < places; k++)
-        job->deepest = fmaxf(job->deepest, job->depth[k]);
-    return UF_OK;
 }
 
-uf_status uf_part_cells(uf_work *work, const uf_channel *wide, uf_plane distance_px, double pixel_size_um,
-                        double neck, double min_pixels, double max_pixels, uf_labels *labels, uf_error *error)
+uf_status uf_part_cells(uf_work *work, const uf_channel *wide, uf_plane smooth_adu, uf_plane distance_px,
+                        const uf_part_settings *settings, uf_labels *labels, uf_error *error)
 {
-    int pieces = labels->count;
-    if (!(neck > 0))
-        return uf_labels_tidy(work, min_pixels, max_pixels, labels, error);
-    uf_status status =
-        uf_basins(work, distance_px, neck > slightest_neck ? neck : slightest_neck, min_pixels / 4, 1e18, labels, error);
-    if (status != UF_OK || labels->count == 0 || pieces == 0)
-        return status;
+    int several = 0, step = (int)(coarse_um / settings->pixel_size_um + 0.5);
+    part_job job = {.work = work, .wide = wide, .smooth = smooth_adu, .distance = distance_px, .settings = settings,
+                    .labels = *labels, .step = step < 1 ? 1 : step};
     uf_arena_mark mark = uf_arena_now(&work->arena);
-    part_job job = {.work = work, .wide = wide, .distance = distance_px, .labels = *labels, .px_um = pixel_size_um};
-    status = uf_plane_take(work, labels->width, labels->height, &job.relief, error);
-    if (status == UF_OK)
-        status = make_relief(&job, error);
-    if (status == UF_OK)
-        status = find_depths(&job, error);
-    graph g;
-    if (status == UF_OK)
-        status = take_graph(&job, &g, error);
-    if (status == UF_OK) {
-        /* Necks are those of the shape, before brightness moves the borders. */
-        walk_borders(&job, &g, note_saddle);
-        job.usual = usual_relief(&job);
-        status = flood(&job, error);
-    }
-    if (status == UF_OK) {
-        walk_borders(&job, &g, note_relief);
-        sum_parts(&job, &g);
-        join_alike(&g, neck);
-        relabel(&job, &g);
+    uf_status status = UF_OK;
+    if (settings->neck > 0 && labels->count)
+        status = find_parts(&job, &several, error);
+    if (status == UF_OK && several)
+        status = join_parts(&job, error);
+    if (status == UF_OK && several)
+        status = draw_borders(&job, error);
+    if (status == UF_OK && several) {
+        drop_waiting(job.labels);
+        labels->count += job.coarse.labels.count;
     }
     uf_arena_back(&work->arena, mark);
-    return status == UF_OK ? uf_labels_tidy(work, min_pixels, max_pixels, labels, error) : status;
+    return status == UF_OK ? uf_labels_tidy(work, settings->min_pixels, settings->max_pixels, labels, error) : status;
 }

@@ -5,20 +5,26 @@
 
 #include "image/channel.h"
 
+typedef struct uf_part_settings {
+    double pixel_size_um;
+    double neck;                   /* 0 parts nothing, 1 at the slightest neck */
+    double min_pixels, max_pixels; /* of a cell */
+} uf_part_settings;
+
 /*
  * Replaces the labels of connected pieces by labels of cells, 1 .. count.
  *
- * First everything is parted at the slightest neck (image/basins.h). From the cores of these parts the pieces
- * are flooded again over a relief: the relative gradient of the wide image, in which neighbours that differ
- * in dye have a ridge where one ends and the other begins, plus a little for distance from the middle of the
- * piece, so that without a ridge the neck decides. Then neighbours are joined again, most alike first,
- * unless the neck between them is narrower than `neck` times the half width of the narrower one, or they
- * differ in level and a ridge runs along their border. Tidied as uf_labels_tidy does.
+ * On a grid of about 0.25 um everything is first parted at the slightest neck (image/basins.h). From the cores
+ * of these parts the pieces are flooded again over the relative gradient of the image (segment/flood.h), in
+ * which neighbours that differ in dye have a ridge where one ends and the other begins. Then neighbours are
+ * joined again, widest neck first, unless the neck between them is narrower than `neck` times the half width of
+ * the narrower one, or they differ in level and a ridge runs along their border. Last, the borders that are left
+ * are drawn in full resolution by a flood of the strip around them, and labels are tidied (uf_labels_tidy).
  *
- * `distance_px` is the distance to the outside of all pieces; neck 0 parts nothing. UF_MEMORY.
+ * `wide` holds background and noise, `smooth_adu` its image smoothed, `distance_px` the distance to the outside
+ * of all pieces. UF_MEMORY.
  */
-UF_MUST_USE uf_status uf_part_cells(uf_work *work, const uf_channel *wide, uf_plane distance_px,
-                                    double pixel_size_um, double neck, double min_pixels, double max_pixels,
-                                    uf_labels *labels, uf_error *error);
+UF_MUST_USE uf_status uf_part_cells(uf_work *work, const uf_channel *wide, uf_plane smooth_adu, uf_plane distance_px,
+                                    const uf_part_settings *settings, uf_labels *labels, uf_error *error);
 
 #endif
