@@ -29,7 +29,6 @@ static uf_status flat_mean(uf_plane flat, const char *name, double *mean, uf_err
 
 typedef struct correction {
     const uf_raw_channel *raw;
-    uf_mask saturated;
     double flat_mean;
     float *scratch; /* two rows a band */
     int *saturated_count; /* one a band */
@@ -60,7 +59,7 @@ static void correct_rows(void *context, int y0, int y1)
     int saturated = 0;
     for (int y = y0; y < y1; y++) {
         float *counts = uf_plane_row(raw->counts, y);
-        saturated += note_saturated(counts, (float)raw->full_scale_adu, uf_mask_row(c->saturated, y), width);
+        saturated += note_saturated(counts, (float)raw->full_scale_adu, uf_mask_row(raw->saturated, y), width);
         const float *dark = raw->dark.data ? uf_plane_row(raw->dark, y) : offset;
         if (raw->flat.data) {
             const float *flat = uf_plane_row(raw->flat, y);
@@ -165,8 +164,6 @@ uf_status uf_correct_channel(uf_work *work, const uf_raw_channel *raw, uf_channe
     uf_status status = UF_OK;
     if (raw->flat.data)
         status = flat_mean(raw->flat, raw->name, &c.flat_mean, error);
-    if (status == UF_OK)
-        status = uf_mask_take(work, width, height, &c.saturated, error);
     size_t bands = (size_t)(height + BAND - 1) / BAND;
     uf_arena_mark mark = uf_arena_now(&work->arena);
     if (status == UF_OK)
@@ -180,7 +177,7 @@ uf_status uf_correct_channel(uf_work *work, const uf_raw_channel *raw, uf_channe
     uf_arena_back(&work->arena, mark);
     channel->saturated_fraction = (double)saturated / ((double)width * height);
     if (saturated)
-        channel->saturated = c.saturated;
+        channel->saturated = raw->saturated;
     if (raw->defects.data)
         status = replace_mapped(channel->image, raw->defects, raw->name, &channel->replaced, error);
     return status;

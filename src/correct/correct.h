@@ -13,6 +13,7 @@ typedef struct uf_raw_channel {
     uf_plane dark;    /* counts in the dark; else camera->offset_adu */
     uf_plane flat;    /* illumination, any scale */
     uf_plane defects; /* not 0: bad pixel */
+    uf_mask saturated; /* room for where the camera was at full scale */
     double full_scale_adu;
     const uf_camera_settings *camera;
     const char *name; /* "near" or "wide", for messages */
@@ -21,7 +22,7 @@ typedef struct uf_raw_channel {
 /*
  * image = (counts - dark) * mean(flat) / flat. Pixels that the defect map names, and isolated ones far above
  * all eight neighbours (no point spread function is that narrow), take the median of their good neighbours.
- * counts is overwritten and becomes channel->image. UF_INPUT for a flat with values not above 0 or without
+ * counts is overwritten and becomes channel->image; saturated becomes channel->saturated. UF_INPUT for a flat with values not above 0 or without
  * contrast to them, UF_MEMORY.
  */
 UF_MUST_USE uf_status uf_correct_channel(uf_work *work, const uf_raw_channel *raw, uf_channel *channel,

@@ -105,14 +105,14 @@ static void gap_rows(void *context, int y0, int y1)
 
 static uf_status take_map(uf_work *work, int width, int height, uf_gap_map *map, uf_error *error)
 {
-    uf_plane *planes[] = {&map->gap_nm, &map->near_adu, &map->dye_adu, &map->smooth_gap_nm};
+    uf_plane *planes[] = {&map->gap_nm, &map->dye_adu, &map->smooth_gap_nm};
     uf_status status = uf_mask_take(work, width, height, &map->state, error);
     for (size_t k = 0; status == UF_OK && k < sizeof planes / sizeof planes[0]; k++)
         status = uf_plane_take(work, width, height, planes[k], error);
     return status;
 }
 
-uf_status uf_gap_find(uf_work *work, const uf_plan *plan, double detection_sigma, const uf_channel *near,
+uf_status uf_gap_find(uf_work *work, const uf_plan *plan, double detection_sigma, uf_channel *near,
                       const uf_channel *wide, const uf_cell_map *cells, uf_gap_map *map, uf_error *error)
 {
     int width = near->image.width, height = near->image.height;
@@ -121,6 +121,7 @@ uf_status uf_gap_find(uf_work *work, const uf_plan *plan, double detection_sigma
                    .map = map, .detection_sigma = detection_sigma};
     job.ln_reference = (float)uf_round_digits(log(plan->reference_ratio), 12);
     uf_status status = take_map(work, width, height, map, error);
+    map->near_adu = near->image;
     if (status == UF_OK)
         status = uf_edge_fall_measure(work, wide, cells, plan->pixel_size_um, psf_px, &job.fall, error);
     if (status != UF_OK)

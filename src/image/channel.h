@@ -53,7 +53,7 @@ typedef enum uf_gap_state {
 typedef struct uf_gap_map {
     uf_plane gap_nm;    /* signed; the detection limit where unresolved; NaN outside cells */
     uf_mask state;      /* uf_gap_state */
-    uf_plane near_adu;  /* near signal, background subtracted */
+    uf_plane near_adu;  /* near signal, background subtracted: the near channel's own image, in its place */
     uf_plane dye_adu;   /* wide signal that stands for dye density: background subtracted, the fall of the wide
                            blur towards outlines taken out */
     uf_plane smooth_gap_nm; /* at the scale of the point spread function, for spots; UF_GAP_NOWHERE outside */

@@ -35,44 +35,47 @@ static void column_distances(uf_labels labels, uf_plane steps)
 /* ---- second pass: along the rows ------------------------------------------------------------ */
 
 /* Parabolas of the lower envelope: parabola k is lowest from start[k] to start[k + 1]. */
+typedef struct parabola {
+    float start, height;
+    int centre;
+} parabola;
+
 typedef struct envelope {
-    float *start;
-    int *centre;
-    float *height;
+    parabola *list;
     int count;
 } envelope;
 
 static void add_parabola(envelope *e, int centre, float height)
 {
     float at = -INFINITY;
+    double lift = (double)height + (double)centre * centre;
     while (e->count) {
-        int last = e->count - 1;
-        double lift = (double)height + (double)centre * centre;
-        double other = (double)e->height[last] + (double)e->centre[last] * e->centre[last];
-        at = (float)((lift - other) / (2.0 * (centre - e->centre[last])));
-        if (at > e->start[last])
+        const parabola *last = &e->list[e->count - 1];
+        double other = (double)last->height + (double)last->centre * last->centre;
+        at = (float)((lift - other) / (2.0 * (centre - last->centre)));
+        if (at > last->start)
             break;
         e->count--;
     }
-    e->start[e->count] = e->count ? at : -INFINITY;
-    e->centre[e->count] = centre;
-    e->height[e->count] = height;
+    e->list[e->count] = (parabola){e->count ? at : -INFINITY, height, centre};
     e->count++;
 }
 
 static void read_envelope(const envelope *e, int from, int to, float *out)
 {
-    int k = 0;
-    for (int x = from; x < to; x++) {
-        while (k + 1 < e->count && e->start[k + 1] < (float)x)
-            k++;
-        if (!e->count) {
-            out[x] = UF_FAR;
-            continue;
+    int x = from;
+    for (int k = 0; k < e->count; k++) {
+        float until = k + 1 < e->count ? e->list[k + 1].start : INFINITY;
+        int end = until >= (float)to ? to : until < (float)from ? from : (int)until + 1;
+        float height = e->list[k].height;
+        int centre = e->list[k].centre;
+        for (; x < end; x++) {
+            float dx = (float)(x - centre);
+            out[x] = sqrtf(dx * dx + height);
         }
-        float dx = (float)(x - e->centre[k]);
-        out[x] = sqrtf(dx * dx + e->height[k]);
     }
+    for (; x < to; x++)
+        out[x] = UF_FAR;
 }
 
 /* One run of equal label, from .. to-1; a neighbour beyond either end is another label, at height 0. */
@@ -93,8 +96,7 @@ typedef struct distance_job {
     uf_labels labels;
     uf_plane steps, out;
     int inside_only;
-    float *start, *height;
-    int *centre;
+    parabola *parabolas; /* width + 2 a band */
 } distance_job;
 
 static void distance_rows(void *context, int y0, int y1)
@@ -102,7 +104,7 @@ static void distance_rows(void *context, int y0, int y1)
     distance_job *job = context;
     int width = job->labels.width;
     size_t offset = (size_t)(y0 / BAND) * (size_t)(width + 2);
-    envelope e = {job->start + offset, job->centre + offset, job->height + offset, 0};
+    envelope e = {job->parabolas + offset, 0};
     for (int y = y0; y < y1; y++) {
         const int32_t *labels = uf_labels_row(job->labels, y);
         float *out = uf_plane_row(job->out, y);
@@ -125,11 +127,7 @@ uf_status uf_distance(uf_work *work, uf_labels labels, int inside_only, uf_plane
     size_t bands = (size_t)(labels.height + BAND - 1) / BAND, length = bands * (size_t)(labels.width + 2);
     uf_status status = uf_plane_take(work, labels.width, labels.height, &job.steps, error);
     if (status == UF_OK)
-        status = uf_take(work, length, sizeof(float), "distances", &job.start, error);
-    if (status == UF_OK)
-        status = uf_take(work, length, sizeof(float), "distances", &job.height, error);
-    if (status == UF_OK)
-        status = uf_take(work, length, sizeof(int), "distances", &job.centre, error);
+        status = uf_take(work, length, sizeof *job.parabolas, "distances", &job.parabolas, error);
     if (status == UF_OK) {
         column_distances(labels, job.steps);
         uf_rows_run(work, labels.height, distance_rows, &job);

@@ -30,34 +30,61 @@ static void make_offsets(contrast_job *job, double pixel_size_um)
         }
 }
 
-/* One direction's narrow contrast joins the best so far. */
-static void add_narrow(const contrast_job *job, int y, offset o)
+/* Columns from .. to - 1 of one row. */
+typedef struct span {
+    int from, to;
+} span;
+
+/* From the first to the last pixel of a row that has a gap: contrast elsewhere is never looked at. */
+static span span_of_row(const contrast_job *job, int y)
 {
-    int width = job->gap.width, side = abs(o.dx), n = width - 2 * side;
-    if (y < abs(o.dy) || y + abs(o.dy) >= job->gap.height || n <= 0)
-        return;
-    job->kernels->two_sided(uf_plane_row(job->narrow, y) + side, uf_plane_row(job->gap, y) + side,
-                            uf_plane_row(job->gap, y - o.dy) + side - o.dx,
-                            uf_plane_row(job->gap, y + o.dy) + side + o.dx, n);
+    const float *row = uf_plane_row(job->gap, y);
+    span s = {0, job->gap.width};
+    while (s.from < s.to && row[s.from] <= 0.5f * UF_GAP_NOWHERE)
+        s.from++;
+    while (s.to > s.from && row[s.to - 1] <= 0.5f * UF_GAP_NOWHERE)
+        s.to--;
+    return s;
+}
+
+/* The part of a row's span whose neighbours at an offset lie in the image; empty when the rows do not. */
+static span within(const contrast_job *job, int y, span s, offset o)
+{
+    int side = abs(o.dx), width = job->gap.width;
+    s.from = s.from > side ? s.from : side;
+    s.to = s.to < width - side ? s.to : width - side;
+    if (y < abs(o.dy) || y + abs(o.dy) >= job->gap.height || s.to < s.from)
+        s.to = s.from;
+    return s;
+}
+
+/* One direction's narrow contrast joins the best so far. */
+static void add_narrow(const contrast_job *job, int y, span row, offset o)
+{
+    span s = within(job, y, row, o);
+    if (s.to > s.from)
+        job->kernels->two_sided(uf_plane_row(job->narrow, y) + s.from, uf_plane_row(job->gap, y) + s.from,
+                                uf_plane_row(job->gap, y - o.dy) + s.from - o.dx,
+                                uf_plane_row(job->gap, y + o.dy) + s.from + o.dx, s.to - s.from);
 }
 
 /* One direction's closedness takes its place among the worst, where its longest reach lies in the image. */
-static void add_closed(const contrast_job *job, int y, const offset *offsets, float *row)
+static void add_closed(const contrast_job *job, int y, span row, const offset *offsets, float *scratch)
 {
-    offset longest = offsets[REACHES - 1];
-    int width = job->gap.width, side = abs(longest.dx), n = width - 2 * side;
-    if (y < abs(longest.dy) || y + abs(longest.dy) >= job->gap.height || n <= 0)
+    span s = within(job, y, row, offsets[REACHES - 1]);
+    int n = s.to - s.from;
+    if (n <= 0)
         return;
     for (int x = 0; x < n; x++)
-        row[x] = -1e9f;
-    const float *here = uf_plane_row(job->gap, y) + side;
+        scratch[x] = -1e9f;
+    const float *here = uf_plane_row(job->gap, y) + s.from;
     for (int r = 0; r < REACHES; r++)
-        job->kernels->closed_sides(row, here, uf_plane_row(job->gap, y - offsets[r].dy) + side - offsets[r].dx,
-                                   uf_plane_row(job->gap, y + offsets[r].dy) + side + offsets[r].dx,
+        job->kernels->closed_sides(scratch, here, uf_plane_row(job->gap, y - offsets[r].dy) + s.from - offsets[r].dx,
+                                   uf_plane_row(job->gap, y + offsets[r].dy) + s.from + offsets[r].dx,
                                    0.5f * UF_GAP_NOWHERE, n);
-    float *worst = uf_plane_row(job->closed, y) + side;
+    float *worst = uf_plane_row(job->closed, y) + s.from;
     for (int x = 0; x < n; x++)
-        worst[x] = row[x] < worst[x] ? row[x] : worst[x];
+        worst[x] = scratch[x] < worst[x] ? scratch[x] : worst[x];
 }
 
 static void contrast_rows(void *context, int y0, int y1)
@@ -70,10 +97,11 @@ static void contrast_rows(void *context, int y0, int y1)
             uf_plane_row(job->narrow, y)[x] = 0.0f;
             uf_plane_row(job->closed, y)[x] = 1e9f;
         }
+        span s = span_of_row(job, y);
         for (int d = 0; d < DIRECTIONS; d++) {
             for (int r = 0; r < NARROW_REACHES; r++)
-                add_narrow(job, y, job->offsets[d][r]);
-            add_closed(job, y, job->offsets[d], row);
+                add_narrow(job, y, s, job->offsets[d][r]);
+            add_closed(job, y, s, job->offsets[d], row);
         }
     }
 }

@@ -4,8 +4,8 @@
  *
  * The smaller of the narrow and the closed contrast (measure/contrast.h) is the score. Its map is cut above the
  * noise and parted at saddles (image/basins.h): each part is a spot, a long one too, since only its middle is
- * closed. The spot's region is where the narrow contrast is at least half of that at its top, connected to the
- * top.
+ * closed. The spot's region, connected to its top, is where the narrow contrast is at least half of that at the
+ * top and the gap no more than that half above the gap there.
  */
 #include <math.h>
 #include <stdlib.h>
@@ -118,12 +118,19 @@ static void add_pixel(const uf_measure_input *in, float contrast, int x, int y, 
     s->near_peak = near > s->near_peak ? near : s->near_peak;
 }
 
+/* No spot reaches farther from its top than the longest one is long. */
+static int region_reach(const uf_measure_input *in)
+{
+    return (int)(in->settings->spots.max_length_um / in->plan->pixel_size_um) + 1;
+}
+
 /* Grows the region of candidate `number` from its top over unclaimed pixels of its cell; claimed holds whose each
- * pixel is. `waiting` has room for every pixel of the image once. */
-static void grow_region(const uf_measure_input *in, uf_plane narrow, uf_labels claimed, int number, int *waiting,
-                        spot_sums *s)
+ * pixel is. `waiting` has room for every pixel within `reach` of the top. */
+static void grow_region(const uf_measure_input *in, uf_plane narrow, uf_labels claimed, int number, int reach,
+                        int *waiting, spot_sums *s)
 {
     float least = 0.5f * uf_plane_row(narrow, s->top_y)[s->top_x];
+    float highest = uf_plane_row(in->gaps->smooth_gap_nm, s->top_y)[s->top_x] + least;
     int count = 0, done = 0, width = claimed.width;
     waiting[count++] = s->top_y * width + s->top_x;
     uf_labels_row(claimed, s->top_y)[s->top_x] = number;
@@ -133,8 +140,10 @@ static void grow_region(const uf_measure_input *in, uf_plane narrow, uf_labels c
         add_pixel(in, uf_plane_row(narrow, y)[x], x, y, s);
         for (int v = y - 1; v <= y + 1; v++)
             for (int u = x - 1; u <= x + 1; u++) {
-                if (u < 0 || v < 0 || u >= width || v >= claimed.height || uf_labels_row(claimed, v)[u] ||
-                    uf_labels_row(in->cells->labels, v)[u] != s->cell || uf_plane_row(narrow, v)[u] < least)
+                if (u < 0 || v < 0 || u >= width || v >= claimed.height || abs(u - s->top_x) > reach ||
+                    abs(v - s->top_y) > reach || uf_labels_row(claimed, v)[u] ||
+                    uf_labels_row(in->cells->labels, v)[u] != s->cell || uf_plane_row(narrow, v)[u] < least ||
+                    uf_plane_row(in->gaps->smooth_gap_nm, v)[u] > highest)
                     continue;
                 uf_labels_row(claimed, v)[u] = number;
                 waiting[count++] = v * width + u;
@@ -147,15 +156,16 @@ static uf_status grow_regions(uf_work *work, const uf_measure_input *in, uf_plan
                               spot_sums *sums, uf_error *error)
 {
     int *waiting;
-    size_t pixels = (size_t)basins.width * (size_t)basins.height;
-    uf_status status = uf_take(work, pixels, sizeof *waiting, "spots", &waiting, error);
+    int reach = region_reach(in);
+    size_t side = 2 * (size_t)reach + 1;
+    uf_status status = uf_take(work, side * side, sizeof *waiting, "spots", &waiting, error);
     if (status != UF_OK)
         return status;
     for (int y = 0; y < basins.height; y++)
         memset(uf_labels_row(basins, y), 0, (size_t)basins.width * sizeof(int32_t));
     for (int k = 1; k <= basins.count; k++)
         if (sums[k].cell && !uf_labels_row(basins, sums[k].top_y)[sums[k].top_x])
-            grow_region(in, narrow, basins, k, waiting, &sums[k]);
+            grow_region(in, narrow, basins, k, reach, waiting, &sums[k]);
     return UF_OK;
 }
 
@@ -163,8 +173,7 @@ static int is_spot(const uf_measure_input *in, const spot_sums *s, const float *
 {
     const uf_settings *settings = in->settings;
     return s->top >= needed_at(needed + (size_t)s->cell * GAP_STEPS, s->least_gap) &&
-           spot->length_um >= settings->spots.min_length_um && spot->length_um <= settings->spots.max_length_um &&
-           (double)s->least_gap <= settings->contact.cutoff_nm;
+           spot->length_um >= settings->spots.min_length_um && spot->length_um <= settings->spots.max_length_um;
 }
 
 static uf_spot make_spot(const uf_measure_input *in, const spot_sums *s)

@@ -19,7 +19,7 @@ static const double clear_um = 4.0;
 /* A field's own shift may differ this far from the bench's before it is worth a look. */
 static const double shift_tolerance_px = 1.0;
 
-static uf_status correct(uf_work *work, const uf_raw_channel *raw, uf_channel *channel, uf_error *error)
+uf_status uf_field_correct(uf_work *work, const uf_raw_channel *raw, uf_channel *channel, uf_error *error)
 {
     uf_status status = uf_correct_channel(work, raw, channel, error);
     return status == UF_OK ? uf_background_first(work, channel, error) : status;
@@ -83,15 +83,10 @@ static uf_status measure(uf_work *work, const uf_plan *plan, const uf_settings *
     return status;
 }
 
-uf_status uf_field_run(uf_work *work, const uf_plan *plan, const uf_settings *settings,
-                       const uf_raw_channel raw[UF_CHANNELS], uf_field_result *result, uf_error *error)
+uf_status uf_field_run(uf_work *work, const uf_plan *plan, const uf_settings *settings, uf_field_result *result,
+                       uf_error *error)
 {
-    *result = (uf_field_result){0};
-    uf_status status = correct(work, &raw[UF_NEAR], &result->near, error);
-    if (status == UF_OK)
-        status = correct(work, &raw[UF_WIDE], &result->wide, error);
-    if (status == UF_OK)
-        status = align(work, settings, result, error);
+    uf_status status = align(work, settings, result, error);
     if (status == UF_OK)
         status = find_cells(work, plan, settings, result, error);
     if (status == UF_OK)

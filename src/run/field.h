@@ -17,10 +17,14 @@ typedef struct uf_field_result {
     uf_field field; /* field.spots is their number */
 } uf_field_result;
 
-/* Measures a field from the counts of its two channels (overwritten). Same sizes are the caller's to check.
- * UF_INPUT for flats or defect maps that cannot be used, UF_MEMORY. */
+/* Corrects one channel and finds its background. UF_INPUT for a flat or defect map that cannot be used. */
+UF_MUST_USE uf_status uf_field_correct(uf_work *work, const uf_raw_channel *raw, uf_channel *channel,
+                                       uf_error *error);
+
+/* Measures the field whose corrected channels stand in result->near and ->wide (of one size; overwritten).
+ * UF_MEMORY is the only failure. */
 UF_MUST_USE uf_status uf_field_run(uf_work *work, const uf_plan *plan, const uf_settings *settings,
-                                   const uf_raw_channel raw[UF_CHANNELS], uf_field_result *result, uf_error *error);
+                                   uf_field_result *result, uf_error *error);
 
 /* Frees what does not live in the arena; a zeroed result may be freed. */
 void uf_field_result_free(uf_field_result *result);

@@ -25,7 +25,6 @@ typedef struct measure_job {
     const uf_measure_request *request;
     uf_work work;
     uf_plan plan;
-    uf_raw_channel raw[UF_CHANNELS];
     uf_field_result result;
     uf_run_input inputs[MOST_INPUTS];
     int input_count;
@@ -69,48 +68,63 @@ static double full_scale(const uf_camera_settings *camera, const uf_image_info *
     return info->is_float ? (double)INFINITY : info->bits == 8 ? 255.0 : 65535.0;
 }
 
-static uf_status read_channel(measure_job *job, uf_channel_name which, double *pixel_um, uf_error *error)
+static const char *const channel_names[] = {"near", "wide"};
+
+static uf_status read_companions(measure_job *job, uf_channel_name which, uf_raw_channel *raw, uf_error *error)
 {
-    static const char *const names[] = {"near", "wide"};
     static const char *const flats[] = {"near flat", "wide flat"}, *const darks[] = {"near dark", "wide dark"};
     static const char *const maps[] = {"near defect map", "wide defect map"};
+    const uf_settings *s = job->settings;
+    uf_status status = read_companion(job, darks[which], s->camera[which].dark, raw->counts, &raw->dark, error);
+    if (status == UF_OK)
+        status = read_companion(job, flats[which], s->flat[which].file, raw->counts, &raw->flat, error);
+    if (status == UF_OK)
+        status = read_companion(job, maps[which], s->camera[which].defects, raw->counts, &raw->defects, error);
+    return status;
+}
+
+/* Reads one channel and corrects it; what corrects it is given back to the arena. */
+static uf_status read_channel(measure_job *job, uf_channel_name which, double *pixel_um, uf_error *error)
+{
     const char *path = which == UF_NEAR ? job->request->near_path : job->request->wide_path;
-    const uf_camera_settings *camera = &job->settings->camera[which];
-    uf_raw_channel *raw = &job->raw[which];
+    uf_raw_channel raw = {.camera = &job->settings->camera[which], .name = channel_names[which]};
     uf_image_info info;
-    raw->camera = camera;
-    raw->name = names[which];
-    uf_status status = read_image(job, names[which], path, &raw->counts, &info, error);
+    uf_status status = read_image(job, raw.name, path, &raw.counts, &info, error);
     if (status != UF_OK)
         return status;
     if (info.pages > 1)
         return uf_fail(error, UF_INPUT, "%s: has %d pages, expected one; save the page to measure as a file of its own",
                        path, info.pages);
-    raw->full_scale_adu = full_scale(camera, &info);
+    raw.full_scale_adu = full_scale(raw.camera, &info);
     *pixel_um = info.pixel_size_x_um;
-    status = read_companion(job, darks[which], camera->dark, raw->counts, &raw->dark, error);
+    status = uf_mask_take(&job->work, raw.counts.width, raw.counts.height, &raw.saturated, error);
+    uf_arena_mark mark = uf_arena_now(&job->work.arena);
     if (status == UF_OK)
-        status = read_companion(job, flats[which], job->settings->flat[which].file, raw->counts, &raw->flat, error);
+        status = read_companions(job, which, &raw, error);
     if (status == UF_OK)
-        status = read_companion(job, maps[which], camera->defects, raw->counts, &raw->defects, error);
+        status = uf_field_correct(&job->work, &raw, which == UF_NEAR ? &job->result.near : &job->result.wide, error);
+    uf_arena_back(&job->work.arena, mark);
     return status;
 }
 
+/* Everything that can be wrong with the settings is said before pixels are worked on. */
 static uf_status read_inputs(measure_job *job, uf_error *error)
 {
     double near_um = (double)NAN, wide_um = (double)NAN;
     uf_status status = read_channel(job, UF_NEAR, &near_um, error);
     if (status == UF_OK)
+        status = uf_plan_make(job->settings, near_um, &job->plan, error);
+    if (status == UF_OK)
         status = read_channel(job, UF_WIDE, &wide_um, error);
     if (status != UF_OK)
         return status;
-    uf_plane near = job->raw[UF_NEAR].counts, wide = job->raw[UF_WIDE].counts;
+    uf_plane near = job->result.near.image, wide = job->result.wide.image;
     if (near.width != wide.width || near.height != wide.height)
         return uf_fail(error, UF_INPUT,
                        "%s is %d x %d px, but %s is %d x %d; the two images of a field must have the same size",
                        job->request->near_path, near.width, near.height, job->request->wide_path, wide.width,
                        wide.height);
-    return uf_plan_make(job->settings, near_um, &job->plan, error);
+    return UF_OK;
 }
 
 /* ---- warnings --------------------------------------------------------------------------------------------------- */
@@ -136,9 +150,9 @@ static void warn_settings(measure_job *job)
         if (isnan(job->settings->camera[k].gain_e_per_adu))
             uf_text_printf(&job->warnings,
                            "no gain_e_per_adu in [%s.camera]: noise and detection limit are estimated from the image\n",
-                           job->raw[k].name);
+                           channel_names[k]);
         if (!job->settings->flat[k].file)
-            uf_text_printf(&job->warnings, "no [%s.flat]: uneven light goes into the gaps\n", job->raw[k].name);
+            uf_text_printf(&job->warnings, "no [%s.flat]: uneven light goes into the gaps\n", channel_names[k]);
     }
 }
 
@@ -258,7 +272,7 @@ static uf_status draw_overlay(measure_job *job, uf_text *png, uf_error *error)
     uf_text line = {0}, flags = {0};
     settings_line(job, &line);
     flag_words(r->field.flags, &flags);
-    uf_overlay_input input = {.near_adu = r->near.image,
+    uf_overlay_input input = {.near_adu = r->gaps.near_adu,
                               .labels = r->cells.labels,
                               .gap_nm = r->gaps.gap_nm,
                               .contact = r->contact,
@@ -266,7 +280,7 @@ static uf_status draw_overlay(measure_job *job, uf_text *png, uf_error *error)
                               .spots = r->spots,
                               .spot_count = r->field.spots,
                               .pixel_size_um = job->plan.pixel_size_um,
-                              .near_background_adu = r->near.background_adu,
+                              .near_background_adu = 0,
                               .cutoff_nm = job->settings->contact.cutoff_nm,
                               .title = uf_base_name(job->request->near_path),
                               .settings = line.bytes ? line.bytes : "",
@@ -373,7 +387,7 @@ static uf_status measure_and_write(measure_job *job, double started, uf_measure_
     if (status == UF_OK)
         status = uf_output_open(&job->output, job->request->out_dir, error);
     if (status == UF_OK)
-        status = uf_field_run(&job->work, &job->plan, job->settings, job->raw, &job->result, error);
+        status = uf_field_run(&job->work, &job->plan, job->settings, &job->result, error);
     if (status != UF_OK)
         return status;
     job->result.field.field_id = job->request->near_path;
