@@ -15,19 +15,19 @@ struct uf_pool {
     void *context;
     int next, count, unfinished;
     bool ending;
-    int helpers;
+    int helpers, hands_given;
     pthread_t helper[];
 };
 
 /* Takes tasks one by one until the job is empty. Called and left with the lock held. */
-static void work_off(uf_pool *pool)
+static void work_off(uf_pool *pool, int hand)
 {
     while (pool->next < pool->count) {
         int index = pool->next++;
         uf_task *task = pool->task;
         void *context = pool->context;
         pthread_mutex_unlock(&pool->lock);
-        task(context, index);
+        task(context, hand, index);
         pthread_mutex_lock(&pool->lock);
         if (--pool->unfinished == 0)
             pthread_cond_broadcast(&pool->done);
@@ -38,8 +38,9 @@ static void *helper_main(void *argument)
 {
     uf_pool *pool = argument;
     pthread_mutex_lock(&pool->lock);
+    int hand = ++pool->hands_given; /* the caller is hand 0 */
     while (!pool->ending) {
-        work_off(pool);
+        work_off(pool, hand);
         if (!pool->ending)
             pthread_cond_wait(&pool->wake, &pool->lock);
     }
@@ -87,11 +88,16 @@ void uf_pool_free(uf_pool **pointer)
     *pointer = NULL;
 }
 
+int uf_hands(const uf_work *work)
+{
+    return work->pool ? work->pool->helpers + 1 : 1;
+}
+
 void uf_pool_run(uf_pool *pool, int count, uf_task *task, void *context)
 {
     if (!pool || pool->helpers == 0 || count < 2) {
         for (int k = 0; k < count; k++)
-            task(context, k);
+            task(context, 0, k);
         return;
     }
     pthread_mutex_lock(&pool->lock);
@@ -100,7 +106,7 @@ void uf_pool_run(uf_pool *pool, int count, uf_task *task, void *context)
     pool->next = 0;
     pool->count = pool->unfinished = count;
     pthread_cond_broadcast(&pool->wake);
-    work_off(pool);
+    work_off(pool, 0);
     while (pool->unfinished > 0)
         pthread_cond_wait(&pool->done, &pool->lock);
     pool->count = pool->next = 0;
@@ -115,12 +121,12 @@ typedef struct banded {
     int height;
 } banded;
 
-static void run_band(void *context, int index)
+static void run_band(void *context, int hand, int index)
 {
     banded *b = context;
     int y0 = index * BAND_ROWS;
     int y1 = y0 + BAND_ROWS < b->height ? y0 + BAND_ROWS : b->height;
-    b->task(b->context, y0, y1);
+    b->task(b->context, hand, y0, y1);
 }
 
 void uf_rows_run(const uf_work *work, int height, uf_rows_task *task, void *context)

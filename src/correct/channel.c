@@ -30,11 +30,9 @@ static uf_status flat_mean(uf_plane flat, const char *name, double *mean, uf_err
 typedef struct correction {
     const uf_raw_channel *raw;
     double flat_mean;
-    float *scratch; /* two rows a band */
-    int *saturated_count; /* one a band */
+    float *scratch;          /* two rows a hand */
+    int64_t *saturated_count; /* one a hand */
 } correction;
-
-enum { BAND = 64 };
 
 static int note_saturated(const float *counts, float full_scale, uint8_t *saturated, int n)
 {
@@ -46,12 +44,12 @@ static int note_saturated(const float *counts, float full_scale, uint8_t *satura
     return count;
 }
 
-static void correct_rows(void *context, int y0, int y1)
+static void correct_rows(void *context, int hand, int y0, int y1)
 {
     correction *c = context;
     const uf_raw_channel *raw = c->raw;
-    int width = raw->counts.width, band = y0 / BAND;
-    float *offset = c->scratch + (size_t)band * 2 * (size_t)width, *gain = offset + width;
+    int width = raw->counts.width;
+    float *offset = c->scratch + (size_t)hand * 2 * (size_t)width, *gain = offset + width;
     for (int x = 0; x < width; x++) {
         offset[x] = (float)raw->camera->offset_adu;
         gain[x] = 1.0f;
@@ -70,7 +68,7 @@ static void correct_rows(void *context, int y0, int y1)
         for (int x = 0; x < width; x++)
             counts[x] = (counts[x] - dark[x]) * gain[x];
     }
-    c->saturated_count[band] = saturated;
+    c->saturated_count[hand] += saturated;
 }
 
 /* ---- bad pixels --------------------------------------------------------------------------------- */
@@ -139,11 +137,14 @@ static int looks_display_scaled(const uf_raw_channel *raw)
 
 /* ---- all of it -------------------------------------------------------------------------------------- */
 
-static uf_status take_scratch(uf_work *work, correction *c, size_t bands, int width, uf_error *error)
+static uf_status take_scratch(uf_work *work, correction *c, int width, uf_error *error)
 {
-    uf_status status = uf_take(work, bands * 2 * (size_t)width, sizeof(float), "correction", &c->scratch, error);
+    size_t hands = (size_t)uf_hands(work);
+    uf_status status = uf_take(work, hands * 2 * (size_t)width, sizeof(float), "correction", &c->scratch, error);
     if (status == UF_OK)
-        status = uf_take(work, bands, sizeof(int), "correction", &c->saturated_count, error);
+        status = uf_take(work, hands, sizeof(int64_t), "correction", &c->saturated_count, error);
+    for (size_t k = 0; status == UF_OK && k < hands; k++)
+        c->saturated_count[k] = 0;
     return status;
 }
 
@@ -164,15 +165,14 @@ uf_status uf_correct_channel(uf_work *work, const uf_raw_channel *raw, uf_channe
     uf_status status = UF_OK;
     if (raw->flat.data)
         status = flat_mean(raw->flat, raw->name, &c.flat_mean, error);
-    size_t bands = (size_t)(height + BAND - 1) / BAND;
     uf_arena_mark mark = uf_arena_now(&work->arena);
     if (status == UF_OK)
-        status = take_scratch(work, &c, bands, width, error);
+        status = take_scratch(work, &c, width, error);
     if (status != UF_OK)
         return status;
     uf_rows_run(work, height, correct_rows, &c);
     int64_t saturated = 0;
-    for (size_t k = 0; k < bands; k++)
+    for (size_t k = 0; k < (size_t)uf_hands(work); k++)
         saturated += c.saturated_count[k];
     uf_arena_back(&work->arena, mark);
     channel->saturated_fraction = (double)saturated / ((double)width * height);

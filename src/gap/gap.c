@@ -22,8 +22,9 @@ typedef struct gap_job {
 
 /* ---- signals ------------------------------------------------------------------------------------------- */
 
-static void signal_rows(void *context, int y0, int y1)
+static void signal_rows(void *context, int hand, int y0, int y1)
 {
+    (void)hand;
     gap_job *job = context;
     float near_background = (float)job->near->background_adu, wide_background = (float)job->wide->background_adu;
     int width = job->near->image.width;
@@ -86,8 +87,9 @@ static void cell_span(uf_labels labels, int y, int *from, int *to)
         --*to;
 }
 
-static void gap_rows(void *context, int y0, int y1)
+static void gap_rows(void *context, int hand, int y0, int y1)
 {
+    (void)hand;
     gap_job *job = context;
     const uf_gap_lookup *lookup = &job->plan->decay.lookup;
     for (int y = y0; y < y1; y++) {

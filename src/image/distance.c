@@ -3,8 +3,6 @@
 
 #include <math.h>
 
-enum { BAND = 64 };
-
 /* ---- first pass: down and up the columns ---------------------------------------------------- */
 
 /* Steps along the column to the nearest other label, UF_FAR when there is none. Rows are walked whole, so
@@ -96,14 +94,14 @@ typedef struct distance_job {
     uf_labels labels;
     uf_plane steps, out;
     int inside_only;
-    parabola *parabolas; /* width + 2 a band */
+    parabola *parabolas; /* width + 2 a hand */
 } distance_job;
 
-static void distance_rows(void *context, int y0, int y1)
+static void distance_rows(void *context, int hand, int y0, int y1)
 {
     distance_job *job = context;
     int width = job->labels.width;
-    size_t offset = (size_t)(y0 / BAND) * (size_t)(width + 2);
+    size_t offset = (size_t)hand * (size_t)(width + 2);
     envelope e = {job->parabolas + offset, 0};
     for (int y = y0; y < y1; y++) {
         const int32_t *labels = uf_labels_row(job->labels, y);
@@ -124,7 +122,7 @@ uf_status uf_distance(uf_work *work, uf_labels labels, int inside_only, uf_plane
 {
     distance_job job = {.labels = labels, .out = distance_px, .inside_only = inside_only};
     uf_arena_mark mark = uf_arena_now(&work->arena);
-    size_t bands = (size_t)(labels.height + BAND - 1) / BAND, length = bands * (size_t)(labels.width + 2);
+    size_t length = (size_t)uf_hands(work) * (size_t)(labels.width + 2);
     uf_status status = uf_plane_take(work, labels.width, labels.height, &job.steps, error);
     if (status == UF_OK)
         status = uf_take(work, length, sizeof *job.parabolas, "distances", &job.parabolas, error);

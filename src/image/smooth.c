@@ -28,11 +28,12 @@ static int clamp(int i, int n)
 
 typedef struct smoothing {
     const uf_kernels *kernels;
-    uf_plane in, half, out;
+    uf_plane in, out;
     float taps[LARGEST_RADIUS + 1];
     int radius;
-    float *padded; /* one row with its borders for each band */
-    size_t padded_length;
+    float *padded; /* a row with its borders, one a hand */
+    float *band;   /* rows of a band, and the radius above and below, convolved along the rows; one a hand */
+    size_t padded_length, band_length;
 } smoothing;
 
 static void make_taps(smoothing *s, double sigma)
@@ -49,37 +50,52 @@ static void make_taps(smoothing *s, double sigma)
         s->taps[k] = (float)uf_round_digits(taps[k] / sum, 12);
 }
 
-static void smooth_rows(void *context, int y0, int y1)
+static void smooth_row(const smoothing *s, int y, float *padded, float *out)
 {
-    smoothing *s = context;
     int width = s->in.width, radius = s->radius;
-    float *padded = s->padded + (size_t)(y0 / BAND) * s->padded_length;
-    for (int y = y0; y < y1; y++) {
-        const float *row = uf_plane_row(s->in, y);
-        memcpy(padded + radius, row, (size_t)width * sizeof *row);
-        for (int k = 1; k <= radius; k++) {
-            padded[radius - k] = row[mirror(-k, width)];
-            padded[radius + width - 1 + k] = row[mirror(width - 1 + k, width)];
-        }
-        s->kernels->convolve_row(uf_plane_row(s->half, y), padded + radius, s->taps, radius, width);
+    const float *row = uf_plane_row(s->in, mirror(y, s->in.height));
+    memcpy(padded + radius, row, (size_t)width * sizeof *row);
+    for (int k = 1; k <= radius; k++) {
+        padded[radius - k] = row[mirror(-k, width)];
+        padded[radius + width - 1 + k] = row[mirror(width - 1 + k, width)];
     }
+    s->kernels->convolve_row(out, padded + radius, s->taps, radius, width);
 }
 
-static void smooth_columns(void *context, int y0, int y1)
+/* A band at a time, along the rows and then down the columns, while it is in the cache. */
+static void smooth_band(void *context, int hand, int y0, int y1)
 {
-    smoothing *s = context;
-    const float *rows[2 * LARGEST_RADIUS + 1];
-    for (int y = y0; y < y1; y++) {
-        for (int k = -s->radius; k <= s->radius; k++)
-            rows[s->radius + k] = uf_plane_row(s->half, mirror(y + k, s->half.height));
-        s->kernels->convolve_column(uf_plane_row(s->out, y), rows, s->taps, s->radius, s->out.width);
+    const smoothing *s = context;
+    int radius = s->radius, width = s->in.width;
+    float *padded = s->padded + (size_t)hand * s->padded_length;
+    float *band = s->band + (size_t)hand * s->band_length;
+    const float *rows[BAND + 2 * LARGEST_RADIUS];
+    for (int k = 0; k < y1 - y0 + 2 * radius; k++) {
+        smooth_row(s, y0 - radius + k, padded, band + (size_t)k * (size_t)width);
+        rows[k] = band + (size_t)k * (size_t)width;
     }
+    for (int y = y0; y < y1; y++)
+        s->kernels->convolve_column(uf_plane_row(s->out, y), rows + (y - y0), s->taps, radius, width);
 }
 
 static void copy_plane(uf_plane in, uf_plane out)
 {
     for (int y = 0; y < in.height; y++)
         memmove(uf_plane_row(out, y), uf_plane_row(in, y), (size_t)in.width * sizeof(float));
+}
+
+/* Bands read rows of their neighbours, so a plane smoothed onto itself is copied first. */
+static uf_status copy_when_same(uf_work *work, uf_plane *in, uf_plane out, uf_error *error)
+{
+    uf_plane copy;
+    if (in->data != out.data)
+        return UF_OK;
+    uf_status status = uf_plane_take(work, in->width, in->height, &copy, error);
+    if (status != UF_OK)
+        return status;
+    copy_plane(*in, copy);
+    *in = copy;
+    return UF_OK;
 }
 
 uf_status uf_smooth(uf_work *work, uf_plane in, double sigma_px, uf_plane out, uf_error *error)
@@ -91,15 +107,16 @@ uf_status uf_smooth(uf_work *work, uf_plane in, double sigma_px, uf_plane out, u
     }
     make_taps(&s, sigma_px);
     uf_arena_mark mark = uf_arena_now(&work->arena);
+    size_t hands = (size_t)uf_hands(work);
     s.padded_length = (size_t)(in.width + 2 * s.radius);
-    size_t bands = (size_t)(in.height + BAND - 1) / BAND;
-    uf_status status = uf_take(work, bands * s.padded_length, sizeof(float), "smoothing", &s.padded, error);
+    s.band_length = (size_t)(BAND + 2 * s.radius) * (size_t)in.width;
+    uf_status status = copy_when_same(work, &s.in, out, error);
     if (status == UF_OK)
-        status = uf_plane_take(work, in.width, in.height, &s.half, error);
-    if (status == UF_OK) {
-        uf_rows_run(work, in.height, smooth_rows, &s);
-        uf_rows_run(work, in.height, smooth_columns, &s);
-    }
+        status = uf_take(work, hands * s.padded_length, sizeof(float), "smoothing", &s.padded, error);
+    if (status == UF_OK)
+        status = uf_take(work, hands * s.band_length, sizeof(float), "smoothing", &s.band, error);
+    if (status == UF_OK)
+        uf_rows_run(work, in.height, smooth_band, &s);
     uf_arena_back(&work->arena, mark);
     return status;
 }
@@ -111,22 +128,45 @@ typedef struct reduction {
     int factor;
 } reduction;
 
-static void reduce_rows(void *context, int y0, int y1)
+enum { CHUNK = 512 };
+
+/* Sums of the rows top .. bottom - 1 at columns from .. to - 1. */
+static void sum_rows(uf_plane in, int top, int bottom, int from, int to, double *sums)
 {
-    reduction *r = context;
-    int factor = r->factor;
-    for (int y = y0; y < y1; y++) {
-        float *out = uf_plane_row(r->out, y);
-        int top = y * factor, bottom = top + factor < r->in.height ? top + factor : r->in.height;
-        for (int x = 0; x < r->out.width; x++) {
+    for (int x = from; x < to; x++)
+        sums[x - from] = 0;
+    for (int y = top; y < bottom; y++) {
+        const float *row = uf_plane_row(in, y);
+        for (int x = from; x < to; x++)
+            sums[x - from] += (double)row[x];
+    }
+}
+
+static void reduce_row(const reduction *r, int y)
+{
+    int factor = r->factor, per_chunk = CHUNK / factor;
+    int top = y * factor, bottom = top + factor < r->in.height ? top + factor : r->in.height;
+    float *out = uf_plane_row(r->out, y);
+    double sums[CHUNK];
+    for (int x0 = 0; x0 < r->out.width; x0 += per_chunk) {
+        int x1 = x0 + per_chunk < r->out.width ? x0 + per_chunk : r->out.width;
+        int from = x0 * factor, to = x1 * factor < r->in.width ? x1 * factor : r->in.width;
+        sum_rows(r->in, top, bottom, from, to, sums);
+        for (int x = x0; x < x1; x++) {
             int left = x * factor, right = left + factor < r->in.width ? left + factor : r->in.width;
             double sum = 0;
-            for (int v = top; v < bottom; v++)
-                for (int u = left; u < right; u++)
-                    sum += (double)uf_plane_row(r->in, v)[u];
+            for (int u = left; u < right; u++)
+                sum += sums[u - from];
             out[x] = (float)(sum / ((bottom - top) * (right - left)));
         }
     }
+}
+
+static void reduce_rows(void *context, int hand, int y0, int y1)
+{
+    (void)hand;
+    for (int y = y0; y < y1; y++)
+        reduce_row(context, y);
 }
 
 void uf_reduce(const uf_work *work, uf_plane in, int factor, uf_plane out)
@@ -191,11 +231,11 @@ static void lagrange(double t, float *taps)
     }
 }
 
-static void shift_rows(void *context, int y0, int y1)
+static void shift_rows(void *context, int hand, int y0, int y1)
 {
     shifting *s = context;
     int width = s->in.width;
-    float *padded = s->padded + (size_t)(y0 / BAND) * s->padded_length;
+    float *padded = s->padded + (size_t)hand * s->padded_length;
     for (int y = y0; y < y1; y++) {
         const float *row = uf_plane_row(s->in, y);
         for (int x = 0; x < width + POINTS; x++)
@@ -204,8 +244,9 @@ static void shift_rows(void *context, int y0, int y1)
     }
 }
 
-static void shift_columns(void *context, int y0, int y1)
+static void shift_columns(void *context, int hand, int y0, int y1)
 {
+    (void)hand;
     shifting *s = context;
     const float *rows[POINTS];
     for (int y = y0; y < y1; y++) {
@@ -224,8 +265,7 @@ uf_status uf_shift(uf_work *work, uf_plane in, double dx, double dy, uf_plane ou
     lagrange(dy - s.whole_y, s.taps_y);
     uf_arena_mark mark = uf_arena_now(&work->arena);
     s.padded_length = (size_t)in.width + POINTS;
-    size_t bands = (size_t)(in.height + BAND - 1) / BAND;
-    uf_status status = uf_take(work, bands * s.padded_length, sizeof(float), "the shift", &s.padded, error);
+    uf_status status = uf_take(work, (size_t)uf_hands(work) * s.padded_length, sizeof(float), "the shift", &s.padded, error);
     if (status == UF_OK)
         status = uf_plane_take(work, in.width, in.height, &s.half, error);
     if (status == UF_OK) {

@@ -7,7 +7,7 @@
 #include "image/kernels.h"
 
 static const double reaches_um[] = {0.45, 0.7, 1.0, 1.4, 1.8};
-enum { REACHES = 5, NARROW_REACHES = 2, DIRECTIONS = 8, BAND = 64 };
+enum { REACHES = 5, NARROW_REACHES = 2, DIRECTIONS = 8 };
 
 typedef struct offset {
     int dx, dy;
@@ -17,7 +17,7 @@ typedef struct contrast_job {
     const uf_kernels *kernels;
     uf_plane gap, narrow, closed;
     offset offsets[DIRECTIONS][REACHES];
-    float *rows; /* one a band */
+    float *rows; /* one a hand */
 } contrast_job;
 
 static void make_offsets(contrast_job *job, double pixel_size_um)
@@ -87,11 +87,11 @@ static void add_closed(const contrast_job *job, int y, span row, const offset *o
         worst[x] = scratch[x] < worst[x] ? scratch[x] : worst[x];
 }
 
-static void contrast_rows(void *context, int y0, int y1)
+static void contrast_rows(void *context, int hand, int y0, int y1)
 {
     contrast_job *job = context;
     int width = job->gap.width;
-    float *row = job->rows + (size_t)(y0 / BAND) * (size_t)width;
+    float *row = job->rows + (size_t)hand * (size_t)width;
     for (int y = y0; y < y1; y++) {
         for (int x = 0; x < width; x++) {
             uf_plane_row(job->narrow, y)[x] = 0.0f;
@@ -110,10 +110,9 @@ uf_status uf_contrast_find(uf_work *work, uf_plane gap_nm, double pixel_size_um,
                            uf_error *error)
 {
     contrast_job job = {.kernels = uf_kernels_in_use(), .gap = gap_nm, .narrow = narrow, .closed = closed};
-    size_t bands = (size_t)(gap_nm.height + BAND - 1) / BAND;
     uf_arena_mark mark = uf_arena_now(&work->arena);
     make_offsets(&job, pixel_size_um);
-    uf_status status = uf_take(work, bands * (size_t)gap_nm.width, sizeof(float), "spots", &job.rows, error);
+    uf_status status = uf_take(work, (size_t)uf_hands(work) * (size_t)gap_nm.width, sizeof(float), "spots", &job.rows, error);
     if (status == UF_OK)
         uf_rows_run(work, gap_nm.height, contrast_rows, &job);
     uf_arena_back(&work->arena, mark);

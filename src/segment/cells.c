@@ -18,16 +18,14 @@ typedef struct cutting {
     int factor;
     uf_mask mask;
     uf_expand_column *columns;
-    float *rows; /* one a band */
+    float *rows; /* one a hand */
 } cutting;
 
-enum { BAND = 64 };
-
-static void cut_rows(void *context, int y0, int y1)
+static void cut_rows(void *context, int hand, int y0, int y1)
 {
     cutting *c = context;
     int width = c->image.width;
-    float *level = c->rows + (size_t)(y0 / BAND) * (size_t)width;
+    float *level = c->rows + (size_t)hand * (size_t)width;
     for (int y = y0; y < y1; y++) {
         uf_expand_row(c->level, c->factor, y, c->columns, level, width);
         c->kernels->above(uf_mask_row(c->mask, y), uf_plane_row(c->image, y), level, width);
@@ -49,17 +47,16 @@ static uf_status middle_level(uf_work *work, const uf_cell_map *map, uf_plane *l
 static uf_status cut_image(uf_work *work, uf_plane smooth, const uf_cell_map *map, uf_mask *mask, uf_error *error)
 {
     cutting c = {.kernels = uf_kernels_in_use(), .image = smooth, .factor = map->factor, .mask = *mask};
-    int width = smooth.width, height = smooth.height;
+    int width = smooth.width;
     uf_arena_mark mark = uf_arena_now(&work->arena);
-    size_t bands = (size_t)(height + BAND - 1) / BAND;
     uf_status status = middle_level(work, map, &c.level, error);
     if (status == UF_OK)
-        status = uf_take(work, bands * (size_t)width, sizeof(float), "segmentation", &c.rows, error);
+        status = uf_take(work, (size_t)uf_hands(work) * (size_t)width, sizeof(float), "segmentation", &c.rows, error);
     if (status == UF_OK)
         status = uf_take(work, (size_t)width, sizeof *c.columns, "segmentation", &c.columns, error);
     if (status == UF_OK) {
         uf_expand_columns(c.level.width, c.factor, width, c.columns);
-        uf_rows_run(work, height, cut_rows, &c);
+        uf_rows_run(work, smooth.height, cut_rows, &c);
     }
     uf_arena_back(&work->arena, mark);
     return status;
