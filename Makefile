@@ -64,7 +64,7 @@ SONAME  := libunderfoot.so.0
 SHARED  := $(BUILD)/$(SONAME)
 
 .DEFAULT_GOAL := all
-.PHONY: all debug asan tsan probe build-flavour unit check demo bench install uninstall clean help packages docs
+.PHONY: all debug asan tsan probe build-flavour unit check demo bench install uninstall clean help packages packages-test docs
 
 all: packages ## the command and the libraries, optimised and hardened, in build/release
 	@$(MAKE) --no-print-directory FLAVOUR=release build-flavour
@@ -102,10 +102,12 @@ $(BUILD)/flags: FORCE
 # ---- what a fresh machine needs ------------------------------------------------------------------
 
 BUILD_PACKAGES := gcc make pkg-config libc6-dev libtiff-dev libpng-dev libfftw3-dev libjansson-dev libxxhash-dev
-TEST_PACKAGES  := clang libcmocka-dev python3 python3-numpy python3-scipy python3-skimage python3-tifffile python3-pytest
+TEST_PACKAGES  := clang libcmocka-dev python3 python3-numpy python3-scipy python3-skimage python3-tifffile python3-pytest python3-pil
 
 packages:
 	@tests/tools/need-packages $(BUILD_PACKAGES)
+packages-test:
+	@tests/tools/need-packages $(TEST_PACKAGES)
 
 # ---- demo, tests, benchmarks ------------------------------------------------------------------------
 
@@ -135,7 +137,7 @@ check: ## all tests; the last line is "N passed, N failed"
 	@$(MAKE) --no-print-directory CC=clang BUILD=build/clang WERROR=-Werror build-flavour
 	@tests/tools/run-tests
 
-bench: all ## speed and peak memory of the main job on a 2048 x 2048 pair
+bench: all packages-test ## speed and peak memory of the main job on a 2048 x 2048 pair
 	@tests/bench/bench-measure $(PROGRAM)
 
 docs: all ## the pages that come from the tables in the code
@@ -151,7 +153,7 @@ install: all ## into PREFIX (default /usr/local), below DESTDIR
 	install -m 755 $(SHARED) $(DESTDIR)$(PREFIX)/lib/
 	ln -sf $(SONAME) $(DESTDIR)$(PREFIX)/lib/libunderfoot.so
 	install -m 644 include/underfoot.h $(DESTDIR)$(PREFIX)/include/
-	install -m 644 README.md docs/*.md docs/LICENSE $(DESTDIR)$(PREFIX)/share/doc/underfoot/
+	install -m 644 README.md docs/*.md docs/LICENSE docs/LICENSE-font $(DESTDIR)$(PREFIX)/share/doc/underfoot/
 
 uninstall: ## take out what install put in
 	rm -f $(DESTDIR)$(PREFIX)/bin/underfoot $(DESTDIR)$(PREFIX)/lib/libunderfoot.a \
