@@ -2,6 +2,7 @@
 #include "image/distance.h"
 
 #include <math.h>
+#include <string.h>
 
 /* ---- first pass: down and up the columns ---------------------------------------------------- */
 
@@ -93,7 +94,7 @@ static void run_distances(envelope *e, const float *steps, int from, int to, int
 typedef struct distance_job {
     uf_labels labels;
     uf_plane steps, out;
-    int inside_only;
+    const uint8_t *wanted;
     parabola *parabolas; /* width + 2 a hand */
 } distance_job;
 
@@ -109,18 +110,16 @@ static void distance_rows(void *context, int hand, int y0, int y1)
         for (int from = 0, to; from < width; from = to) {
             for (to = from + 1; to < width && labels[to] == labels[from]; to++)
                 ;
-            if (job->inside_only && labels[from] == 0)
-                for (int x = from; x < to; x++)
-                    out[x] = 0.0f;
-            else
+            if (!job->wanted || job->wanted[labels[from]])
                 run_distances(&e, uf_plane_row(job->steps, y), from, to, width, out);
         }
     }
 }
 
-uf_status uf_distance(uf_work *work, uf_labels labels, int inside_only, uf_plane distance_px, uf_error *error)
+uf_status uf_distance(uf_work *work, uf_labels labels, const uint8_t *wanted, uf_plane distance_px,
+                      uf_error *error)
 {
-    distance_job job = {.labels = labels, .out = distance_px, .inside_only = inside_only};
+    distance_job job = {.labels = labels, .out = distance_px, .wanted = wanted};
     uf_arena_mark mark = uf_arena_now(&work->arena);
     size_t length = (size_t)uf_hands(work) * (size_t)(labels.width + 2);
     uf_status status = uf_plane_take(work, labels.width, labels.height, &job.steps, error);
@@ -129,6 +128,23 @@ uf_status uf_distance(uf_work *work, uf_labels labels, int inside_only, uf_plane
     if (status == UF_OK) {
         column_distances(labels, job.steps);
         uf_rows_run(work, labels.height, distance_rows, &job);
+    }
+    uf_arena_back(&work->arena, mark);
+    return status;
+}
+
+uf_status uf_distance_inside(uf_work *work, uf_labels labels, uf_plane distance_px, uf_error *error)
+{
+    uint8_t *wanted;
+    size_t places = (size_t)labels.count + 1;
+    uf_arena_mark mark = uf_arena_now(&work->arena);
+    uf_status status = uf_take(work, places, 1, "distances", &wanted, error);
+    if (status == UF_OK) {
+        memset(wanted, 1, places);
+        wanted[0] = 0;
+        for (int y = 0; y < labels.height; y++)
+            memset(uf_plane_row(distance_px, y), 0, (size_t)labels.width * sizeof(float));
+        status = uf_distance(work, labels, wanted, distance_px, error);
     }
     uf_arena_back(&work->arena, mark);
     return status;

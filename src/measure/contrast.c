@@ -7,7 +7,7 @@
 #include "image/kernels.h"
 
 static const double reaches_um[] = {0.45, 0.7, 1.0, 1.4, 1.8};
-enum { REACHES = 5, NARROW_REACHES = 2, DIRECTIONS = 8 };
+enum { REACHES = 5, NARROW_REACHES = 2, DIRECTIONS = 8, STRETCH = 64 };
 
 typedef struct offset {
     int dx, dy;
@@ -17,6 +17,7 @@ typedef struct contrast_job {
     const uf_kernels *kernels;
     uf_plane gap, narrow, closed;
     offset offsets[DIRECTIONS][REACHES];
+    float least;
     float *rows; /* one a hand */
 } contrast_job;
 
@@ -87,29 +88,51 @@ static void add_closed(const contrast_job *job, int y, span row, const offset *o
         worst[x] = scratch[x] < worst[x] ? scratch[x] : worst[x];
 }
 
+static int any_reaches(const float *row, span s, float least)
+{
+    int found = 0;
+    for (int x = s.from; x < s.to; x++)
+        found |= row[x] >= least;
+    return found;
+}
+
+/* Closedness of the stretches of a row in which some pixel is narrow enough. */
+static void close_row(const contrast_job *job, int y, span row, float *scratch)
+{
+    const float *narrow = uf_plane_row(job->narrow, y);
+    for (int from = row.from; from < row.to; from += STRETCH) {
+        span s = {from, from + STRETCH < row.to ? from + STRETCH : row.to};
+        int wanted = any_reaches(narrow, s, job->least);
+        for (int x = s.from; x < s.to; x++)
+            uf_plane_row(job->closed, y)[x] = wanted ? 1e9f : -1e9f;
+        for (int d = 0; wanted && d < DIRECTIONS; d++)
+            add_closed(job, y, s, job->offsets[d], scratch);
+    }
+}
+
 static void contrast_rows(void *context, int hand, int y0, int y1)
 {
     contrast_job *job = context;
     int width = job->gap.width;
-    float *row = job->rows + (size_t)hand * (size_t)width;
+    float *scratch = job->rows + (size_t)hand * (size_t)width;
     for (int y = y0; y < y1; y++) {
         for (int x = 0; x < width; x++) {
             uf_plane_row(job->narrow, y)[x] = 0.0f;
-            uf_plane_row(job->closed, y)[x] = 1e9f;
+            uf_plane_row(job->closed, y)[x] = -1e9f;
         }
         span s = span_of_row(job, y);
-        for (int d = 0; d < DIRECTIONS; d++) {
+        for (int d = 0; d < DIRECTIONS; d++)
             for (int r = 0; r < NARROW_REACHES; r++)
                 add_narrow(job, y, s, job->offsets[d][r]);
-            add_closed(job, y, s, job->offsets[d], row);
-        }
+        close_row(job, y, s, scratch);
     }
 }
 
-uf_status uf_contrast_find(uf_work *work, uf_plane gap_nm, double pixel_size_um, uf_plane narrow, uf_plane closed,
-                           uf_error *error)
+uf_status uf_contrast_find(uf_work *work, uf_plane gap_nm, double pixel_size_um, double least_nm, uf_plane narrow,
+                           uf_plane closed, uf_error *error)
 {
-    contrast_job job = {.kernels = uf_kernels_in_use(), .gap = gap_nm, .narrow = narrow, .closed = closed};
+    contrast_job job = {.kernels = uf_kernels_in_use(), .gap = gap_nm, .narrow = narrow, .closed = closed,
+                        .least = (float)least_nm};
     uf_arena_mark mark = uf_arena_now(&work->arena);
     make_offsets(&job, pixel_size_um);
     uf_status status = uf_take(work, (size_t)uf_hands(work) * (size_t)gap_nm.width, sizeof(float), "spots", &job.rows, error);

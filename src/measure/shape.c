@@ -5,11 +5,6 @@
 
 static const double pi = 3.14159265358979323846;
 
-static int is_label(uf_labels labels, int label, int x, int y)
-{
-    return x >= 0 && y >= 0 && x < labels.width && y < labels.height && uf_labels_row(labels, y)[x] == label;
-}
-
 /* ---- moments --------------------------------------------------------------------------------------------- */
 
 void uf_shape_ellipse(double variance_x, double variance_y, double covariance, uf_shape *shape)
@@ -58,14 +53,37 @@ static void moments(uf_labels labels, int label, uf_box box, uf_shape *shape)
 
 /* ---- Crofton --------------------------------------------------------------------------------------------- */
 
-/* Transitions between a pixel and its neighbour at (dx, dy), over all pixels whose pair touches the box. */
-static double transitions(uf_labels labels, int label, uf_box box, int dx, int dy)
+/* Transitions between pixels and their neighbours to the right, below, and both ways aslant, over all pairs that
+ * touch the box: counted for two rows at a time, with the outside of the image as no label. */
+typedef struct transitions {
+    double straight, aslant;
+} transitions;
+
+static int label_at(const int32_t *row, int width, int x, int label)
 {
-    double count = 0;
-    for (int y = box.y0 - 1; y <= box.y1; y++)
-        for (int x = box.x0 - 1; x <= box.x1; x++)
-            count += is_label(labels, label, x, y) != is_label(labels, label, x + dx, y + dy);
-    return count;
+    return row && x >= 0 && x < width && row[x] == label;
+}
+
+static transitions count_transitions(uf_labels labels, int label, uf_box box)
+{
+    transitions t = {0};
+    int width = labels.width;
+    for (int y = box.y0 - 1; y < box.y1; y++) {
+        const int32_t *row = y >= 0 ? uf_labels_row(labels, y) : NULL;
+        const int32_t *below = y + 1 < labels.height ? uf_labels_row(labels, y + 1) : NULL;
+        int here = 0, under = 0; /* at x - 1, outside the box */
+        int64_t straight = 0, aslant = 0;
+        for (int x = box.x0; x <= box.x1; x++) {
+            int next = label_at(row, width, x, label), next_under = label_at(below, width, x, label);
+            straight += (here != next) + (here != under);
+            aslant += (here != next_under) + (under != next);
+            here = next;
+            under = next_under;
+        }
+        t.straight += (double)straight;
+        t.aslant += (double)aslant;
+    }
+    return t;
 }
 
 /* ---- convex hull ------------------------------------------------------------------------------------------- */
@@ -180,8 +198,7 @@ static uf_status hull_of(uf_work *work, uf_labels labels, int label, uf_box box,
 uf_status uf_shape_of(uf_work *work, uf_labels labels, int label, uf_box box, uf_shape *shape, uf_error *error)
 {
     moments(labels, label, box, shape);
-    double straight = transitions(labels, label, box, 1, 0) + transitions(labels, label, box, 0, 1);
-    double diagonal = transitions(labels, label, box, 1, 1) + transitions(labels, label, box, 1, -1);
-    shape->perimeter_px = pi / 8 * (straight + diagonal / sqrt(2.0));
+    transitions t = count_transitions(labels, label, box);
+    shape->perimeter_px = pi / 8 * (t.straight + t.aslant / sqrt(2.0));
     return hull_of(work, labels, label, box, shape, error);
 }

@@ -267,7 +267,8 @@ static uf_status find_basins(uf_work *work, const uf_measure_input *in, const fl
 {
     uf_mask mask;
     uf_status status =
-        uf_contrast_find(work, in->gaps->smooth_gap_nm, in->plan->pixel_size_um, narrow, score, error);
+        uf_contrast_find(work, in->gaps->smooth_gap_nm, in->plan->pixel_size_um, least_contrast_nm / 2, narrow,
+                                        score, error);
     if (status == UF_OK)
         status = uf_mask_take(work, score.width, score.height, &mask, error);
     if (status == UF_OK) {

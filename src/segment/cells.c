@@ -101,9 +101,47 @@ static uf_status find_labels(uf_work *work, const uf_channel *wide, const uf_set
     if (status == UF_OK)
         status = uf_components(work, mask, UF_FOUR_NEIGHBOURS, &map->labels, error);
     if (status == UF_OK)
-        status = uf_distance(work, map->labels, 1, map->to_background_px, error);
+        status = uf_distance_inside(work, map->labels, map->to_background_px, error);
     if (status == UF_OK)
         status = uf_part_cells(work, wide, smooth, map->to_background_px, &part, &map->labels, error);
+    uf_arena_back(&work->arena, mark);
+    return status;
+}
+
+/* Marks the cells that share a border with another. */
+static void mark_touching(uf_labels labels, uint8_t *touching)
+{
+    for (int y = 0; y < labels.height; y++) {
+        const int32_t *row = uf_labels_row(labels, y);
+        const int32_t *below = uf_labels_row(labels, y + 1 < labels.height ? y + 1 : y);
+        for (int x = 0; x < labels.width; x++) {
+            int here = row[x], right = row[x + 1 < labels.width ? x + 1 : x], under = below[x];
+            if (!here || (right == here && under == here))
+                continue;
+            if (right && right != here)
+                touching[here] = touching[right] = 1;
+            if (under && under != here)
+                touching[here] = touching[under] = 1;
+        }
+    }
+}
+
+/* Distance to the own outline: for a cell that touches no other that is the distance to the background. */
+static uf_status own_distances(uf_work *work, uf_cell_map *map, uf_error *error)
+{
+    uf_labels labels = map->labels;
+    uint8_t *touching;
+    size_t places = (size_t)labels.count + 1;
+    uf_arena_mark mark = uf_arena_now(&work->arena);
+    uf_status status = uf_take(work, places, 1, "distances", &touching, error);
+    if (status == UF_OK) {
+        memset(touching, 0, places);
+        mark_touching(labels, touching);
+        for (int y = 0; y < labels.height; y++)
+            memcpy(uf_plane_row(map->distance_px, y), uf_plane_row(map->to_background_px, y),
+                   (size_t)labels.width * sizeof(float));
+        status = uf_distance(work, labels, touching, map->distance_px, error);
+    }
     uf_arena_back(&work->arena, mark);
     return status;
 }
@@ -123,7 +161,7 @@ uf_status uf_segment(uf_work *work, const uf_channel *wide, const uf_settings *s
     if (status == UF_OK)
         status = find_labels(work, wide, settings, pixel_size_um, map, error);
     if (status == UF_OK)
-        status = uf_distance(work, map->labels, 1, map->distance_px, error);
+        status = own_distances(work, map, error);
     if (status == UF_OK)
         status = uf_levels_outside(work, map, error);
     return status;

@@ -180,7 +180,7 @@ static uf_status side_level(levels *l, int side, double without, int last, uf_pl
 static uf_status one_round(levels *l, int last, uf_cell_map *map, uf_error *error)
 {
     cut(l);
-    uf_status status = uf_distance(l->work, l->side, 0, l->distance, error);
+    uf_status status = uf_distance(l->work, l->side, NULL, l->distance, error);
     if (status == UF_OK)
         status = side_level(l, 1, l->floor, last, map->plateau_adu, error);
     if (status == UF_OK)
@@ -287,7 +287,7 @@ uf_status uf_levels_outside(uf_work *work, uf_cell_map *map, uf_error *error)
                     coarse[x / factor] = 1;
         }
         inside.count = 1;
-        status = uf_distance(work, inside, 0, map->outside_px, error);
+        status = uf_distance(work, inside, NULL, map->outside_px, error);
     }
     for (int y = 0; status == UF_OK && y < height; y++) {
         float *row = uf_plane_row(map->outside_px, y);
