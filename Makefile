@@ -64,7 +64,7 @@ SONAME  := libunderfoot.so.0
 SHARED  := $(BUILD)/$(SONAME)
 
 .DEFAULT_GOAL := all
-.PHONY: all debug asan tsan probe build-flavour unit check demo bench install uninstall clean help packages packages-test docs
+.PHONY: all debug asan tsan probe build-flavour unit check demo bench install uninstall clean help packages packages-test docs docs-pictures
 
 all: packages ## the command and the libraries, optimised and hardened, in build/release
 	@$(MAKE) --no-print-directory FLAVOUR=release build-flavour
@@ -143,6 +143,10 @@ bench: all packages-test ## speed and peak memory of the main job on a 2048 x 20
 docs: all ## the pages that come from the tables in the code
 	$(PROGRAM) docs settings > docs/settings.md
 	$(PROGRAM) docs columns > docs/columns.md
+
+docs-pictures: demo ## the README's picture, from the demo
+	@mkdir -p docs/pictures
+	cp $(DEMO)/results_a/overlay/a_near.png docs/pictures/overlay.png
 
 # ---- install ---------------------------------------------------------------------------------------------
 

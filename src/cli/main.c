@@ -39,8 +39,10 @@ static int unknown_command(const char *typed)
 
 int main(int argc, char **argv)
 {
-    /* A reader that closes the pipe early is an error to report, not a reason to die without a word. */
+    /* A reader that closes the pipe early, or a limit on file sizes, is an error to report, not a reason to die
+     * without a word. */
     (void)signal(SIGPIPE, SIG_IGN);
+    (void)signal(SIGXFSZ, SIG_IGN);
     if (argc < 2 || strcmp(argv[1], "--help") == 0 || strcmp(argv[1], "-h") == 0) {
         int status = print_overview();
         return argc < 2 && status == EXIT_DONE ? EXIT_CANNOT : status;
