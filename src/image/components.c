@@ -145,22 +145,41 @@ static void fill_closed(uf_mask mask, uf_labels labels, const uint8_t *open)
     }
 }
 
-uf_status uf_fill_holes(uf_work *work, uf_mask mask, double max_pixels, uf_error *error)
+/* Regions with a pixel that must not be filled stay open. */
+static void keep_unfillable(uf_labels regions, uf_mask fillable, const int64_t *areas, double small_pixels,
+                            uint8_t *open)
+{
+    for (int y = 0; y < regions.height; y++) {
+        const int32_t *region = uf_labels_row(regions, y);
+        const uint8_t *row = uf_mask_row(fillable, y);
+        for (int x = 0; x < regions.width; x++)
+            if (!row[x] && (double)areas[region[x]] > small_pixels)
+                open[region[x]] = 1;
+    }
+}
+
+static uf_status find_regions(uf_work *work, uf_mask mask, uf_labels *regions, uf_error *error)
+{
+    uf_mask outside;
+    uf_status status = uf_mask_take(work, mask.width, mask.height, &outside, error);
+    if (status == UF_OK)
+        status = uf_labels_take(work, mask.width, mask.height, regions, error);
+    if (status != UF_OK)
+        return status;
+    for (int y = 0; y < mask.height; y++)
+        for (int x = 0; x < mask.width; x++)
+            uf_mask_row(outside, y)[x] = !uf_mask_row(mask, y)[x];
+    return uf_components(work, outside, UF_FOUR_NEIGHBOURS, regions, error);
+}
+
+uf_status uf_fill_holes_where(uf_work *work, uf_mask mask, double small_pixels, double max_pixels, uf_mask fillable,
+                              uf_error *error)
 {
     uf_arena_mark mark = uf_arena_now(&work->arena);
-    uf_mask outside;
     uf_labels regions;
     uint8_t *open;
     int64_t *areas;
-    uf_status status = uf_mask_take(work, mask.width, mask.height, &outside, error);
-    if (status == UF_OK)
-        status = uf_labels_take(work, mask.width, mask.height, &regions, error);
-    if (status == UF_OK) {
-        for (int y = 0; y < mask.height; y++)
-            for (int x = 0; x < mask.width; x++)
-                uf_mask_row(outside, y)[x] = !uf_mask_row(mask, y)[x];
-        status = uf_components(work, outside, UF_FOUR_NEIGHBOURS, &regions, error);
-    }
+    uf_status status = find_regions(work, mask, &regions, error);
     if (status == UF_OK)
         status = uf_take(work, (size_t)regions.count + 1, sizeof *areas, "holes", &areas, error);
     if (status == UF_OK)
@@ -170,8 +189,15 @@ uf_status uf_fill_holes(uf_work *work, uf_mask mask, double max_pixels, uf_error
         for (int k = 0; k <= regions.count; k++)
             open[k] = (double)areas[k] > max_pixels;
         mark_border(regions, open);
+        if (fillable.data)
+            keep_unfillable(regions, fillable, areas, small_pixels, open);
         fill_closed(mask, regions, open);
     }
     uf_arena_back(&work->arena, mark);
     return status;
+}
+
+uf_status uf_fill_holes(uf_work *work, uf_mask mask, double max_pixels, uf_error *error)
+{
+    return uf_fill_holes_where(work, mask, max_pixels, max_pixels, (uf_mask){0}, error);
 }

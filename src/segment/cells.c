@@ -10,6 +10,9 @@
 #include "segment/part.h"
 #include "segment/segment.h"
 
+static const float hole_share = 0.3f;  /* of the way from the outside's level to the plateau */
+static const double speck_um2 = 0.5;   /* holes up to this are filled anyway */
+
 /* ---- cut at the middle of the two levels -------------------------------------------------------------- */
 
 typedef struct cutting {
@@ -32,24 +35,27 @@ static void cut_rows(void *context, int hand, int y0, int y1)
     }
 }
 
-/* Middle of plateau and outside: never below what can be a cell (uf_levels_find sees to it). */
-static uf_status middle_level(uf_work *work, const uf_cell_map *map, uf_plane *level, uf_error *error)
+/* The level at a share of the way from outside to plateau; the middle is never below what can be a cell
+ * (uf_levels_find sees to it). */
+static uf_status level_between(uf_work *work, const uf_cell_map *map, float share, uf_plane *level, uf_error *error)
 {
     uf_status status = uf_plane_take(work, map->plateau_adu.width, map->plateau_adu.height, level, error);
-    for (int y = 0; status == UF_OK && y < level->height; y++)
+    for (int y = 0; status == UF_OK && y < level->height; y++) {
+        const float *inside = uf_plane_row(map->plateau_adu, y), *outside = uf_plane_row(map->outside_adu, y);
         for (int x = 0; x < level->width; x++)
-            uf_plane_row(*level, y)[x] =
-                0.5f * (uf_plane_row(map->plateau_adu, y)[x] + uf_plane_row(map->outside_adu, y)[x]);
+            uf_plane_row(*level, y)[x] = outside[x] + share * (inside[x] - outside[x]);
+    }
     return status;
 }
 
 /* `smooth` is the wide image, smoothed. */
-static uf_status cut_image(uf_work *work, uf_plane smooth, const uf_cell_map *map, uf_mask *mask, uf_error *error)
+static uf_status cut_image(uf_work *work, uf_plane smooth, const uf_cell_map *map, float share, uf_mask *mask,
+                           uf_error *error)
 {
     cutting c = {.kernels = uf_kernels_in_use(), .image = smooth, .factor = map->factor, .mask = *mask};
     int width = smooth.width;
     uf_arena_mark mark = uf_arena_now(&work->arena);
-    uf_status status = middle_level(work, map, &c.level, error);
+    uf_status status = level_between(work, map, share, &c.level, error);
     if (status == UF_OK)
         status = uf_take(work, (size_t)uf_hands(work) * (size_t)width, sizeof(float), "segmentation", &c.rows, error);
     if (status == UF_OK)
@@ -80,6 +86,22 @@ static uf_part_settings part_settings(const uf_settings *settings, double pixel_
                               .max_pixels = settings->cells.max_area_um2 / um2};
 }
 
+/* A hole is filled where the image does not fall near to the outside's level: a dim place in a cell, not the
+ * gap that cells leave between them, which would make their necks wide. */
+static uf_status fill_dim_places(uf_work *work, uf_plane smooth, const uf_cell_map *map, double max_pixels, double um2,
+                                 uf_mask mask, uf_error *error)
+{
+    uf_mask above_outside;
+    uf_arena_mark mark = uf_arena_now(&work->arena);
+    uf_status status = uf_mask_take(work, mask.width, mask.height, &above_outside, error);
+    if (status == UF_OK)
+        status = cut_image(work, smooth, map, hole_share, &above_outside, error);
+    if (status == UF_OK)
+        status = uf_fill_holes_where(work, mask, speck_um2 / um2, max_pixels, above_outside, error);
+    uf_arena_back(&work->arena, mark);
+    return status;
+}
+
 /* Labels of cells, and the distance to the outside of all of them. */
 static uf_status find_labels(uf_work *work, const uf_channel *wide, const uf_settings *settings,
                              double pixel_size_um, uf_cell_map *map, uf_error *error)
@@ -95,9 +117,9 @@ static uf_status find_labels(uf_work *work, const uf_channel *wide, const uf_set
     if (status == UF_OK)
         status = uf_smooth(work, wide->image, settings->cells.smooth_um / pixel_size_um, smooth, error);
     if (status == UF_OK)
-        status = cut_image(work, smooth, map, &mask, error);
+        status = cut_image(work, smooth, map, 0.5f, &mask, error);
     if (status == UF_OK)
-        status = uf_fill_holes(work, mask, part.min_pixels, error);
+        status = fill_dim_places(work, smooth, map, part.min_pixels, pixel_size_um * pixel_size_um, mask, error);
     if (status == UF_OK)
         status = uf_components(work, mask, UF_FOUR_NEIGHBOURS, &map->labels, error);
     if (status == UF_OK)

@@ -114,7 +114,7 @@ const uf_setting uf_setting_table[] = {
            "Gaussian smoothing (sigma) of the wide image before outlines are drawn."),
     A_REAL("cells", "min_area_um2", cells.min_area_um2, 0, 1e6, 50, "Smaller things are debris, not cells."),
     A_REAL("cells", "max_area_um2", cells.max_area_um2, 1, 1e9, 1e9, "Larger things are not cells either."),
-    A_REAL("cells", "split", cells.split, 0, 1, 0.5,
+    A_REAL("cells", "split", cells.split, 0, 1, 0.65,
            "How eagerly touching cells are split: 0 never, 1 at the slightest neck."),
     A_CHOICE("cells", "edge_cells", cells.edge_cells, "weight|keep|drop", UF_EDGE_WEIGHT,
              "Cells cut by the image edge: left out while the others are weighted for it (weight), counted like "
