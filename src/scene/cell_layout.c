@@ -49,7 +49,7 @@ static void draw_stamp(layout *l, double radius_px)
     double cx = l->stamp.width / 2 + uf_random_between(&l->random, -0.5, 0.5);
     double cy = l->stamp.height / 2 + uf_random_between(&l->random, -0.5, 0.5);
     int half = (int)ceil(shape.reach * radius_px) + 1;
-    half = half < l->stamp.width / 2 ? half : l->stamp.width / 2;
+    half = half < l->stamp.width / 2 - 1 ? half : l->stamp.width / 2 - 1;
     int first = l->stamp.width / 2 - half, last = l->stamp.width / 2 + half;
     l->box = (uf_box){l->stamp.width, l->stamp.height, 0, 0};
     l->area = 0;
@@ -366,9 +366,10 @@ static void relax(uf_labels labels, uf_plane distance, int x, int y, int directi
 
 void uf_scene_edge_distance(uf_labels labels, double pixel_size_um, uf_plane distance_um)
 {
+    float farthest = (float)((labels.width + labels.height) * pixel_size_um);
     for (int y = 0; y < labels.height; y++)
         for (int x = 0; x < labels.width; x++)
-            uf_plane_row(distance_um, y)[x] = uf_labels_row(labels, y)[x] ? INFINITY : 0;
+            uf_plane_row(distance_um, y)[x] = uf_labels_row(labels, y)[x] ? farthest : 0;
     for (int y = 0; y < labels.height; y++)
         for (int x = 0; x < labels.width; x++)
             if (uf_labels_row(labels, y)[x])
