@@ -20,7 +20,7 @@
 
 static const double grid_um = 0.4;
 static const double band_from_um = 0.8, band_to_um = 3.0;
-static const double near_reach_um = 1.5, far_reach_um = 6.0;
+static const double reaches_um[] = {6.0, 3.0, 1.5}; /* widest first: the narrower one overrules where it reaches */
 static const double rough_share = 0.3; /* of the local maximum */
 static const double local_um = 3.0;
 enum { ROUNDS = 3 };
@@ -165,26 +165,28 @@ static void fill(uf_plane plane, double value)
             uf_plane_row(plane, y)[x] = (float)value;
 }
 
-/* Level of one side over the whole field: far from the band its mean, nearer the wide average, at the
- * outline the near one. The wide average matters only to what is kept in the end. */
-static uf_status side_level(levels *l, int side, double without, int last, uf_plane out, uf_error *error)
+/* Level of one side over the whole field: far from the band its mean, nearer an average over the band within
+ * reach. Reaches in steps of two keep the middle of a dim cell from taking the level of a bright neighbour. */
+static uf_status side_level(levels *l, int side, double without, uf_plane out, uf_error *error)
 {
     double total = pick_band(l, side), mean = band_mean(l, total);
     fill(out, isnan(mean) ? without : mean);
     if (!(total > 0))
         return UF_OK;
-    uf_status status = last ? spread(l, far_reach_um, out, error) : UF_OK;
-    return status == UF_OK ? spread(l, near_reach_um, out, error) : status;
+    uf_status status = UF_OK;
+    for (size_t k = 0; status == UF_OK && k < sizeof reaches_um / sizeof reaches_um[0]; k++)
+        status = spread(l, reaches_um[k], out, error);
+    return status;
 }
 
-static uf_status one_round(levels *l, int last, uf_cell_map *map, uf_error *error)
+static uf_status one_round(levels *l, uf_cell_map *map, uf_error *error)
 {
     cut(l);
     uf_status status = uf_distance(l->work, l->side, NULL, l->distance, error);
     if (status == UF_OK)
-        status = side_level(l, 1, l->floor, last, map->plateau_adu, error);
+        status = side_level(l, 1, l->floor, map->plateau_adu, error);
     if (status == UF_OK)
-        status = side_level(l, 0, l->background, last, map->outside_adu, error);
+        status = side_level(l, 0, l->background, map->outside_adu, error);
     for (int y = 0; status == UF_OK && y < l->level.height; y++) {
         const float *inside = uf_plane_row(map->plateau_adu, y), *outside = uf_plane_row(map->outside_adu, y);
         float *level = uf_plane_row(l->level, y);
@@ -261,7 +263,7 @@ uf_status uf_levels_find(uf_work *work, const uf_channel *wide, double pixel_siz
         status = rough_level(&l, error);
     }
     for (int round = 0; status == UF_OK && round < ROUNDS; round++)
-        status = one_round(&l, round == ROUNDS - 1, map, error);
+        status = one_round(&l, map, error);
     if (status == UF_OK)
         hold_floor(&l, map);
     uf_arena_back(&work->arena, mark);
