@@ -5,126 +5,42 @@
 #include <stdlib.h>
 #include <string.h>
 
-#include "scene/cell_shape.h"
-#include "scene/random.h"
+#include "scene/cell_stamp.h"
 
-/* Cells keep this far from each other unless they touch, and from the image's edge unless cut by it. */
+/* Cells keep this far from each other unless they touch, and from the image's
+ * edge unless cut by it. */
 static const double clearance_um = 1.0;
-
-/* Half-width that an arm keeps, in pixels: below it a slanted arm would fall into pieces. */
-static const double thinnest_px = 1.4;
-
-/* Beyond this reach, in equivalent radii, an arm is cut off; draws that get there are rare. */
-static const double reach_limit = 3.2;
 
 enum { SHAPES = 5, PLACES = 150, CROWDED = 4 };
 
-/* One cell drawn on its own grid, and the image it is to be laid into. */
+/* The cell at hand, and the image it is to be laid into. */
 typedef struct layout {
     const uf_scene_settings *settings;
     uf_random random;
     uf_labels labels;
-    uf_labels zone; /* 0 free; k within the clearance of cell k; -1 within that of two */
+    uf_labels zone; /* 0 free; k within the clearance of cell k; -1 within that of
+                       two */
     int clearance;
-    uf_mask stamp; /* of the largest possible cell */
-    int32_t *stack;
-    uf_box box;    /* the stamp's pixels that are on */
-    int area;
+    uf_cell_stamp stamp;
 } layout;
 
-/* Stamp ------------------------------------------------------------------------------------------- */
+/* Places
+ * ------------------------------------------------------------------------------------------
+ */
 
-static void grow_box(uf_box *box, int x, int y)
-{
-    box->x0 = x < box->x0 ? x : box->x0;
-    box->x1 = x + 1 > box->x1 ? x + 1 : box->x1;
-    box->y0 = y < box->y0 ? y : box->y0;
-    box->y1 = y + 1 > box->y1 ? y + 1 : box->y1;
-}
-
-static void draw_stamp(layout *l, double radius_px)
-{
-    uf_cell_shape shape;
-    uf_shape_draw(&l->random, thinnest_px / radius_px, &shape);
-    double cx = l->stamp.width / 2 + uf_random_between(&l->random, -0.5, 0.5);
-    double cy = l->stamp.height / 2 + uf_random_between(&l->random, -0.5, 0.5);
-    int half = (int)ceil(shape.reach * radius_px) + 1;
-    half = half < l->stamp.width / 2 - 1 ? half : l->stamp.width / 2 - 1;
-    int first = l->stamp.width / 2 - half, last = l->stamp.width / 2 + half;
-    l->box = (uf_box){l->stamp.width, l->stamp.height, 0, 0};
-    l->area = 0;
-    for (int y = 0; y < l->stamp.height; y++)
-        memset(uf_mask_row(l->stamp, y), 0, (size_t)l->stamp.width);
-    for (int y = first; y <= last; y++) {
-        uint8_t *row = uf_mask_row(l->stamp, y);
-        for (int x = first; x <= last; x++) {
-            row[x] = uf_shape_value(&shape, (x - cx) / radius_px, (y - cy) / radius_px) < 0;
-            if (row[x]) {
-                grow_box(&l->box, x, y);
-                l->area++;
-            }
-        }
-    }
-}
-
-/* Marks the piece that holds pixel `start` with `mark`, over 4-neighbours; returns its size. */
-static int flood(layout *l, int32_t start, uint8_t from, uint8_t mark)
-{
-    uint8_t *on = l->stamp.data;
-    int32_t width = l->stamp.width;
-    int32_t step[4] = {-width, -1, 1, width};
-    int size = 0, waiting = 0;
-    l->stack[waiting++] = start;
-    on[start] = mark;
-    while (waiting > 0) {
-        int32_t at = l->stack[--waiting];
-        size++;
-        for (int k = 0; k < 4; k++)
-            if (on[at + step[k]] == from) {
-                on[at + step[k]] = mark;
-                l->stack[waiting++] = at + step[k];
-            }
-    }
-    return size;
-}
-
-/* What others or the edge have cut into pieces is no cell any more: only the largest piece stays. The frame
- * of the stamp is always off, so that a flood needs no bounds. */
-static void keep_largest(layout *l)
-{
-    int32_t best = -1;
-    int pixels = l->stamp.width * l->stamp.height;
-    l->area = 0;
-    for (int32_t i = 0; i < pixels; i++) {
-        if (l->stamp.data[i] != 1)
-            continue;
-        int size = flood(l, i, 1, 2);
-        if (size > l->area) {
-            l->area = size;
-            best = i;
-        }
-    }
-    if (best >= 0)
-        (void)flood(l, best, 2, 3);
-    for (int32_t i = 0; i < pixels; i++)
-        l->stamp.data[i] = l->stamp.data[i] == 3;
-}
-
-/* Places ------------------------------------------------------------------------------------------ */
-
-/* Pixels the stamp would share with cell `partner` (0: none) with its corner at (left, top); -1 when it
- * would come too close to any other cell. */
+/* Pixels the stamp would share with cell `partner` (0: none) with its corner at
+ * (left, top); -1 when it would come too close to any other cell. */
 static int shared_pixels(const layout *l, int left, int top, int32_t partner)
 {
     int shared = 0;
-    for (int y = l->box.y0; y < l->box.y1; y++) {
+    for (int y = l->stamp.box.y0; y < l->stamp.box.y1; y++) {
         int to_y = top + y;
         if (to_y < 0 || to_y >= l->labels.height)
             continue;
-        const uint8_t *on = uf_mask_row(l->stamp, y);
+        const uint8_t *on = uf_mask_row(l->stamp.mask, y);
         const int32_t *zone = uf_labels_row(l->zone, to_y), *label = uf_labels_row(l->labels, to_y);
-        int x0 = l->box.x0 > -left ? l->box.x0 : -left;
-        int x1 = l->box.x1 < l->labels.width - left ? l->box.x1 : l->labels.width - left;
+        int x0 = l->stamp.box.x0 > -left ? l->stamp.box.x0 : -left;
+        int x1 = l->stamp.box.x1 < l->labels.width - left ? l->stamp.box.x1 : l->labels.width - left;
         for (int x = x0; x < x1; x++) {
             if (!on[x] || !zone[left + x])
                 continue;
@@ -138,30 +54,33 @@ static int shared_pixels(const layout *l, int left, int top, int32_t partner)
 
 static bool within_image(const layout *l, int left, int top)
 {
-    return left + l->box.x0 >= l->clearance && left + l->box.x1 <= l->labels.width - l->clearance &&
-           top + l->box.y0 >= l->clearance && top + l->box.y1 <= l->labels.height - l->clearance;
+    return left + l->stamp.box.x0 >= l->clearance &&
+           left + l->stamp.box.x1 <= l->labels.width - l->clearance &&
+           top + l->stamp.box.y0 >= l->clearance && top + l->stamp.box.y1 <= l->labels.height - l->clearance;
 }
 
 static bool find_free_place(layout *l, int *left, int *top)
 {
-    int room_x = l->labels.width - 2 * l->clearance - (l->box.x1 - l->box.x0);
-    int room_y = l->labels.height - 2 * l->clearance - (l->box.y1 - l->box.y0);
+    int room_x = l->labels.width - 2 * l->clearance - (l->stamp.box.x1 - l->stamp.box.x0);
+    int room_y = l->labels.height - 2 * l->clearance - (l->stamp.box.y1 - l->stamp.box.y0);
     if (room_x < 0 || room_y < 0)
         return false;
     for (int k = 0; k < PLACES; k++) {
-        *left = l->clearance - l->box.x0 + uf_random_whole(&l->random, 0, room_x);
-        *top = l->clearance - l->box.y0 + uf_random_whole(&l->random, 0, room_y);
+        *left = l->clearance - l->stamp.box.x0 + uf_random_whole(&l->random, 0, room_x);
+        *top = l->clearance - l->stamp.box.y0 + uf_random_whole(&l->random, 0, room_y);
         if (shared_pixels(l, *left, *top, 0) == 0)
             return true;
     }
     return false;
 }
 
-/* The middle of the cell comes within a quarter of its size of a random point of a random edge. */
+/* The middle of the cell comes within a quarter of its size of a random point
+ * of a random edge. */
 static bool find_border_place(layout *l, int *left, int *top)
 {
-    int middle_x = (l->box.x0 + l->box.x1) / 2, middle_y = (l->box.y0 + l->box.y1) / 2;
-    int reach = (l->box.x1 - l->box.x0 + l->box.y1 - l->box.y0) / 8;
+    int middle_x = (l->stamp.box.x0 + l->stamp.box.x1) / 2,
+        middle_y = (l->stamp.box.y0 + l->stamp.box.y1) / 2;
+    int reach = (l->stamp.box.x1 - l->stamp.box.x0 + l->stamp.box.y1 - l->stamp.box.y0) / 8;
     for (int k = 0; k < PLACES; k++) {
         int side = uf_random_whole(&l->random, 0, 3);
         int x = uf_random_whole(&l->random, 0, l->labels.width - 1);
@@ -198,8 +117,9 @@ static bool middle_of(const layout *l, int32_t cell, int *x, int *y)
     return true;
 }
 
-/* Slides the stamp towards a random earlier cell, from afar, until a twenty-fifth of it would lie in that
- * cell: giving that part up leaves a shared border and not a shared point. */
+/* Slides the stamp towards a random earlier cell, from afar, until a
+ * twenty-fifth of it would lie in that cell: giving that part up leaves a
+ * shared border and not a shared point. */
 static bool find_touching_place(layout *l, int *left, int *top)
 {
     for (int k = 0; k < 8; k++) {
@@ -208,13 +128,13 @@ static bool find_touching_place(layout *l, int *left, int *top)
         int x, y;
         if (!middle_of(l, partner, &x, &y))
             continue;
-        for (int away = l->stamp.width; away >= 0; away -= 3) {
-            *left = x + (int)lrint(away * cos(angle)) - l->stamp.width / 2;
-            *top = y + (int)lrint(away * sin(angle)) - l->stamp.height / 2;
+        for (int away = l->stamp.mask.width; away >= 0; away -= 3) {
+            *left = x + (int)lrint(away * cos(angle)) - l->stamp.mask.width / 2;
+            *top = y + (int)lrint(away * sin(angle)) - l->stamp.mask.height / 2;
             int shared = shared_pixels(l, *left, *top, partner);
             if (shared < 0)
                 break;
-            if (shared * 25 > l->area) {
+            if (shared * 25 > l->stamp.area) {
                 if (within_image(l, *left, *top))
                     return true;
                 break;
@@ -224,22 +144,25 @@ static bool find_touching_place(layout *l, int *left, int *top)
     return false;
 }
 
-/* Laying ------------------------------------------------------------------------------------------ */
+/* Laying
+ * ------------------------------------------------------------------------------------------
+ */
 
-/* Takes from the stamp what is taken already or lies outside the image; false when too little is left. */
+/* Takes from the stamp what is taken already or lies outside the image; false
+ * when too little is left. */
 static bool carve(layout *l, int left, int top, double least_share)
 {
-    int whole = l->area;
-    for (int y = l->box.y0; y < l->box.y1; y++) {
-        uint8_t *on = uf_mask_row(l->stamp, y);
+    int whole = l->stamp.area;
+    for (int y = l->stamp.box.y0; y < l->stamp.box.y1; y++) {
+        uint8_t *on = uf_mask_row(l->stamp.mask, y);
         bool outside = top + y < 0 || top + y >= l->labels.height;
         const int32_t *label = outside ? NULL : uf_labels_row(l->labels, top + y);
-        for (int x = l->box.x0; x < l->box.x1; x++)
+        for (int x = l->stamp.box.x0; x < l->stamp.box.x1; x++)
             if (outside || left + x < 0 || left + x >= l->labels.width || label[left + x])
                 on[x] = 0;
     }
-    keep_largest(l);
-    return l->area > 0 && l->area >= least_share * whole;
+    uf_stamp_keep_largest(&l->stamp);
+    return l->stamp.area > 0 && l->stamp.area >= least_share * whole;
 }
 
 static void mark_zone(layout *l, int x, int y, int32_t cell)
@@ -254,14 +177,15 @@ static void mark_zone(layout *l, int x, int y, int32_t cell)
     }
 }
 
-/* The squares around the cell's rim and the cell itself cover every pixel within the clearance. */
+/* The squares around the cell's rim and the cell itself cover every pixel
+ * within the clearance. */
 static void lay(layout *l, int left, int top)
 {
     int32_t cell = ++l->labels.count;
-    for (int y = l->box.y0; y < l->box.y1; y++) {
-        const uint8_t *on = uf_mask_row(l->stamp, y);
-        const uint8_t *above = uf_mask_row(l->stamp, y - 1), *below = uf_mask_row(l->stamp, y + 1);
-        for (int x = l->box.x0; x < l->box.x1; x++) {
+    for (int y = l->stamp.box.y0; y < l->stamp.box.y1; y++) {
+        const uint8_t *on = uf_mask_row(l->stamp.mask, y);
+        const uint8_t *above = uf_mask_row(l->stamp.mask, y - 1), *below = uf_mask_row(l->stamp.mask, y + 1);
+        for (int x = l->stamp.box.x0; x < l->stamp.box.x1; x++) {
             if (!on[x])
                 continue;
             uf_labels_row(l->labels, top + y)[left + x] = cell;
@@ -279,7 +203,7 @@ static bool add_cell(layout *l, double radius_px)
         bool border = uf_random_uniform(&l->random) < l->settings->border;
         bool touching = uf_random_uniform(&l->random) < l->settings->touching;
         int left, top;
-        draw_stamp(l, radius_px);
+        uf_stamp_draw(&l->stamp, &l->random, radius_px);
         if (border ? find_border_place(l, &left, &top)
                    : (touching && l->labels.count && find_touching_place(l, &left, &top)) ||
                          find_free_place(l, &left, &top))
@@ -319,16 +243,13 @@ uf_status uf_scene_lay_cells(uf_work *work, const uf_scene_settings *settings, u
 {
     uf_arena_mark mark = uf_arena_now(&work->arena);
     layout l = {.settings = settings, .labels = *labels};
-    int side = 2 * (int)ceil(reach_limit * settings->radius_max_um / settings->pixel_size_um) + 5;
     double *radius_px;
     l.clearance = (int)ceil(clearance_um / settings->pixel_size_um);
     l.labels.count = 0;
     uf_random_start(&l.random, settings->seed, UF_STREAM_LAYOUT);
     uf_status status = uf_labels_take(work, labels->width, labels->height, &l.zone, error);
     if (!status)
-        status = uf_mask_take(work, side, side, &l.stamp, error);
-    if (!status)
-        status = uf_take(work, (size_t)side * (size_t)side, sizeof *l.stack, "a cell", &l.stack, error);
+        status = uf_stamp_take(work, settings->radius_max_um / settings->pixel_size_um, &l.stamp, error);
     if (!status)
         status = uf_take(work, (size_t)settings->cells, sizeof *radius_px, "cells", &radius_px, error);
     if (!status) {
@@ -339,43 +260,4 @@ uf_status uf_scene_lay_cells(uf_work *work, const uf_scene_settings *settings, u
     }
     uf_arena_back(&work->arena, mark);
     return status;
-}
-
-/* Distance ---------------------------------------------------------------------------------------- */
-
-/* A pixel outside the cell lies on its outline; one outside the image says nothing. */
-static float step_from(uf_labels labels, uf_plane distance, int x, int y, int32_t cell, float step)
-{
-    if (x < 0 || y < 0 || x >= labels.width || y >= labels.height)
-        return INFINITY;
-    return uf_labels_row(labels, y)[x] == cell ? uf_plane_row(distance, y)[x] + step : step;
-}
-
-static void relax(uf_labels labels, uf_plane distance, int x, int y, int direction, double pixel_size_um)
-{
-    int32_t cell = uf_labels_row(labels, y)[x];
-    float straight = (float)(0.95509 * pixel_size_um), slanted = (float)(1.36930 * pixel_size_um);
-    float *here = &uf_plane_row(distance, y)[x];
-    float d = *here;
-    d = fminf(d, step_from(labels, distance, x - direction, y, cell, straight));
-    d = fminf(d, step_from(labels, distance, x - direction, y - direction, cell, slanted));
-    d = fminf(d, step_from(labels, distance, x, y - direction, cell, straight));
-    d = fminf(d, step_from(labels, distance, x + direction, y - direction, cell, slanted));
-    *here = d;
-}
-
-void uf_scene_edge_distance(uf_labels labels, double pixel_size_um, uf_plane distance_um)
-{
-    float farthest = (float)((labels.width + labels.height) * pixel_size_um);
-    for (int y = 0; y < labels.height; y++)
-        for (int x = 0; x < labels.width; x++)
-            uf_plane_row(distance_um, y)[x] = uf_labels_row(labels, y)[x] ? farthest : 0;
-    for (int y = 0; y < labels.height; y++)
-        for (int x = 0; x < labels.width; x++)
-            if (uf_labels_row(labels, y)[x])
-                relax(labels, distance_um, x, y, 1, pixel_size_um);
-    for (int y = labels.height - 1; y >= 0; y--)
-        for (int x = labels.width - 1; x >= 0; x--)
-            if (uf_labels_row(labels, y)[x])
-                relax(labels, distance_um, x, y, -1, pixel_size_um);
 }

@@ -14,10 +14,4 @@
 UF_MUST_USE uf_status uf_scene_lay_cells(uf_work *work, const uf_scene_settings *settings, uf_labels *labels,
                                          uf_error *error);
 
-/* Distance of each cell pixel from its own cell's outline in um, 0 outside cells. The image's edge is no
- * outline: a cell that covers the whole image is width + height deep everywhere, a finite number. Chamfer
- * distance with the best two steps of a 3 x 3 neighbourhood, right to 4.5 % (Borgefors 1986, Comput. Vision
- * Graph. Image Process. 34:344). */
-void uf_scene_edge_distance(uf_labels labels, double pixel_size_um, uf_plane distance_um);
-
 #endif

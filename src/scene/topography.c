@@ -5,7 +5,7 @@
 #include <stdlib.h>
 #include <string.h>
 
-#include "scene/cell_layout.h"
+#include "scene/edge_distance.h"
 #include "scene/lattice_noise.h"
 #include "scene/random.h"
 
