@@ -169,3 +169,9 @@ clean: ## remove build/
 
 help:
 	@sed -n 's/^\([a-z][a-z -]*\):[^#]*## \(.*\)/  make \1: \2/p' Makefile
+
+# The tables read better as they stand.
+FORMATTED := $(filter-out src/report/font_data.c src/record/columns.c src/settings/table.c,$(wildcard src/*/*.[ch])) include/underfoot.h
+.PHONY: format
+format: ## clang-format over the sources
+	clang-format -i $(FORMATTED)

@@ -37,11 +37,11 @@ extern "C" {
 /* What came of a call. The command line turns these into its exit status. */
 typedef enum uf_status {
     UF_OK = 0,
-    UF_USAGE,   /* the caller asked for something that makes no sense (exit status 2) */
-    UF_INPUT,   /* a file or a value cannot be used (exit status 2) */
-    UF_OUTPUT,  /* results could not be written (exit status 3) */
-    UF_MEMORY,  /* the machine refused memory (exit status 2) */
-    UF_STOPPED  /* the user stopped the run (exit status 130) */
+    UF_USAGE,  /* the caller asked for something that makes no sense (exit status 2) */
+    UF_INPUT,  /* a file or a value cannot be used (exit status 2) */
+    UF_OUTPUT, /* results could not be written (exit status 3) */
+    UF_MEMORY, /* the machine refused memory (exit status 2) */
+    UF_STOPPED /* the user stopped the run (exit status 130) */
 } uf_status;
 
 enum { UF_ERROR_TEXT = 1024 };
@@ -63,7 +63,7 @@ typedef struct uf_plane {
 /* The version of the library in use, "major.minor.patch". */
 UF_API const char *uf_version(void);
 
-/* ---- settings ---------------------------------------------------------------------------- */
+/* ---- settings -------------------------------------------------------------------------------- */
 
 /* All that an instrument file and an assay file can say, with where each value came from. */
 typedef struct uf_settings uf_settings;
@@ -79,14 +79,14 @@ UF_API void uf_settings_free(uf_settings **settings);
 /* Reads one INI file over what is there: later files override earlier ones. An unknown key, a value
  * out of range, or a key this version does not support is UF_INPUT and names file and line. Relative
  * paths in the file are taken relative to the file. */
-UF_API UF_MUST_USE uf_status uf_settings_read(uf_settings *settings, const char *path,
-                                              uf_settings_kind kind, uf_error *error);
+UF_API UF_MUST_USE uf_status uf_settings_read(uf_settings *settings, const char *path, uf_settings_kind kind,
+                                              uf_error *error);
 
 /* Sets one value from text, as if a file had said so: uf_settings_set(s, "light", "wavelength_nm", "488", &e). */
 UF_API UF_MUST_USE uf_status uf_settings_set(uf_settings *settings, const char *section, const char *key,
                                              const char *value, uf_error *error);
 
-/* ---- optics ------------------------------------------------------------------------------ */
+/* ---- optics ---------------------------------------------------------------------------------- */
 
 /* Critical angle in degrees, measured in the substrate: asin(medium_n / substrate_n) (Snell).
  * NaN unless 0 < medium_n < substrate_n: otherwise no angle is totally reflected. */
@@ -98,28 +98,28 @@ UF_API double uf_critical_angle_deg(double substrate_n, double medium_n);
  * what this returns. NaN where na_effective <= medium_n: light then propagates and nothing decays. */
 UF_API double uf_depth_nm(double wavelength_nm, double na_effective, double medium_n);
 
-/* ---- the main job ------------------------------------------------------------------------ */
+/* ---- the main job ---------------------------------------------------------------------------- */
 
 typedef struct uf_measure_request {
-    const char *near_path;   /* evanescent image of the field */
-    const char *wide_path;   /* widefield image of the same field */
-    const char *out_dir;     /* made when missing; files of an earlier run in it are replaced */
-    int threads;             /* 1 or more; results do not depend on it */
-    const char *command;     /* what the user typed, for the log; may be NULL */
+    const char *near_path; /* evanescent image of the field */
+    const char *wide_path; /* widefield image of the same field */
+    const char *out_dir;   /* made when missing; files of an earlier run in it are replaced */
+    int threads;           /* 1 or more; results do not depend on it */
+    const char *command;   /* what the user typed, for the log; may be NULL */
 } uf_measure_request;
 
 typedef struct uf_measure_summary {
-    int cells;               /* cells found */
-    int cells_used;          /* cells that count (not dropped by the edge rule) */
+    int cells;      /* cells found */
+    int cells_used; /* cells that count (not dropped by the edge rule) */
     int spots;
-    double spread_area_median_um2;    /* medians over used cells; NaN without cells */
+    double spread_area_median_um2; /* medians over used cells; NaN without cells */
     double contact_area_median_um2;
     double attachment_fraction_median;
     double gap_median_nm;
-    double depth_nm;         /* 1/e depth of the evanescent intensity in force */
+    double depth_nm; /* 1/e depth of the evanescent intensity in force */
     double seconds;
-    char overlay[256];       /* path of the overlay below out_dir, empty when none was asked for */
-    char warnings[1024];     /* one a line, empty when there are none */
+    char overlay[256];   /* path of the overlay below out_dir, empty when none was asked for */
+    char warnings[1024]; /* one a line, empty when there are none */
 } uf_measure_summary;
 
 /* Measures one field from its two image files and writes tables, images and run.json under out_dir

@@ -24,8 +24,8 @@ uf_status uf_fail(uf_error *error, uf_status status, const char *format, ...)
 
 uf_status uf_fail_memory(uf_error *error, const char *what)
 {
-    return uf_fail(error, UF_MEMORY,
-                   "the machine has no memory left for %s; use fewer --threads or a larger machine", what);
+    return uf_fail(error, UF_MEMORY, "the machine has no memory left for %s; use fewer --threads or a larger machine",
+                   what);
 }
 
 uf_status uf_fail_in(uf_error *error, uf_status status, const char *where)

@@ -135,8 +135,7 @@ void uf_rows_run(const uf_work *work, int height, uf_rows_task *task, void *cont
     uf_pool_run(work->pool, (height + BAND_ROWS - 1) / BAND_ROWS, run_band, &b);
 }
 
-uf_status uf_take(uf_work *work, size_t count, size_t size, const char *what, void *pointer,
-                  uf_error *error)
+uf_status uf_take(uf_work *work, size_t count, size_t size, const char *what, void *pointer, uf_error *error)
 {
     void *taken = size && count > SIZE_MAX / 2 / size ? NULL : uf_arena_take(&work->arena, count * size);
     memcpy(pointer, &taken, sizeof taken);

@@ -7,9 +7,9 @@ static int print_summary(const char *dir, const uf_demo_summary *summary)
     uf_text out = {0};
     uf_text_printf(&out, "%d fields in %s, made in %.1f s. Measure the first:\n\n", summary->fields, dir,
                    summary->seconds);
-    uf_text_printf(&out,
-                   "  underfoot measure %s/a_near.tif %s/a_wide.tif -i %s/instrument.ini -a %s/assay.ini -o %s/results\n",
-                   dir, dir, dir, dir, dir);
+    uf_text_printf(
+        &out, "  underfoot measure %s/a_near.tif %s/a_wide.tif -i %s/instrument.ini -a %s/assay.ini -o %s/results\n",
+        dir, dir, dir, dir, dir);
     int status = uf_print_all(&out);
     uf_text_free(&out);
     return status;
@@ -20,9 +20,9 @@ static int command_demo(int argc, char **argv)
     const char *dirs[1], *threads_text = NULL;
     int count = 0, threads = 1;
     bool help, quiet = false;
-    const uf_option options[] = {{"threads", 't', "N", "threads, default one a processor", &threads_text, NULL, NULL,
-                                  NULL, 0},
-                                 {"quiet", 'q', NULL, "no summary", NULL, &quiet, NULL, NULL, 0}};
+    const uf_option options[] = {
+        {"threads", 't', "N", "threads, default one a processor", &threads_text, NULL, NULL, NULL, 0},
+        {"quiet", 'q', NULL, "no summary", NULL, &quiet, NULL, NULL, 0}};
     uf_error error;
     uf_demo_summary summary;
     uf_status status = uf_options_parse(argc, argv, options, 2, dirs, &count, 1, &help, &error);
@@ -40,7 +40,10 @@ static int command_demo(int argc, char **argv)
 }
 
 const uf_command uf_command_demo = {
-    "demo", "DIR", "write a small experiment with known truth to try the program on",
+    "demo",
+    "DIR",
+    "write a small experiment with known truth to try the program on",
     "Writes image pairs of simulated cells on two coatings, with flats, instrument and assay file, a sheet\n"
     "and the truth. The data are invented and stand for no measurement.",
-    "  underfoot demo try-me", command_demo};
+    "  underfoot demo try-me",
+    command_demo};

@@ -29,6 +29,9 @@ static int command_docs(int argc, char **argv)
 }
 
 const uf_command uf_command_docs = {
-    "docs", "settings | columns", "print the page of all settings or of all columns",
+    "docs",
+    "settings | columns",
+    "print the page of all settings or of all columns",
     "Prints the reference page (Markdown) of every setting, or of every column of the tables.",
-    "  underfoot docs settings > settings.md", command_docs};
+    "  underfoot docs settings > settings.md",
+    command_docs};

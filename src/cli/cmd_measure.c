@@ -14,7 +14,7 @@ typedef struct measure_arguments {
     bool quiet, help;
 } measure_arguments;
 
-/* ---- summary --------------------------------------------------------------------------------------------------- */
+/* ---- summary --------------------------------------------------------------------------------- */
 
 static void put_median(uf_text *out, const char *what, double value, const char *unit)
 {
@@ -53,16 +53,18 @@ static void print_warnings(const char *lines)
     }
 }
 
-/* ---- the command ------------------------------------------------------------------------------------------------ */
+/* ---- the command ----------------------------------------------------------------------------- */
 
 static uf_status check_arguments(const measure_arguments *a, uf_error *error)
 {
     if (a->image_count != 2)
-        return uf_fail(error, UF_USAGE, "measure needs two images, the near and the wide one: underfoot measure NEAR "
-                                        "WIDE -i INSTRUMENT -o OUT");
+        return uf_fail(error, UF_USAGE,
+                       "measure needs two images, the near and the wide one: underfoot measure NEAR "
+                       "WIDE -i INSTRUMENT -o OUT");
     if (!a->instrument_count)
-        return uf_fail(error, UF_USAGE, "measure needs an instrument file: -i INSTRUMENT (docs/settings.md lists what "
-                                        "it holds; underfoot demo writes one to start from)");
+        return uf_fail(error, UF_USAGE,
+                       "measure needs an instrument file: -i INSTRUMENT (docs/settings.md lists what "
+                       "it holds; underfoot demo writes one to start from)");
     if (!a->out)
         return uf_fail(error, UF_USAGE, "measure needs a folder for its results: -o OUT");
     return UF_OK;
@@ -129,7 +131,9 @@ static int command_measure(int argc, char **argv)
 }
 
 const uf_command uf_command_measure = {
-    "measure", "NEAR WIDE -i INSTRUMENT [-a ASSAY] -o OUT", "measure one field from its near and wide image",
+    "measure",
+    "NEAR WIDE -i INSTRUMENT [-a ASSAY] -o OUT",
+    "measure one field from its near and wide image",
     "Segments the cells in the wide image, turns the near/wide ratio into the gap between membrane and\n"
     "substrate, and measures contact area, attachment and focal spots of every cell. Writes cells.csv,\n"
     "spots.csv, fields.csv, run.json and an overlay picture (docs/columns.md explains every column).",

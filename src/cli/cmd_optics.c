@@ -37,12 +37,12 @@ static int command_optics(int argc, char **argv)
     int instrument_count = 0, operand_count;
     bool json = false, help;
     uf_option options[SETTING_OPTIONS + 2] = {
-        {"instrument", 'i', "FILE", "facts about the bench; may be repeated", NULL, NULL, instruments, &instrument_count,
-         MOST_FILES},
+        {"instrument", 'i', "FILE", "facts about the bench; may be repeated", NULL, NULL, instruments,
+         &instrument_count, MOST_FILES},
         {"json", 0, NULL, "one JSON object instead of words", NULL, &json, NULL, NULL, 0}};
     for (int k = 0; k < SETTING_OPTIONS; k++)
-        options[k + 2] = (uf_option){setting_options[k].name, 0, "X", setting_options[k].help, &values[k], NULL, NULL,
-                                     NULL, 0};
+        options[k + 2] =
+            (uf_option){setting_options[k].name, 0, "X", setting_options[k].help, &values[k], NULL, NULL, NULL, 0};
     uf_error error;
     uf_settings *settings = NULL;
     uf_text out = {0};
@@ -63,7 +63,9 @@ static int command_optics(int argc, char **argv)
 }
 
 const uf_command uf_command_optics = {
-    "optics", "[-i INSTRUMENT] [options]", "numbers of an evanescent set-up",
+    "optics",
+    "[-i INSTRUMENT] [options]",
+    "numbers of an evanescent set-up",
     "Critical angles against medium and cell, depth of the evanescent field, intensities, and what an\n"
     "exponential makes of a gap under a cell. Options override the instrument file.",
     "  underfoot optics --wavelength-nm 488 --substrate-n 1.518 --medium-n 1.337 --angle-deg 70",

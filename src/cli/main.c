@@ -12,8 +12,9 @@ enum { COMMANDS = sizeof commands / sizeof commands[0] };
 static int print_overview(void)
 {
     uf_text out = {0};
-    uf_text_add(&out, "underfoot " UF_VERSION ": how closely, over how much area and at how many points cells hold on to "
-                      "their substrate\n\nUsage: underfoot COMMAND [arguments]\n\nCommands:\n");
+    uf_text_add(&out,
+                "underfoot " UF_VERSION ": how closely, over how much area and at how many points cells hold on to "
+                "their substrate\n\nUsage: underfoot COMMAND [arguments]\n\nCommands:\n");
     for (int k = 0; k < COMMANDS; k++)
         uf_text_printf(&out, "  %-10s %s\n", commands[k]->name, commands[k]->summary);
     uf_text_add(&out, "\nunderfoot COMMAND --help explains one, with an example.\n\n"

@@ -7,7 +7,7 @@
 
 #include "cli/cli.h"
 
-/* ---- parsing ----------------------------------------------------------------------------------------------- */
+/* ---- parsing --------------------------------------------------------------------------------- */
 
 static const uf_option *find_long(const uf_option *options, int count, const char *name, size_t length)
 {
@@ -109,7 +109,7 @@ uf_status uf_options_parse(int argc, char **argv, const uf_option *options, int 
     return UF_OK;
 }
 
-/* ---- help ---------------------------------------------------------------------------------------------------- */
+/* ---- help ------------------------------------------------------------------------------------ */
 
 static void put_option(uf_text *out, const uf_option *o)
 {
@@ -139,7 +139,7 @@ int uf_help_print(const uf_command *command, const uf_option *options, int optio
     return status;
 }
 
-/* ---- printing ------------------------------------------------------------------------------------------------ */
+/* ---- printing -------------------------------------------------------------------------------- */
 
 int uf_print_all(const uf_text *text)
 {
@@ -164,7 +164,7 @@ int uf_report_error(const uf_error *error)
     }
 }
 
-/* ---- what several commands need ------------------------------------------------------------------------------ */
+/* ---- what several commands need -------------------------------------------------------------- */
 
 uf_status uf_read_settings(const char **instruments, int instrument_count, const char **assays, int assay_count,
                            uf_settings **settings, uf_error *error)

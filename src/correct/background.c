@@ -39,7 +39,7 @@ static int64_t replace_hot(uf_plane image, double clear_adu)
     return replaced;
 }
 
-/* ---- first estimate ------------------------------------------------------------------------------- */
+/* ---- first estimate -------------------------------------------------------------------------- */
 
 enum { SAMPLE = 1 << 15 };
 
@@ -103,7 +103,7 @@ uf_status uf_background_first(uf_work *work, uf_channel *channel, uf_error *erro
     return UF_OK;
 }
 
-/* ---- once cells are known --------------------------------------------------------------------------- */
+/* ---- once cells are known -------------------------------------------------------------------- */
 
 /* The distance beyond which at least a hundredth of the coarse pixels lie, at most `clear_px`. */
 static double distance_that_leaves_enough(const uf_cell_map *cells, double clear_px, float *scratch)

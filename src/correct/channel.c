@@ -4,7 +4,7 @@
 #include "correct/correct.h"
 #include "correct/pixels.h"
 
-/* ---- flat ----------------------------------------------------------------------------------- */
+/* ---- flat ------------------------------------------------------------------------------------ */
 
 static uf_status flat_mean(uf_plane flat, const char *name, double *mean, uf_error *error)
 {
@@ -16,7 +16,8 @@ static uf_status flat_mean(uf_plane flat, const char *name, double *mean, uf_err
             if (!(row[x] > 0.0f))
                 return uf_fail(error, UF_INPUT,
                                "the %s flat is not above 0 at x %d, y %d; a flat is the positive image of an even "
-                               "sample", name, x, y);
+                               "sample",
+                               name, x, y);
             row_sum += (double)row[x];
         }
         sum += row_sum;
@@ -30,7 +31,7 @@ static uf_status flat_mean(uf_plane flat, const char *name, double *mean, uf_err
 typedef struct correction {
     const uf_raw_channel *raw;
     double flat_mean;
-    float *scratch;          /* two rows a hand */
+    float *scratch;           /* two rows a hand */
     int64_t *saturated_count; /* one a hand */
 } correction;
 
@@ -71,7 +72,7 @@ static void correct_rows(void *context, int hand, int y0, int y1)
     c->saturated_count[hand] += saturated;
 }
 
-/* ---- bad pixels --------------------------------------------------------------------------------- */
+/* ---- bad pixels ------------------------------------------------------------------------------ */
 
 float uf_neighbour_median(uf_plane image, uf_plane defects, int x, int y, int reach)
 {
@@ -116,7 +117,7 @@ static uf_status replace_mapped(uf_plane image, uf_plane defects, const char *na
     return UF_OK;
 }
 
-/* ---- display-scaled images ------------------------------------------------------------------------ */
+/* ---- display-scaled images ------------------------------------------------------------------- */
 
 /* 8-bit values whose histogram was stretched: both ends in use and pixels piled up at 255. */
 static int looks_display_scaled(const uf_raw_channel *raw)
@@ -135,7 +136,7 @@ static int looks_display_scaled(const uf_raw_channel *raw)
     return (double)at_top > 1e-4 * pixels && (double)at_bottom > 1e-4 * pixels;
 }
 
-/* ---- all of it -------------------------------------------------------------------------------------- */
+/* ---- all of it ------------------------------------------------------------------------------- */
 
 static uf_status take_scratch(uf_work *work, correction *c, int width, uf_error *error)
 {

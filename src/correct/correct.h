@@ -10,9 +10,9 @@
  * of the raw image's size. */
 typedef struct uf_raw_channel {
     uf_plane counts;
-    uf_plane dark;    /* counts in the dark; else camera->offset_adu */
-    uf_plane flat;    /* illumination, any scale */
-    uf_plane defects; /* not 0: bad pixel */
+    uf_plane dark;     /* counts in the dark; else camera->offset_adu */
+    uf_plane flat;     /* illumination, any scale */
+    uf_plane defects;  /* not 0: bad pixel */
     uf_mask saturated; /* room for where the camera was at full scale */
     double full_scale_adu;
     const uf_camera_settings *camera;

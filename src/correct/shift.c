@@ -14,8 +14,7 @@ static pthread_mutex_t planner = PTHREAD_MUTEX_INITIALIZER;
 
 static const double trusted_score = 1.3;
 
-/* ---- edges -------------------------------------------------------------------------------------- */
-
+/* ---- edges ----------------------------------------------------------------------------------- */
 
 /* sqrt of the signal above background: shot noise then has the same size everywhere. */
 static void square_root(const uf_channel *channel, uf_plane out)
@@ -65,7 +64,7 @@ static uf_status find_edges(uf_work *work, const uf_channel *channel, uf_plane o
     return status;
 }
 
-/* ---- correlation ---------------------------------------------------------------------------------- */
+/* ---- correlation ----------------------------------------------------------------------------- */
 
 /* The next length with only small prime factors: FFTW is several times slower on others. */
 static int fast_length(int n)
@@ -146,7 +145,7 @@ static double at_shift(const correlation *c, int dx, int dy)
     return (double)c->near[(size_t)y * (size_t)c->width + (size_t)x];
 }
 
-/* ---- the peak --------------------------------------------------------------------------------------- */
+/* ---- the peak -------------------------------------------------------------------------------- */
 
 /* FFTW's last bits differ from processor to processor, so it only says which whole-pixel shifts are highest;
  * every number that is used is summed here, in a fixed order. */
@@ -234,7 +233,7 @@ static void judge(const correlation *c, uf_plane near, uf_plane wide, int range,
     estimate->trusted = estimate->score >= trusted_score && abs(best.dx) < range && abs(best.dy) < range;
 }
 
-/* ---- all of it ----------------------------------------------------------------------------------------- */
+/* ---- all of it ------------------------------------------------------------------------------- */
 
 /* A copy of the channel's image reduced by `factor`, as a channel. */
 static uf_status reduced_channel(uf_work *work, const uf_channel *in, int factor, uf_channel *out, uf_error *error)

@@ -16,8 +16,7 @@ typedef struct uf_edge_fall {
 
 /* Measures the fall over all outlines of the field. psf_px is the near image's sigma. UF_MEMORY. */
 UF_MUST_USE uf_status uf_edge_fall_measure(uf_work *work, const uf_channel *wide, const uf_cell_map *cells,
-                                           double pixel_size_um, double psf_px, uf_edge_fall *fall,
-                                           uf_error *error);
+                                           double pixel_size_um, double psf_px, uf_edge_fall *fall, uf_error *error);
 
 /* The factor at a distance as uf_distance gives it (outline at half a pixel). */
 static inline float uf_edge_fall_at(const uf_edge_fall *fall, float distance_px)

@@ -3,8 +3,8 @@
 
 #include <math.h>
 
-#include "gap/edge_fall.h"
 #include "base/text.h"
+#include "gap/edge_fall.h"
 #include "image/smooth.h"
 #include "optics/detection.h"
 
@@ -20,7 +20,7 @@ typedef struct gap_job {
     double detection_sigma;
 } gap_job;
 
-/* ---- signals ------------------------------------------------------------------------------------------- */
+/* ---- signals --------------------------------------------------------------------------------- */
 
 static void signal_rows(void *context, int hand, int y0, int y1)
 {
@@ -42,7 +42,7 @@ static void signal_rows(void *context, int hand, int y0, int y1)
     }
 }
 
-/* ---- gaps ------------------------------------------------------------------------------------------------ */
+/* ---- gaps ------------------------------------------------------------------------------------ */
 
 /* An unresolved pixel's gap is at least where its near signal would just be detected. */
 static float limit_at(const gap_job *job, float dye)
@@ -103,7 +103,7 @@ static void gap_rows(void *context, int hand, int y0, int y1)
     }
 }
 
-/* ---- all of it ------------------------------------------------------------------------------------------- */
+/* ---- all of it ------------------------------------------------------------------------------- */
 
 static uf_status take_map(uf_work *work, int width, int height, uf_gap_map *map, uf_error *error)
 {
@@ -119,8 +119,13 @@ uf_status uf_gap_find(uf_work *work, const uf_plan *plan, double detection_sigma
 {
     int width = near->image.width, height = near->image.height;
     double psf_px = plan->psf_sigma_um / plan->pixel_size_um;
-    gap_job job = {.kernels = uf_kernels_in_use(), .plan = plan, .near = near, .wide = wide, .cells = cells,
-                   .map = map, .detection_sigma = detection_sigma};
+    gap_job job = {.kernels = uf_kernels_in_use(),
+                   .plan = plan,
+                   .near = near,
+                   .wide = wide,
+                   .cells = cells,
+                   .map = map,
+                   .detection_sigma = detection_sigma};
     job.ln_reference = (float)uf_round_digits(log(plan->reference_ratio), 12);
     uf_status status = take_map(work, width, height, map, error);
     map->near_adu = near->image;

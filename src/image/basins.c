@@ -30,7 +30,7 @@ static int root_of(basin *basins, int k)
     return k;
 }
 
-/* ---- order of the flood ---------------------------------------------------------------------------------- */
+/* ---- order of the flood ---------------------------------------------------------------------- */
 
 static int step_of(float depth)
 {
@@ -58,7 +58,7 @@ static size_t sort_pixels(uf_plane depth, uf_labels labels, size_t *place, uint3
     return count;
 }
 
-/* ---- flood ------------------------------------------------------------------------------------------------- */
+/* ---- flood ----------------------------------------------------------------------------------- */
 
 /* The roots of the basins around (x, y), each once, at most 8; the first is that of the deepest neighbour, the
  * one that (x, y) runs down to. */
@@ -111,7 +111,7 @@ static void flood_pixel(flood *f, int x, int y)
     }
 }
 
-/* ---- afterwards ---------------------------------------------------------------------------------------------- */
+/* ---- afterwards ------------------------------------------------------------------------------ */
 
 static void resolve(flood *f)
 {
@@ -192,8 +192,7 @@ static uf_status join_small(uf_work *work, uf_labels labels, double min_pixels, 
 }
 
 /* Drops what is too small or too large and numbers the rest in the order of first pixels. */
-static uf_status renumber(uf_work *work, uf_labels *labels, double min_pixels, double max_pixels,
-                          uf_error *error)
+static uf_status renumber(uf_work *work, uf_labels *labels, double min_pixels, double max_pixels, uf_error *error)
 {
     size_t places = (size_t)labels->count + 1;
     int64_t *areas;
@@ -232,7 +231,7 @@ uf_status uf_labels_tidy(uf_work *work, double min_pixels, double max_pixels, uf
 }
 
 uf_status uf_basins(uf_work *work, uf_plane depth, double neck, double min_pixels, double max_pixels,
-                   uf_labels *labels, uf_error *error)
+                    uf_labels *labels, uf_error *error)
 {
     uf_arena_mark mark = uf_arena_now(&work->arena);
     size_t pixels = (size_t)labels->width * (size_t)labels->height;

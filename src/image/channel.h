@@ -15,15 +15,15 @@ typedef struct uf_noise {
 } uf_noise;
 
 typedef struct uf_channel {
-    uf_plane image;            /* ADU, offset subtracted, flat-fielded, bad pixels replaced; background still in */
-    uf_mask saturated;         /* 1 where the camera was at full scale; data NULL when nowhere */
+    uf_plane image;    /* ADU, offset subtracted, flat-fielded, bad pixels replaced; background still in */
+    uf_mask saturated; /* 1 where the camera was at full scale; data NULL when nowhere */
     uf_noise noise;
     double background_adu;
-    double background_sd_adu;  /* 1 sigma of background_adu */
-    double noise_adu;          /* 1 sigma noise of a pixel at the background level */
+    double background_sd_adu; /* 1 sigma of background_adu */
+    double noise_adu;         /* 1 sigma noise of a pixel at the background level */
     double saturated_fraction;
-    int64_t replaced;          /* bad pixels replaced */
-    int display_scaled;        /* looks contrast-stretched to 8 bits */
+    int64_t replaced;   /* bad pixels replaced */
+    int display_scaled; /* looks contrast-stretched to 8 bits */
 } uf_channel;
 
 static inline double uf_noise_variance(const uf_noise *noise, double signal_adu)
@@ -38,23 +38,23 @@ typedef struct uf_cell_map {
     uf_plane distance_px;      /* distance to the nearest pixel outside the own cell, 0 outside cells */
     uf_plane to_background_px; /* distance to the nearest pixel outside all cells */
     int factor;
-    uf_plane plateau_adu;  /* coarse: wide level just inside the nearest outline, background included */
-    uf_plane outside_adu;  /* coarse: wide level just outside it */
-    uf_plane outside_px;   /* coarse: distance from the nearest cell in image pixels, 0 inside */
+    uf_plane plateau_adu; /* coarse: wide level just inside the nearest outline, background included */
+    uf_plane outside_adu; /* coarse: wide level just outside it */
+    uf_plane outside_px;  /* coarse: distance from the nearest cell in image pixels, 0 inside */
 } uf_cell_map;
 
 /* What is known of one pixel's gap. */
 typedef enum uf_gap_state {
-    UF_GAP_OUTSIDE,    /* not in a cell */
+    UF_GAP_OUTSIDE, /* not in a cell */
     UF_GAP_RESOLVED,
-    UF_GAP_UNRESOLVED  /* near or wide too weak: the gap is at least what the map holds */
+    UF_GAP_UNRESOLVED /* near or wide too weak: the gap is at least what the map holds */
 } uf_gap_state;
 
 typedef struct uf_gap_map {
-    uf_plane gap_nm;    /* signed; the detection limit where unresolved; NaN outside cells */
-    uf_mask state;      /* uf_gap_state */
-    uf_plane near_adu;  /* near signal, background subtracted: the near channel's own image, in its place */
-    uf_plane dye_adu;   /* wide signal that stands for dye density: background subtracted, the fall of the wide
+    uf_plane gap_nm;        /* signed; the detection limit where unresolved; NaN outside cells */
+    uf_mask state;          /* uf_gap_state */
+    uf_plane near_adu;      /* near signal, background subtracted: the near channel's own image, in its place */
+    uf_plane dye_adu;       /* wide signal that stands for dye density: background subtracted, the fall of the wide
                            blur towards outlines taken out */
     uf_plane smooth_gap_nm; /* at the scale of the point spread function, for spots; UF_GAP_NOWHERE outside */
 } uf_gap_map;

@@ -4,7 +4,7 @@
 #include <math.h>
 #include <string.h>
 
-/* ---- first pass: down and up the columns ---------------------------------------------------- */
+/* ---- first pass: down and up the columns ----------------------------------------------------- */
 
 /* Steps along the column to the nearest other label, UF_FAR when there is none. Rows are walked whole, so
  * that neighbouring columns share cache lines. */
@@ -31,7 +31,7 @@ static void column_distances(uf_labels labels, uf_plane steps)
     }
 }
 
-/* ---- second pass: along the rows ------------------------------------------------------------ */
+/* ---- second pass: along the rows ------------------------------------------------------------- */
 
 /* Parabolas of the lower envelope: parabola k is lowest from start[k] to start[k + 1]. */
 typedef struct parabola {
@@ -116,8 +116,7 @@ static void distance_rows(void *context, int hand, int y0, int y1)
     }
 }
 
-uf_status uf_distance(uf_work *work, uf_labels labels, const uint8_t *wanted, uf_plane distance_px,
-                      uf_error *error)
+uf_status uf_distance(uf_work *work, uf_labels labels, const uint8_t *wanted, uf_plane distance_px, uf_error *error)
 {
     distance_job job = {.labels = labels, .out = distance_px, .wanted = wanted};
     uf_arena_mark mark = uf_arena_now(&work->arena);

@@ -37,8 +37,8 @@ typedef struct uf_kernels {
     void (*six_rows)(float *out, const float *const *rows, const float *taps, int n);
 
     /* gap[x] = lookup(ln(near[x] / wide[x]) - ln_reference); NaN where near or wide is not above 0. */
-    void (*gap)(float *gap_nm, const float *near, const float *wide, float ln_reference,
-                const uf_gap_lookup *lookup, int n);
+    void (*gap)(float *gap_nm, const float *near, const float *wide, float ln_reference, const uf_gap_lookup *lookup,
+                int n);
 
     /* best[x] = max(best[x], min(before[x], after[x]) - here[x]): contrast that holds on both sides. */
     void (*two_sided)(float *best, const float *here, const float *before, const float *after, int n);

@@ -7,8 +7,7 @@
 /* Blocks keep the running sums in registers while the taps go by. */
 enum { BLOCK = 32 };
 
-static void convolve_row(float *restrict out, const float *restrict in, const float *restrict taps, int radius,
-                         int n)
+static void convolve_row(float *restrict out, const float *restrict in, const float *restrict taps, int radius, int n)
 {
     int x = 0;
     for (; x + BLOCK <= n; x += BLOCK) {
@@ -28,8 +27,8 @@ static void convolve_row(float *restrict out, const float *restrict in, const fl
     }
 }
 
-static void convolve_column(float *restrict out, const float *const *rows, const float *restrict taps,
-                            int radius, int n)
+static void convolve_column(float *restrict out, const float *const *rows, const float *restrict taps, int radius,
+                            int n)
 {
     const float *const *middle = rows + radius;
     int x = 0;
@@ -63,8 +62,8 @@ static void six_rows(float *restrict out, const float *const *rows, const float 
 {
     const float *r0 = rows[0], *r1 = rows[1], *r2 = rows[2], *r3 = rows[3], *r4 = rows[4], *r5 = rows[5];
     for (int x = 0; x < n; x++)
-        out[x] = taps[0] * r0[x] + taps[1] * r1[x] + taps[2] * r2[x] + taps[3] * r3[x] + taps[4] * r4[x] +
-                 taps[5] * r5[x];
+        out[x] =
+            taps[0] * r0[x] + taps[1] * r1[x] + taps[2] * r2[x] + taps[3] * r3[x] + taps[4] * r4[x] + taps[5] * r5[x];
 }
 
 /*
@@ -100,8 +99,8 @@ static void lookup_places(float *restrict at, const float *restrict near, const 
 }
 
 /* In two steps, since reading a table at scattered places is the one thing vectors are no good at. */
-static void gap(float *restrict gap_nm, const float *restrict near, const float *restrict wide,
-                float ln_reference, const uf_gap_lookup *restrict lookup, int n)
+static void gap(float *restrict gap_nm, const float *restrict near, const float *restrict wide, float ln_reference,
+                const uf_gap_lookup *restrict lookup, int n)
 {
     const float last = (float)(UF_DECAY_NODES - 2);
     float places[GAP_BLOCK];
@@ -149,5 +148,5 @@ const uf_kernels uf_kernels_v3 = {"x86-64-v3",
 #else
 const uf_kernels uf_kernels_baseline = {"baseline",
 #endif
-                                  convolve_row, convolve_column, six_taps, six_rows, gap, two_sided, closed_sides,
-                                  above};
+                                  convolve_row, convolve_column, six_taps,     six_rows,
+                                  gap,          two_sided,       closed_sides, above};

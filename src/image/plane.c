@@ -1,8 +1,7 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
 #include "image/plane.h"
 
-static uf_status take_pixels(uf_work *work, int width, int height, size_t size, void *pointer,
-                             uf_error *error)
+static uf_status take_pixels(uf_work *work, int width, int height, size_t size, void *pointer, uf_error *error)
 {
     return uf_take(work, (size_t)width * (size_t)height, size, "an image", pointer, error);
 }

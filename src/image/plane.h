@@ -47,8 +47,7 @@ static inline int32_t *uf_labels_row(uf_labels labels, int y)
 /* Planes from the arena, contents undefined; width and height at least 1. UF_MEMORY. */
 UF_MUST_USE uf_status uf_plane_take(uf_work *work, int width, int height, uf_plane *plane, uf_error *error);
 UF_MUST_USE uf_status uf_mask_take(uf_work *work, int width, int height, uf_mask *mask, uf_error *error);
-UF_MUST_USE uf_status uf_labels_take(uf_work *work, int width, int height, uf_labels *labels,
-                                     uf_error *error);
+UF_MUST_USE uf_status uf_labels_take(uf_work *work, int width, int height, uf_labels *labels, uf_error *error);
 
 /* Bounding boxes of labels 1 .. count into boxes[1 .. count]; boxes[0] is the whole image, and the box of
  * a label that does not occur is empty. */

@@ -24,7 +24,7 @@ static int clamp(int i, int n)
     return i < 0 ? 0 : i >= n ? n - 1 : i;
 }
 
-/* ---- Gaussian ----------------------------------------------------------------------------- */
+/* ---- Gaussian -------------------------------------------------------------------------------- */
 
 typedef struct smoothing {
     const uf_kernels *kernels;
@@ -121,7 +121,7 @@ uf_status uf_smooth(uf_work *work, uf_plane in, double sigma_px, uf_plane out, u
     return status;
 }
 
-/* ---- coarse grid -------------------------------------------------------------------------- */
+/* ---- coarse grid ----------------------------------------------------------------------------- */
 
 typedef struct reduction {
     uf_plane in, out;
@@ -206,7 +206,7 @@ void uf_expand_row(uf_plane coarse, int factor, int y, const uf_expand_column *c
     }
 }
 
-/* ---- shift -------------------------------------------------------------------------------- */
+/* ---- shift ----------------------------------------------------------------------------------- */
 
 enum { POINTS = 6, BEFORE = 2 }; /* points at -2 .. 3 around the whole part */
 
@@ -265,7 +265,8 @@ uf_status uf_shift(uf_work *work, uf_plane in, double dx, double dy, uf_plane ou
     lagrange(dy - s.whole_y, s.taps_y);
     uf_arena_mark mark = uf_arena_now(&work->arena);
     s.padded_length = (size_t)in.width + POINTS;
-    uf_status status = uf_take(work, (size_t)uf_hands(work) * s.padded_length, sizeof(float), "the shift", &s.padded, error);
+    uf_status status =
+        uf_take(work, (size_t)uf_hands(work) * s.padded_length, sizeof(float), "the shift", &s.padded, error);
     if (status == UF_OK)
         status = uf_plane_take(work, in.width, in.height, &s.half, error);
     if (status == UF_OK) {

@@ -10,7 +10,7 @@
 
 #include "io/tiff_memory.h"
 
-/* ---- TIFF --------------------------------------------------------------------------------- */
+/* ---- TIFF ------------------------------------------------------------------------------------ */
 
 enum { STRIP_BYTES = 65536 };
 
@@ -44,8 +44,7 @@ static bool set_compression(TIFF *tiff, const tiff_page *page)
         return false;
     if (page->compression == COMPRESSION_NONE)
         return true;
-    return TIFFSetField(tiff, TIFFTAG_PREDICTOR, page->predictor) &&
-           TIFFSetField(tiff, TIFFTAG_ZIPQUALITY, 1);
+    return TIFFSetField(tiff, TIFFTAG_PREDICTOR, page->predictor) && TIFFSetField(tiff, TIFFTAG_ZIPQUALITY, 1);
 }
 
 static size_t row_bytes(const tiff_page *page)
@@ -64,8 +63,7 @@ static bool set_tags(TIFF *tiff, const tiff_page *page)
     return TIFFSetField(tiff, TIFFTAG_IMAGEWIDTH, (uint32_t)page->width) &&
            TIFFSetField(tiff, TIFFTAG_IMAGELENGTH, (uint32_t)page->height) &&
            TIFFSetField(tiff, TIFFTAG_BITSPERSAMPLE, page->bits) &&
-           TIFFSetField(tiff, TIFFTAG_SAMPLEFORMAT, page->format) &&
-           TIFFSetField(tiff, TIFFTAG_SAMPLESPERPIXEL, 1) &&
+           TIFFSetField(tiff, TIFFTAG_SAMPLEFORMAT, page->format) && TIFFSetField(tiff, TIFFTAG_SAMPLESPERPIXEL, 1) &&
            TIFFSetField(tiff, TIFFTAG_PHOTOMETRIC, PHOTOMETRIC_MINISBLACK) &&
            TIFFSetField(tiff, TIFFTAG_PLANARCONFIG, PLANARCONFIG_CONTIG) &&
            TIFFSetField(tiff, TIFFTAG_ORIENTATION, ORIENTATION_TOPLEFT) &&
@@ -223,7 +221,7 @@ uf_status uf_encode_count_tiff(uf_text *out, uf_plane plane, double pixel_size_u
     return encode_tiff(out, &page, error);
 }
 
-/* ---- PNG ---------------------------------------------------------------------------------- */
+/* ---- PNG ------------------------------------------------------------------------------------- */
 
 /* Lives in the caller of setjmp, so that a jump out of libpng loses nothing. */
 typedef struct png_job {
@@ -270,8 +268,7 @@ static void write_header(png_job *job, const uf_indexed *image)
     png_set_compression_level(job->png, 1);
     png_set_filter(job->png, PNG_FILTER_TYPE_BASE, PNG_FILTER_NONE);
     png_set_IHDR(job->png, job->info, (png_uint_32)image->width, (png_uint_32)image->height, 8,
-                 PNG_COLOR_TYPE_PALETTE, PNG_INTERLACE_NONE, PNG_COMPRESSION_TYPE_DEFAULT,
-                 PNG_FILTER_TYPE_DEFAULT);
+                 PNG_COLOR_TYPE_PALETTE, PNG_INTERLACE_NONE, PNG_COMPRESSION_TYPE_DEFAULT, PNG_FILTER_TYPE_DEFAULT);
     png_set_sRGB(job->png, job->info, PNG_sRGB_INTENT_PERCEPTUAL);
     png_set_PLTE(job->png, job->info, palette, image->colours);
     png_write_info(job->png, job->info);

@@ -6,8 +6,8 @@
 #define UF_IO_IMAGE_ENCODE_H
 
 #include "base/text.h"
-#include "image/plane.h"
 #include "image/indexed.h"
+#include "image/plane.h"
 
 /* A 32-bit float grey TIFF, deflate without predictor (readers without extra codecs must open it). NaN is
  * kept, as one bit pattern whatever the processor made; resolution tags where pixel_size_um is a number.

@@ -16,14 +16,14 @@
 
 typedef struct uf_image_info {
     int width, height;
-    int pages;               /* pages in the file */
-    int bits;                /* 8, 16 or 32 (float) */
+    int pages; /* pages in the file */
+    int bits;  /* 8, 16 or 32 (float) */
     int is_float;
-    double pixel_size_x_um;  /* from the resolution tags; NaN when they say nothing, or a placeholder: no
+    double pixel_size_x_um; /* from the resolution tags; NaN when they say nothing, or a placeholder: no
                                 unit, above 20 um (72 and 300 pixels an inch are), below 1e-4 um */
     double pixel_size_y_um;
     uint64_t file_bytes;
-    uint64_t fingerprint;    /* XXH3 64 of the file's bytes */
+    uint64_t fingerprint; /* XXH3 64 of the file's bytes */
 } uf_image_info;
 
 typedef struct uf_image_limits {

@@ -10,8 +10,8 @@
 
 static uf_status cannot_read(uf_error *error, const char *path, int number)
 {
-    return uf_fail(error, UF_INPUT, "%.400s: cannot be read (%s); check the path and who may read the file",
-                   path, strerror(number));
+    return uf_fail(error, UF_INPUT, "%.400s: cannot be read (%s); check the path and who may read the file", path,
+                   strerror(number));
 }
 
 static const char *kind_of_file(mode_t mode)
@@ -57,8 +57,7 @@ static ssize_t read_at(int descriptor, void *buffer, size_t size, uint64_t at)
     return count;
 }
 
-static uf_status read_whole(uf_text *out, int descriptor, const char *path, size_t max_bytes,
-                            uf_error *error)
+static uf_status read_whole(uf_text *out, int descriptor, const char *path, size_t max_bytes, uf_error *error)
 {
     char piece[16384];
     ssize_t count;
@@ -99,8 +98,8 @@ uint64_t uf_fingerprint(const void *bytes, size_t count)
     return XXH3_64bits(bytes, count);
 }
 
-uf_status uf_input_fingerprint(int descriptor, const char *path, void *buffer, size_t size,
-                               uint64_t *fingerprint, uf_error *error)
+uf_status uf_input_fingerprint(int descriptor, const char *path, void *buffer, size_t size, uint64_t *fingerprint,
+                               uf_error *error)
 {
     uint64_t at = 0;
     ssize_t count;

@@ -19,7 +19,7 @@ enum {
     TEMPORARY_EXTRA = 6    /* "." before and ".part" after */
 };
 
-/* ---- messages ----------------------------------------------------------------------------- */
+/* ---- messages -------------------------------------------------------------------------------- */
 
 static const char *mend_for(int number)
 {
@@ -43,8 +43,8 @@ static const char *mend_for(int number)
 
 static uf_status cannot_open(uf_error *error, const char *path, int number)
 {
-    return uf_fail(error, UF_OUTPUT, "%.400s: cannot be used as output folder (%s): %s", path,
-                   strerror(number), mend_for(number));
+    return uf_fail(error, UF_OUTPUT, "%.400s: cannot be used as output folder (%s): %s", path, strerror(number),
+                   mend_for(number));
 }
 
 /* Where a result goes, for messages. */
@@ -56,9 +56,8 @@ typedef struct place {
 
 static uf_status fail_at(uf_error *error, const place *at, const char *what, int number, const char *after)
 {
-    return uf_fail(error, UF_OUTPUT, "%.400s/%s%s%s: %s (%s); %s%s", at->output->path,
-                   at->folder ? at->folder : "", at->folder ? "/" : "", at->name, what, strerror(number),
-                   after, mend_for(number));
+    return uf_fail(error, UF_OUTPUT, "%.400s/%s%s%s: %s (%s); %s%s", at->output->path, at->folder ? at->folder : "",
+                   at->folder ? "/" : "", at->name, what, strerror(number), after, mend_for(number));
 }
 
 static uf_status cannot_write(uf_error *error, const place *at, int number)
@@ -66,7 +65,7 @@ static uf_status cannot_write(uf_error *error, const place *at, int number)
     return fail_at(error, at, "cannot be written", number, "nothing was replaced: ");
 }
 
-/* ---- folders ------------------------------------------------------------------------------ */
+/* ---- folders --------------------------------------------------------------------------------- */
 
 /* Makes every folder of `path` in turn. Returns 0 or the first error number other than "exists". It is no
  * more than a reason: an existing folder may answer with anything (read-only file system, no rights above
@@ -139,7 +138,7 @@ static int open_folder(const uf_output *output, const char *folder, bool make)
     return openat(output->descriptor, folder, O_RDONLY | O_DIRECTORY | O_NOFOLLOW | O_CLOEXEC);
 }
 
-/* ---- files -------------------------------------------------------------------------------- */
+/* ---- files ----------------------------------------------------------------------------------- */
 
 /* One path component that leads nowhere else. */
 static bool is_component(const char *name)
@@ -228,7 +227,7 @@ uf_status uf_output_remove(const uf_output *output, const char *folder, const ch
     return number ? fail_at(error, &at, "cannot be removed", number, "") : UF_OK;
 }
 
-/* ---- names -------------------------------------------------------------------------------- */
+/* ---- names ----------------------------------------------------------------------------------- */
 
 static bool stays(const char *key, size_t k, size_t length)
 {

@@ -4,7 +4,7 @@
 #include <stdio.h>
 #include <string.h>
 
-/* ---- complaints --------------------------------------------------------------------------- */
+/* ---- complaints ------------------------------------------------------------------------------ */
 
 /* Texts from a damaged file may hold anything: only printable ASCII reaches a terminal or a log. */
 static void make_printable(char *text)
@@ -46,7 +46,7 @@ TIFFOpenOptions *uf_tiff_options(uf_tiff_complaint *complaint, uint64_t max_byte
     return options;
 }
 
-/* ---- a file in memory --------------------------------------------------------------------- */
+/* ---- a file in memory ------------------------------------------------------------------------ */
 
 static size_t size_now(const uf_tiff_memory *memory)
 {

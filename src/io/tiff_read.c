@@ -41,7 +41,7 @@ typedef struct layout {
     uint32_t pieces;
 } layout;
 
-/* ---- messages ----------------------------------------------------------------------------- */
+/* ---- messages -------------------------------------------------------------------------------- */
 
 /* UF_INPUT with "PATH, page N: " before the line; people count pages from 1. */
 static uf_status refuse(const reader *r, uf_error *error, const char *format, ...) UF_PRINTF(3, 4);
@@ -64,7 +64,7 @@ static uf_status damaged(const reader *r, uf_error *error, const char *what)
                   said[0] ? " (libtiff: " : "", said, said[0] ? ")" : "");
 }
 
-/* ---- the file ----------------------------------------------------------------------------- */
+/* ---- the file -------------------------------------------------------------------------------- */
 
 /* The four signatures of TIFF 6.0 (version 42) and BigTIFF (version 43). */
 static bool begins_like_tiff(const unsigned char *first)
@@ -134,7 +134,7 @@ static uf_status find_page(reader *r, uf_error *error)
     return UF_OK;
 }
 
-/* ---- the header --------------------------------------------------------------------------- */
+/* ---- the header ------------------------------------------------------------------------------ */
 
 static uint16_t short_tag(const reader *r, uint32_t tag, uint16_t otherwise)
 {
@@ -145,14 +145,22 @@ static uint16_t short_tag(const reader *r, uint32_t tag, uint16_t otherwise)
 static const char *photometric_name(uint16_t photometric)
 {
     switch (photometric) {
-    case PHOTOMETRIC_MINISWHITE: return "grey with 0 as white";
-    case PHOTOMETRIC_RGB: return "colour (RGB)";
-    case PHOTOMETRIC_PALETTE: return "colour (palette)";
-    case PHOTOMETRIC_MASK: return "a transparency mask";
-    case PHOTOMETRIC_SEPARATED: return "colour (CMYK)";
-    case PHOTOMETRIC_YCBCR: return "colour (YCbCr)";
-    case PHOTOMETRIC_CFA: return "colour (raw filter array)";
-    default: return "of a kind it does not name";
+    case PHOTOMETRIC_MINISWHITE:
+        return "grey with 0 as white";
+    case PHOTOMETRIC_RGB:
+        return "colour (RGB)";
+    case PHOTOMETRIC_PALETTE:
+        return "colour (palette)";
+    case PHOTOMETRIC_MASK:
+        return "a transparency mask";
+    case PHOTOMETRIC_SEPARATED:
+        return "colour (CMYK)";
+    case PHOTOMETRIC_YCBCR:
+        return "colour (YCbCr)";
+    case PHOTOMETRIC_CFA:
+        return "colour (raw filter array)";
+    default:
+        return "of a kind it does not name";
     }
 }
 
@@ -160,10 +168,14 @@ static const char *format_name(uint16_t format)
 {
     switch (format) {
     case SAMPLEFORMAT_UINT:
-    case SAMPLEFORMAT_VOID: return "unsigned";
-    case SAMPLEFORMAT_INT: return "signed";
-    case SAMPLEFORMAT_IEEEFP: return "floating-point";
-    default: return "complex";
+    case SAMPLEFORMAT_VOID:
+        return "unsigned";
+    case SAMPLEFORMAT_INT:
+        return "signed";
+    case SAMPLEFORMAT_IEEEFP:
+        return "floating-point";
+    default:
+        return "complex";
     }
 }
 
@@ -269,15 +281,14 @@ static uf_status check_size(const reader *r, layout *l, double max_pixels, uf_er
     if (width == 0 || height == 0)
         return damaged(r, error, "says no width or no height");
     if ((double)width * height > max_pixels || width > INT_MAX || height > INT_MAX)
-        return refuse(r, error,
-                      "claims %u x %u pixels, more than the limit of %.0f; cut the image into fields",
+        return refuse(r, error, "claims %u x %u pixels, more than the limit of %.0f; cut the image into fields",
                       (unsigned)width, (unsigned)height, max_pixels);
     l->width = (int)width;
     l->height = (int)height;
     return UF_OK;
 }
 
-/* ---- the pieces --------------------------------------------------------------------------- */
+/* ---- the pieces ------------------------------------------------------------------------------ */
 
 static uint32_t least(uint32_t a, uint32_t b)
 {
@@ -327,9 +338,8 @@ static uf_status check_pieces(const reader *r, const layout *l, uf_error *error)
         if (failed)
             return damaged(r, error, "the table of strips or tiles cannot be read");
         if (offset == 0 || count == 0)
-            return refuse(r, error,
-                          "%s %u of %u has no stored pixels (a sparse file); save the whole image again", kind,
-                          number, (unsigned)l->pieces);
+            return refuse(r, error, "%s %u of %u has no stored pixels (a sparse file); save the whole image again",
+                          kind, number, (unsigned)l->pieces);
         if (offset > r->file_bytes || count > r->file_bytes - offset)
             return refuse(r, error,
                           "%s %u of %u lies beyond the end of the file (%.0f bytes): it was cut short; copy "
@@ -362,7 +372,7 @@ static uf_status read_layout(const reader *r, layout *l, double max_pixels, uf_e
     return status;
 }
 
-/* ---- the pixels --------------------------------------------------------------------------- */
+/* ---- the pixels ------------------------------------------------------------------------------ */
 
 /* Copies a block at a time, so that the loops see plain arrays and become vectors. `from` may be the far end
  * of the memory of `to`: a block is read before it is written, and writing never overtakes reading. */
@@ -467,7 +477,7 @@ static uf_status check_finite(const reader *r, uf_plane plane, uf_error *error)
     return UF_OK;
 }
 
-/* ---- what the file says about itself ------------------------------------------------------ */
+/* ---- what the file says about itself --------------------------------------------------------- */
 
 /*
  * Programs that know no pixel size write a placeholder (1, 72, 96, 300 pixels an inch), which would be tens
@@ -499,8 +509,7 @@ static uf_status fingerprint_of(const reader *r, uf_work *work, uint64_t *finger
     return status;
 }
 
-static uf_status fill_info(const reader *r, const layout *l, uf_work *work, uf_image_info *info,
-                           uf_error *error)
+static uf_status fill_info(const reader *r, const layout *l, uf_work *work, uf_image_info *info, uf_error *error)
 {
     *info = (uf_image_info){.width = l->width,
                             .height = l->height,
@@ -513,7 +522,7 @@ static uf_status fill_info(const reader *r, const layout *l, uf_work *work, uf_i
     return fingerprint_of(r, work, &info->fingerprint, error);
 }
 
-/* ---- all of it ---------------------------------------------------------------------------- */
+/* ---- all of it ------------------------------------------------------------------------------- */
 
 /* The file is read twice, for its fingerprint and for its pixels; both must have seen the same bytes. */
 static uf_status check_unchanged(const reader *r, const struct stat *before, uf_error *error)
@@ -523,8 +532,7 @@ static uf_status check_unchanged(const reader *r, const struct stat *before, uf_
         now.st_mtim.tv_sec == before->st_mtim.tv_sec && now.st_mtim.tv_nsec == before->st_mtim.tv_nsec)
         return UF_OK;
     return uf_fail(error, UF_INPUT,
-                   "%.400s: changed while it was being read; wait until the microscope has written it",
-                   r->path);
+                   "%.400s: changed while it was being read; wait until the microscope has written it", r->path);
 }
 
 static uf_status read_page(reader *r, uf_work *work, double max_pixels, uf_plane *plane, uf_image_info *info,
@@ -547,8 +555,8 @@ static uf_status read_page(reader *r, uf_work *work, double max_pixels, uf_plane
     return status;
 }
 
-uf_status uf_image_read(uf_work *work, const char *path, int page, const uf_image_limits *limits,
-                        uf_plane *plane, uf_image_info *info, uf_error *error)
+uf_status uf_image_read(uf_work *work, const char *path, int page, const uf_image_limits *limits, uf_plane *plane,
+                        uf_image_info *info, uf_error *error)
 {
     reader r = {.path = path, .page = page};
     uf_arena_mark mark = uf_arena_now(&work->arena);

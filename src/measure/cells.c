@@ -14,7 +14,7 @@ typedef struct cell_job {
     uf_mask contact;
     uf_box *boxes;
     float *gaps, *core_gaps; /* resolved gaps of one cell */
-    double um2; /* of one pixel */
+    double um2;              /* of one pixel */
 } cell_job;
 
 /* Sums over the pixels of one cell. */
@@ -29,7 +29,7 @@ static int on_image_edge(uf_box box, uf_labels labels)
     return box.x0 == 0 || box.y0 == 0 || box.x1 == labels.width || box.y1 == labels.height;
 }
 
-/* ---- one pass over the pixels ------------------------------------------------------------------------------- */
+/* ---- one pass over the pixels ---------------------------------------------------------------- */
 
 static int histogram_bin(float gap)
 {
@@ -103,7 +103,7 @@ static tally tally_cell(cell_job *job, int label, uf_cell *row)
     return t;
 }
 
-/* ---- contact patches ----------------------------------------------------------------------------------------- */
+/* ---- contact patches ------------------------------------------------------------------------- */
 
 typedef struct patches {
     double count, largest_px, contact_px, contact_rim_px;
@@ -176,7 +176,7 @@ static uf_status find_patches(uf_work *work, const cell_job *job, int label, pat
     return status;
 }
 
-/* ---- filling a row -------------------------------------------------------------------------------------------- */
+/* ---- filling a row --------------------------------------------------------------------------- */
 
 static void fill_shape(const cell_job *job, const uf_shape *shape, uf_cell *row)
 {
@@ -227,8 +227,7 @@ static void fill_gaps(cell_job *job, const tally *t, uf_cell *row)
     row->band_far_um2 = (double)t->far * job->um2;
     row->unresolved_um2 = (double)(t->pixels - t->resolved) * job->um2;
     row->cleft_volume_um3 = t->volume_nm * 1e-3 * job->um2;
-    row->above_reference_fraction =
-        t->resolved ? (double)t->above_reference / (double)t->resolved : (double)NAN;
+    row->above_reference_fraction = t->resolved ? (double)t->above_reference / (double)t->resolved : (double)NAN;
     row->gap_kind = UF_GAP_ABSOLUTE;
 }
 

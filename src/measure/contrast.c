@@ -131,11 +131,12 @@ static void contrast_rows(void *context, int hand, int y0, int y1)
 uf_status uf_contrast_find(uf_work *work, uf_plane gap_nm, double pixel_size_um, double least_nm, uf_plane narrow,
                            uf_plane closed, uf_error *error)
 {
-    contrast_job job = {.kernels = uf_kernels_in_use(), .gap = gap_nm, .narrow = narrow, .closed = closed,
-                        .least = (float)least_nm};
+    contrast_job job = {
+        .kernels = uf_kernels_in_use(), .gap = gap_nm, .narrow = narrow, .closed = closed, .least = (float)least_nm};
     uf_arena_mark mark = uf_arena_now(&work->arena);
     make_offsets(&job, pixel_size_um);
-    uf_status status = uf_take(work, (size_t)uf_hands(work) * (size_t)gap_nm.width, sizeof(float), "spots", &job.rows, error);
+    uf_status status =
+        uf_take(work, (size_t)uf_hands(work) * (size_t)gap_nm.width, sizeof(float), "spots", &job.rows, error);
     if (status == UF_OK)
         uf_rows_run(work, gap_nm.height, contrast_rows, &job);
     uf_arena_back(&work->arena, mark);

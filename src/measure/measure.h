@@ -19,8 +19,8 @@ typedef struct uf_measure_input {
 
 /* One row a cell into rows[0 .. count - 1] (made in the arena), everything but spots, and the contact map: 1
  * where the gap is at most the cutoff, in patches of at least min_patch_um2. UF_MEMORY. */
-UF_MUST_USE uf_status uf_measure_cells(uf_work *work, const uf_measure_input *input, uf_cell **rows,
-                                       uf_mask *contact, uf_error *error);
+UF_MUST_USE uf_status uf_measure_cells(uf_work *work, const uf_measure_input *input, uf_cell **rows, uf_mask *contact,
+                                       uf_error *error);
 
 /* One row a spot, by cell and then top to bottom, in memory that the caller frees with free(); fills the cells'
  * spot columns. UF_MEMORY. */

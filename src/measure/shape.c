@@ -5,7 +5,7 @@
 
 static const double pi = 3.14159265358979323846;
 
-/* ---- moments --------------------------------------------------------------------------------------------- */
+/* ---- moments --------------------------------------------------------------------------------- */
 
 void uf_shape_ellipse(double variance_x, double variance_y, double covariance, uf_shape *shape)
 {
@@ -51,7 +51,7 @@ static void moments(uf_labels labels, int label, uf_box box, uf_shape *shape)
     uf_shape_ellipse(xx / area + 1.0 / 12, yy / area + 1.0 / 12, xy / area, shape);
 }
 
-/* ---- Crofton --------------------------------------------------------------------------------------------- */
+/* ---- Crofton --------------------------------------------------------------------------------- */
 
 /* Transitions between pixels and their neighbours to the right, below, and both ways aslant, over all pairs that
  * touch the box: counted for two rows at a time, with the outside of the image as no label. */
@@ -86,7 +86,7 @@ static transitions count_transitions(uf_labels labels, int label, uf_box box)
     return t;
 }
 
-/* ---- convex hull ------------------------------------------------------------------------------------------- */
+/* ---- convex hull ----------------------------------------------------------------------------- */
 
 typedef struct point {
     double x, y;

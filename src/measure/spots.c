@@ -25,7 +25,7 @@ static const double one_spot_saddle = 0.6;
 /* Natural unevenness of a membrane reaches some nm of contrast; a spot must stand out of it. */
 static const double least_contrast_nm = 7.0;
 
-/* ---- cut ---------------------------------------------------------------------------------------------------- */
+/* ---- cut ------------------------------------------------------------------------------------- */
 
 /* Contrast that noise alone does not reach in this cell, by gap: the noise grows with the gap. */
 static double needed_contrast(const uf_measure_input *in, const uf_cell *row, double gap_nm)
@@ -73,7 +73,7 @@ static void cut_score(const uf_measure_input *in, uf_plane narrow, uf_plane scor
     }
 }
 
-/* ---- spots --------------------------------------------------------------------------------------------------- */
+/* ---- spots ----------------------------------------------------------------------------------- */
 
 /* One candidate: where its score is highest, and sums over its region. */
 typedef struct spot_sums {
@@ -207,7 +207,7 @@ static int by_cell(const void *a, const void *b)
     return (s->x_px > t->x_px) - (s->x_px < t->x_px);
 }
 
-/* ---- the cells' columns ---------------------------------------------------------------------------------------- */
+/* ---- the cells' columns ---------------------------------------------------------------------- */
 
 /* Length of the mean vector of doubled angles, with the part that chance gives taken out: for n random
  * directions the square of the length is 1/n on average, so sqrt((n R^2 - 1)/(n - 1)), 0 when negative. */
@@ -259,16 +259,15 @@ static uf_status fill_cells(uf_work *work, uf_cell *rows, int cells, uf_spot *sp
     return UF_OK;
 }
 
-/* ---- all of it -------------------------------------------------------------------------------------------------- */
+/* ---- all of it ------------------------------------------------------------------------------- */
 
 /* Score, cut and parted into basins. `needed` has a table for each cell. */
 static uf_status find_basins(uf_work *work, const uf_measure_input *in, const float *needed, uf_plane narrow,
                              uf_plane score, uf_labels *basins, uf_error *error)
 {
     uf_mask mask;
-    uf_status status =
-        uf_contrast_find(work, in->gaps->smooth_gap_nm, in->plan->pixel_size_um, least_contrast_nm / 2, narrow,
-                                        score, error);
+    uf_status status = uf_contrast_find(work, in->gaps->smooth_gap_nm, in->plan->pixel_size_um, least_contrast_nm / 2,
+                                        narrow, score, error);
     if (status == UF_OK)
         status = uf_mask_take(work, score.width, score.height, &mask, error);
     if (status == UF_OK) {

@@ -10,8 +10,8 @@
 #include "optics/evanescent.h"
 
 typedef struct uf_decay {
-    double depth_nm;       /* 1/e depth of the evanescent intensity in the medium */
-    uf_gap_lookup lookup;  /* gap against ln(relative excitation) */
+    double depth_nm;      /* 1/e depth of the evanescent intensity in the medium */
+    uf_gap_lookup lookup; /* gap against ln(relative excitation) */
 } uf_decay;
 
 /* exp(-gap / depth). depth_nm above 0. */

@@ -60,7 +60,7 @@ double uf_interface_p(double na_effective, double substrate_n, double medium_n)
     return 4.0 * cosine2 * (2.0 * sine2 - n2) / (n2 * n2 * cosine2 + sine2 - n2);
 }
 
-/* ---- substrate | medium | cell ---------------------------------------------------------------- */
+/* ---- substrate | medium | cell --------------------------------------------------------------- */
 
 /* Normal component of the wave vector in units of the vacuum wave number; its imaginary part, where there
  * is one, is positive, so that the wave decays away from the substrate. */
@@ -108,7 +108,7 @@ double uf_layered_intensity(const uf_bench *bench, double gap_nm)
     return (1.0 - bench->p_fraction) * s + bench->p_fraction * p;
 }
 
-/* ---- verdicts ------------------------------------------------------------------------------ */
+/* ---- verdicts -------------------------------------------------------------------------------- */
 
 uf_status uf_bench_check(const uf_bench *bench, uf_error *error)
 {
@@ -116,18 +116,19 @@ uf_status uf_bench_check(const uf_bench *bench, uf_error *error)
     if (bench->medium_n >= bench->substrate_n)
         return uf_fail(error, UF_INPUT,
                        "medium_n %.4f is not below substrate_n %.4f: no angle is totally reflected; check the two "
-                       "indices", bench->medium_n, bench->substrate_n);
+                       "indices",
+                       bench->medium_n, bench->substrate_n);
     if (na > bench->medium_n && na <= bench->substrate_n) {
         if (na <= bench->objective_na || isnan(bench->objective_na))
             return UF_OK;
         return uf_fail(error, UF_INPUT,
                        "n sin(angle) is %.4f, more than the objective's aperture of %.4f: the beam cannot leave the "
-                       "objective at this angle; check angle_deg, angle_n and objective_na", na,
-                       bench->objective_na);
+                       "objective at this angle; check angle_deg, angle_n and objective_na",
+                       na, bench->objective_na);
     }
     if (na > bench->substrate_n)
-        return uf_fail(error, UF_INPUT, "n sin(angle) is %.4f, more than substrate_n %.4f: there is no such angle", na,
-                       bench->substrate_n);
+        return uf_fail(error, UF_INPUT, "n sin(angle) is %.4f, more than substrate_n %.4f: there is no such angle",
+                       na, bench->substrate_n);
     return uf_fail(error, UF_INPUT,
                    "n sin(angle) is %.4f (%.2f deg in the substrate): not totally reflected. Needed against the "
                    "medium: more than %.4f (%.2f deg); to stay evanescent in the cell too: more than %.4f (%.2f deg)",

@@ -13,11 +13,11 @@ typedef struct uf_bench {
     double wavelength_nm;
     double substrate_n, medium_n, cell_n;
     double substrate_n_sd, medium_n_sd, cell_n_sd;
-    double na_effective;    /* n sin(angle), the same in every layer */
+    double na_effective; /* n sin(angle), the same in every layer */
     double na_effective_sd;
-    double depth_sd_nm;     /* NaN unless the depth itself was measured: then it stands for the angle's part */
-    double p_fraction;      /* share of p polarization: 0 for s, 1 for p, 0.5 for mixed */
-    double objective_na;    /* NaN for a prism */
+    double depth_sd_nm;  /* NaN unless the depth itself was measured: then it stands for the angle's part */
+    double p_fraction;   /* share of p polarization: 0 for s, 1 for p, 0.5 for mixed */
+    double objective_na; /* NaN for a prism */
 } uf_bench;
 
 /* n sin(angle); NaN for an angle outside 0 .. 90 degrees. */

@@ -10,13 +10,13 @@ typedef struct uf_plan {
     uf_bench bench;
     uf_decay decay;
     double pixel_size_um;
-    double psf_sigma_um;          /* of the near image: 0.21 emission wavelength / NA */
+    double psf_sigma_um; /* of the near image: 0.21 emission wavelength / NA */
     double depth_nm, depth_sd_nm;
-    double reference_ratio;       /* near / wide that stands for gap 0 */
-    double reference_gap_nm;      /* gap it was measured at: a depth error is a gap error around this gap */
-    double reference_sd;          /* relative 1 sigma of the ratio */
-    double normalisation_sd;      /* relative, from cell to cell */
-    double layered_effect_nm;     /* layered minus exponential at the contact cutoff */
+    double reference_ratio;   /* near / wide that stands for gap 0 */
+    double reference_gap_nm;  /* gap it was measured at: a depth error is a gap error around this gap */
+    double reference_sd;      /* relative 1 sigma of the ratio */
+    double normalisation_sd;  /* relative, from cell to cell */
+    double layered_effect_nm; /* layered minus exponential at the contact cutoff */
 } uf_plan;
 
 #endif

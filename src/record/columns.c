@@ -5,7 +5,7 @@
 
 #define COUNT_OF(array) ((int)(sizeof(array) / sizeof(array)[0]))
 
-/* ---- cells.csv ---------------------------------------------------------------------------- */
+/* ---- cells.csv ------------------------------------------------------------------------------- */
 
 #define CELL(column, kind, meaning) {#column, UF_COLUMN_##kind, offsetof(uf_cell, column), meaning}
 
@@ -67,7 +67,7 @@ static const uf_column cell_columns[] = {
     CELL(flags, FLAGS, "Words that call for a look; see docs/measurement.md."),
 };
 
-/* ---- spots.csv ---------------------------------------------------------------------------- */
+/* ---- spots.csv ------------------------------------------------------------------------------- */
 
 #define SPOT(column, kind, meaning) {#column, UF_COLUMN_##kind, offsetof(uf_spot, column), meaning}
 
@@ -88,7 +88,7 @@ static const uf_column spot_columns[] = {
     SPOT(rim_distance_um, REAL, "Distance of the spot's centroid from the cell's outline."),
 };
 
-/* ---- fields.csv --------------------------------------------------------------------------- */
+/* ---- fields.csv ------------------------------------------------------------------------------ */
 
 #define FIELD(column, kind, meaning) {#column, UF_COLUMN_##kind, offsetof(uf_field, column), meaning}
 
@@ -125,7 +125,7 @@ const uf_table uf_table_spots = {"spots", "One row a focal spot.", spot_columns,
 const uf_table uf_table_fields = {"fields", "One row a field, failed ones too.", field_columns,
                                   COUNT_OF(field_columns)};
 
-/* ---- values ------------------------------------------------------------------------------- */
+/* ---- values ---------------------------------------------------------------------------------- */
 
 /* Six significant digits: a tenth of the error of the best of these numbers, and the same everywhere. */
 enum { TABLE_DIGITS = 6 };
@@ -195,7 +195,7 @@ void uf_column_value(uf_text *out, const uf_column *column, const void *row)
     }
 }
 
-/* ---- the page ----------------------------------------------------------------------------- */
+/* ---- the page -------------------------------------------------------------------------------- */
 
 static void put_table(uf_text *out, const uf_table *table)
 {

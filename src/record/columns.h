@@ -21,7 +21,7 @@ typedef enum uf_column_kind {
 } uf_column_kind;
 
 typedef struct uf_column {
-    const char *name;    /* with its unit: contact_area_um2 */
+    const char *name; /* with its unit: contact_area_um2 */
     uf_column_kind kind;
     size_t offset;       /* of the member in the row's struct */
     const char *meaning; /* one sentence for docs/columns.md */

@@ -11,16 +11,16 @@
 
 /* Things worth telling about a field or a cell; in a row they are words joined by ';'. */
 typedef enum uf_flag {
-    UF_FLAG_EDGE,             /* cell: cut by the image edge */
-    UF_FLAG_SATURATED,        /* saturated pixels inside */
-    UF_FLAG_TOO_DIM,          /* the detection limit lies below the contact cutoff: no contact reported */
-    UF_FLAG_TOUCHING,         /* cell: shares an outline with another */
-    UF_FLAG_UNRESOLVED,       /* cell: more than a quarter of it has no measurable gap */
-    UF_FLAG_EMPTY,            /* field: no cells */
-    UF_FLAG_SHIFT_UNSURE,     /* field: the estimated shift cannot be trusted and was not applied */
-    UF_FLAG_SHIFT_DIFFERS,    /* field: the estimate differs from the bench's value by more than 1 px */
-    UF_FLAG_DISPLAY_SCALED,   /* field: looks contrast-stretched to 8 bits; ratios mean nothing */
-    UF_FLAG_LAYERED_EFFECT,   /* field: a layered model would read the cutoff more than 3 nm elsewhere */
+    UF_FLAG_EDGE,           /* cell: cut by the image edge */
+    UF_FLAG_SATURATED,      /* saturated pixels inside */
+    UF_FLAG_TOO_DIM,        /* the detection limit lies below the contact cutoff: no contact reported */
+    UF_FLAG_TOUCHING,       /* cell: shares an outline with another */
+    UF_FLAG_UNRESOLVED,     /* cell: more than a quarter of it has no measurable gap */
+    UF_FLAG_EMPTY,          /* field: no cells */
+    UF_FLAG_SHIFT_UNSURE,   /* field: the estimated shift cannot be trusted and was not applied */
+    UF_FLAG_SHIFT_DIFFERS,  /* field: the estimate differs from the bench's value by more than 1 px */
+    UF_FLAG_DISPLAY_SCALED, /* field: looks contrast-stretched to 8 bits; ratios mean nothing */
+    UF_FLAG_LAYERED_EFFECT, /* field: a layered model would read the cutoff more than 3 nm elsewhere */
     UF_FLAG_COUNT
 } uf_flag;
 
@@ -41,8 +41,8 @@ typedef struct uf_cell {
     double edge_weight;
     int used; /* 1 when the cell counts */
     const char *used_reason;
-    double spread_area_um2, perimeter_um, circularity, caliper_max_um, caliper_min_um, elongation,
-        convex_fill, orientation_deg;
+    double spread_area_um2, perimeter_um, circularity, caliper_max_um, caliper_min_um, elongation, convex_fill,
+        orientation_deg;
     double contact_area_um2, contact_area_low_um2, contact_area_high_um2;
     double attachment_fraction, attachment_fraction_low, attachment_fraction_high;
     double contact_area_minus10_um2, contact_area_plus10_um2;
@@ -53,11 +53,10 @@ typedef struct uf_cell {
     double gap_random_nm, gap_systematic_nm, gap_limit_nm, cleft_volume_um3;
     double near_mean_adu, wide_mean_adu, ratio_mean, above_reference_fraction;
     double spot_count; /* a count, NaN when spots are not reported */
-    double spots_per_100um2, spot_area_total_um2, spot_area_median_um2, spot_length_median_um,
-        spot_alignment;
+    double spots_per_100um2, spot_area_total_um2, spot_area_median_um2, spot_length_median_um, spot_alignment;
     uf_gap_kind gap_kind;
     uf_flags flags;
-    int box_x0, box_y0, box_x1, box_y1; /* half-open bounding box, pixels; not a column */
+    int box_x0, box_y0, box_x1, box_y1;  /* half-open bounding box, pixels; not a column */
     uint32_t gap_histogram[UF_GAP_BINS]; /* resolved pixels; not a column */
 } uf_cell;
 

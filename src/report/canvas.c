@@ -30,8 +30,7 @@ uf_canvas uf_canvas_part(uf_canvas canvas, uf_box box)
     box = cut(canvas, box);
     if (box.x0 == box.x1 || box.y0 == box.y1)
         return (uf_canvas){0};
-    return (uf_canvas){uf_canvas_row(canvas, box.y0) + box.x0, box.x1 - box.x0, box.y1 - box.y0,
-                       canvas.stride};
+    return (uf_canvas){uf_canvas_row(canvas, box.y0) + box.x0, box.x1 - box.x0, box.y1 - box.y0, canvas.stride};
 }
 
 void uf_canvas_fill(uf_canvas canvas, uf_box box, uint8_t index)
@@ -90,10 +89,8 @@ void uf_canvas_diamond(uf_canvas canvas, double x, double y, double along, doubl
     const double angle = angle_deg * (acos(-1.0) / 180.0);
     const double ux = along * cos(angle), uy = -along * sin(angle); /* y runs down */
     const double vx = across * sin(angle), vy = across * cos(angle);
-    const int corner_x[4] = {(int)lround(x + ux), (int)lround(x + vx), (int)lround(x - ux),
-                             (int)lround(x - vx)};
-    const int corner_y[4] = {(int)lround(y + uy), (int)lround(y + vy), (int)lround(y - uy),
-                             (int)lround(y - vy)};
+    const int corner_x[4] = {(int)lround(x + ux), (int)lround(x + vx), (int)lround(x - ux), (int)lround(x - vx)};
+    const int corner_y[4] = {(int)lround(y + uy), (int)lround(y + vy), (int)lround(y - uy), (int)lround(y - vy)};
     for (int k = 0; k < 4; k++)
         uf_canvas_line(canvas, corner_x[k], corner_y[k], corner_x[(k + 1) % 4], corner_y[(k + 1) % 4], index);
 }

@@ -61,20 +61,17 @@ size_t uf_font_fit(uf_font font, const char *text, int width)
     return fits;
 }
 
-static void draw_glyph(uf_canvas canvas, const uf_font_face *face, const uf_glyph *glyph, int x, int y,
-                       uint8_t ink)
+static void draw_glyph(uf_canvas canvas, const uf_font_face *face, const uf_glyph *glyph, int x, int y, uint8_t ink)
 {
     for (int row = 0; row < glyph->height; row++)
         for (int column = 0; column < glyph->width; column++) {
             int level = level_at(face, glyph, column, row);
             if (level)
-                uf_canvas_put(canvas, x + glyph->left + column, y - glyph->top + row,
-                              (uint8_t)(ink + level - 1));
+                uf_canvas_put(canvas, x + glyph->left + column, y - glyph->top + row, (uint8_t)(ink + level - 1));
         }
 }
 
-int uf_font_draw_bytes(uf_canvas canvas, uf_font font, int x, int y, const char *text, size_t count,
-                       uint8_t ink)
+int uf_font_draw_bytes(uf_canvas canvas, uf_font font, int x, int y, const char *text, size_t count, uint8_t ink)
 {
     const uf_font_face *face = &uf_font_faces[font];
     size_t used;
@@ -95,8 +92,7 @@ int uf_font_draw(uf_canvas canvas, uf_font font, int x, int y, const char *text,
 /* Faint levels get no halo, or the halo would be wider where a stroke happens to fall between pixels. */
 enum { HALO_FROM_LEVEL = 2 };
 
-static void halo_glyph(uf_canvas canvas, const uf_font_face *face, const uf_glyph *glyph, int x, int y,
-                       uint8_t halo)
+static void halo_glyph(uf_canvas canvas, const uf_font_face *face, const uf_glyph *glyph, int x, int y, uint8_t halo)
 {
     for (int row = 0; row < glyph->height; row++)
         for (int column = 0; column < glyph->width; column++) {

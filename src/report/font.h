@@ -46,8 +46,7 @@ size_t uf_font_fit(uf_font font, const char *text, int width);
 int uf_font_draw(uf_canvas canvas, uf_font font, int x, int y, const char *text, uint8_t ink);
 
 /* The same for the first `count` bytes. */
-int uf_font_draw_bytes(uf_canvas canvas, uf_font font, int x, int y, const char *text, size_t count,
-                       uint8_t ink);
+int uf_font_draw_bytes(uf_canvas canvas, uf_font font, int x, int y, const char *text, size_t count, uint8_t ink);
 
 /* Puts index `halo` on the text's pixels and their eight neighbours: drawn first, it keeps text readable on
  * any ground. */

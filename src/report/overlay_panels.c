@@ -11,7 +11,7 @@
 
 #include "report/overlay_parts.h"
 
-/* ---- rows of the reduced images --------------------------------------------------------------- */
+/* ---- rows of the reduced images -------------------------------------------------------------- */
 
 /* The image rows behind row y of the panel: one and the same at 1:1 and at an odd lower border. */
 typedef struct row_pair {
@@ -109,7 +109,7 @@ static void outline_row(const overlay_scene *scene, int y, int32_t *label, uint8
     }
 }
 
-/* ---- how bright white is ------------------------------------------------------------------------ */
+/* ---- how bright white is --------------------------------------------------------------------- */
 
 /*
  * Percentile in one pass without sorting: positive floats order like their bits, so the upper 16 bits of a
@@ -148,8 +148,7 @@ uf_status overlay_measure_near(uf_work *work, overlay_scene *scene, uf_error *er
     if (status != UF_OK)
         return status;
     memset(bins, 0, BINS * sizeof *bins);
-    scene->black =
-        isfinite(scene->input->near_background_adu) ? (float)scene->input->near_background_adu : 0.0f;
+    scene->black = isfinite(scene->input->near_background_adu) ? (float)scene->input->near_background_adu : 0.0f;
     for (int y = 0; y < scene->height; y++)
         count_row(near_row(scene, y, scratch), scene->width, scene->black, bins);
     double wanted = white_share * scene->width * scene->height, seen = 0.0;
@@ -165,7 +164,7 @@ uf_status overlay_measure_near(uf_work *work, overlay_scene *scene, uf_error *er
     return UF_OK;
 }
 
-/* ---- pixels --------------------------------------------------------------------------------------- */
+/* ---- pixels ---------------------------------------------------------------------------------- */
 
 static void near_inks(const overlay_scene *scene, const float *near, const uint8_t *contact, uint8_t *out)
 {
@@ -210,8 +209,7 @@ static uf_status take_scratch(uf_work *work, int width, row_scratch *rows, uf_er
     return status;
 }
 
-static void draw_row(const overlay_scene *scene, const row_scratch *rows, uf_canvas near, uf_canvas gap,
-                     int y)
+static void draw_row(const overlay_scene *scene, const row_scratch *rows, uf_canvas near, uf_canvas gap, int y)
 {
     uint8_t *near_out = uf_canvas_row(near, y), *gap_out = uf_canvas_row(gap, y);
     outline_row(scene, y, rows->label, rows->outline);
@@ -223,7 +221,7 @@ static void draw_row(const overlay_scene *scene, const row_scratch *rows, uf_can
             near_out[x] = gap_out[x] = UF_INK_OUTLINE;
 }
 
-/* ---- marks ------------------------------------------------------------------------------------------ */
+/* ---- marks ----------------------------------------------------------------------------------- */
 
 /* Half a diagonal of the mark around a spot, one of whose axes is `axis_um` long. The rhombus around an
  * ellipse has diagonals sqrt(2) times its axes; one pixel more keeps the line off the spot. */
@@ -274,8 +272,8 @@ static int within(int value, int low, int high)
  * allow, wholly inside the panel. Away from the centroid its middle must lie on the cell, or it would name
  * another one. False where there is no such place: a number left out can be looked up, a heap of them cannot
  * be read. */
-static bool number_place(const overlay_scene *scene, uf_canvas panel, const uf_cell *cell, int width,
-                         int height, uf_box *place)
+static bool number_place(const overlay_scene *scene, uf_canvas panel, const uf_cell *cell, int width, int height,
+                         uf_box *place)
 {
     /* In half widths and whole heights. */
     static const int step[][2] = {{0, 0}, {0, -1}, {0, 1},  {-1, 0}, {1, 0}, {-1, -1},
@@ -286,8 +284,7 @@ static bool number_place(const overlay_scene *scene, uf_canvas panel, const uf_c
         int x = within(centre_x - width / 2 + step[k][0] * (width / 2 + 1), 0, panel.width - width);
         int y = within(centre_y - height / 2 + step[k][1] * height, 0, panel.height - height);
         *place = (uf_box){x, y, x + width, y + height};
-        if ((k == 0 || label_at(scene, x + width / 2, y + height / 2) == cell->cell) &&
-            !has_number(panel, *place))
+        if ((k == 0 || label_at(scene, x + width / 2, y + height / 2) == cell->cell) && !has_number(panel, *place))
             return true;
     }
     return false;

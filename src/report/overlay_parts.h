@@ -28,8 +28,8 @@ static inline double overlay_at(const overlay_scene *scene, double px)
 UF_MUST_USE uf_status overlay_measure_near(uf_work *work, overlay_scene *scene, uf_error *error);
 
 /* Draws both panels, each on a canvas of its own size, with outlines, spots and numbers. Takes scratch. */
-UF_MUST_USE uf_status overlay_draw_panels(uf_work *work, const overlay_scene *scene, uf_canvas near,
-                                          uf_canvas gap, uf_error *error);
+UF_MUST_USE uf_status overlay_draw_panels(uf_work *work, const overlay_scene *scene, uf_canvas near, uf_canvas gap,
+                                          uf_error *error);
 
 /* The far end of the gap ramp for a cutoff: a round number, at least four times as far. */
 double overlay_gap_end_nm(double cutoff_nm, bool has_cutoff);

@@ -9,7 +9,7 @@
 #include "base/text.h"
 #include "report/overlay_parts.h"
 
-/* ---- round numbers ------------------------------------------------------------------------------- */
+/* ---- round numbers --------------------------------------------------------------------------- */
 
 /* The smallest of the given mantissas (1 first, 10 last) times a power of ten that is at least `value` > 0.
  */
@@ -41,7 +41,7 @@ double overlay_gap_end_nm(double cutoff_nm, bool has_cutoff)
     return has_cutoff ? round_up(cutoffs * cutoff_nm, ramp_ends) : usual_nm;
 }
 
-/* ---- text ---------------------------------------------------------------------------------------- */
+/* ---- text ------------------------------------------------------------------------------------ */
 
 void overlay_draw_line(uf_canvas canvas, uf_font font, int x, int y, int width, const char *text)
 {
@@ -83,7 +83,7 @@ static int draw_wrapped(uf_canvas canvas, int x, int y, int width, const char *t
     return y;
 }
 
-/* ---- colour bar ------------------------------------------------------------------------------------ */
+/* ---- colour bar ------------------------------------------------------------------------------ */
 
 enum { BAR = 16, TICK = 5, AFTER_TICK = 4, LABEL_APART = 13, ARROW = 8 };
 
@@ -161,7 +161,7 @@ void overlay_draw_bar(uf_canvas canvas, const overlay_scene *scene, int x, int t
         draw_cutoff(canvas, scene, x, cutoff_row);
 }
 
-/* ---- scale bar and legend --------------------------------------------------------------------------- */
+/* ---- scale bar and legend -------------------------------------------------------------------- */
 
 /* A line of samples, each with its words, that goes on in the next line when it is full. */
 typedef struct legend {
@@ -210,9 +210,8 @@ static void outline_entry(legend *at, const overlay_scene *scene)
     bool all_used = true;
     for (int k = 0; scene->input->cells && k < scene->input->labels.count; k++)
         all_used = all_used && scene->input->cells[k].used;
-    uf_box box = legend_entry(at, SAMPLE,
-                              all_used ? "cell outline and number"
-                                       : "cell outline and number, (in brackets): not counted");
+    uf_box box = legend_entry(
+        at, SAMPLE, all_used ? "cell outline and number" : "cell outline and number, (in brackets): not counted");
     uf_canvas_fill(at->canvas, box, UF_INK_OUTSIDE);
     uf_canvas_frame(at->canvas, box, UF_INK_OUTLINE);
 }
@@ -262,8 +261,8 @@ static int draw_near_words(uf_canvas canvas, const overlay_scene *scene, int x, 
     uf_format_number(white, (double)scene->white, 3);
     (void)snprintf(
         words, sizeof words,
-        "Near image, square-root scale: black at %s ADU (background), white at %s ADU (99.7th percentile).%s",
-        black, white, scene->reduction == 2 ? " Drawn 2:1, one pixel for 2 × 2 of the image." : "");
+        "Near image, square-root scale: black at %s ADU (background), white at %s ADU (99.7th percentile).%s", black,
+        white, scene->reduction == 2 ? " Drawn 2:1, one pixel for 2 × 2 of the image." : "");
     return draw_wrapped(canvas, x, y, width, words);
 }
 

@@ -44,8 +44,8 @@ static uf_status write_text(const demo_job *job, const char *name, const uf_text
 typedef uf_status encoder(uf_text *out, uf_plane plane, double pixel_size_um, const char *description,
                           uf_error *error);
 
-static uf_status write_plane(const demo_job *job, const char *field, const char *what, encoder *encode, uf_plane plane,
-                             uf_error *error)
+static uf_status write_plane(const demo_job *job, const char *field, const char *what, encoder *encode,
+                             uf_plane plane, uf_error *error)
 {
     uf_text bytes = {0}, name = {0};
     uf_text_printf(&name, "%s%s.tif", field, what);
@@ -145,7 +145,7 @@ static uf_status make_field(demo_job *job, int k, uf_error *error)
     return status;
 }
 
-/* ---- files beside the images --------------------------------------------------------------------------------- */
+/* ---- files beside the images ----------------------------------------------------------------- */
 
 static void put_pair(uf_text *out, const char *key, double value)
 {
@@ -247,7 +247,8 @@ uf_status uf_demo_write(const char *dir, int threads, uf_demo_summary *summary, 
     if (status == UF_OK)
         status = write_beside(&job, error);
     clock_gettime(CLOCK_MONOTONIC, &to);
-    *summary = (uf_demo_summary){FIELDS, (double)(to.tv_sec - from.tv_sec) + (double)(to.tv_nsec - from.tv_nsec) * 1e-9};
+    *summary =
+        (uf_demo_summary){FIELDS, (double)(to.tv_sec - from.tv_sec) + (double)(to.tv_nsec - from.tv_nsec) * 1e-9};
     uf_text_free(&job.truth);
     uf_text_free(&job.spots);
     uf_output_close(&job.output);

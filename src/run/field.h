@@ -12,7 +12,7 @@ typedef struct uf_field_result {
     uf_cell_map cells;
     uf_gap_map gaps;
     uf_mask contact;
-    uf_cell *rows;  /* cells.labels.count of them */
+    uf_cell *rows; /* cells.labels.count of them */
     uf_spot *spots;
     uf_field field; /* field.spots is their number */
 } uf_field_result;

@@ -34,7 +34,7 @@ typedef struct measure_job {
     char overlay_name[256];
 } measure_job;
 
-/* ---- reading ------------------------------------------------------------------------------------------------ */
+/* ---- reading --------------------------------------------------------------------------------- */
 
 static uf_status read_image(measure_job *job, const char *role, const char *path, uf_plane *plane,
                             uf_image_info *info, uf_error *error)
@@ -93,8 +93,9 @@ static uf_status read_channel(measure_job *job, uf_channel_name which, double *p
     if (status != UF_OK)
         return status;
     if (info.pages > 1)
-        return uf_fail(error, UF_INPUT, "%s: has %d pages, expected one; save the page to measure as a file of its own",
-                       path, info.pages);
+        return uf_fail(error, UF_INPUT,
+                       "%s: has %d pages, expected one; save the page to measure as a file of its own", path,
+                       info.pages);
     raw.full_scale_adu = full_scale(raw.camera, &info);
     *pixel_um = info.pixel_size_x_um;
     status = uf_mask_take(&job->work, raw.counts.width, raw.counts.height, &raw.saturated, error);
@@ -120,23 +121,23 @@ static uf_status read_inputs(measure_job *job, uf_error *error)
         return status;
     uf_plane near = job->result.near.image, wide = job->result.wide.image;
     if (near.width != wide.width || near.height != wide.height)
-        return uf_fail(error, UF_INPUT,
-                       "%s is %d x %d px, but %s is %d x %d; the two images of a field must have the same size",
-                       job->request->near_path, near.width, near.height, job->request->wide_path, wide.width,
-                       wide.height);
+        return uf_fail(
+            error, UF_INPUT, "%s is %d x %d px, but %s is %d x %d; the two images of a field must have the same size",
+            job->request->near_path, near.width, near.height, job->request->wide_path, wide.width, wide.height);
     return UF_OK;
 }
 
-/* ---- warnings --------------------------------------------------------------------------------------------------- */
+/* ---- warnings -------------------------------------------------------------------------------- */
 
 static void warn_optics(measure_job *job)
 {
     const uf_plan *plan = &job->plan;
     if (uf_bench_leaks_into_cell(&plan->bench))
-        uf_text_printf(&job->warnings,
-                       "n sin(angle) %.4f does not exceed cell_n + 2 sd (%.3f): light may pass into the cell where it "
-                       "touches; a steeper angle avoids it\n",
-                       plan->bench.na_effective, plan->bench.cell_n + 2 * plan->bench.cell_n_sd);
+        uf_text_printf(
+            &job->warnings,
+            "n sin(angle) %.4f does not exceed cell_n + 2 sd (%.3f): light may pass into the cell where it "
+            "touches; a steeper angle avoids it\n",
+            plan->bench.na_effective, plan->bench.cell_n + 2 * plan->bench.cell_n_sd);
     if (fabs(plan->layered_effect_nm) > 3)
         uf_text_printf(&job->warnings,
                        "a layered model reads the %.4g nm cutoff %+.1f nm differently from the exponential in force; "
@@ -148,9 +149,10 @@ static void warn_settings(measure_job *job)
 {
     for (int k = 0; k < UF_CHANNELS; k++) {
         if (isnan(job->settings->camera[k].gain_e_per_adu))
-            uf_text_printf(&job->warnings,
-                           "no gain_e_per_adu in [%s.camera]: noise and detection limit are estimated from the image\n",
-                           channel_names[k]);
+            uf_text_printf(
+                &job->warnings,
+                "no gain_e_per_adu in [%s.camera]: noise and detection limit are estimated from the image\n",
+                channel_names[k]);
         if (!job->settings->flat[k].file)
             uf_text_printf(&job->warnings, "no [%s.flat]: uneven light goes into the gaps\n", channel_names[k]);
     }
@@ -160,19 +162,21 @@ static void warn_field(measure_job *job)
 {
     const uf_field *field = &job->result.field;
     if (field->flags >> UF_FLAG_DISPLAY_SCALED & 1u)
-        uf_text_add(&job->warnings, "the images look contrast-stretched to 8 bits: their ratios mean nothing; save the "
-                                    "camera's own counts\n");
+        uf_text_add(&job->warnings,
+                    "the images look contrast-stretched to 8 bits: their ratios mean nothing; save the "
+                    "camera's own counts\n");
     if (field->flags >> UF_FLAG_SHIFT_UNSURE & 1u)
         uf_text_add(&job->warnings, "the shift between near and wide could not be found with confidence; the bench's "
                                     "value was used\n");
     if (field->flags >> UF_FLAG_SHIFT_DIFFERS & 1u)
-        uf_text_add(&job->warnings, "this field's own shift differs from the bench's by more than a pixel; check [shift] "
-                                    "or set estimate = yes\n");
+        uf_text_add(&job->warnings,
+                    "this field's own shift differs from the bench's by more than a pixel; check [shift] "
+                    "or set estimate = yes\n");
     if (field->flags >> UF_FLAG_EMPTY & 1u)
         uf_text_add(&job->warnings, "no cells were found\n");
 }
 
-/* ---- writing ------------------------------------------------------------------------------------------------------ */
+/* ---- writing --------------------------------------------------------------------------------- */
 
 static uf_status write_text(measure_job *job, const char *folder, const char *name, const uf_text *text,
                             uf_error *error)
@@ -312,8 +316,13 @@ static uf_status write_overlay(measure_job *job, uf_error *error)
 static uf_status write_story(measure_job *job, double seconds, uf_error *error)
 {
     uf_text json = {0};
-    uf_run_story story = {job->settings, &job->plan, job->inputs, job->input_count,
-                          job->warnings.bytes ? job->warnings.bytes : "", job->request->command, seconds};
+    uf_run_story story = {job->settings,
+                          &job->plan,
+                          job->inputs,
+                          job->input_count,
+                          job->warnings.bytes ? job->warnings.bytes : "",
+                          job->request->command,
+                          seconds};
     uf_status status = uf_run_json(&json, &story, error);
     if (status == UF_OK)
         status = write_text(job, NULL, "run.json", &json, error);
@@ -335,7 +344,7 @@ static uf_status name_field(measure_job *job, uf_error *error)
     return uf_text_check(&job->name, "file names", error);
 }
 
-/* ---- summary -------------------------------------------------------------------------------------------------------- */
+/* ---- summary --------------------------------------------------------------------------------- */
 
 static double median_of(const measure_job *job, size_t member, double *scratch)
 {
@@ -370,7 +379,7 @@ static uf_status summarise(measure_job *job, uf_measure_summary *summary, uf_err
     return UF_OK;
 }
 
-/* ---- all of it ---------------------------------------------------------------------------------------------------------- */
+/* ---- all of it ------------------------------------------------------------------------------- */
 
 static double now_seconds(void)
 {

@@ -40,22 +40,24 @@ static void find_numbers(const uf_settings *s, optics_numbers *o)
     }
 }
 
-/* ---- in words ------------------------------------------------------------------------------------------------- */
+/* ---- in words -------------------------------------------------------------------------------- */
 
 static void put_verdict(uf_text *out, const optics_numbers *o)
 {
     const uf_bench *b = &o->bench;
     double needed = b->cell_n + 2 * b->cell_n_sd;
     if (b->na_effective <= b->cell_n)
-        uf_text_printf(out,
-                       "Where a cell touches, light leaves the surface and runs into the cell: n sin(angle) %.4f is not "
-                       "above cell_n %.4f. Gaps would be meaningless there. Go beyond %.2f deg.\n",
-                       b->na_effective, b->cell_n, uf_angle_from_na(needed, b->substrate_n));
+        uf_text_printf(
+            out,
+            "Where a cell touches, light leaves the surface and runs into the cell: n sin(angle) %.4f is not "
+            "above cell_n %.4f. Gaps would be meaningless there. Go beyond %.2f deg.\n",
+            b->na_effective, b->cell_n, uf_angle_from_na(needed, b->substrate_n));
     else if (uf_bench_leaks_into_cell(b))
-        uf_text_printf(out,
-                       "Barely: n sin(angle) %.4f exceeds cell_n %.4f by less than 2 sd (%.3f); parts of the cell may "
-                       "let light through. Beyond %.2f deg they would not.\n",
-                       b->na_effective, b->cell_n, b->cell_n_sd, uf_angle_from_na(needed, b->substrate_n));
+        uf_text_printf(
+            out,
+            "Barely: n sin(angle) %.4f exceeds cell_n %.4f by less than 2 sd (%.3f); parts of the cell may "
+            "let light through. Beyond %.2f deg they would not.\n",
+            b->na_effective, b->cell_n, b->cell_n_sd, uf_angle_from_na(needed, b->substrate_n));
     else
         uf_text_add(out, "Totally reflected against the medium and against the cell.\n");
     if (fabs(o->layered_effect_nm) > 3)
@@ -76,8 +78,9 @@ static void put_words(uf_text *out, const optics_numbers *o)
                    o->angle_deg - o->critical_cell_deg);
     uf_text_printf(out, "1/e depth of the intensity          %.1f nm (1 sd %.1f nm)\n", o->depth_nm, o->depth_sd_nm);
     if (!isnan(o->depth_with_cell_n_nm))
-        uf_text_printf(out, "  (with the cell's index it would come out as %.1f nm, a frequent slip: medium fills the gap)\n",
-                       o->depth_with_cell_n_nm);
+        uf_text_printf(
+            out, "  (with the cell's index it would come out as %.1f nm, a frequent slip: medium fills the gap)\n",
+            o->depth_with_cell_n_nm);
     uf_text_printf(out, "intensity at the interface          s %.3f, p %.3f of the incident\n\n", o->interface_s,
                    o->interface_p);
     uf_text_add(out, "relative excitation at a gap of     ");
@@ -91,11 +94,12 @@ static void put_words(uf_text *out, const optics_numbers *o)
         uf_text_printf(out, "%7.3f", o->layered[k]);
     uf_text_add(out, "\n\n");
     put_verdict(out, o);
-    uf_text_add(out, "Laser caution: near the critical angle the beam can leave the objective towards a face; follow the "
-                     "local laser safety officer (classes by IEC 60825-1). These numbers do not make a beam safe.\n");
+    uf_text_add(out,
+                "Laser caution: near the critical angle the beam can leave the objective towards a face; follow the "
+                "local laser safety officer (classes by IEC 60825-1). These numbers do not make a beam safe.\n");
 }
 
-/* ---- as JSON -------------------------------------------------------------------------------------------------- */
+/* ---- as JSON --------------------------------------------------------------------------------- */
 
 static json_t *number(double value)
 {
@@ -140,11 +144,12 @@ static uf_status put_json(uf_text *out, const optics_numbers *o, uf_error *error
     return UF_OK;
 }
 
-/* ---- all of it -------------------------------------------------------------------------------------------------- */
+/* ---- all of it ------------------------------------------------------------------------------- */
 
 static uf_status need(double value, const char *what, uf_error *error)
 {
-    return isnan(value) ? uf_fail(error, UF_INPUT, "optics needs %s, from -i INSTRUMENT or as an option", what) : UF_OK;
+    return isnan(value) ? uf_fail(error, UF_INPUT, "optics needs %s, from -i INSTRUMENT or as an option", what)
+                        : UF_OK;
 }
 
 uf_status uf_optics_report(const uf_settings *s, int as_json, uf_text *out, uf_error *error)

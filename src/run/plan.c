@@ -37,8 +37,8 @@ static void find_na(const uf_settings *s, uf_bench *b)
 
 uf_status uf_bench_make(const uf_settings *s, uf_bench *bench, uf_error *error)
 {
-    static const double p_fractions[] = {[UF_POLARIZATION_S] = 0, [UF_POLARIZATION_P] = 1,
-                                         [UF_POLARIZATION_MIXED] = 0.5};
+    static const double p_fractions[] = {
+        [UF_POLARIZATION_S] = 0, [UF_POLARIZATION_P] = 1, [UF_POLARIZATION_MIXED] = 0.5};
     *bench = (uf_bench){.wavelength_nm = s->light.wavelength_nm,
                         .substrate_n = s->interface.substrate_n,
                         .medium_n = s->interface.medium_n,

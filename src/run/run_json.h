@@ -19,9 +19,9 @@ typedef struct uf_run_story {
     const uf_plan *plan;
     const uf_run_input *inputs;
     int input_count;
-    const char *warnings;  /* one a line */
-    const char *command;   /* may be NULL; goes into the part that may vary */
-    double seconds;        /* the same */
+    const char *warnings; /* one a line */
+    const char *command;  /* may be NULL; goes into the part that may vary */
+    double seconds;       /* the same */
 } uf_run_story;
 
 /* Appends run.json. What may differ between runs stands under "varies_between_runs" only. UF_MEMORY. */

@@ -54,8 +54,7 @@ static int shared_pixels(const layout *l, int left, int top, int32_t partner)
 
 static bool within_image(const layout *l, int left, int top)
 {
-    return left + l->stamp.box.x0 >= l->clearance &&
-           left + l->stamp.box.x1 <= l->labels.width - l->clearance &&
+    return left + l->stamp.box.x0 >= l->clearance && left + l->stamp.box.x1 <= l->labels.width - l->clearance &&
            top + l->stamp.box.y0 >= l->clearance && top + l->stamp.box.y1 <= l->labels.height - l->clearance;
 }
 
@@ -78,8 +77,7 @@ static bool find_free_place(layout *l, int *left, int *top)
  * of a random edge. */
 static bool find_border_place(layout *l, int *left, int *top)
 {
-    int middle_x = (l->stamp.box.x0 + l->stamp.box.x1) / 2,
-        middle_y = (l->stamp.box.y0 + l->stamp.box.y1) / 2;
+    int middle_x = (l->stamp.box.x0 + l->stamp.box.x1) / 2, middle_y = (l->stamp.box.y0 + l->stamp.box.y1) / 2;
     int reach = (l->stamp.box.x1 - l->stamp.box.x0 + l->stamp.box.y1 - l->stamp.box.y0) / 8;
     for (int k = 0; k < PLACES; k++) {
         int side = uf_random_whole(&l->random, 0, 3);
@@ -238,8 +236,7 @@ static void clear_labels(uf_labels labels)
         memset(uf_labels_row(labels, y), 0, (size_t)labels.width * sizeof(int32_t));
 }
 
-uf_status uf_scene_lay_cells(uf_work *work, const uf_scene_settings *settings, uf_labels *labels,
-                             uf_error *error)
+uf_status uf_scene_lay_cells(uf_work *work, const uf_scene_settings *settings, uf_labels *labels, uf_error *error)
 {
     uf_arena_mark mark = uf_arena_now(&work->arena);
     layout l = {.settings = settings, .labels = *labels};

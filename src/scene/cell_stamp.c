@@ -20,8 +20,7 @@ uf_status uf_stamp_take(uf_work *work, double radius_max_px, uf_cell_stamp *stam
     *stamp = (uf_cell_stamp){.area = 0};
     uf_status status = uf_mask_take(work, side, side, &stamp->mask, error);
     if (!status)
-        status =
-            uf_take(work, (size_t)side * (size_t)side, sizeof *stamp->stack, "a cell", &stamp->stack, error);
+        status = uf_take(work, (size_t)side * (size_t)side, sizeof *stamp->stack, "a cell", &stamp->stack, error);
     return status;
 }
 

@@ -15,8 +15,7 @@ typedef struct uf_cell_stamp {
 } uf_cell_stamp;
 
 /* Room for cells up to an equivalent radius. UF_MEMORY. */
-UF_MUST_USE uf_status uf_stamp_take(uf_work *work, double radius_max_px, uf_cell_stamp *stamp,
-                                    uf_error *error);
+UF_MUST_USE uf_status uf_stamp_take(uf_work *work, double radius_max_px, uf_cell_stamp *stamp, uf_error *error);
 
 /* Draws a random cell of the area of a disc of `radius_px`, around the middle of the grid. */
 void uf_stamp_draw(uf_cell_stamp *stamp, uf_random *random, double radius_px);

@@ -4,7 +4,7 @@
 #include <math.h>
 #include <string.h>
 
-static const double root_half = 0.70710678118654752440;       /* 1 / sqrt(2) */
+static const double root_half = 0.70710678118654752440;        /* 1 / sqrt(2) */
 static const double root_inverse_2pi = 0.39894228040143267794; /* 1 / sqrt(2 pi) */
 
 /* Taps for displacements first .. first + count - 1. */

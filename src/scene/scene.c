@@ -17,15 +17,36 @@ static const double dye_unevenness = 0.08, dye_spread = 0.25;
 
 uf_scene_settings uf_scene_defaults(void)
 {
-    return (uf_scene_settings){.seed = 1, .width = 512, .height = 512, .pixel_size_um = 0.11, .cells = 9,
-                               .radius_min_um = 5, .radius_max_um = 8, .touching = 0.2,
-                               .wavelength_nm = 488, .substrate_n = 1.518, .medium_n = 1.337, .angle_deg = 70,
-                               .base_gap_nm = 95, .gap_sd_nm = 20, .patch_gap_nm = 32, .patch_fraction = 0.35,
-                               .spot_gap_nm = 12, .spots_min = 8, .spots_max = 24,
-                               .near_peak_adu = 9000, .wide_peak_adu = 6000,
-                               .near_background_adu = 250, .wide_background_adu = 500, .offset_adu = 100,
-                               .gain_e_per_adu = 2.17, .read_noise_e = 1.6, .scattered_depth_nm = 1200,
-                               .psf_sigma_um = 0.115, .near_unevenness = 0.12, .wide_unevenness = 0.18};
+    return (uf_scene_settings){.seed = 1,
+                               .width = 512,
+                               .height = 512,
+                               .pixel_size_um = 0.11,
+                               .cells = 9,
+                               .radius_min_um = 5,
+                               .radius_max_um = 8,
+                               .touching = 0.2,
+                               .wavelength_nm = 488,
+                               .substrate_n = 1.518,
+                               .medium_n = 1.337,
+                               .angle_deg = 70,
+                               .base_gap_nm = 95,
+                               .gap_sd_nm = 20,
+                               .patch_gap_nm = 32,
+                               .patch_fraction = 0.35,
+                               .spot_gap_nm = 12,
+                               .spots_min = 8,
+                               .spots_max = 24,
+                               .near_peak_adu = 9000,
+                               .wide_peak_adu = 6000,
+                               .near_background_adu = 250,
+                               .wide_background_adu = 500,
+                               .offset_adu = 100,
+                               .gain_e_per_adu = 2.17,
+                               .read_noise_e = 1.6,
+                               .scattered_depth_nm = 1200,
+                               .psf_sigma_um = 0.115,
+                               .near_unevenness = 0.12,
+                               .wide_unevenness = 0.18};
 }
 
 /* 1/e depth of the evanescent intensity: wavelength over 4 pi times the root of (n sin angle)^2 - n_medium^2. */
@@ -36,7 +57,7 @@ static double evanescent_depth_nm(const uf_scene_settings *s)
     return s->wavelength_nm / (4 * 3.14159265358979323846 * sqrt(along * along - s->medium_n * s->medium_n));
 }
 
-/* ---- dye ------------------------------------------------------------------------------------------------- */
+/* ---- dye ------------------------------------------------------------------------------------- */
 
 static uf_status make_dye(uf_work *work, const uf_scene_settings *s, uf_labels labels, uf_plane dye, uf_error *error)
 {
@@ -59,7 +80,7 @@ static uf_status make_dye(uf_work *work, const uf_scene_settings *s, uf_labels l
     return UF_OK;
 }
 
-/* ---- light ------------------------------------------------------------------------------------------------- */
+/* ---- light ----------------------------------------------------------------------------------- */
 
 static void near_light(const uf_scene_settings *s, double depth_nm, uf_plane dye, uf_plane gap_nm, uf_plane out)
 {
@@ -146,7 +167,7 @@ static uf_status make_images(uf_work *work, const uf_scene_settings *s, uf_scene
     return UF_OK;
 }
 
-/* ---- all of it ------------------------------------------------------------------------------------------------ */
+/* ---- all of it ------------------------------------------------------------------------------- */
 
 uf_status uf_scene_make(uf_work *work, const uf_scene_settings *s, uf_scene *scene, uf_error *error)
 {

@@ -14,23 +14,23 @@ typedef struct uf_scene_settings {
     uint64_t seed;
     int width, height;
     double pixel_size_um;
-    int cells;                              /* wanted; fewer when they do not fit */
-    double radius_min_um, radius_max_um;    /* of a cell's equivalent disc */
-    double touching;                        /* chance that a cell is put against another */
-    double border;                          /* chance that a cell is cut by the image's edge */
+    int cells;                           /* wanted; fewer when they do not fit */
+    double radius_min_um, radius_max_um; /* of a cell's equivalent disc */
+    double touching;                     /* chance that a cell is put against another */
+    double border;                       /* chance that a cell is cut by the image's edge */
     double wavelength_nm, substrate_n, medium_n, angle_deg;
-    double base_gap_nm, gap_sd_nm;          /* of the membrane away from contacts */
-    double patch_gap_nm, patch_fraction;    /* broad contact patches */
-    double spot_gap_nm;                     /* focal spots */
-    int spots_min, spots_max;               /* per cell */
-    double lifted;                          /* share of cells that hardly hold on */
-    double near_peak_adu, wide_peak_adu;    /* signal at gap 0; of a full membrane */
+    double base_gap_nm, gap_sd_nm;       /* of the membrane away from contacts */
+    double patch_gap_nm, patch_fraction; /* broad contact patches */
+    double spot_gap_nm;                  /* focal spots */
+    int spots_min, spots_max;            /* per cell */
+    double lifted;                       /* share of cells that hardly hold on */
+    double near_peak_adu, wide_peak_adu; /* signal at gap 0; of a full membrane */
     double near_background_adu, wide_background_adu, offset_adu;
     double gain_e_per_adu, read_noise_e;
     double scattered_fraction, scattered_depth_nm; /* stray light in the excitation, share at gap 0 */
     double psf_sigma_um;
-    double haze;                            /* share of widely blurred light added to the wide image */
-    double shift_dx_px, shift_dy_px;        /* of the wide image relative to the near image */
+    double haze;                             /* share of widely blurred light added to the wide image */
+    double shift_dx_px, shift_dy_px;         /* of the wide image relative to the near image */
     double near_unevenness, wide_unevenness; /* fall of illumination to the corner, relative */
 } uf_scene_settings;
 
@@ -42,8 +42,8 @@ typedef struct uf_scene {
     int spots;
     float *spot_x_px, *spot_y_px;
     int32_t *spot_cell;
-    double depth_nm;               /* of the evanescent intensity */
-    double reference_ratio;        /* near / wide at gap 0 after flat fields of mean 1 */
+    double depth_nm;        /* of the evanescent intensity */
+    double reference_ratio; /* near / wide at gap 0 after flat fields of mean 1 */
 } uf_scene;
 
 /* A reasonable bench and a dozen spread cells at 512 x 512. */

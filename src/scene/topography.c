@@ -30,7 +30,7 @@ static float sigmoid(float x)
     return 1.0f / (1.0f + expf(-x));
 }
 
-/* ---- patches --------------------------------------------------------------------------------------------- */
+/* ---- patches --------------------------------------------------------------------------------- */
 
 static int ascending(const void *a, const void *b)
 {
@@ -64,8 +64,8 @@ static uf_status make_patches(topography *t, uf_error *error)
     uf_random_start(&random, t->settings->seed, UF_STREAM_PATCHES);
     uf_status status = uf_lattice_noise(t->work, &random, 2.6 / px, t->patch, error);
     if (status == UF_OK)
-        status = uf_take(t->work, (size_t)labels.width * (size_t)labels.height, sizeof *values, "patches", &values,
-                         error);
+        status =
+            uf_take(t->work, (size_t)labels.width * (size_t)labels.height, sizeof *values, "patches", &values, error);
     if (status != UF_OK)
         return status;
     for (int y = 0; y < labels.height; y++)
@@ -79,7 +79,7 @@ static uf_status make_patches(topography *t, uf_error *error)
     return UF_OK;
 }
 
-/* ---- spots ------------------------------------------------------------------------------------------------ */
+/* ---- spots ----------------------------------------------------------------------------------- */
 
 enum { MOST_SPOTS = 1 << 16, TRIES = 60 };
 
@@ -139,7 +139,8 @@ static int may_lie_at(const topography *t, int cell, double x, double y)
 static void add_spot(topography *t, uf_random *random, const cell_place *place, int cell, double x, double y)
 {
     double px = t->settings->pixel_size_um;
-    double half_length = uf_random_between(random, 0.45, 1.15) / px, half_width = uf_random_between(random, 0.18, 0.29) / px;
+    double half_length = uf_random_between(random, 0.45, 1.15) / px,
+           half_width = uf_random_between(random, 0.18, 0.29) / px;
     double angle = atan2(y - place->y, x - place->x) + 0.3 * uf_random_normal(random);
     uf_scene *scene = t->scene;
     paint_spot(t->spot, x, y, half_length, half_width, angle);
@@ -154,7 +155,8 @@ static void make_cell_spots(topography *t, uf_random *random, const cell_place *
     int wanted = uf_random_whole(random, t->settings->spots_min, t->settings->spots_max);
     uf_box box = place->box;
     for (int tries = 0; wanted > 0 && tries < TRIES * t->settings->spots_max; tries++) {
-        double x = uf_random_between(random, box.x0, box.x1 - 1e-6), y = uf_random_between(random, box.y0, box.y1 - 1e-6);
+        double x = uf_random_between(random, box.x0, box.x1 - 1e-6),
+               y = uf_random_between(random, box.y0, box.y1 - 1e-6);
         if (t->scene->spots >= MOST_SPOTS || !may_lie_at(t, cell, x, y))
             continue;
         add_spot(t, random, place, cell, x, y);
@@ -184,7 +186,7 @@ static uf_status make_spots(topography *t, uf_error *error)
     return UF_OK;
 }
 
-/* ---- the gap ------------------------------------------------------------------------------------------------- */
+/* ---- the gap --------------------------------------------------------------------------------- */
 
 static void choose_lifted(topography *t)
 {

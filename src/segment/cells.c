@@ -10,10 +10,10 @@
 #include "segment/part.h"
 #include "segment/segment.h"
 
-static const float hole_share = 0.3f;  /* of the way from the outside's level to the plateau */
-static const double speck_um2 = 0.5;   /* holes up to this are filled anyway */
+static const float hole_share = 0.3f; /* of the way from the outside's level to the plateau */
+static const double speck_um2 = 0.5;  /* holes up to this are filled anyway */
 
-/* ---- cut at the middle of the two levels -------------------------------------------------------------- */
+/* ---- cut at the middle of the two levels ----------------------------------------------------- */
 
 typedef struct cutting {
     const uf_kernels *kernels;
@@ -68,7 +68,7 @@ static uf_status cut_image(uf_work *work, uf_plane smooth, const uf_cell_map *ma
     return status;
 }
 
-/* ---- all of it --------------------------------------------------------------------------------------------- */
+/* ---- all of it ------------------------------------------------------------------------------- */
 
 /* The neck of a pair of touching cells, relative to the smaller one's half width, at which they are still
  * called one: the square root spreads the useful range over the setting's 0 .. 1. */
@@ -88,8 +88,8 @@ static uf_part_settings part_settings(const uf_settings *settings, double pixel_
 
 /* A hole is filled where the image does not fall near to the outside's level: a dim place in a cell, not the
  * gap that cells leave between them, which would make their necks wide. */
-static uf_status fill_dim_places(uf_work *work, uf_plane smooth, const uf_cell_map *map, double max_pixels, double um2,
-                                 uf_mask mask, uf_error *error)
+static uf_status fill_dim_places(uf_work *work, uf_plane smooth, const uf_cell_map *map, double max_pixels,
+                                 double um2, uf_mask mask, uf_error *error)
 {
     uf_mask above_outside;
     uf_arena_mark mark = uf_arena_now(&work->arena);
@@ -103,8 +103,8 @@ static uf_status fill_dim_places(uf_work *work, uf_plane smooth, const uf_cell_m
 }
 
 /* Labels of cells, and the distance to the outside of all of them. */
-static uf_status find_labels(uf_work *work, const uf_channel *wide, const uf_settings *settings,
-                             double pixel_size_um, uf_cell_map *map, uf_error *error)
+static uf_status find_labels(uf_work *work, const uf_channel *wide, const uf_settings *settings, double pixel_size_um,
+                             uf_cell_map *map, uf_error *error)
 {
     uf_part_settings part = part_settings(settings, pixel_size_um);
     int width = wide->image.width, height = wide->image.height;

@@ -8,12 +8,12 @@
 /* One grid to flood: labels above 0 are cores, -1 waits, 0 is land. */
 typedef struct uf_flood_grid {
     uf_labels labels;
-    uf_plane distance_px;   /* to the outside */
-    uf_plane image_adu;     /* smoothed */
+    uf_plane distance_px;            /* to the outside */
+    uf_plane image_adu;              /* smoothed */
     float background_adu, least_adu; /* signals are taken to be at least least_adu */
-    double pixel_um;        /* of this grid */
-    float usual;            /* relief of the dye's own unevenness, 1/um: what does not exceed it several times is none */
-    float deepest_px;       /* greatest distance of all */
+    double pixel_um;                 /* of this grid */
+    float usual;      /* relief of the dye's own unevenness, 1/um: what does not exceed it several times is none */
+    float deepest_px; /* greatest distance of all */
 } uf_flood_grid;
 
 /* Relative gradient of the image at a pixel, 1/um, by central differences. */

@@ -21,23 +21,23 @@
 static const double grid_um = 0.4;
 static const double band_from_um = 0.8, band_to_um = 3.0;
 static const double reaches_um[] = {6.0, 3.0, 1.5}; /* widest first: the narrower one overrules where it reaches */
-static const double rough_share = 0.3; /* of the local maximum */
+static const double rough_share = 0.3;              /* of the local maximum */
 static const double local_um = 3.0;
 enum { ROUNDS = 3 };
 
 typedef struct levels {
     uf_work *work;
-    uf_plane image, level; /* coarse image; cut between inside and outside */
-    uf_labels side;        /* 1 inside, 0 outside */
-    uf_plane distance;     /* to the other side, coarse pixels */
-    double background, floor; /* nothing below `floor` is a cell */
-    double grid_px_um;     /* size of a coarse pixel */
+    uf_plane image, level;                               /* coarse image; cut between inside and outside */
+    uf_labels side;                                      /* 1 inside, 0 outside */
+    uf_plane distance;                                   /* to the other side, coarse pixels */
+    double background, floor;                            /* nothing below `floor` is a cell */
+    double grid_px_um;                                   /* size of a coarse pixel */
     uf_plane value, weight, spread_value, spread_weight; /* scratch; the last two on a coarser grid still */
     uf_expand_column *columns;
     float *row; /* two rows */
 } levels;
 
-/* ---- rough foreground ------------------------------------------------------------------------------ */
+/* ---- rough foreground ------------------------------------------------------------------------ */
 
 /* Running maximum of `n` values over +- reach, one row or column at a time. */
 static void running_maximum(const float *in, float *out, int n, int reach)
@@ -84,7 +84,7 @@ static uf_status rough_level(levels *l, uf_error *error)
     return status;
 }
 
-/* ---- one round ---------------------------------------------------------------------------------------- */
+/* ---- one round ------------------------------------------------------------------------------- */
 
 static void cut(levels *l)
 {
@@ -198,13 +198,14 @@ static uf_status one_round(levels *l, uf_cell_map *map, uf_error *error)
     return status;
 }
 
-/* ---- all of it -------------------------------------------------------------------------------------------- */
+/* ---- all of it ------------------------------------------------------------------------------- */
 
 /* Below this nothing is a cell: 6 sigma of a coarse pixel's noise, and a twentieth of the field's bright end,
  * below which stray reflections and haze live. */
 static void find_floor(levels *l, const uf_channel *wide, int factor)
 {
-    size_t count = (size_t)l->image.width * (size_t)l->image.height, bright_at = (size_t)(0.995 * (double)(count - 1));
+    size_t count = (size_t)l->image.width * (size_t)l->image.height,
+           bright_at = (size_t)(0.995 * (double)(count - 1));
     memcpy(l->value.data, l->image.data, count * sizeof *l->value.data);
     double bright = (double)uf_select(l->value.data, count, bright_at) - l->background;
     double noise = 6.0 * wide->noise_adu / factor + 3.0 * wide->background_sd_adu;
@@ -213,8 +214,8 @@ static void find_floor(levels *l, const uf_channel *wide, int factor)
 
 static uf_status take_planes(levels *l, int width, int height, uf_error *error)
 {
-    uf_plane *planes[] = {&l->image, &l->level, &l->distance, &l->value, &l->weight, &l->spread_value,
-                          &l->spread_weight};
+    uf_plane *planes[] = {&l->image,  &l->level,        &l->distance,     &l->value,
+                          &l->weight, &l->spread_value, &l->spread_weight};
     uf_status status = uf_labels_take(l->work, width, height, &l->side, error);
     if (status == UF_OK)
         status = uf_take(l->work, (size_t)width, sizeof *l->columns, "segmentation", &l->columns, error);

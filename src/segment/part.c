@@ -28,7 +28,7 @@ typedef struct part_job {
     int *piece_parts; /* how many parts each piece has */
 } part_job;
 
-/* ---- parts -------------------------------------------------------------------------------------------------- */
+/* ---- parts ----------------------------------------------------------------------------------- */
 
 /* The pixel that stands for a coarse point. */
 static int fine_of(int i, int step, int size)
@@ -46,7 +46,8 @@ static int piece_at(const part_job *job, int x, int y)
 static uf_status make_coarse(part_job *job, uf_error *error)
 {
     uf_flood_grid *grid = &job->coarse;
-    int step = job->step, width = (job->labels.width + step - 1) / step, height = (job->labels.height + step - 1) / step;
+    int step = job->step, width = (job->labels.width + step - 1) / step,
+        height = (job->labels.height + step - 1) / step;
     uf_status status = uf_labels_take(job->work, width, height, &grid->labels, error);
     if (status == UF_OK)
         status = uf_plane_take(job->work, width, height, &grid->distance_px, error);
@@ -147,7 +148,7 @@ static void keep_cores(part_job *job)
     }
 }
 
-/* ---- what lies between neighbours ------------------------------------------------------------------------------ */
+/* ---- what lies between neighbours ------------------------------------------------------------ */
 
 typedef struct part {
     int parent;
@@ -242,7 +243,7 @@ static void sum_parts(const part_job *job, graph *g)
         }
 }
 
-/* ---- joining --------------------------------------------------------------------------------------------------- */
+/* ---- joining --------------------------------------------------------------------------------- */
 
 static int differ_in_brightness(const part *a, const part *b, const border *between)
 {
@@ -344,7 +345,7 @@ static uf_status join_parts(part_job *job, uf_error *error)
     return UF_OK;
 }
 
-/* ---- borders in full resolution ------------------------------------------------------------------------------------ */
+/* ---- borders in full resolution -------------------------------------------------------------- */
 
 /* Whether a coarse point and all around it are of one cell. */
 static int amid_one_cell(uf_labels cells, int x, int y)
@@ -393,8 +394,7 @@ static uf_status draw_borders(part_job *job, uf_error *error)
 {
     uf_labels sure;
     uf_flood_grid fine = job->coarse;
-    uf_status status =
-        uf_labels_take(job->work, job->coarse.labels.width, job->coarse.labels.height, &sure, error);
+    uf_status status = uf_labels_take(job->work, job->coarse.labels.width, job->coarse.labels.height, &sure, error);
     if (status != UF_OK)
         return status;
     keep_sure(job, sure);
@@ -406,7 +406,7 @@ static uf_status draw_borders(part_job *job, uf_error *error)
     return uf_flood_run(job->work, &fine, error);
 }
 
-/* ---- all of it --------------------------------------------------------------------------------------------------- */
+/* ---- all of it ------------------------------------------------------------------------------- */
 
 /* What no flood reached (a piece whose only points are too thin for the coarse grid) is nobody's. */
 static void drop_waiting(uf_labels labels)
@@ -422,8 +422,13 @@ uf_status uf_part_cells(uf_work *work, const uf_channel *wide, uf_plane smooth_a
                         const uf_part_settings *settings, uf_labels *labels, uf_error *error)
 {
     int several = 0, step = (int)(coarse_um / settings->pixel_size_um + 0.5);
-    part_job job = {.work = work, .wide = wide, .smooth = smooth_adu, .distance = distance_px, .settings = settings,
-                    .labels = *labels, .step = step < 1 ? 1 : step};
+    part_job job = {.work = work,
+                    .wide = wide,
+                    .smooth = smooth_adu,
+                    .distance = distance_px,
+                    .settings = settings,
+                    .labels = *labels,
+                    .step = step < 1 ? 1 : step};
     uf_arena_mark mark = uf_arena_now(&work->arena);
     uf_status status = UF_OK;
     if (settings->neck > 0 && labels->count)

@@ -96,7 +96,7 @@ const uf_setting *uf_setting_at(size_t member)
     return NULL;
 }
 
-/* ---- setting one value -------------------------------------------------------------------- */
+/* ---- setting one value ----------------------------------------------------------------------- */
 
 static uf_status set_real(uf_settings *settings, const uf_setting *entry, const char *value, uf_error *error)
 {
@@ -196,7 +196,7 @@ static uf_status set_entry(uf_settings *settings, int k, const char *value, cons
     return UF_OK;
 }
 
-/* ---- finding an entry --------------------------------------------------------------------- */
+/* ---- finding an entry ------------------------------------------------------------------------ */
 
 static bool section_known(const char *section, uf_settings_kind kind)
 {
@@ -273,7 +273,7 @@ uf_status uf_settings_set(uf_settings *settings, const char *section, const char
     return unknown_section(section, UF_INSTRUMENT_FILE, error);
 }
 
-/* ---- INI text ----------------------------------------------------------------------------- */
+/* ---- INI text -------------------------------------------------------------------------------- */
 
 enum { LINE_LIMIT = 4096 };
 
@@ -398,7 +398,7 @@ uf_status uf_settings_parse(uf_settings *settings, const char *text, size_t leng
     return UF_OK;
 }
 
-/* ---- what measuring needs ------------------------------------------------------------------ */
+/* ---- what measuring needs -------------------------------------------------------------------- */
 
 static uf_status need(const uf_settings *settings, size_t member, uf_error *error)
 {
@@ -431,7 +431,7 @@ uf_status uf_settings_check(const uf_settings *settings, uf_error *error)
     return UF_OK;
 }
 
-/* ---- help --------------------------------------------------------------------------------- */
+/* ---- help ------------------------------------------------------------------------------------ */
 
 static void put_range(uf_text *out, const uf_setting *entry)
 {

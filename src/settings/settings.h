@@ -20,7 +20,12 @@ typedef enum uf_estimate { UF_ESTIMATE_CHECK, UF_ESTIMATE_YES, UF_ESTIMATE_NO } 
 typedef enum uf_reference_kind { UF_REFERENCE_CELL, UF_REFERENCE_FILM } uf_reference_kind;
 typedef enum uf_label { UF_LABEL_MEMBRANE, UF_LABEL_CYTOSOL, UF_LABEL_ADHESION_PROTEIN } uf_label;
 typedef enum uf_edge_cells { UF_EDGE_WEIGHT, UF_EDGE_KEEP, UF_EDGE_DROP } uf_edge_cells;
-typedef enum uf_overlay_choice { UF_OVERLAY_YES, UF_OVERLAY_FLAGGED, UF_OVERLAY_FULL, UF_OVERLAY_NO } uf_overlay_choice;
+typedef enum uf_overlay_choice {
+    UF_OVERLAY_YES,
+    UF_OVERLAY_FLAGGED,
+    UF_OVERLAY_FULL,
+    UF_OVERLAY_NO
+} uf_overlay_choice;
 typedef enum uf_yes_no { UF_YES, UF_NO } uf_yes_no;
 
 typedef struct uf_camera_settings {
@@ -76,18 +81,23 @@ struct uf_settings {
     char *origin[UF_SETTINGS_LIMIT]; /* "FILE:LINE" of entry k of the table, NULL for a default */
 };
 
-typedef enum uf_setting_kind { UF_SETTING_REAL, UF_SETTING_CHOICE, UF_SETTING_PATH, UF_SETTING_LATER } uf_setting_kind;
+typedef enum uf_setting_kind {
+    UF_SETTING_REAL,
+    UF_SETTING_CHOICE,
+    UF_SETTING_PATH,
+    UF_SETTING_LATER
+} uf_setting_kind;
 
 typedef struct uf_setting {
     uf_settings_kind file;
     const char *section, *key; /* the key carries the unit */
     uf_setting_kind kind;
-    size_t offset;             /* in struct uf_settings */
-    double least, most;        /* allowed range of a real, both included */
-    double initial;            /* default of a real (NaN: none) or of a choice (its index) */
-    const char *choices;       /* "s|p|mixed"; a word after '!' is known but not in this version */
-    const char *group;         /* of the entries with one group name, one file may give only one */
-    const char *help;          /* one sentence */
+    size_t offset;       /* in struct uf_settings */
+    double least, most;  /* allowed range of a real, both included */
+    double initial;      /* default of a real (NaN: none) or of a choice (its index) */
+    const char *choices; /* "s|p|mixed"; a word after '!' is known but not in this version */
+    const char *group;   /* of the entries with one group name, one file may give only one */
+    const char *help;    /* one sentence */
 } uf_setting;
 
 extern const uf_setting uf_setting_table[];
