@@ -22,8 +22,8 @@ typedef struct uf_raw_channel {
 /*
  * image = (counts - dark) * mean(flat) / flat. Pixels that the defect map names, and isolated ones far above
  * all eight neighbours (no point spread function is that narrow), take the median of their good neighbours.
- * counts is overwritten and becomes channel->image; saturated becomes channel->saturated. UF_INPUT for a flat with values not above 0 or without
- * contrast to them, UF_MEMORY.
+ * counts is overwritten and becomes channel->image; saturated becomes channel->saturated. UF_INPUT for a flat with
+ * values not above 0, or a map that leaves no good pixel somewhere; UF_MEMORY.
  */
 UF_MUST_USE uf_status uf_correct_channel(uf_work *work, const uf_raw_channel *raw, uf_channel *channel,
                                          uf_error *error);

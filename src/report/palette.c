@@ -7,7 +7,7 @@
  * Colours are made in OKLab: lightness L from 0 to 1, a and b across, or chroma and hue around (OKLCh). Steps
  * of L look even, which a ramp in sRGB would not. Source: B. Ottosson, "A perceptual color space for image
  * processing", 2020, with its matrices; the curve of sRGB is that of IEC 61966-2-1. Rounding to 8 bits leaves
- * no trace of a machine's libm.
+ * no trace of a machine's libm: what lies within a millionth of halfway goes up.
  */
 typedef struct oklab {
     double L, a, b;
@@ -28,7 +28,8 @@ static oklab mix(oklab from, oklab to, double share)
 static uint8_t srgb(double linear)
 {
     double value = linear <= 0.0031308 ? 12.92 * linear : 1.055 * pow(linear, 1.0 / 2.4) - 0.055;
-    return (uint8_t)(255.0 * (value < 0.0 ? 0.0 : value > 1.0 ? 1.0 : value) + 0.5);
+    double level = 255.0 * (value < 0.0 ? 0.0 : value > 1.0 ? 1.0 : value);
+    return (uint8_t)(level + 0.5 + 1e-6);
 }
 
 static void put(uint8_t colour[3], oklab c)
