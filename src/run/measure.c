@@ -141,7 +141,7 @@ static void warn_optics(measure_job *job)
     if (fabs(plan->layered_effect_nm) > 3)
         uf_text_printf(&job->warnings,
                        "a layered model reads the %.4g nm cutoff %+.1f nm differently from the exponential in force; "
-                       "from n sin(angle) 1.43 up they agree better\n",
+                       "the two agree best around n sin(angle) 1.44\n",
                        job->settings->contact.cutoff_nm, -plan->layered_effect_nm);
 }
 
