@@ -230,8 +230,7 @@ uf_status uf_labels_tidy(uf_work *work, double min_pixels, double max_pixels, uf
     return status;
 }
 
-uf_status uf_basins(uf_work *work, uf_plane depth, double neck, double min_pixels, double max_pixels,
-                    uf_labels *labels, uf_error *error)
+uf_status uf_basins(uf_work *work, uf_plane depth, double neck, uf_labels *labels, uf_error *error)
 {
     uf_arena_mark mark = uf_arena_now(&work->arena);
     size_t pixels = (size_t)labels->width * (size_t)labels->height;
@@ -254,5 +253,5 @@ uf_status uf_basins(uf_work *work, uf_plane depth, double neck, double min_pixel
         labels->count = f.count;
     }
     uf_arena_back(&work->arena, mark);
-    return status == UF_OK ? uf_labels_tidy(work, min_pixels, max_pixels, labels, error) : status;
+    return status;
 }

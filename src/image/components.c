@@ -120,78 +120,112 @@ void uf_label_areas(uf_labels labels, int64_t *areas)
     }
 }
 
-/* ---- holes ----------------------------------------------------------------------------------- */
+/* ---- holes ------------------------------------------------------------------------------------- */
 
-static void mark_border(uf_labels labels, uint8_t *open)
+/* Runs of 0-pixels, joined into regions; the sums of a region stand at its root. */
+typedef struct hole_region {
+    double pixels;
+    int open; /* reaches the border, or holds a pixel that must not be filled */
+} hole_region;
+
+static int find_zero_runs(const uint8_t *row, int width, run *runs, int count)
 {
-    for (int x = 0; x < labels.width; x++) {
-        open[uf_labels_row(labels, 0)[x]] = 1;
-        open[uf_labels_row(labels, labels.height - 1)[x]] = 1;
+    for (int x = 0; x < width; x++) {
+        if (row[x])
+            continue;
+        int from = x;
+        while (x < width && !row[x])
+            x++;
+        runs[count] = (run){from, x, count};
+        count++;
     }
-    for (int y = 0; y < labels.height; y++) {
-        const int32_t *row = uf_labels_row(labels, y);
-        open[row[0]] = 1;
-        open[row[labels.width - 1]] = 1;
-    }
+    return count;
 }
 
-static void fill_closed(uf_mask mask, uf_labels labels, const uint8_t *open)
+static size_t count_zero_runs(uf_mask mask)
 {
+    size_t count = 0;
     for (int y = 0; y < mask.height; y++) {
-        uint8_t *row = uf_mask_row(mask, y);
-        const int32_t *region = uf_labels_row(labels, y);
+        const uint8_t *row = uf_mask_row(mask, y);
         for (int x = 0; x < mask.width; x++)
-            row[x] |= region[x] && !open[region[x]];
+            count += !row[x] && (x == 0 || row[x - 1]);
     }
+    return count;
 }
 
-/* Regions with a pixel that must not be filled stay open. */
-static void keep_unfillable(uf_labels regions, uf_mask fillable, const int64_t *areas, double small_pixels,
-                            uint8_t *open)
+typedef struct hole_job {
+    uf_mask mask;
+    run *runs;
+    int *row_start;
+    hole_region *regions; /* by root run */
+} hole_job;
+
+static void join_zero_runs(hole_job *job)
 {
-    for (int y = 0; y < regions.height; y++) {
-        const int32_t *region = uf_labels_row(regions, y);
-        const uint8_t *row = uf_mask_row(fillable, y);
-        for (int x = 0; x < regions.width; x++)
-            if (!row[x] && (double)areas[region[x]] > small_pixels)
-                open[region[x]] = 1;
+    int count = 0;
+    for (int y = 0; y < job->mask.height; y++) {
+        job->row_start[y] = count;
+        count = find_zero_runs(uf_mask_row(job->mask, y), job->mask.width, job->runs, count);
+        if (y)
+            join_rows(job->runs, job->row_start[y - 1], job->row_start[y], job->row_start[y], count, 0);
     }
+    job->row_start[job->mask.height] = count;
 }
 
-static uf_status find_regions(uf_work *work, uf_mask mask, uf_labels *regions, uf_error *error)
+static void sum_regions(hole_job *job)
 {
-    uf_mask outside;
-    uf_status status = uf_mask_take(work, mask.width, mask.height, &outside, error);
-    if (status == UF_OK)
-        status = uf_labels_take(work, mask.width, mask.height, regions, error);
-    if (status != UF_OK)
-        return status;
-    for (int y = 0; y < mask.height; y++)
-        for (int x = 0; x < mask.width; x++)
-            uf_mask_row(outside, y)[x] = !uf_mask_row(mask, y)[x];
-    return uf_components(work, outside, UF_FOUR_NEIGHBOURS, regions, error);
+    int last = job->mask.height - 1;
+    for (int k = 0; k < job->row_start[last + 1]; k++)
+        job->regions[k] = (hole_region){0};
+    for (int y = 0; y <= last; y++)
+        for (int k = job->row_start[y]; k < job->row_start[y + 1]; k++) {
+            hole_region *region = &job->regions[root_of(job->runs, k)];
+            region->pixels += job->runs[k].to - job->runs[k].from;
+            region->open |= y == 0 || y == last || job->runs[k].from == 0 || job->runs[k].to == job->mask.width;
+        }
+}
+
+/* Closed regions of more than `small_pixels` are opened where a pixel of theirs must not be filled. */
+static void open_unfillable(hole_job *job, uf_mask fillable, double small_pixels)
+{
+    for (int y = 0; y < job->mask.height; y++)
+        for (int k = job->row_start[y]; k < job->row_start[y + 1]; k++) {
+            hole_region *region = &job->regions[root_of(job->runs, k)];
+            const uint8_t *row = uf_mask_row(fillable, y);
+            for (int x = job->runs[k].from; x < job->runs[k].to && !region->open && region->pixels > small_pixels;
+                 x++)
+                region->open = !row[x];
+        }
+}
+
+static void fill_closed(hole_job *job, double max_pixels)
+{
+    for (int y = 0; y < job->mask.height; y++)
+        for (int k = job->row_start[y]; k < job->row_start[y + 1]; k++) {
+            const hole_region *region = &job->regions[root_of(job->runs, k)];
+            if (!region->open && region->pixels <= max_pixels)
+                memset(uf_mask_row(job->mask, y) + job->runs[k].from, 1,
+                       (size_t)(job->runs[k].to - job->runs[k].from));
+        }
 }
 
 uf_status uf_fill_holes_where(uf_work *work, uf_mask mask, double small_pixels, double max_pixels, uf_mask fillable,
                               uf_error *error)
 {
+    hole_job job = {.mask = mask};
+    size_t total = count_zero_runs(mask);
     uf_arena_mark mark = uf_arena_now(&work->arena);
-    uf_labels regions;
-    uint8_t *open;
-    int64_t *areas;
-    uf_status status = find_regions(work, mask, &regions, error);
+    uf_status status = uf_take(work, total, sizeof *job.runs, "holes", &job.runs, error);
     if (status == UF_OK)
-        status = uf_take(work, (size_t)regions.count + 1, sizeof *areas, "holes", &areas, error);
+        status = uf_take(work, (size_t)mask.height + 1, sizeof *job.row_start, "holes", &job.row_start, error);
     if (status == UF_OK)
-        status = uf_take(work, (size_t)regions.count + 1, sizeof *open, "holes", &open, error);
+        status = uf_take(work, total, sizeof *job.regions, "holes", &job.regions, error);
     if (status == UF_OK) {
-        uf_label_areas(regions, areas);
-        for (int k = 0; k <= regions.count; k++)
-            open[k] = (double)areas[k] > max_pixels;
-        mark_border(regions, open);
+        join_zero_runs(&job);
+        sum_regions(&job);
         if (fillable.data)
-            keep_unfillable(regions, fillable, areas, small_pixels, open);
-        fill_closed(mask, regions, open);
+            open_unfillable(&job, fillable, small_pixels);
+        fill_closed(&job, max_pixels);
     }
     uf_arena_back(&work->arena, mark);
     return status;

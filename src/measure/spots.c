@@ -13,7 +13,6 @@
 
 #include "fit/robust.h"
 #include "image/basins.h"
-#include "image/components.h"
 #include "measure/contrast.h"
 #include "measure/measure.h"
 #include "measure/shape.h"
@@ -55,15 +54,16 @@ static float needed_at(const float *needed, float gap)
 }
 
 /* score := the smaller contrast where it can belong to a spot (at least half of what a spot's top must reach), 0
- * elsewhere; mask says where. `narrow` is left whole. */
-static void cut_score(const uf_measure_input *in, uf_plane narrow, uf_plane score, const float *needed, uf_mask mask)
+ * elsewhere; ground says where. `narrow` is left whole. */
+static void cut_score(const uf_measure_input *in, uf_plane narrow, uf_plane score, const float *needed,
+                      uf_labels ground)
 {
     for (int y = 0; y < score.height; y++) {
         const int32_t *labels = uf_labels_row(in->cells->labels, y);
         const uint8_t *state = uf_mask_row(in->gaps->state, y);
         const float *gap = uf_plane_row(in->gaps->smooth_gap_nm, y), *best = uf_plane_row(narrow, y);
         float *row = uf_plane_row(score, y);
-        uint8_t *out = uf_mask_row(mask, y);
+        int32_t *out = uf_labels_row(ground, y);
         for (int x = 0; x < score.width; x++) {
             float value = best[x] < row[x] ? best[x] : row[x];
             out[x] = labels[x] && state[x] == UF_GAP_RESOLVED &&
@@ -151,7 +151,8 @@ static void grow_region(const uf_measure_input *in, uf_plane narrow, uf_labels c
     }
 }
 
-/* Regions of all candidates, which never share a pixel. */
+/* Regions of all candidates, which never share a pixel: basins are numbered from the highest score down, so the
+ * clearer spot takes first. */
 static uf_status grow_regions(uf_work *work, const uf_measure_input *in, uf_plane narrow, uf_labels basins,
                               spot_sums *sums, uf_error *error)
 {
@@ -164,7 +165,7 @@ static uf_status grow_regions(uf_work *work, const uf_measure_input *in, uf_plan
     for (int y = 0; y < basins.height; y++)
         memset(uf_labels_row(basins, y), 0, (size_t)basins.width * sizeof(int32_t));
     for (int k = 1; k <= basins.count; k++)
-        if (sums[k].cell && !uf_labels_row(basins, sums[k].top_y)[sums[k].top_x])
+        if (sums[k].top > 0.0f && !uf_labels_row(basins, sums[k].top_y)[sums[k].top_x])
             grow_region(in, narrow, basins, k, reach, waiting, &sums[k]);
     return UF_OK;
 }
@@ -265,16 +266,12 @@ static uf_status fill_cells(uf_work *work, uf_cell *rows, int cells, uf_spot *sp
 static uf_status find_basins(uf_work *work, const uf_measure_input *in, const float *needed, uf_plane narrow,
                              uf_plane score, uf_labels *basins, uf_error *error)
 {
-    uf_mask mask;
     uf_status status = uf_contrast_find(work, in->gaps->smooth_gap_nm, in->plan->pixel_size_um, least_contrast_nm / 2,
                                         narrow, score, error);
-    if (status == UF_OK)
-        status = uf_mask_take(work, score.width, score.height, &mask, error);
-    if (status == UF_OK) {
-        cut_score(in, narrow, score, needed, mask);
-        status = uf_components(work, mask, UF_EIGHT_NEIGHBOURS, basins, error);
-    }
-    return status == UF_OK ? uf_basins(work, score, one_spot_saddle, 1, 1e9, basins, error) : status;
+    if (status != UF_OK)
+        return status;
+    cut_score(in, narrow, score, needed, *basins);
+    return uf_basins(work, score, one_spot_saddle, basins, error);
 }
 
 static int collect(const uf_measure_input *in, const float *needed, const spot_sums *sums, int basins, uf_spot *spots)

@@ -61,10 +61,11 @@ static void put_verdict(uf_text *out, const optics_numbers *o)
     else
         uf_text_add(out, "Totally reflected against the medium and against the cell.\n");
     if (fabs(o->layered_effect_nm) > 3)
-        uf_text_printf(out,
-                       "An exponential reads a layered %.4g nm gap as %.1f nm; the two agree best around n sin(angle) "
-                       "1.44.\n",
-                       o->cutoff_nm, o->cutoff_nm + o->layered_effect_nm);
+        uf_text_printf(
+            out,
+            "An exponential reads a layered %.4g nm gap as %.1f nm; the two agree best around n sin(angle) "
+            "1.44.\n",
+            o->cutoff_nm, o->cutoff_nm + o->layered_effect_nm);
 }
 
 static void put_words(uf_text *out, const optics_numbers *o)

@@ -106,8 +106,11 @@ static uf_status find_parts(part_job *job, int *several, uf_error *error)
     uint8_t *met;
     uf_status status = make_coarse(job, error);
     if (status == UF_OK)
-        status = uf_basins(job->work, job->coarse.distance_px, fmax(s->neck, slightest_neck),
-                           s->min_pixels / 4 / (job->step * job->step), 1e18, &job->coarse.labels, error);
+        status =
+            uf_basins(job->work, job->coarse.distance_px, fmax(s->neck, slightest_neck), &job->coarse.labels, error);
+    if (status == UF_OK)
+        status =
+            uf_labels_tidy(job->work, s->min_pixels / 4 / (job->step * job->step), 1e18, &job->coarse.labels, error);
     size_t parts = (size_t)job->coarse.labels.count + 1, pieces = (size_t)job->labels.count + 1;
     if (status == UF_OK)
         status = uf_take(job->work, pieces, sizeof *job->piece_parts, "segmentation", &job->piece_parts, error);
