@@ -1,6 +1,14 @@
 # SPDX-License-Identifier: GPL-3.0-or-later
 # Underfoot. `make demo` and `make check` are all a newcomer needs; `make help` lists the rest.
 
+# Short lines unless asked: make V=1 shows every command.
+ifeq ($(V),1)
+say =
+else
+.SILENT:
+say = @echo "  $(1)"
+endif
+
 PREFIX  ?= /usr/local
 DESTDIR ?=
 FLAVOUR ?= release
@@ -74,6 +82,7 @@ debug asan tsan probe: packages ## the same for debugging, or with address+undef
 build-flavour: $(PROGRAM) $(STATIC) $(SHARED)
 
 $(PROGRAM): $(CLI_OBJECTS) $(STATIC)
+	$(call say,link $@)
 	$(CC) $(CFLAGS_ALL) $(LINK_ALL) -o $@ $(CLI_OBJECTS) $(STATIC) $(LINK_LIBS)
 $(STATIC): $(OBJECTS)
 	@rm -f $@
@@ -84,9 +93,11 @@ $(SHARED): $(OBJECTS)
 
 $(BUILD)/obj/%.o: src/%.c $(BUILD)/flags
 	@mkdir -p $(@D)
+	$(call say,compile $@)
 	$(CC) $(CFLAGS_ALL) $(KERNEL_FLAGS) -MMD -MP -c -o $@ $<
 $(BUILD)/obj/%.v3.o: src/%.c $(BUILD)/flags
 	@mkdir -p $(@D)
+	$(call say,compile $@)
 	$(CC) $(CFLAGS_ALL) $(KERNEL_FLAGS) -march=x86-64-v3 -DUF_KERNELS_V3 -MMD -MP -c -o $@ $<
 # Without these gcc keeps branches in kernels that could be vectors; they change no result.
 $(KERNELS:src/%.c=$(BUILD)/obj/%.o) $(KERNELS:src/%.c=$(BUILD)/obj/%.v3.o): KERNEL_FLAGS := -fno-trapping-math -fno-math-errno
@@ -124,6 +135,7 @@ unit: $(TEST_PROGRAMS)
 
 $(BUILD)/tests/%: tests/%.c $(STATIC)
 	@mkdir -p $(@D)
+	$(call say,test $@)
 	$(CC) $(CFLAGS_ALL) -Itests $(LINK_ALL) -MMD -MP -o $@ $< $(STATIC) $(LINK_LIBS) -lcmocka
 
 -include $(TEST_PROGRAMS:%=%.d)
