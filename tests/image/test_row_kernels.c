@@ -123,7 +123,7 @@ static void test_gap(void **state)
     uf_decay_exponential(&decay, depth);
     for (int round = 0; round < 50; round++) {
         for (int x = 0; x < LONGEST; x++) {
-            near[x] = (float)exp(-8 + 17.0 * rand() / (double)RAND_MAX);
+            near[x] = (float)exp(-6 + 15.0 * rand() / (double)RAND_MAX);
             wide[x] = (float)exp(9.0 * rand() / (double)RAND_MAX);
         }
         near[3] = 0;
