@@ -3,6 +3,8 @@
 
 #include <math.h>
 
+#include "base/text.h"
+
 /* The table runs from ln = 0 to ln = -16, an excitation of 1e-7: far below any camera's detection limit. */
 static const double deepest_ln = 16.0;
 
@@ -14,6 +16,44 @@ void uf_decay_exponential(uf_decay *decay, double depth_nm)
     decay->lookup.inverse_step = (float)(1.0 / step);
     for (int k = 0; k < UF_DECAY_NODES; k++)
         decay->lookup.gap_nm[k] = (float)(depth_nm * step * k);
+}
+
+double uf_relative_excitation(const uf_bench *bench, uf_field_model model, uf_stray stray, double gap_nm)
+{
+    double depth = uf_depth_nm(bench->wavelength_nm, bench->na_effective, bench->medium_n);
+    double field = model == UF_FIELD_LAYERED ? uf_layered_intensity(bench, gap_nm) / uf_layered_intensity(bench, 0)
+                                             : exp(-gap_nm / depth);
+    double scattered = stray.fraction > 0 ? stray.fraction * exp(-gap_nm / stray.depth_nm) : 0;
+    return (1 - stray.fraction) * field + scattered;
+}
+
+static const double walk_nm = 0.25, farthest_nm = 20000;
+
+uf_status uf_decay_make(uf_decay *decay, const uf_bench *bench, uf_field_model model, uf_stray stray, uf_error *error)
+{
+    uf_gap_lookup *lookup = &decay->lookup;
+    double step = deepest_ln / (UF_DECAY_NODES - 1), gap = 0, ln = 0;
+    decay->depth_nm = uf_round_digits(uf_depth_nm(bench->wavelength_nm, bench->na_effective, bench->medium_n), 12);
+    lookup->first_ln = 0.0f;
+    lookup->inverse_step = (float)(1.0 / step);
+    lookup->gap_nm[0] = 0.0f;
+    int node = 1;
+    while (node < UF_DECAY_NODES && gap < farthest_nm) {
+        double next = log(uf_relative_excitation(bench, model, stray, gap + walk_nm));
+        if (!(next < ln))
+            return uf_fail(error, UF_INPUT,
+                           "the excitation does not fall with the gap at %.4g nm in this model; a steeper angle or "
+                           "model = exponential is needed",
+                           gap);
+        for (; node < UF_DECAY_NODES && next <= -step * node; node++)
+            lookup->gap_nm[node] = (float)uf_round_digits(gap + walk_nm * (-step * node - ln) / (next - ln), 9);
+        gap += walk_nm;
+        ln = next;
+    }
+    /* Beyond any gap that matters the last slope goes on. */
+    for (; node < UF_DECAY_NODES; node++)
+        lookup->gap_nm[node] = 2 * lookup->gap_nm[node - 1] - lookup->gap_nm[node - 2];
+    return UF_OK;
 }
 
 double uf_decay_gap(const uf_decay *decay, double ln_relative)

@@ -14,8 +14,25 @@ typedef struct uf_decay {
     uf_gap_lookup lookup; /* gap against ln(relative excitation) */
 } uf_decay;
 
+typedef enum uf_field_model { UF_FIELD_EXPONENTIAL, UF_FIELD_LAYERED } uf_field_model;
+
+/* Stray light: a share of the excitation at gap 0, with a depth of its own (objective set-ups: about a tenth, of
+ * micrometre depth; Mattheyses and Axelrod 2006, J. Biomed. Opt. 11:014006). fraction 0: none. */
+typedef struct uf_stray {
+    double fraction, depth_nm;
+} uf_stray;
+
+/* Relative excitation at a gap of at least 0: (1 - s) model(gap) + s exp(-gap / D), 1 at gap 0. */
+double uf_relative_excitation(const uf_bench *bench, uf_field_model model, uf_stray stray, double gap_nm);
+
 /* exp(-gap / depth). depth_nm above 0. */
 void uf_decay_exponential(uf_decay *decay, double depth_nm);
+
+/* The table of any model with stray light, by walking the excitation out from gap 0 in steps of 0.25 nm and joining
+ * its logarithm by straight lines: right to 0.01 nm. UF_INPUT when the excitation does not fall strictly with the gap
+ * (a layered field too near the critical angle), since a ratio then has no one gap. */
+UF_MUST_USE uf_status uf_decay_make(uf_decay *decay, const uf_bench *bench, uf_field_model model, uf_stray stray,
+                                    uf_error *error);
 
 /* Gap at ln(relative excitation): the scalar twin of the kernel, in double. */
 double uf_decay_gap(const uf_decay *decay, double ln_relative);

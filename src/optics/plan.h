@@ -9,6 +9,8 @@
 typedef struct uf_plan {
     uf_bench bench;
     uf_decay decay;
+    uf_field_model model;
+    uf_stray stray;
     double pixel_size_um;
     double psf_sigma_um; /* of the near image: 0.21 emission wavelength / NA */
     double depth_nm, depth_sd_nm;
@@ -16,7 +18,7 @@ typedef struct uf_plan {
     double reference_gap_nm;  /* gap it was measured at: a depth error is a gap error around this gap */
     double reference_sd;      /* relative 1 sigma of the ratio */
     double normalisation_sd;  /* relative, from cell to cell */
-    double layered_effect_nm; /* layered minus exponential at the contact cutoff */
+    double layered_effect_nm; /* exponential minus layered at the contact cutoff; 0 when layered is in force */
 } uf_plan;
 
 #endif

@@ -247,8 +247,10 @@ static uf_status write_maps(measure_job *job, uf_error *error)
 static void settings_line(const measure_job *job, uf_text *line)
 {
     const uf_settings *s = job->settings;
-    uf_text_printf(line, "exponential decay, depth %.1f nm, contact at most %.4g nm, reference %.4g at gap 0",
-                   job->plan.depth_nm, s->contact.cutoff_nm, job->plan.reference_ratio);
+    uf_text_printf(line, "%s decay%s, depth %.1f nm, contact at most %.4g nm, reference %.4g at gap 0",
+                   job->plan.model == UF_FIELD_LAYERED ? "layered" : "exponential",
+                   job->plan.stray.fraction > 0 ? " with stray light" : "", job->plan.depth_nm, s->contact.cutoff_nm,
+                   job->plan.reference_ratio);
 }
 
 static void flag_words(uf_flags flags, uf_text *words)

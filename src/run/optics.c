@@ -17,7 +17,8 @@ typedef struct optics_numbers {
     double depth_nm, depth_sd_nm, depth_with_cell_n_nm;
     double interface_s, interface_p;
     double cutoff_nm, layered_effect_nm;
-    double exponential[GAPS], layered[GAPS];
+    double exponential[GAPS], layered[GAPS], in_force[GAPS];
+    int has_own; /* in force is neither of the two */
 } optics_numbers;
 
 static void find_numbers(const uf_settings *s, optics_numbers *o)
@@ -33,10 +34,14 @@ static void find_numbers(const uf_settings *s, optics_numbers *o)
     o->interface_p = uf_interface_p(b->na_effective, b->substrate_n, b->medium_n);
     o->cutoff_nm = s->contact.cutoff_nm;
     o->layered_effect_nm = uf_layered_effect_nm(b, o->cutoff_nm);
+    o->has_own = s->decay.scattered_fraction > 0;
     double at_contact = uf_layered_intensity(b, 0);
     for (int k = 0; k < GAPS; k++) {
         o->exponential[k] = exp(-gaps_nm[k] / o->depth_nm);
         o->layered[k] = uf_layered_intensity(b, gaps_nm[k]) / at_contact;
+        o->in_force[k] =
+            uf_relative_excitation(b, s->decay.model == UF_DECAY_LAYERED ? UF_FIELD_LAYERED : UF_FIELD_EXPONENTIAL,
+                                   (uf_stray){s->decay.scattered_fraction, s->decay.scattered_depth_nm}, gaps_nm[k]);
     }
 }
 
@@ -93,6 +98,9 @@ static void put_words(uf_text *out, const optics_numbers *o)
     uf_text_add(out, "\n  layered (medium under the cell)   ");
     for (int k = 0; k < GAPS; k++)
         uf_text_printf(out, "%7.3f", o->layered[k]);
+    uf_text_add(out, o->has_own ? "\n  in force, with stray light        " : "");
+    for (int k = 0; k < GAPS && o->has_own; k++)
+        uf_text_printf(out, "%7.3f", o->in_force[k]);
     uf_text_add(out, "\n\n");
     put_verdict(out, o);
     uf_text_add(out,
@@ -115,7 +123,7 @@ static json_t *decay_json(const optics_numbers *o)
         json_object_set_new(row, "gap_nm", number(gaps_nm[k]));
         json_object_set_new(row, "exponential", number(o->exponential[k]));
         json_object_set_new(row, "layered", number(o->layered[k]));
-        json_object_set_new(row, "in_force", number(o->exponential[k]));
+        json_object_set_new(row, "in_force", number(o->in_force[k]));
         json_array_append_new(list, row);
     }
     return list;

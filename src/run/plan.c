@@ -64,6 +64,18 @@ static uf_status find_pixel_size(const uf_settings *s, double image_pixel_um, do
                    "neither the instrument file nor the image says how large a pixel is; add size_um to [pixel]");
 }
 
+/* The plain exponential has its closed form; every other table is walked. */
+static uf_status make_decay(const uf_settings *s, uf_plan *plan, uf_error *error)
+{
+    uf_stray stray = {s->decay.scattered_fraction, s->decay.scattered_depth_nm};
+    plan->model = s->decay.model == UF_DECAY_LAYERED ? UF_FIELD_LAYERED : UF_FIELD_EXPONENTIAL;
+    plan->stray = stray;
+    if (plan->model != UF_FIELD_EXPONENTIAL || stray.fraction > 0)
+        return uf_decay_make(&plan->decay, &plan->bench, plan->model, stray, error);
+    uf_decay_exponential(&plan->decay, plan->depth_nm);
+    return UF_OK;
+}
+
 uf_status uf_plan_make(const uf_settings *s, double image_pixel_um, uf_plan *plan, uf_error *error)
 {
     *plan = (uf_plan){0};
@@ -77,7 +89,9 @@ uf_status uf_plan_make(const uf_settings *s, double image_pixel_um, uf_plan *pla
     const uf_bench *b = &plan->bench;
     plan->depth_nm = uf_round_digits(uf_depth_nm(b->wavelength_nm, b->na_effective, b->medium_n), 12);
     plan->depth_sd_nm = uf_round_digits(uf_depth_sd(b), 12);
-    uf_decay_exponential(&plan->decay, plan->depth_nm);
+    status = make_decay(s, plan, error);
+    if (status != UF_OK)
+        return status;
     double na = isnan(s->interface.objective_na) ? usual_na : s->interface.objective_na;
     plan->psf_sigma_um = uf_round_digits(psf_per_wavelength * stokes_shift * b->wavelength_nm * 1e-3 / na, 12);
     plan->reference_gap_nm = s->reference.gap_nm;
@@ -85,6 +99,7 @@ uf_status uf_plan_make(const uf_settings *s, double image_pixel_um, uf_plan *pla
     plan->reference_ratio = uf_round_digits(at_zero, 12);
     plan->reference_sd = s->reference.ratio_sd / s->reference.ratio;
     plan->normalisation_sd = s->reference.normalisation_sd;
-    plan->layered_effect_nm = uf_round_digits(uf_layered_effect_nm(b, s->contact.cutoff_nm), 9);
+    if (plan->model == UF_FIELD_EXPONENTIAL)
+        plan->layered_effect_nm = uf_round_digits(uf_layered_effect_nm(b, s->contact.cutoff_nm), 9);
     return UF_OK;
 }

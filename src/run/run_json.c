@@ -120,11 +120,17 @@ void uf_methods_paragraph(uf_text *out, const uf_settings *s, const uf_plan *pla
                    "Underfoot %s. Cells were outlined in the widefield image at half of each cell's own level over "
                    "its local background and touching cells split by shape. ",
                    b->wavelength_nm, b->na_effective, UF_VERSION);
-    uf_text_printf(out,
-                   "The near/wide ratio was converted to the membrane-substrate gap by an exponential decay with a "
-                   "1/e depth of %.1f nm (s.d. %.1f nm; medium index %.4f), relative to a measured ratio of %.4g at "
-                   "a gap of %.4g nm. ",
-                   plan->depth_nm, plan->depth_sd_nm, b->medium_n, s->reference.ratio, plan->reference_gap_nm);
+    uf_text_printf(
+        out,
+        "The near/wide ratio was converted to the membrane-substrate gap by %s with a 1/e depth of %.1f nm "
+        "(s.d. %.1f nm; medium index %.4f)",
+        plan->model == UF_FIELD_LAYERED ? "the field of a substrate, medium and cell of three indices (layered),"
+                                        : "an exponential decay",
+        plan->depth_nm, plan->depth_sd_nm, b->medium_n);
+    if (plan->stray.fraction > 0)
+        uf_text_printf(out, ", %.3g of it stray light of %.4g nm depth,", plan->stray.fraction, plan->stray.depth_nm);
+    uf_text_printf(out, " relative to a measured ratio of %.4g at a gap of %.4g nm. ", s->reference.ratio,
+                   plan->reference_gap_nm);
     uf_text_printf(out,
                    "Contact was called where the gap was at most %.4g nm, in patches of at least %.3g square "
                    "micrometres; pixels whose signal was below %.3g s.d. of its noise were not assigned a gap. The "

@@ -48,6 +48,7 @@ struct uf_settings {
     } interface;
     struct {
         int model;
+        double scattered_fraction, scattered_depth_nm;
     } decay;
     struct {
         double size_um;

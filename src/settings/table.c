@@ -73,11 +73,12 @@ const uf_setting uf_setting_table[] = {
     I_REAL("interface", "objective_na", interface.objective_na, 0.1, 2, NONE,
            "Numerical aperture of the objective."),
 
-    I_CHOICE("decay", "model", decay.model, "exponential|!layered|!table", UF_DECAY_EXPONENTIAL,
+    I_CHOICE("decay", "model", decay.model, "exponential|layered|!table", UF_DECAY_EXPONENTIAL,
              "How excitation falls with the gap."),
     I_LATER("decay", "file", "Table of a measured decay."),
-    I_LATER("decay", "scattered_fraction", "Share of stray light in the excitation at gap 0."),
-    I_LATER("decay", "scattered_depth_nm", "1/e depth of the stray light."),
+    I_REAL("decay", "scattered_fraction", decay.scattered_fraction, 0, 0.9, 0,
+           "Share of stray light in the excitation at gap 0, added to any model."),
+    I_REAL("decay", "scattered_depth_nm", decay.scattered_depth_nm, 100, 100000, 1200, "1/e depth of the stray light."),
 
     I_REAL("pixel", "size_um", pixel.size_um, 1e-3, 20, NONE,
            "Side of a pixel in the specimen. Default: from the TIFF's resolution tags."),

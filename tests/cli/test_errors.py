@@ -128,7 +128,7 @@ def test_misspelt_key_names_file_line_and_nearest(demo, instrument, tmp_path):
     (r"ratio = 1.5", "ratio = 1,5", "decimal point"),
     (r"size_um = .*", "size_um = 0", "out of range"),
     (r"estimate = yes", "estimate = maybe", "check or yes or no"),
-    (r"model = exponential", "model = layered", "not in this version"),
+    (r"model = exponential", "model = table", "not in this version"),
     (r"cell_n = 1.37", "coating_nm = 10", "not in this version"),
     (r"ratio = 1.5\n", "", "ratio"),
     (r"angle_deg = 70\n", "", "angle"),

@@ -147,6 +147,47 @@ static void test_gap_of_intensity(void **state)
     }
 }
 
+/* (1 - f) exp(-z/d) + f exp(-z/D) with f 0.1, d 100, D 1000, exact; and what a single exponential would read for it. The
+ * share of a tenth is Mattheyses and Axelrod's (2006, J. Biomed. Opt. 11:014006, abstract). */
+static void test_stray_light(void **state)
+{
+    (void)state;
+    static const double rows[][3] = {{0, 1, 0}, {50, 0.6410005362, 44.472499}, {100, 0.4215752388, 86.375701},
+                                     {200, 0.2036748302, 159.123053}, {500, 0.0667172183, 270.729221}};
+    static uf_decay decay;
+    uf_error error;
+    uf_bench b = three_layers(0);
+    b.na_effective = uf_na_from_depth(100, 488, b.medium_n);
+    uf_stray stray = {0.1, 1000};
+    assert_int_equal(uf_decay_make(&decay, &b, UF_FIELD_EXPONENTIAL, stray, &error), UF_OK);
+    for (size_t k = 0; k < sizeof rows / sizeof rows[0]; k++) {
+        double relative = uf_relative_excitation(&b, UF_FIELD_EXPONENTIAL, stray, rows[k][0]);
+        assert_near_abs(relative, rows[k][1], 1e-9);
+        assert_near_abs(-100 * log(relative), rows[k][2], 1e-5);
+        assert_near_abs(uf_decay_gap(&decay, log(rows[k][1])), rows[k][0], 0.01);
+    }
+}
+
+/* Tables of every model give back the gap that an excitation was computed for, within 0.01 nm (closed forms in, the
+ * table out). */
+static void test_tables_invert_their_model(void **state)
+{
+    (void)state;
+    static uf_decay decay;
+    uf_error error;
+    for (int polarization = 0; polarization < 3; polarization++)
+        for (int model = UF_FIELD_EXPONENTIAL; model <= UF_FIELD_LAYERED; model++)
+            for (int scattered = 0; scattered < 2; scattered++) {
+                uf_bench b = three_layers(polarization / 2.0);
+                uf_stray stray = {scattered ? 0.083 : 0, 1385};
+                assert_int_equal(uf_decay_make(&decay, &b, (uf_field_model)model, stray, &error), UF_OK);
+                for (double gap = 0; gap < 600; gap += 2.385) {
+                    double relative = uf_relative_excitation(&b, (uf_field_model)model, stray, gap);
+                    assert_near_abs(uf_decay_gap(&decay, log(relative)), gap, 0.01);
+                }
+            }
+}
+
 /* A depth error follows the angle's and the index's: moved by hand. n1 + 0.002 and theta + 0.5 deg at 488 nm, 1.518 /
  * 1.37, 70 deg give 96.117823 and 94.003501 (exact). */
 static void test_sensitivity(void **state)
@@ -168,6 +209,7 @@ int main(void)
         cmocka_unit_test(test_depth_grid), cmocka_unit_test(test_depth_by_aperture), cmocka_unit_test(test_worked_answers),
         cmocka_unit_test(test_textbook_angles), cmocka_unit_test(test_nothing_below_the_critical_angle),
         cmocka_unit_test(test_interface_intensities), cmocka_unit_test(test_three_layers),
-        cmocka_unit_test(test_layered_effect), cmocka_unit_test(test_gap_of_intensity), cmocka_unit_test(test_sensitivity)};
+        cmocka_unit_test(test_layered_effect), cmocka_unit_test(test_gap_of_intensity), cmocka_unit_test(test_sensitivity),
+        cmocka_unit_test(test_stray_light), cmocka_unit_test(test_tables_invert_their_model)};
     return cmocka_run_group_tests(tests, NULL, NULL);
 }

@@ -160,7 +160,7 @@ static void test_faults_name_line_and_mend(void **state)
     refused("[light]\nblue light\n", "/bench/day1.ini:2: ", "neither");
     refused("[light\n", "/bench/day1.ini:1: ", "no section");
     refused("[light] x\n", "/bench/day1.ini:1: ", "no section");
-    refused("[decay]\nmodel = layered\n", "/bench/day1.ini:2: ", "not in this version");
+    refused("[decay]\nmodel = table\n", "/bench/day1.ini:2: ", "not in this version");
     refused("[series]\nangles_deg = 69, 71\n", "/bench/day1.ini:2: ", "not in this version");
 }
 
