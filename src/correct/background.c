@@ -41,7 +41,7 @@ static int64_t replace_hot(uf_plane image, double clear_adu)
 
 /* ---- first estimate -------------------------------------------------------------------------- */
 
-enum { SAMPLE = 1 << 15 };
+enum { SAMPLE = 1 << 14 };
 
 /* A lattice of pixels over the image, at most SAMPLE of them. */
 static size_t sample_image(uf_plane image, double *values)

@@ -92,25 +92,53 @@ float uf_select(float *values, size_t count, size_t k)
     return values[k];
 }
 
+/* Puts the ranks k[0 .. n-1] (ascending, all under count - base) of values[base ..] in place: the middle one first,
+ * which halves what the others have to look at. */
+static void select_ranks(float *values, size_t base, size_t count, const size_t *k, int n)
+{
+    if (n < 1 || !count)
+        return;
+    int middle = n / 2;
+    size_t at = k[middle] - base;
+    (void)uf_select(values + base, count, at);
+    int left = middle, right = middle;
+    while (left > 0 && k[left - 1] == k[middle])
+        left--;
+    while (right + 1 < n && k[right + 1] == k[middle])
+        right++;
+    select_ranks(values, base, at, k, left);
+    select_ranks(values, base + at + 1, count - at - 1, k + right + 1, n - right - 1);
+}
+
+enum { MOST_QUANTILES = 16 };
+
 void uf_quantiles(float *values, size_t count, size_t total, const double *q, double *out, int n)
 {
-    size_t from = 0;
+    size_t k[MOST_QUANTILES] = {0};
+    double part[MOST_QUANTILES] = {0};
+    int known = 0; /* those before the missing ones */
     for (int j = 0; j < n; j++) {
         double at = total ? q[j] * (double)(total - 1) : 0.0;
-        size_t k = (size_t)at;
-        double part = at - (double)k;
-        size_t last = part > 0 ? k + 1 : k;
-        if (last >= count) {
-            out[j] = (double)NAN;
-            continue;
+        size_t rank = (size_t)at;
+        out[j] = (double)NAN;
+        if (known == j && j < MOST_QUANTILES && rank + (at > (double)rank) < count) {
+            k[j] = rank;
+            part[j] = at - (double)rank;
+            known++;
         }
-        double low = (double)uf_select(values + from, count - from, k - from), high = low;
-        if (last > k) {
-            high = (double)values[last];
-            for (size_t m = last; m < count; m++)
+    }
+    select_ranks(values, 0, count, k, known);
+    for (int j = 0; j < known; j++) {
+        double low = (double)values[k[j]], high = low;
+        if (part[j] > 0) {
+            /* The next larger one lies before the next rank that is in place. */
+            size_t end = count;
+            for (int i = known - 1; i > j && k[i] > k[j]; i--)
+                end = k[i] + 1;
+            high = (double)values[k[j] + 1];
+            for (size_t m = k[j] + 2; m < end; m++)
                 high = (double)values[m] < high ? (double)values[m] : high;
         }
-        out[j] = low + part * (high - low);
-        from = k;
+        out[j] = low + part[j] * (high - low);
     }
 }

@@ -23,7 +23,7 @@ double uf_half_sample_mode(const double *sorted, size_t count);
  * (Hoare 1961, Commun. ACM 4:321), in linear time on average. No NaN. Returns it. */
 float uf_select(float *values, size_t count, size_t k);
 
-/* Quantiles at ascending q[0 .. n-1] of `count` floats out of `total`, the missing ones counting as larger than
+/* Quantiles at ascending q[0 .. n-1] (at most 16) of `count` floats out of `total`, the missing ones counting as larger than
  * all: as uf_sorted_quantile over all `total`; NaN where the answer lies among the missing. Reorders values. */
 void uf_quantiles(float *values, size_t count, size_t total, const double *q, double *out, int n);
 

@@ -35,6 +35,7 @@ static void column_distances(uf_labels labels, uf_plane steps)
 
 /* Parabolas of the lower envelope: parabola k is lowest from start[k] to start[k + 1]. */
 typedef struct parabola {
+    double lift; /* height + centre^2: what comparing two of them needs */
     float start, height;
     int centre;
 } parabola;
@@ -50,13 +51,14 @@ static void add_parabola(envelope *e, int centre, float height)
     double lift = (double)height + (double)centre * centre;
     while (e->count) {
         const parabola *last = &e->list[e->count - 1];
-        double other = (double)last->height + (double)last->centre * last->centre;
-        at = (float)((lift - other) / (2.0 * (centre - last->centre)));
+        int apart = centre - last->centre;
+        /* Next neighbours are the usual case and need no division. */
+        at = (float)(apart == 1 ? (lift - last->lift) * 0.5 : (lift - last->lift) / (2.0 * apart));
         if (at > last->start)
             break;
         e->count--;
     }
-    e->list[e->count] = (parabola){e->count ? at : -INFINITY, height, centre};
+    e->list[e->count] = (parabola){lift, e->count ? at : -INFINITY, height, centre};
     e->count++;
 }
 

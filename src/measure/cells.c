@@ -21,7 +21,7 @@ typedef struct cell_job {
 typedef struct tally {
     int64_t pixels, resolved, core_pixels, core_resolved, above_reference, saturated, rim, touching;
     int64_t focal, close, far;
-    double near, wide, dye, volume_nm;
+    double dye, volume_nm;
 } tally;
 
 static int on_image_edge(uf_box box, uf_labels labels)
@@ -70,7 +70,6 @@ static tally tally_cell(cell_job *job, int label, uf_cell *row)
     uf_labels labels = in->cells->labels;
     float core_px = (float)(2.0 * 2.3548 * in->plan->psf_sigma_um / in->plan->pixel_size_um) + 0.5f;
     float rim_px = (float)(in->settings->contact.rim_um / in->plan->pixel_size_um) + 0.5f;
-    float wide_background = (float)in->wide->background_adu;
     float below_zero = (float)(-3.0 * uf_gap_noise_nm(in->plan, in->near, in->wide, row->near_mean_adu + 1e-9,
                                                       row->wide_mean_adu + 1e-9));
     tally t = {0};
@@ -83,9 +82,7 @@ static tally tally_cell(cell_job *job, int label, uf_cell *row)
                 continue;
             int is_core = distance[x] > core_px, is_resolved = state[x] == UF_GAP_RESOLVED;
             t.pixels++;
-            t.near += (double)uf_plane_row(in->gaps->near_adu, y)[x];
             t.dye += (double)uf_plane_row(in->gaps->dye_adu, y)[x];
-            t.wide += (double)(uf_plane_row(in->wide->image, y)[x] - wide_background);
             t.rim += distance[x] <= rim_px;
             t.core_pixels += is_core;
             t.saturated += (in->near->saturated.data && uf_mask_row(in->near->saturated, y)[x]) ||
