@@ -41,36 +41,36 @@ static uf_status write_text(const demo_job *job, const char *name, const uf_text
     return status == UF_OK ? uf_output_write(&job->output, NULL, name, text->bytes, text->length, error) : status;
 }
 
+/* Writes an image that was encoded with `encoded` as its status, as FIELDWHAT.tif, and frees its bytes. */
+static uf_status write_encoded(const demo_job *job, const char *field, const char *what, uf_status encoded,
+                               uf_text *bytes, uf_error *error)
+{
+    uf_text name = {0};
+    uf_text_printf(&name, "%s%s.tif", field, what);
+    uf_status status = encoded == UF_OK ? uf_text_check(&name, "file names", error) : encoded;
+    if (status == UF_OK)
+        status = write_text(job, name.bytes, bytes, error);
+    uf_text_free(bytes);
+    uf_text_free(&name);
+    return status;
+}
+
 typedef uf_status encoder(uf_text *out, uf_plane plane, double pixel_size_um, const char *description,
                           uf_error *error);
 
 static uf_status write_plane(const demo_job *job, const char *field, const char *what, encoder *encode,
                              uf_plane plane, uf_error *error)
 {
-    uf_text bytes = {0}, name = {0};
-    uf_text_printf(&name, "%s%s.tif", field, what);
-    uf_status status = uf_text_check(&name, "file names", error);
-    if (status == UF_OK)
-        status = encode(&bytes, plane, job->settings.pixel_size_um, "simulated by underfoot demo", error);
-    if (status == UF_OK)
-        status = write_text(job, name.bytes, &bytes, error);
-    uf_text_free(&bytes);
-    uf_text_free(&name);
-    return status;
+    uf_text bytes = {0};
+    uf_status status = encode(&bytes, plane, job->settings.pixel_size_um, "simulated by underfoot demo", error);
+    return write_encoded(job, field, what, status, &bytes, error);
 }
 
 static uf_status write_labels(const demo_job *job, const char *field, uf_labels labels, uf_error *error)
 {
-    uf_text bytes = {0}, name = {0};
-    uf_text_printf(&name, "%s_truth_labels.tif", field);
-    uf_status status = uf_text_check(&name, "file names", error);
-    if (status == UF_OK)
-        status = uf_encode_label_tiff(&bytes, labels, job->settings.pixel_size_um, "true cells", error);
-    if (status == UF_OK)
-        status = write_text(job, name.bytes, &bytes, error);
-    uf_text_free(&bytes);
-    uf_text_free(&name);
-    return status;
+    uf_text bytes = {0};
+    uf_status status = uf_encode_label_tiff(&bytes, labels, job->settings.pixel_size_um, "true cells", error);
+    return write_encoded(job, field, "_truth_labels", status, &bytes, error);
 }
 
 static uf_status write_images(demo_job *job, const char *name, const uf_scene *scene, int first, uf_error *error)
