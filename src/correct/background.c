@@ -41,17 +41,22 @@ static int64_t replace_hot(uf_plane image, double clear_adu)
 
 /* ---- first estimate -------------------------------------------------------------------------- */
 
+/* Empty substrate is taken to be at least this share of a field. */
+static const double least_empty = 0.05;
+
 enum { SAMPLE = 1 << 14 };
 
-/* A lattice of pixels over the image, at most SAMPLE of them. */
-static size_t sample_image(uf_plane image, double *values)
+/* A lattice of pixels over the image, at most SAMPLE of them; saturated ones pile up and are left out. */
+static size_t sample_image(const uf_channel *channel, double *values)
 {
+    uf_plane image = channel->image;
     int step = (int)ceil(sqrt((double)image.width * image.height / SAMPLE));
     step = step < 1 ? 1 : step;
     size_t count = 0;
     for (int y = step / 2; y < image.height; y += step)
         for (int x = step / 2; x < image.width && count < SAMPLE; x += step)
-            values[count++] = (double)uf_plane_row(image, y)[x];
+            if (!channel->saturated.data || !uf_mask_row(channel->saturated, y)[x])
+                values[count++] = (double)uf_plane_row(image, y)[x];
     return count;
 }
 
@@ -86,10 +91,10 @@ uf_status uf_background_first(uf_work *work, uf_channel *channel, uf_error *erro
     uf_status status = uf_take(work, SAMPLE, sizeof *values, "the background", &values, error);
     if (status != UF_OK)
         return status;
-    size_t count = sample_image(channel->image, values);
+    size_t count = sample_image(channel, values);
     uf_sort(values, count);
     /* The mode's own scatter is pulled in by the mean of what lies within one spread of it. */
-    double mode = uf_half_sample_mode(values, count), spread = lower_spread(values, count, mode);
+    double mode = uf_dense_mode(values, count, least_empty), spread = lower_spread(values, count, mode);
     double sum = 0, taken = 0;
     for (size_t k = 0; k < count; k++)
         if (fabs(values[k] - mode) <= 1.5 * spread) {

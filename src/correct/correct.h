@@ -29,8 +29,8 @@ UF_MUST_USE uf_status uf_correct_channel(uf_work *work, const uf_raw_channel *ra
                                          uf_error *error);
 
 /*
- * A first background: the mode of the pixel values (half-sample mode of a lattice of them), since empty
- * substrate is the narrowest peak of the histogram even in crowded fields. Sets background_adu, its sd,
+ * A first background: the mode of the pixel values (of a lattice of them), since empty substrate is the narrowest peak
+ * of the histogram even in crowded fields: the narrowest twentieth of the sample, and its half-sample mode. Sets background_adu, its sd,
  * noise_adu, and the noise model's gain where the camera keys do not give it (from the spread at the
  * background, taken to be shot noise).
  */

@@ -55,6 +55,17 @@ double uf_half_sample_mode(const double *sorted, size_t count)
     return count == 2 ? (sorted[0] + sorted[1]) / 2 : sorted[0];
 }
 
+double uf_dense_mode(const double *sorted, size_t count, double share)
+{
+    size_t run = (size_t)(share * (double)count), best = 0;
+    if (run < 8 || run > count)
+        return uf_half_sample_mode(sorted, count);
+    for (size_t k = 1; k + run <= count; k++)
+        if (sorted[k + run - 1] - sorted[k] < sorted[best + run - 1] - sorted[best])
+            best = k;
+    return uf_half_sample_mode(sorted + best, run);
+}
+
 static float middle_of_three(float a, float b, float c)
 {
     if (a > b) {

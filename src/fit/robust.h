@@ -19,6 +19,10 @@ void uf_sort(double *values, size_t count);
  * Fruehwirth 2006, Comput. Stat. Data Anal. 50:3500). Sorted values in, NaN for none. */
 double uf_half_sample_mode(const double *sorted, size_t count);
 
+/* The same within the narrowest run of `share` of the sample: finds a peak that holds little more than that share,
+ * where halving the whole sample would follow the larger, broader part. */
+double uf_dense_mode(const double *sorted, size_t count, double share);
+
 /* Moves the k-th smallest (from 0) of `count` floats to values[k], smaller ones before it and larger ones after
  * (Hoare 1961, Commun. ACM 4:321), in linear time on average. No NaN. Returns it. */
 float uf_select(float *values, size_t count, size_t k);

@@ -1,0 +1,84 @@
+/* SPDX-License-Identifier: GPL-3.0-or-later */
+/* From settings to the numbers of a run, in closed form. */
+#include <setjmp.h>
+#include <stdarg.h>
+#include <stddef.h>
+#include <stdint.h>
+#include <string.h>
+#include <cmocka.h>
+
+#include "near.h"
+#include "run/plan.h"
+
+static const char bench[] = "[light]\nwavelength_nm = 488\n[interface]\nsubstrate_n = 1.518\nmedium_n = 1.337\n"
+                            "[reference]\nratio = 1.5\nratio_sd = 0.03\n";
+
+static uf_status plan_of(const char *more, double image_um, uf_plan *plan, uf_error *error)
+{
+    uf_settings *settings;
+    assert_int_equal(uf_settings_new(&settings, error), UF_OK);
+    uf_status status = uf_settings_parse(settings, bench, sizeof bench - 1, "b.ini", UF_INSTRUMENT_FILE, error);
+    if (status == UF_OK)
+        status = uf_settings_parse(settings, more, strlen(more), "m.ini", UF_INSTRUMENT_FILE, error);
+    if (status == UF_OK)
+        status = uf_plan_make(settings, image_um, plan, error);
+    uf_settings_free(&settings);
+    return status;
+}
+
+static void test_depth_three_ways(void **state)
+{
+    (void)state;
+    static uf_plan a, b, c;
+    double na = 1.518 * sin(70 * 3.14159265358979323846 / 180);
+    double depth = 488 / (4 * 3.14159265358979323846 * sqrt(na * na - 1.337 * 1.337));
+    char text[80];
+    assert_int_equal(plan_of("[interface]\nangle_deg = 70\n", 0.1, &a, NULL), UF_OK);
+    (void)snprintf(text, sizeof text, "[interface]\nna_effective = %.12f\n", na);
+    assert_int_equal(plan_of(text, 0.1, &b, NULL), UF_OK);
+    (void)snprintf(text, sizeof text, "[interface]\ndepth_nm = %.10f\n", depth);
+    assert_int_equal(plan_of(text, 0.1, &c, NULL), UF_OK);
+    assert_near_rel(a.depth_nm, depth, 1e-10);
+    assert_near_rel(b.depth_nm, depth, 1e-9);
+    assert_near_rel(c.depth_nm, depth, 1e-9);
+}
+
+/* The ratio at gap 0 is the measured one times exp(gap / depth); its relative sd stays. */
+static void test_reference_at_a_gap(void **state)
+{
+    (void)state;
+    static uf_plan plan;
+    assert_int_equal(plan_of("[interface]\nangle_deg = 70\n[reference]\ngap_nm = 30\n", 0.1, &plan, NULL), UF_OK);
+    assert_near_rel(plan.reference_ratio, 1.5 * exp(30 / plan.depth_nm), 1e-6);
+    assert_near_abs(plan.reference_sd, 0.02, 1e-12);
+}
+
+static void test_pixel_size(void **state)
+{
+    (void)state;
+    static uf_plan plan;
+    uf_error error;
+    assert_int_equal(plan_of("[interface]\nangle_deg = 70\n", (double)NAN, &plan, &error), UF_INPUT);
+    assert_non_null(strstr(error.text, "[pixel]"));
+    assert_int_equal(plan_of("[interface]\nangle_deg = 70\n[pixel]\nsize_um = 0.2\n", 0.1, &plan, NULL), UF_OK);
+    assert_near_abs(plan.pixel_size_um, 0.2, 0);
+}
+
+/* An angle quoted in water-like index 1.34 conserves n sin angle (Snell). */
+static void test_angle_in_another_index(void **state)
+{
+    (void)state;
+    static uf_plan plan;
+    uf_error error;
+    assert_int_equal(plan_of("[interface]\nangle_deg = 80\nangle_n = 1.45\n", 0.1, &plan, NULL), UF_OK);
+    assert_near_rel(plan.bench.na_effective, 1.45 * sin(80 * 3.14159265358979323846 / 180), 1e-11);
+    assert_int_equal(plan_of("[interface]\nangle_deg = 80\nangle_n = 1.34\n", 0.1, &plan, &error), UF_INPUT);
+    assert_non_null(strstr(error.text, "not totally reflected"));
+}
+
+int main(void)
+{
+    const struct CMUnitTest tests[] = {cmocka_unit_test(test_depth_three_ways), cmocka_unit_test(test_reference_at_a_gap),
+                                       cmocka_unit_test(test_pixel_size), cmocka_unit_test(test_angle_in_another_index)};
+    return cmocka_run_group_tests(tests, NULL, NULL);
+}
