@@ -109,8 +109,9 @@ typedef struct uf_measure_request {
 } uf_measure_request;
 
 typedef struct uf_measure_summary {
-    int cells;      /* cells found */
-    int cells_used; /* cells that count (not dropped by the edge rule) */
+    int cells;          /* cells found */
+    int cells_used;     /* cells that count (not dropped by the edge rule) */
+    int cells_attached; /* used cells whose attachment fraction reaches the assay's threshold */
     int spots;
     double spread_area_median_um2; /* medians over used cells; NaN without cells */
     double contact_area_median_um2;

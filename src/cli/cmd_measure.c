@@ -30,6 +30,7 @@ static int print_summary(const measure_arguments *a, const uf_measure_summary *s
     uf_text_printf(&out, "%d cells (%d used), %d focal spots; depth %.1f nm\n", s->cells, s->cells_used, s->spots,
                    s->depth_nm);
     if (s->cells_used) {
+        uf_text_printf(&out, "%d of %d used cells are attached\n", s->cells_attached, s->cells_used);
         uf_text_add(&out, "Medians over used cells:\n");
         put_median(&out, "spread area", s->spread_area_median_um2, " um2");
         put_median(&out, "contact area", s->contact_area_median_um2, " um2");

@@ -369,8 +369,12 @@ static uf_status summarise(measure_job *job, uf_measure_summary *summary, uf_err
         return status;
     summary->cells = cells;
     summary->spots = job->result.field.spots;
-    for (int k = 0; k < cells; k++)
-        summary->cells_used += job->result.rows[k].used;
+    for (int k = 0; k < cells; k++) {
+        const uf_cell *row = &job->result.rows[k];
+        summary->cells_used += row->used;
+        summary->cells_attached +=
+            row->used && row->attachment_fraction >= job->settings->contact.attached_threshold; /* NaN: no */
+    }
     summary->spread_area_median_um2 = median_of(job, offsetof(uf_cell, spread_area_um2), scratch);
     summary->contact_area_median_um2 = median_of(job, offsetof(uf_cell, contact_area_um2), scratch);
     summary->attachment_fraction_median = median_of(job, offsetof(uf_cell, attachment_fraction), scratch);

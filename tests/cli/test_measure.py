@@ -38,6 +38,9 @@ def test_summary_says_what_was_found_and_where(demo, tmp_path):
     cells = rows(tmp_path / "out/cells.csv")
     assert re.match(rf"{len(cells)} cells", run.out)
     assert "overlay/a_near.png" in run.out
+    used = [r for r in cells if r["used"] == "yes"]
+    attached = [r for r in used if number(r["attachment_fraction"]) >= 0.1]  # the default threshold
+    assert f"{len(attached)} of {len(used)} used cells are attached" in run.out
 
 
 def test_quiet_prints_nothing(demo, tmp_path):

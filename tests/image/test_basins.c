@@ -7,6 +7,7 @@
 #include <string.h>
 #include <cmocka.h>
 
+#include "blank.h"
 #include "image/basins.h"
 #include "image/distance.h"
 #include "near.h"
@@ -20,19 +21,10 @@ static int tear_down(void **state)
     return 0;
 }
 
-static uf_labels blank(int width, int height)
-{
-    uf_labels labels;
-    assert_int_equal(uf_labels_take(&work, width, height, &labels, NULL), UF_OK);
-    memset(labels.data, 0, (size_t)width * (size_t)height * sizeof *labels.data);
-    labels.count = 1;
-    return labels;
-}
-
 /* Two discs of radius 40 whose centres are `apart` away: the neck's half width is sqrt(40^2 - (apart / 2)^2). */
 static int parts_of_two_discs(int apart, double neck)
 {
-    uf_labels labels = blank(90 + apart, 90);
+    uf_labels labels = blank(&work, 90 + apart, 90);
     for (int y = 0; y < 90; y++)
         for (int x = 0; x < labels.width; x++)
             if (hypot(x - 45, y - 45) <= 40 || hypot(x - 45 - apart, y - 45) <= 40)
@@ -66,7 +58,7 @@ static void test_tidy(void **state)
 {
     (void)state;
     static const char picture[6][13] = {"aaaa..bbbb.e", "aaaa..bbbb..", "aacc..bbbb..", "............", "dddddddddddd", "dddddddddddd"};
-    uf_labels labels = blank(12, 6);
+    uf_labels labels = blank(&work, 12, 6);
     for (int y = 0; y < 6; y++)
         for (int x = 0; x < 12; x++)
             uf_labels_row(labels, y)[x] = picture[y][x] == '.' ? 0 : 9 - (picture[y][x] - 'a');

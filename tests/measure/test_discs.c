@@ -7,6 +7,7 @@
 #include <string.h>
 #include <cmocka.h>
 
+#include "blank.h"
 #include "image/distance.h"
 #include "measure/shape.h"
 #include "near.h"
@@ -20,19 +21,9 @@ static int tear_down(void **state)
     return 0;
 }
 
-static uf_labels blank(int width, int height)
-{
-    uf_labels labels;
-    uf_error error;
-    assert_int_equal(uf_labels_take(&work, width, height, &labels, &error), UF_OK);
-    memset(labels.data, 0, (size_t)width * (size_t)height * sizeof *labels.data);
-    labels.count = 1;
-    return labels;
-}
-
 static uf_labels disc(int r)
 {
-    uf_labels labels = blank(2 * r + 5, 2 * r + 3);
+    uf_labels labels = blank(&work, 2 * r + 5, 2 * r + 3);
     for (int y = -r; y <= r; y++)
         for (int x = -r; x <= r; x++)
             if (x * x + y * y <= r * r)
@@ -85,7 +76,7 @@ static void test_rectangles(void **state)
     static const int sides[][2] = {{1, 1}, {1, 9}, {13, 1}, {7, 8}, {31, 17}};
     for (int k = 0; k < 5; k++) {
         int w = sides[k][0], h = sides[k][1];
-        uf_labels labels = blank(w, h); /* fills the image: every side is the border */
+        uf_labels labels = blank(&work, w, h); /* fills the image: every side is the border */
         for (int y = 0; y < h; y++)
             for (int x = 0; x < w; x++)
                 uf_labels_row(labels, y)[x] = 1;
@@ -103,7 +94,7 @@ static void test_rectangles(void **state)
 static void test_orientation_is_counter_clockwise_as_seen(void **state)
 {
     (void)state;
-    uf_labels labels = blank(40, 40);
+    uf_labels labels = blank(&work, 40, 40);
     for (int k = 3; k < 37; k++)
         for (int t = -1; t <= 1; t++)
             uf_labels_row(labels, 39 - k)[k + t] = 1;
@@ -116,7 +107,7 @@ static void test_distances(void **state)
     (void)state;
     static const int squared[5][7] = {{5, 4, 5, 8, 4, 1, 0}, {2, 1, 2, 5, 5, 2, 1}, {1, 0, 1, 4, 8, 5, 4},
                                       {2, 1, 2, 5, 10, 10, 9}, {5, 4, 5, 8, 13, 17, 16}};
-    uf_labels labels = blank(7, 5);
+    uf_labels labels = blank(&work, 7, 5);
     uf_labels_row(labels, 2)[1] = uf_labels_row(labels, 0)[6] = 1;
     uf_plane distance;
     uf_error error;
@@ -128,7 +119,7 @@ static void test_distances(void **state)
                 double d = (double)uf_plane_row(distance, y)[x];
                 assert_near_abs(d * d, squared[y][x], 1e-5);
             }
-    uf_labels frame = blank(11, 9);
+    uf_labels frame = blank(&work, 11, 9);
     for (int y = 1; y < 8; y++)
         for (int x = 1; x < 9; x++)
             uf_labels_row(frame, y)[x] = 1;
@@ -153,7 +144,7 @@ static void test_distances(void **state)
 static void test_one_label_is_far_from_everything(void **state)
 {
     (void)state;
-    uf_labels labels = blank(6, 4);
+    uf_labels labels = blank(&work, 6, 4);
     uf_plane distance;
     uf_error error;
     assert_int_equal(uf_plane_take(&work, 6, 4, &distance, &error), UF_OK);
