@@ -209,8 +209,8 @@ static void fill_closed(hole_job *job, double max_pixels)
         }
 }
 
-uf_status uf_fill_holes_where(uf_work *work, uf_mask mask, double small_pixels, double max_pixels, uf_mask fillable,
-                              uf_error *error)
+uf_status uf_fill_holes(uf_work *work, uf_mask mask, double small_pixels, double max_pixels, uf_mask fillable,
+                        uf_error *error)
 {
     hole_job job = {.mask = mask};
     size_t total = count_zero_runs(mask);
@@ -229,9 +229,4 @@ uf_status uf_fill_holes_where(uf_work *work, uf_mask mask, double small_pixels, 
     }
     uf_arena_back(&work->arena, mark);
     return status;
-}
-
-uf_status uf_fill_holes(uf_work *work, uf_mask mask, double max_pixels, uf_error *error)
-{
-    return uf_fill_holes_where(work, mask, max_pixels, max_pixels, (uf_mask){0}, error);
 }

@@ -12,12 +12,10 @@ typedef enum uf_neighbours { UF_FOUR_NEIGHBOURS, UF_EIGHT_NEIGHBOURS } uf_neighb
 UF_MUST_USE uf_status uf_components(uf_work *work, uf_mask mask, uf_neighbours neighbours, uf_labels *labels,
                                     uf_error *error);
 
-/* Fills holes: 0-regions (4-connected) that do not reach the image border and have at most `max_pixels`. */
-UF_MUST_USE uf_status uf_fill_holes(uf_work *work, uf_mask mask, double max_pixels, uf_error *error);
-
-/* The same, but a hole of more than `small_pixels` is filled only where `fillable` is 1 all over it. */
-UF_MUST_USE uf_status uf_fill_holes_where(uf_work *work, uf_mask mask, double small_pixels, double max_pixels,
-                                          uf_mask fillable, uf_error *error);
+/* Fills holes: 0-regions (4-connected) that do not reach the image border and have at most `max_pixels`. One of more
+ * than `small_pixels` is filled only where `fillable` is 1 all over it (data NULL: everywhere). */
+UF_MUST_USE uf_status uf_fill_holes(uf_work *work, uf_mask mask, double small_pixels, double max_pixels,
+                                    uf_mask fillable, uf_error *error);
 
 /* Pixels of each label into areas[0 .. count]. */
 void uf_label_areas(uf_labels labels, int64_t *areas);

@@ -2,6 +2,7 @@
 #include <math.h>
 #include <string.h>
 
+#include "base/constants.h"
 #include "fit/robust.h"
 #include "image/components.h"
 #include "measure/intervals.h"
@@ -184,7 +185,7 @@ static void fill_shape(const cell_job *job, const uf_shape *shape, uf_cell *row)
     row->y_um = shape->y_px * px;
     row->spread_area_um2 = shape->area_px * job->um2;
     row->perimeter_um = shape->perimeter_px * px;
-    row->circularity = 2 * sqrt(3.14159265358979323846 * shape->area_px) / shape->perimeter_px;
+    row->circularity = 2 * sqrt(UF_PI * shape->area_px) / shape->perimeter_px;
     row->caliper_max_um = shape->caliper_max_px * px;
     row->caliper_min_um = shape->caliper_min_px * px;
     row->elongation = shape->caliper_max_px / shape->caliper_min_px;

@@ -4,6 +4,7 @@
 #include <math.h>
 #include <stdlib.h>
 
+#include "base/constants.h"
 #include "image/kernels.h"
 
 static const double reaches_um[] = {0.45, 0.7, 1.0, 1.4, 1.8};
@@ -25,7 +26,7 @@ static void make_offsets(contrast_job *job, double pixel_size_um)
 {
     for (int d = 0; d < DIRECTIONS; d++)
         for (int r = 0; r < REACHES; r++) {
-            double angle = 3.14159265358979323846 * d / DIRECTIONS, px = reaches_um[r] / pixel_size_um;
+            double angle = UF_PI * d / DIRECTIONS, px = reaches_um[r] / pixel_size_um;
             px = px < 1 ? 1 : px;
             job->offsets[d][r] = (offset){(int)lround(px * cos(angle)), (int)lround(px * sin(angle))};
         }

@@ -3,7 +3,7 @@
 
 #include <math.h>
 
-static const double pi = 3.14159265358979323846;
+#include "base/constants.h"
 
 /* ---- moments --------------------------------------------------------------------------------- */
 
@@ -14,7 +14,7 @@ void uf_shape_ellipse(double variance_x, double variance_y, double covariance, u
     shape->axis_long_px = 4 * sqrt(half_sum + root);
     shape->axis_short_px = 4 * sqrt(fmax(0, half_sum - root));
     /* y points down in the image, so the angle's sign is turned to read counter-clockwise. */
-    double angle = -0.5 * atan2(2 * covariance, variance_x - variance_y) * 180 / pi;
+    double angle = -0.5 * atan2(2 * covariance, variance_x - variance_y) * 180 / UF_PI;
     shape->orientation_deg = root > 0 ? (angle <= -90 ? angle + 180 : angle) : 0;
 }
 
@@ -199,6 +199,6 @@ uf_status uf_shape_of(uf_work *work, uf_labels labels, int label, uf_box box, uf
 {
     moments(labels, label, box, shape);
     transitions t = count_transitions(labels, label, box);
-    shape->perimeter_px = pi / 8 * (t.straight + t.aslant / sqrt(2.0));
+    shape->perimeter_px = UF_PI / 8 * (t.straight + t.aslant / sqrt(2.0));
     return hull_of(work, labels, label, box, shape, error);
 }

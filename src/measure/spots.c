@@ -11,6 +11,7 @@
 #include <stdlib.h>
 #include <string.h>
 
+#include "base/constants.h"
 #include "fit/robust.h"
 #include "image/basins.h"
 #include "measure/contrast.h"
@@ -218,7 +219,7 @@ static double alignment(const uf_spot *spots, int count)
         return (double)NAN;
     double c = 0, s = 0, n = count;
     for (int k = 0; k < count; k++) {
-        double doubled = spots[k].orientation_deg * 3.14159265358979323846 / 90.0;
+        double doubled = spots[k].orientation_deg * UF_PI / 90.0;
         c += cos(doubled);
         s += sin(doubled);
     }

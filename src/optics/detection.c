@@ -3,10 +3,12 @@
 
 #include <math.h>
 
+#include "base/constants.h"
+
 double uf_psf_smoothing(const uf_plan *plan)
 {
     double psf_px = plan->psf_sigma_um / plan->pixel_size_um;
-    return 1.0 / fmax(1.0, 4.0 * 3.14159265358979323846 * psf_px * psf_px);
+    return 1.0 / fmax(1.0, 4.0 * UF_PI * psf_px * psf_px);
 }
 
 double uf_smoothed_sd(const uf_plan *plan, const uf_channel *channel, double signal_adu)

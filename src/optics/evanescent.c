@@ -4,11 +4,11 @@
 #include <complex.h>
 #include <math.h>
 
-static const double pi = 3.14159265358979323846;
+#include "base/constants.h"
 
 static double degrees(double radians)
 {
-    return radians * 180.0 / pi;
+    return radians * 180.0 / UF_PI;
 }
 
 double uf_critical_angle_deg(double substrate_n, double medium_n)
@@ -19,17 +19,17 @@ double uf_critical_angle_deg(double substrate_n, double medium_n)
 double uf_depth_nm(double wavelength_nm, double na_effective, double medium_n)
 {
     double decay = na_effective * na_effective - medium_n * medium_n;
-    return decay > 0 && wavelength_nm > 0 ? wavelength_nm / (4.0 * pi * sqrt(decay)) : (double)NAN;
+    return decay > 0 && wavelength_nm > 0 ? wavelength_nm / (4.0 * UF_PI * sqrt(decay)) : (double)NAN;
 }
 
 double uf_na_from_angle(double angle_deg, double index)
 {
-    return angle_deg >= 0 && angle_deg <= 90 ? index * sin(angle_deg * pi / 180.0) : (double)NAN;
+    return angle_deg >= 0 && angle_deg <= 90 ? index * sin(angle_deg * UF_PI / 180.0) : (double)NAN;
 }
 
 double uf_na_from_depth(double depth_nm, double wavelength_nm, double medium_n)
 {
-    double decay = wavelength_nm / (4.0 * pi * depth_nm);
+    double decay = wavelength_nm / (4.0 * UF_PI * depth_nm);
     return depth_nm > 0 ? sqrt(medium_n * medium_n + decay * decay) : (double)NAN;
 }
 
@@ -100,7 +100,7 @@ double uf_layered_intensity(const uf_bench *bench, double gap_nm)
 {
     double na = bench->na_effective, n0 = bench->substrate_n, n1 = bench->medium_n, n2 = bench->cell_n;
     double complex k0 = normal_component(n0, na), k1 = normal_component(n1, na), k2 = normal_component(n2, na);
-    double complex phase = cexp(I * k1 * (2.0 * pi * gap_nm / bench->wavelength_nm));
+    double complex phase = cexp(I * k1 * (2.0 * UF_PI * gap_nm / bench->wavelength_nm));
     double s = square(through(fresnel_s(k0, k1), fresnel_s(k1, k2), phase));
     double complex tp = through(fresnel_p(k0, n0, k1, n1), fresnel_p(k1, n1, k2, n2), phase);
     /* The p field has a part along the interface and one across it. */

@@ -39,9 +39,7 @@ static void find_numbers(const uf_settings *s, optics_numbers *o)
     for (int k = 0; k < GAPS; k++) {
         o->exponential[k] = exp(-gaps_nm[k] / o->depth_nm);
         o->layered[k] = uf_layered_intensity(b, gaps_nm[k]) / at_contact;
-        o->in_force[k] =
-            uf_relative_excitation(b, s->decay.model == UF_DECAY_LAYERED ? UF_FIELD_LAYERED : UF_FIELD_EXPONENTIAL,
-                                   (uf_stray){s->decay.scattered_fraction, s->decay.scattered_depth_nm}, gaps_nm[k]);
+        o->in_force[k] = uf_relative_excitation(b, uf_field_of(s), uf_stray_of(s), gaps_nm[k]);
     }
 }
 

@@ -64,14 +64,23 @@ static uf_status find_pixel_size(const uf_settings *s, double image_pixel_um, do
                    "neither the instrument file nor the image says how large a pixel is; add size_um to [pixel]");
 }
 
+uf_field_model uf_field_of(const uf_settings *s)
+{
+    return s->decay.model == UF_DECAY_LAYERED ? UF_FIELD_LAYERED : UF_FIELD_EXPONENTIAL;
+}
+
+uf_stray uf_stray_of(const uf_settings *s)
+{
+    return (uf_stray){s->decay.scattered_fraction, s->decay.scattered_depth_nm};
+}
+
 /* The plain exponential has its closed form; every other table is walked. */
 static uf_status make_decay(const uf_settings *s, uf_plan *plan, uf_error *error)
 {
-    uf_stray stray = {s->decay.scattered_fraction, s->decay.scattered_depth_nm};
-    plan->model = s->decay.model == UF_DECAY_LAYERED ? UF_FIELD_LAYERED : UF_FIELD_EXPONENTIAL;
-    plan->stray = stray;
-    if (plan->model != UF_FIELD_EXPONENTIAL || stray.fraction > 0)
-        return uf_decay_make(&plan->decay, &plan->bench, plan->model, stray, error);
+    plan->model = uf_field_of(s);
+    plan->stray = uf_stray_of(s);
+    if (plan->model != UF_FIELD_EXPONENTIAL || plan->stray.fraction > 0)
+        return uf_decay_make(&plan->decay, &plan->bench, plan->model, plan->stray, error);
     uf_decay_exponential(&plan->decay, plan->depth_nm);
     return UF_OK;
 }

@@ -97,7 +97,7 @@ static uf_status fill_dim_places(uf_work *work, uf_plane smooth, const uf_cell_m
     if (status == UF_OK)
         status = cut_image(work, smooth, map, hole_share, &above_outside, error);
     if (status == UF_OK)
-        status = uf_fill_holes_where(work, mask, speck_um2 / um2, max_pixels, above_outside, error);
+        status = uf_fill_holes(work, mask, speck_um2 / um2, max_pixels, above_outside, error);
     uf_arena_back(&work->arena, mark);
     return status;
 }

@@ -74,7 +74,7 @@ def test_fill_holes(shape):
     mask[:] = blobs(shape, 7, 0.6)
     expected = ndimage.binary_fill_holes(mask)
     assert expected.sum() > mask.sum()
-    call("uf_fill_holes", view(Plane, mask), real(1e9))
+    call("uf_fill_holes", view(Plane, mask), real(0), real(1e9), Plane())
     assert (mask == expected).all()
 
 
