@@ -25,7 +25,7 @@ LIBRARIES := libtiff-4 libpng fftw3f jansson libxxhash
 HAVE_LIBRARIES := $(shell pkg-config --exists $(LIBRARIES) 2>/dev/null && echo yes)
 ifeq ($(HAVE_LIBRARIES),yes)
 LIB_CFLAGS := $(shell pkg-config --cflags $(LIBRARIES))
-LIB_LINK   := $(shell pkg-config --libs $(LIBRARIES))
+LIB_LINK   := $(shell pkg-config --libs $(LIBRARIES)) -lcsv
 endif
 
 # The same bytes everywhere: ISO C11 and no contraction of a*b+c, whichever the compiler.
@@ -112,7 +112,7 @@ $(BUILD)/flags: FORCE
 
 # ---- what a fresh machine needs ------------------------------------------------------------------
 
-BUILD_PACKAGES := gcc make pkg-config libc6-dev libtiff-dev libpng-dev libfftw3-dev libjansson-dev libxxhash-dev
+BUILD_PACKAGES := gcc make pkg-config libc6-dev libtiff-dev libpng-dev libfftw3-dev libjansson-dev libxxhash-dev libcsv-dev
 TEST_PACKAGES  := clang libcmocka-dev python3 python3-numpy python3-scipy python3-skimage python3-tifffile python3-pytest python3-pil
 
 packages:

@@ -18,18 +18,38 @@ void uf_decay_exponential(uf_decay *decay, double depth_nm)
         decay->lookup.gap_nm[k] = (float)(depth_nm * step * k);
 }
 
-double uf_relative_excitation(const uf_bench *bench, uf_field_model model, uf_stray stray, double gap_nm)
+static double ln_between(const uf_decay_points *points, double gap_nm)
 {
-    double depth = uf_depth_nm(bench->wavelength_nm, bench->na_effective, bench->medium_n);
-    double field = model == UF_FIELD_LAYERED ? uf_layered_intensity(bench, gap_nm) / uf_layered_intensity(bench, 0)
-                                             : exp(-gap_nm / depth);
-    double scattered = stray.fraction > 0 ? stray.fraction * exp(-gap_nm / stray.depth_nm) : 0;
-    return (1 - stray.fraction) * field + scattered;
+    int k = 1;
+    while (k < points->count - 1 && points->gap_nm[k] < gap_nm)
+        k++;
+    double share = (gap_nm - points->gap_nm[k - 1]) / (points->gap_nm[k] - points->gap_nm[k - 1]);
+    return points->ln_relative[k - 1] + share * (points->ln_relative[k] - points->ln_relative[k - 1]);
+}
+
+static double field_at(const uf_bench *bench, const uf_decay_law *law, double gap_nm)
+{
+    switch (law->model) {
+    case UF_FIELD_LAYERED:
+        return uf_layered_intensity(bench, gap_nm) / uf_layered_intensity(bench, 0);
+    case UF_FIELD_TABLE:
+        return exp(ln_between(&law->points, gap_nm));
+    case UF_FIELD_EXPONENTIAL:
+        break;
+    }
+    return exp(-gap_nm / uf_depth_nm(bench->wavelength_nm, bench->na_effective, bench->medium_n));
+}
+
+double uf_relative_excitation(const uf_bench *bench, const uf_decay_law *law, double gap_nm)
+{
+    const uf_stray *stray = &law->stray;
+    double scattered = stray->fraction > 0 ? stray->fraction * exp(-gap_nm / stray->depth_nm) : 0;
+    return (1 - stray->fraction) * field_at(bench, law, gap_nm) + scattered;
 }
 
 static const double walk_nm = 0.25, farthest_nm = 20000;
 
-uf_status uf_decay_make(uf_decay *decay, const uf_bench *bench, uf_field_model model, uf_stray stray, uf_error *error)
+uf_status uf_decay_make(uf_decay *decay, const uf_bench *bench, const uf_decay_law *law, uf_error *error)
 {
     uf_gap_lookup *lookup = &decay->lookup;
     double step = deepest_ln / (UF_DECAY_NODES - 1), gap = 0, ln = 0;
@@ -39,7 +59,7 @@ uf_status uf_decay_make(uf_decay *decay, const uf_bench *bench, uf_field_model m
     lookup->gap_nm[0] = 0.0f;
     int node = 1;
     while (node < UF_DECAY_NODES && gap < farthest_nm) {
-        double next = log(uf_relative_excitation(bench, model, stray, gap + walk_nm));
+        double next = log(uf_relative_excitation(bench, law, gap + walk_nm));
         if (!(next < ln))
             return uf_fail(error, UF_INPUT,
                            "the excitation does not fall with the gap at %.4g nm in this model; a steeper angle or "

@@ -60,7 +60,7 @@ double uf_interface_p(double na_effective, double substrate_n, double medium_n)
     return 4.0 * cosine2 * (2.0 * sine2 - n2) / (n2 * n2 * cosine2 + sine2 - n2);
 }
 
-/* ---- substrate | medium | cell --------------------------------------------------------------- */
+/* ---- substrate | coating | medium | cell ----------------------------------------------------- */
 
 /* Normal component of the wave vector in units of the vacuum wave number; its imaginary part, where there
  * is one, is positive, so that the wave decays away from the substrate. */
@@ -91,21 +91,61 @@ static double square(double complex z)
     return creal(z) * creal(z) + cimag(z) * cimag(z);
 }
 
-static double complex through(fresnel first, fresnel second, double complex phase)
+typedef struct layer {
+    double n, thickness_nm;
+} layer;
+
+/* |E|^2 at the far side of the last interface, from the far end to the substrate: what lies beyond an interface is one
+ * mirror of amplitude `reflected`, and `passed` of what reaches it comes out at the far end. */
+static double far_side_intensity(const uf_bench *bench, const layer *layers, int count, int p_polarized)
 {
-    return first.t * second.t * phase / (1.0 + first.r * second.r * phase * phase);
+    double na = bench->na_effective, last_n = layers[count - 1].n;
+    double complex k_far = normal_component(last_n, na), reflected = 0, passed = 1;
+    for (int j = count - 2; j >= 0; j--) {
+        double complex k = normal_component(layers[j].n, na), k_next = normal_component(layers[j + 1].n, na);
+        fresnel f = p_polarized ? fresnel_p(k, layers[j].n, k_next, layers[j + 1].n) : fresnel_s(k, k_next);
+        double thickness = j + 2 < count ? layers[j + 1].thickness_nm : 0;
+        double complex phase = cexp(I * k_next * (2.0 * UF_PI * thickness / bench->wavelength_nm));
+        double complex echo = reflected * phase * phase;
+        passed *= f.t * phase / (1.0 + f.r * echo);
+        reflected = (f.r + echo) / (1.0 + f.r * echo);
+    }
+    /* The p field has a part along the interface and one across it. */
+    double parts = p_polarized ? (square(k_far) + na * na) / (last_n * last_n) : 1;
+    return square(passed) * parts;
+}
+
+static double in_polarization(const uf_bench *bench, const layer *layers, int count)
+{
+    return (1.0 - bench->p_fraction) * far_side_intensity(bench, layers, count, 0) +
+           bench->p_fraction * far_side_intensity(bench, layers, count, 1);
+}
+
+/* Substrate and coating, where there is one; returns how many layers. */
+static int lay_substrate(const uf_bench *bench, layer *layers)
+{
+    layers[0] = (layer){bench->substrate_n, 0};
+    if (!(bench->coating_nm > 0))
+        return 1;
+    layers[1] = (layer){bench->coating_n, bench->coating_nm};
+    return 2;
+}
+
+double uf_interface_intensity(const uf_bench *bench)
+{
+    layer layers[3];
+    int count = lay_substrate(bench, layers);
+    layers[count++] = (layer){bench->medium_n, 0};
+    return in_polarization(bench, layers, count);
 }
 
 double uf_layered_intensity(const uf_bench *bench, double gap_nm)
 {
-    double na = bench->na_effective, n0 = bench->substrate_n, n1 = bench->medium_n, n2 = bench->cell_n;
-    double complex k0 = normal_component(n0, na), k1 = normal_component(n1, na), k2 = normal_component(n2, na);
-    double complex phase = cexp(I * k1 * (2.0 * UF_PI * gap_nm / bench->wavelength_nm));
-    double s = square(through(fresnel_s(k0, k1), fresnel_s(k1, k2), phase));
-    double complex tp = through(fresnel_p(k0, n0, k1, n1), fresnel_p(k1, n1, k2, n2), phase);
-    /* The p field has a part along the interface and one across it. */
-    double p = square(tp) * (square(k2) + na * na) / (n2 * n2);
-    return (1.0 - bench->p_fraction) * s + bench->p_fraction * p;
+    layer layers[4];
+    int count = lay_substrate(bench, layers);
+    layers[count++] = (layer){bench->medium_n, gap_nm};
+    layers[count++] = (layer){bench->cell_n, 0};
+    return in_polarization(bench, layers, count);
 }
 
 /* ---- verdicts -------------------------------------------------------------------------------- */

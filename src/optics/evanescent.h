@@ -15,8 +15,10 @@ typedef struct uf_bench {
     double substrate_n_sd, medium_n_sd, cell_n_sd;
     double na_effective; /* n sin(angle), the same in every layer */
     double na_effective_sd;
-    double depth_sd_nm;  /* NaN unless the depth itself was measured: then it stands for the angle's part */
-    double p_fraction;   /* share of p polarization: 0 for s, 1 for p, 0.5 for mixed */
+    double depth_sd_nm; /* NaN unless the depth itself was measured: then it stands for the angle's part */
+    double p_fraction;  /* share of p polarization: 0 for s, 1 for p, 0.5 for mixed */
+    double coating_n;   /* thin layer on the substrate; only read when coating_nm is above 0 */
+    double coating_nm;
     double objective_na; /* NaN for a prism */
 } uf_bench;
 
@@ -37,14 +39,18 @@ double uf_angle_from_na(double na_effective, double index);
 double uf_interface_s(double na_effective, double substrate_n, double medium_n);
 double uf_interface_p(double na_effective, double substrate_n, double medium_n);
 
-/* |E|^2 at the cell's side of substrate | medium of thickness gap | cell, in the bench's polarization, from
- * the Fresnel coefficients of the two interfaces summed over all passes (Born and Wolf, Principles of
- * Optics, section 1.6; transfer matrices of one layer). gap_nm at least 0. */
+/* |E|^2 on top of the coating (bare: of the substrate) with medium alone above it, in the bench's polarization. */
+double uf_interface_intensity(const uf_bench *bench);
+
+/* |E|^2 at the cell's side of substrate | coating | medium of thickness gap | cell, in the bench's polarization: Fresnel
+ * coefficients summed over all passes, layer by layer (Born and Wolf, Principles of Optics, section 1.6). This is the
+ * transfer matrices' product arranged so that only decaying exponentials occur: no gap is too large for it. gap_nm at
+ * least 0. */
 double uf_layered_intensity(const uf_bench *bench, double gap_nm);
 
 /* Whether the set-up is totally reflected at all, against the medium; UF_INPUT says by how much not and
  * gives the smallest angle and n sin(angle) that would be. A set-up that is, but not against the cell, is
- * no error here: uf_bench_warns tells. */
+ * no error here: uf_bench_leaks_into_cell tells. */
 UF_MUST_USE uf_status uf_bench_check(const uf_bench *bench, uf_error *error);
 
 /* True when light may pass into the cell where it touches: na_effective <= cell_n + 2 sd. */

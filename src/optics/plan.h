@@ -9,8 +9,7 @@
 typedef struct uf_plan {
     uf_bench bench;
     uf_decay decay;
-    uf_field_model model;
-    uf_stray stray;
+    uf_decay_law law;
     double pixel_size_um;
     double psf_sigma_um; /* of the near image: 0.21 emission wavelength / NA */
     double depth_nm, depth_sd_nm;

@@ -10,8 +10,10 @@
 #include "io/csv.h"
 #include "io/image_encode.h"
 #include "io/image_file.h"
+#include "io/input.h"
 #include "io/output.h"
 #include "report/overlay.h"
+#include "run/decay_law.h"
 #include "run/field.h"
 #include "run/plan.h"
 #include "run/run_json.h"
@@ -108,6 +110,21 @@ static uf_status read_channel(measure_job *job, uf_channel_name which, double *p
     return status;
 }
 
+/* The plan has read the table of a measured decay; here it joins the list of inputs. */
+static uf_status note_decay_file(measure_job *job, uf_error *error)
+{
+    const char *path = job->settings->decay.file;
+    uf_text text = {0};
+    if (job->plan.law.model != UF_FIELD_TABLE)
+        return UF_OK;
+    uf_status status = uf_input_read(&text, path, UF_DECAY_FILE_BYTES, error);
+    if (status == UF_OK)
+        job->inputs[job->input_count++] =
+            (uf_run_input){"decay table", path, text.length, uf_fingerprint(text.bytes, text.length)};
+    uf_text_free(&text);
+    return status;
+}
+
 /* Everything that can be wrong with the settings is said before pixels are worked on. */
 static uf_status read_inputs(measure_job *job, uf_error *error)
 {
@@ -115,6 +132,8 @@ static uf_status read_inputs(measure_job *job, uf_error *error)
     uf_status status = read_channel(job, UF_NEAR, &near_um, error);
     if (status == UF_OK)
         status = uf_plan_make(job->settings, near_um, &job->plan, error);
+    if (status == UF_OK)
+        status = note_decay_file(job, error);
     if (status == UF_OK)
         status = read_channel(job, UF_WIDE, &wide_um, error);
     if (status != UF_OK)
@@ -246,11 +265,12 @@ static uf_status write_maps(measure_job *job, uf_error *error)
 
 static void settings_line(const measure_job *job, uf_text *line)
 {
+    static const char *const models[] = {
+        [UF_FIELD_EXPONENTIAL] = "exponential", [UF_FIELD_LAYERED] = "layered", [UF_FIELD_TABLE] = "measured"};
     const uf_settings *s = job->settings;
     uf_text_printf(line, "%s decay%s, depth %.1f nm, contact at most %.4g nm, reference %.4g at gap 0",
-                   job->plan.model == UF_FIELD_LAYERED ? "layered" : "exponential",
-                   job->plan.stray.fraction > 0 ? " with stray light" : "", job->plan.depth_nm, s->contact.cutoff_nm,
-                   job->plan.reference_ratio);
+                   models[job->plan.law.model], job->plan.law.stray.fraction > 0 ? " with stray light" : "",
+                   job->plan.depth_nm, s->contact.cutoff_nm, job->plan.reference_ratio);
 }
 
 static void flag_words(uf_flags flags, uf_text *words)

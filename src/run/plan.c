@@ -3,20 +3,40 @@
 
 #include <math.h>
 
+#include "optics/refractive.h"
+#include "run/decay_law.h"
+
 /* Emission is redder than excitation by about this (common practice, no source), and a diffraction-limited
  * image of a point is close to a Gaussian of sigma 0.21 wavelength / NA (Zhang, Zerubia and Olivo-Marin 2007,
  * Appl. Opt. 46:1819; value from memory). */
 static const double stokes_shift = 1.06, psf_per_wavelength = 0.21;
 static const double usual_na = 1.45;
 
-static double angle_index(const uf_settings *s)
+/* Indices given as numbers are taken as they are; those given by name come from their formulas. */
+static uf_status find_indices(const uf_settings *s, uf_bench *b, uf_error *error)
 {
-    return isnan(s->interface.angle_n) ? s->interface.substrate_n : s->interface.angle_n;
+    double nm = s->light.wavelength_nm;
+    int named = s->interface.substrate != UF_SETTING_NOT_GIVEN || s->interface.medium != UF_SETTING_NOT_GIVEN;
+    if (named && (nm < 300 || nm > 1100))
+        return uf_fail(error, UF_INPUT,
+                       "indices by name are known from 300 to 1100 nm, not at %.4g nm; give substrate_n and medium_n",
+                       nm);
+    b->substrate_n = s->interface.substrate_n;
+    b->medium_n = s->interface.medium_n;
+    b->medium_n_sd = s->interface.medium_n_sd;
+    if (s->interface.substrate != UF_SETTING_NOT_GIVEN)
+        b->substrate_n = uf_round_digits(uf_glass_n((uf_glass)s->interface.substrate, nm), 12);
+    if (s->interface.medium == UF_SETTING_NOT_GIVEN)
+        return UF_OK;
+    uf_medium medium = (uf_medium)s->interface.medium;
+    b->medium_n = uf_round_digits(uf_medium_n(medium, nm, s->interface.temperature_c), 12);
+    b->medium_n_sd = fmax(b->medium_n_sd, uf_medium_n_sd(medium));
+    return UF_OK;
 }
 
 static void find_na(const uf_settings *s, uf_bench *b)
 {
-    b->depth_sd_nm = (double)NAN;
+    double n = isnan(s->interface.angle_n) ? b->substrate_n : s->interface.angle_n;
     if (!isnan(s->interface.na_effective)) {
         b->na_effective = s->interface.na_effective;
         b->na_effective_sd = s->interface.na_effective_sd;
@@ -25,7 +45,7 @@ static void find_na(const uf_settings *s, uf_bench *b)
         b->na_effective_sd = 0;
         b->depth_sd_nm = s->interface.depth_sd_nm;
     } else {
-        double n = angle_index(s), sd = s->interface.angle_sd_deg;
+        double sd = s->interface.angle_sd_deg;
         b->na_effective = uf_na_from_angle(s->interface.angle_deg, n);
         double up = uf_na_from_angle(fmin(90, s->interface.angle_deg + sd), n);
         double down = uf_na_from_angle(fmax(0, s->interface.angle_deg - sd), n);
@@ -35,21 +55,32 @@ static void find_na(const uf_settings *s, uf_bench *b)
     }
 }
 
-uf_status uf_bench_make(const uf_settings *s, uf_bench *bench, uf_error *error)
+uf_status uf_bench_without_angle(const uf_settings *s, uf_bench *bench, uf_error *error)
 {
     static const double p_fractions[] = {
         [UF_POLARIZATION_S] = 0, [UF_POLARIZATION_P] = 1, [UF_POLARIZATION_MIXED] = 0.5};
     *bench = (uf_bench){.wavelength_nm = s->light.wavelength_nm,
-                        .substrate_n = s->interface.substrate_n,
-                        .medium_n = s->interface.medium_n,
                         .cell_n = s->interface.cell_n,
                         .substrate_n_sd = s->interface.substrate_n_sd,
-                        .medium_n_sd = s->interface.medium_n_sd,
                         .cell_n_sd = s->interface.cell_n_sd,
                         .p_fraction = p_fractions[s->light.polarization],
+                        .coating_n = s->interface.coating_n,
+                        .coating_nm = isnan(s->interface.coating_nm) ? 0 : s->interface.coating_nm,
+                        .na_effective = (double)NAN,
+                        .depth_sd_nm = (double)NAN,
                         .objective_na = (double)NAN};
+    if (isnan(s->interface.coating_n) != isnan(s->interface.coating_nm))
+        return uf_fail(error, UF_INPUT, "a coating needs both coating_n and coating_nm in [interface]");
     if (s->interface.geometry == UF_GEOMETRY_OBJECTIVE)
         bench->objective_na = s->interface.objective_na;
+    return find_indices(s, bench, error);
+}
+
+uf_status uf_bench_make(const uf_settings *s, uf_bench *bench, uf_error *error)
+{
+    uf_status status = uf_bench_without_angle(s, bench, error);
+    if (status != UF_OK)
+        return status;
     find_na(s, bench);
     bench->na_effective = uf_round_digits(bench->na_effective, 12);
     return uf_bench_check(bench, error);
@@ -64,23 +95,14 @@ static uf_status find_pixel_size(const uf_settings *s, double image_pixel_um, do
                    "neither the instrument file nor the image says how large a pixel is; add size_um to [pixel]");
 }
 
-uf_field_model uf_field_of(const uf_settings *s)
-{
-    return s->decay.model == UF_DECAY_LAYERED ? UF_FIELD_LAYERED : UF_FIELD_EXPONENTIAL;
-}
-
-uf_stray uf_stray_of(const uf_settings *s)
-{
-    return (uf_stray){s->decay.scattered_fraction, s->decay.scattered_depth_nm};
-}
-
 /* The plain exponential has its closed form; every other table is walked. */
 static uf_status make_decay(const uf_settings *s, uf_plan *plan, uf_error *error)
 {
-    plan->model = uf_field_of(s);
-    plan->stray = uf_stray_of(s);
-    if (plan->model != UF_FIELD_EXPONENTIAL || plan->stray.fraction > 0)
-        return uf_decay_make(&plan->decay, &plan->bench, plan->model, plan->stray, error);
+    uf_status status = uf_decay_law_make(s, &plan->law, error);
+    if (status != UF_OK)
+        return status;
+    if (plan->law.model != UF_FIELD_EXPONENTIAL || plan->law.stray.fraction > 0)
+        return uf_decay_make(&plan->decay, &plan->bench, &plan->law, error);
     uf_decay_exponential(&plan->decay, plan->depth_nm);
     return UF_OK;
 }
@@ -108,7 +130,7 @@ uf_status uf_plan_make(const uf_settings *s, double image_pixel_um, uf_plan *pla
     plan->reference_ratio = uf_round_digits(at_zero, 12);
     plan->reference_sd = s->reference.ratio_sd / s->reference.ratio;
     plan->normalisation_sd = s->reference.normalisation_sd;
-    if (plan->model == UF_FIELD_EXPONENTIAL)
+    if (plan->law.model == UF_FIELD_EXPONENTIAL)
         plan->layered_effect_nm = uf_round_digits(uf_layered_effect_nm(b, s->contact.cutoff_nm), 9);
     return UF_OK;
 }

@@ -10,9 +10,8 @@
  * change. Needs wavelength, substrate_n, medium_n and an angle. */
 UF_MUST_USE uf_status uf_bench_make(const uf_settings *settings, uf_bench *bench, uf_error *error);
 
-/* The decay in force: which field, and its stray light. */
-uf_field_model uf_field_of(const uf_settings *settings);
-uf_stray uf_stray_of(const uf_settings *settings);
+/* The same without an angle: na_effective is NaN, total reflection not checked. */
+UF_MUST_USE uf_status uf_bench_without_angle(const uf_settings *settings, uf_bench *bench, uf_error *error);
 
 /* All of the plan. `image_pixel_um` is what the image file says (NaN: nothing); the instrument file wins. */
 UF_MUST_USE uf_status uf_plan_make(const uf_settings *settings, double image_pixel_um, uf_plan *plan,

@@ -114,6 +114,10 @@ static json_t *libraries_json(void)
 
 void uf_methods_paragraph(uf_text *out, const uf_settings *s, const uf_plan *plan)
 {
+    static const char *const models[] = {[UF_FIELD_EXPONENTIAL] = "an exponential decay",
+                                         [UF_FIELD_LAYERED] =
+                                             "the field of a substrate, medium and cell of three indices (layered),",
+                                         [UF_FIELD_TABLE] = "a measured decay (table), in an evanescent field"};
     const uf_bench *b = &plan->bench;
     uf_text_printf(out,
                    "Near-surface (evanescent, %.4g nm, n sin angle %.4f) and widefield images were measured with "
@@ -124,11 +128,10 @@ void uf_methods_paragraph(uf_text *out, const uf_settings *s, const uf_plan *pla
         out,
         "The near/wide ratio was converted to the membrane-substrate gap by %s with a 1/e depth of %.1f nm "
         "(s.d. %.1f nm; medium index %.4f)",
-        plan->model == UF_FIELD_LAYERED ? "the field of a substrate, medium and cell of three indices (layered),"
-                                        : "an exponential decay",
-        plan->depth_nm, plan->depth_sd_nm, b->medium_n);
-    if (plan->stray.fraction > 0)
-        uf_text_printf(out, ", %.3g of it stray light of %.4g nm depth,", plan->stray.fraction, plan->stray.depth_nm);
+        models[plan->law.model], plan->depth_nm, plan->depth_sd_nm, b->medium_n);
+    if (plan->law.stray.fraction > 0)
+        uf_text_printf(out, ", %.3g of it stray light of %.4g nm depth,", plan->law.stray.fraction,
+                       plan->law.stray.depth_nm);
     uf_text_printf(out, " relative to a measured ratio of %.4g at a gap of %.4g nm. ", s->reference.ratio,
                    plan->reference_gap_nm);
     uf_text_printf(out,

@@ -71,6 +71,16 @@ static void list_choices(uf_text *out, const char *choices, const char *between)
         }
 }
 
+/* The word of a choice; nothing for UF_SETTING_NOT_GIVEN. */
+static void put_choice(uf_text *out, const uf_setting *entry, int chosen)
+{
+    choice_word word = {.start = ""};
+    const char *at = entry->choices;
+    for (int index = chosen; index >= 0; index--)
+        at = next_choice(at, &word);
+    uf_text_bytes(out, word.start, (size_t)word.length);
+}
+
 void uf_setting_value(uf_text *out, const uf_settings *settings, int k)
 {
     const uf_setting *entry = &uf_setting_table[k];
@@ -79,13 +89,8 @@ void uf_setting_value(uf_text *out, const uf_settings *settings, int k)
         uf_text_number(out, *(const double *)member, 15);
     else if (entry->kind == UF_SETTING_PATH)
         uf_text_add(out, *(char *const *)member ? *(char *const *)member : "");
-    else if (entry->kind == UF_SETTING_CHOICE) {
-        choice_word word = {0};
-        const char *at = entry->choices;
-        for (int index = *(const int *)member; index >= 0; index--)
-            at = next_choice(at, &word);
-        uf_text_printf(out, "%.*s", word.length, word.start);
-    }
+    else if (entry->kind == UF_SETTING_CHOICE)
+        put_choice(out, entry, *(const int *)member);
 }
 
 const uf_setting *uf_setting_at(size_t member)
@@ -157,7 +162,10 @@ static void clear_rest_of_group(uf_settings *settings, int chosen)
         const uf_setting *entry = &uf_setting_table[k];
         if (k == chosen || !entry->group || strcmp(entry->group, group) != 0)
             continue;
-        *(double *)member_of(settings, entry) = (double)NAN;
+        if (entry->kind == UF_SETTING_CHOICE)
+            *(int *)member_of(settings, entry) = UF_SETTING_NOT_GIVEN;
+        else
+            *(double *)member_of(settings, entry) = (double)NAN;
         free(settings->origin[k]);
         settings->origin[k] = NULL;
     }
@@ -400,24 +408,29 @@ uf_status uf_settings_parse(uf_settings *settings, const char *text, size_t leng
 
 /* ---- what measuring needs -------------------------------------------------------------------- */
 
-static uf_status need(const uf_settings *settings, size_t member, uf_error *error)
+static uf_status need(double value, const char *what, const char *section, uf_error *error)
 {
-    const uf_setting *entry = uf_setting_at(member);
-    if (!isnan(*(const double *)member_of(settings, entry)))
-        return UF_OK;
-    return uf_fail(error, UF_INPUT, "the instrument file says no %s; add it to [%s]", entry->key, entry->section);
+    return isnan(value) ? uf_fail(error, UF_INPUT, "the instrument file says no %s; add it to [%s]", what, section)
+                        : UF_OK;
+}
+
+uf_status uf_settings_check_optics(const uf_settings *s, uf_error *error)
+{
+    double substrate = s->interface.substrate == UF_SETTING_NOT_GIVEN ? s->interface.substrate_n : 1;
+    double medium = s->interface.medium == UF_SETTING_NOT_GIVEN ? s->interface.medium_n : 1;
+    uf_status status = need(s->light.wavelength_nm, "wavelength_nm", "light", error);
+    if (status == UF_OK)
+        status = need(substrate, "substrate_n (or substrate, by name)", "interface", error);
+    return status == UF_OK ? need(medium, "medium_n (or medium, by name)", "interface", error) : status;
 }
 
 uf_status uf_settings_check(const uf_settings *settings, uf_error *error)
 {
-    static const size_t needed[] = {
-        offsetof(struct uf_settings, light.wavelength_nm), offsetof(struct uf_settings, interface.substrate_n),
-        offsetof(struct uf_settings, interface.medium_n), offsetof(struct uf_settings, reference.ratio)};
-    for (size_t k = 0; k < sizeof needed / sizeof needed[0]; k++) {
-        uf_status status = need(settings, needed[k], error);
-        if (status != UF_OK)
-            return status;
-    }
+    uf_status status = uf_settings_check_optics(settings, error);
+    if (status == UF_OK)
+        status = need(settings->reference.ratio, "ratio", "reference", error);
+    if (status != UF_OK)
+        return status;
     if (isnan(settings->interface.angle_deg) && isnan(settings->interface.na_effective) &&
         isnan(settings->interface.depth_nm))
         return uf_fail(error, UF_INPUT,
@@ -448,13 +461,9 @@ static void put_range(uf_text *out, const uf_setting *entry)
 
 static void put_default(uf_text *out, const uf_setting *entry)
 {
-    if (entry->kind == UF_SETTING_CHOICE) {
-        choice_word word = {0};
-        const char *at = entry->choices;
-        for (int index = (int)entry->initial; index >= 0; index--)
-            at = next_choice(at, &word);
-        uf_text_printf(out, "%.*s", word.length, word.start);
-    } else if (entry->kind == UF_SETTING_REAL)
+    if (entry->kind == UF_SETTING_CHOICE)
+        put_choice(out, entry, (int)entry->initial);
+    else if (entry->kind == UF_SETTING_REAL)
         uf_text_number(out, entry->initial, 6);
 }
 

@@ -15,6 +15,12 @@ typedef enum uf_channel_name { UF_NEAR, UF_WIDE, UF_CHANNELS } uf_channel_name;
 
 typedef enum uf_polarization { UF_POLARIZATION_S, UF_POLARIZATION_P, UF_POLARIZATION_MIXED } uf_polarization;
 typedef enum uf_geometry { UF_GEOMETRY_OBJECTIVE, UF_GEOMETRY_PRISM } uf_geometry;
+typedef enum uf_substrate_name {
+    UF_SUBSTRATE_COVERGLASS,
+    UF_SUBSTRATE_BK7,
+    UF_SUBSTRATE_FUSED_SILICA
+} uf_substrate_name;
+typedef enum uf_medium_name { UF_WATER, UF_CULTURE_MEDIUM, UF_PBS } uf_medium_name;
 typedef enum uf_decay_model { UF_DECAY_EXPONENTIAL, UF_DECAY_LAYERED, UF_DECAY_TABLE } uf_decay_model;
 typedef enum uf_estimate { UF_ESTIMATE_CHECK, UF_ESTIMATE_YES, UF_ESTIMATE_NO } uf_estimate;
 typedef enum uf_reference_kind { UF_REFERENCE_CELL, UF_REFERENCE_FILM } uf_reference_kind;
@@ -33,7 +39,7 @@ typedef struct uf_camera_settings {
     char *dark, *defects;
 } uf_camera_settings;
 
-enum { UF_SETTINGS_LIMIT = 80 };
+enum { UF_SETTINGS_LIMIT = 80, UF_SETTING_NOT_GIVEN = -1 };
 
 struct uf_settings {
     struct {
@@ -42,12 +48,15 @@ struct uf_settings {
     } light;
     struct {
         int geometry;
+        int substrate, medium; /* by name, or UF_SETTING_NOT_GIVEN */
         double substrate_n, medium_n, cell_n, cell_n_sd, substrate_n_sd, medium_n_sd;
+        double temperature_c, coating_n, coating_nm;
         double angle_deg, angle_n, na_effective, depth_nm;
         double angle_sd_deg, na_effective_sd, depth_sd_nm, objective_na;
     } interface;
     struct {
         int model;
+        char *file;
         double scattered_fraction, scattered_depth_nm;
     } decay;
     struct {
@@ -95,7 +104,7 @@ typedef struct uf_setting {
     uf_setting_kind kind;
     size_t offset;       /* in struct uf_settings */
     double least, most;  /* allowed range of a real, both included */
-    double initial;      /* default of a real (NaN: none) or of a choice (its index) */
+    double initial;      /* default of a real (NaN: none) or of a choice (its index, or UF_SETTING_NOT_GIVEN) */
     const char *choices; /* "s|p|mixed"; a word after '!' is known but not in this version */
     const char *group;   /* of the entries with one group name, one file may give only one */
     const char *help;    /* one sentence */
@@ -108,6 +117,9 @@ extern const int uf_setting_count;
  * among the values are taken relative to it. Errors name file and line (UF_INPUT). */
 UF_MUST_USE uf_status uf_settings_parse(uf_settings *settings, const char *text, size_t length, const char *path,
                                         uf_settings_kind kind, uf_error *error);
+
+/* What any optics needs: wavelength and the two indices, as numbers or by name. UF_INPUT names what is missing. */
+UF_MUST_USE uf_status uf_settings_check_optics(const uf_settings *settings, uf_error *error);
 
 /* What measuring needs beyond single values: required settings present, angle or its like given, bands in
  * order. UF_INPUT names the setting and what to add. */

@@ -18,6 +18,8 @@
     KEY(INSTRUMENT, section, key, PATH, AT(member), 0, 0, 0, NULL, NULL, help)
 #define I_ONE_OF(group, section, key, member, least, most, help) \
     KEY(INSTRUMENT, section, key, REAL, AT(member), least, most, NONE, NULL, group, help)
+#define I_ONE_CHOICE_OF(group, section, key, member, choices, help) \
+    KEY(INSTRUMENT, section, key, CHOICE, AT(member), 0, 0, UF_SETTING_NOT_GIVEN, choices, group, help)
 #define I_LATER(section, key, help) KEY(INSTRUMENT, section, key, LATER, 0, 0, 0, 0, NULL, NULL, help)
 #define A_REAL(section, key, member, least, most, initial, help) \
     KEY(ASSAY, section, key, REAL, AT(member), least, most, initial, NULL, NULL, help)
@@ -47,18 +49,24 @@ const uf_setting uf_setting_table[] = {
 
     I_CHOICE("interface", "geometry", interface.geometry, "objective|prism", UF_GEOMETRY_OBJECTIVE,
              "How the beam reaches the interface."),
-    I_REAL("interface", "substrate_n", interface.substrate_n, 1, 4, NONE, "Refractive index of the substrate."),
-    I_LATER("interface", "substrate", "Name of the substrate, index by its dispersion."),
-    I_REAL("interface", "medium_n", interface.medium_n, 1, 2, NONE,
-           "Refractive index of the medium, which fills the gap."),
-    I_LATER("interface", "medium", "Name of the medium, index by its dispersion."),
-    I_LATER("interface", "temperature_c", "Temperature of the medium."),
+    I_ONE_OF("substrate", "interface", "substrate_n", interface.substrate_n, 1, 4,
+             "Refractive index of the substrate at wavelength_nm."),
+    I_ONE_CHOICE_OF("substrate", "interface", "substrate", interface.substrate, "coverglass|bk7|fused-silica",
+                    "Name of the substrate, instead of substrate_n: index at wavelength_nm by its dispersion."),
+    I_ONE_OF("medium", "interface", "medium_n", interface.medium_n, 1, 2,
+             "Refractive index of the medium, which fills the gap, at wavelength_nm."),
+    I_ONE_CHOICE_OF("medium", "interface", "medium", interface.medium, "water|culture-medium|pbs",
+                    "Name of the medium, instead of medium_n: index at wavelength_nm and temperature_c."),
+    I_REAL("interface", "temperature_c", interface.temperature_c, 0, 60, 37,
+           "Temperature of a medium given by name."),
     I_REAL("interface", "cell_n", interface.cell_n, 1, 2, 1.37, "Refractive index of the cell."),
     I_REAL("interface", "cell_n_sd", interface.cell_n_sd, 0, 0.2, 0.01, "1 sigma of cell_n."),
     I_REAL("interface", "substrate_n_sd", interface.substrate_n_sd, 0, 0.2, 0, "1 sigma of substrate_n."),
-    I_REAL("interface", "medium_n_sd", interface.medium_n_sd, 0, 0.2, 0, "1 sigma of medium_n."),
-    I_LATER("interface", "coating_n", "Refractive index of a thin coating."),
-    I_LATER("interface", "coating_nm", "Thickness of a thin coating."),
+    I_REAL("interface", "medium_n_sd", interface.medium_n_sd, 0, 0.2, 0,
+           "1 sigma of medium_n; a medium given by name has at least that of its recipe."),
+    I_REAL("interface", "coating_n", interface.coating_n, 1, 4, NONE,
+           "Refractive index of a thin coating on the substrate; the gap begins on top of it."),
+    I_REAL("interface", "coating_nm", interface.coating_nm, 0, 1000, NONE, "Thickness of that coating."),
     I_ONE_OF("angle", "interface", "angle_deg", interface.angle_deg, 0, 90,
              "Angle of incidence, from the normal, in the medium of index angle_n."),
     I_REAL("interface", "angle_n", interface.angle_n, 1, 4, NONE,
@@ -73,9 +81,10 @@ const uf_setting uf_setting_table[] = {
     I_REAL("interface", "objective_na", interface.objective_na, 0.1, 2, NONE,
            "Numerical aperture of the objective."),
 
-    I_CHOICE("decay", "model", decay.model, "exponential|layered|!table", UF_DECAY_EXPONENTIAL,
+    I_CHOICE("decay", "model", decay.model, "exponential|layered|table", UF_DECAY_EXPONENTIAL,
              "How excitation falls with the gap."),
-    I_LATER("decay", "file", "Table of a measured decay."),
+    I_PATH("decay", "file", decay.file,
+           "Measured decay of model = table: CSV with the columns gap_nm,relative, gaps from 0 up."),
     I_REAL("decay", "scattered_fraction", decay.scattered_fraction, 0, 0.9, 0,
            "Share of stray light in the excitation at gap 0, added to any model."),
     I_REAL("decay", "scattered_depth_nm", decay.scattered_depth_nm, 100, 100000, 1200, "1/e depth of the stray light."),

@@ -51,12 +51,89 @@ def test_below_the_critical_angle_is_refused_with_the_mend():
     assert "61.04 deg" in run.err and "1.3300" in run.err
 
 
-def test_barely_and_not_at_all_evanescent_in_the_cell():
-    barely = Run(["optics", *BENCH, "--angle-deg", "65"]).out
-    assert "Barely" in barely
+def test_verdicts_in_words():
+    assert "BARELY" in Run(["optics", *BENCH, "--angle-deg", "65"]).out
     through = Run(["optics", *BENCH, "--angle-deg", "63"]).out
-    assert "runs into the cell" in through
-    assert "Totally reflected against the medium and against the cell" in Run(["optics", *BENCH, "--angle-deg", "70"]).out
+    assert "NOT FOR CELLS" in through and "runs\non into the cell" in through
+    assert "GOOD" in Run(["optics", *BENCH, "--angle-deg", "70"]).out
+
+
+def test_angle_for_a_wanted_depth():
+    # closed form: n sin(angle) = sqrt(n2^2 + (wavelength / (4 pi depth))^2)
+    o = numbers(*BENCH, "--for-depth-nm", "75.314026")
+    assert o["for_depth"]["angle_low_deg"] == pytest.approx(70, abs=1e-5)
+    assert o["depth_nm"] == pytest.approx(75.314026, rel=1e-6)  # without an angle the report is of the wished one
+    both = numbers(*BENCH, "--angle-deg", "68", "--for-depth-nm", "75.314026")
+    assert both["angle_deg"] == pytest.approx(68, abs=1e-6)
+
+
+def test_a_depth_the_objective_cannot_reach_is_refused_with_its_thinnest():
+    # 561 nm, NA 1.49, n2 1.33: 66.461242 nm, closed form
+    run = Run(["optics", "--wavelength-nm", "561", "--substrate-n", "1.515", "--medium-n", "1.33", "--objective-na", "1.49",
+               "--for-depth-nm", "60"])
+    assert run.status == 2
+    assert "objective" in run.err and "66.5 nm" in run.err
+
+
+def test_angles_for_a_wanted_agreement_do_agree():
+    bench = ["--wavelength-nm", "488", "--substrate-n", "1.518", "--medium-n", "1.337", "--polarization", "s"]
+    o = numbers(*bench, "--for-agreement-nm", "2")
+    wish = o["for_agreement"]
+    for na in (wish["na_effective_low"], wish["na_effective_high"]):
+        there = numbers(*bench, "--na-effective", f"{na:.6f}")
+        for reads, truth in (("exponential_reads_layered_50_nm", 50), ("exponential_reads_layered_100_nm", 100)):
+            assert abs(there[reads] - truth) <= 2.01
+    beyond = numbers(*bench, "--na-effective", f"{wish['na_effective_high'] + 0.003:.6f}")
+    assert abs(beyond["exponential_reads_layered_100_nm"] - 100) > 1.9
+
+
+def test_indices_by_name():
+    # cover glass at 488 nm 1.529828 in air (catalogue formula), water of 37 deg C 1.335386 (IAPWS R9-97)
+    o = numbers("--wavelength-nm", "488", "--substrate", "coverglass", "--medium", "water", "--angle-deg", "70")
+    assert o["substrate_n"] == pytest.approx(1.529828 * 1.000273, abs=3e-6)
+    assert o["medium_n"] == pytest.approx(1.335386, abs=3e-6)
+
+
+def test_coating_value():
+    # 10 nm of 1.40 between glass and water, s polarized: 1.896393 on top of it (thin-film matrix)
+    o = numbers("--wavelength-nm", "488", "--substrate-n", "1.518", "--medium-n", "1.335", "--angle-deg", "70",
+                "--coating-n", "1.40", "--coating-nm", "10")
+    assert o["interface_s"] == pytest.approx(1.896393, abs=1e-6)
+
+
+def test_what_one_sd_does():
+    # closed form at 488 nm, 1.518 / 1.37: n2 + 0.01 turns 97.737476 into 107.552943; theta + 0.5 deg into 94.003501
+    run = numbers("--wavelength-nm", "488", "--substrate-n", "1.518", "--medium-n", "1.37", "--cell-n", "1.38",
+                  "--angle-deg", "70", "--angle-sd-deg", "0.5")
+    changes = {c["input"]: c for c in run["changes"]}
+    assert changes["angle"]["depth_change_nm"] == pytest.approx(94.003501 - 97.737476, abs=1e-5)
+    assert changes["angle"]["step_is_sd"] and not changes["medium_n"]["step_is_sd"]
+    # a gap of 50 nm read with the nominal depth: 50 * 97.737476 / 94.003501
+    assert changes["angle"]["gap_at_cutoff_change_nm"] == pytest.approx(50 * 97.737476 / 94.003501 - 50, abs=0.01)
+    assert changes["cell_n"]["depth_change_nm"] == 0
+
+
+def test_decay_table_from_a_file(tmp_path):
+    table = tmp_path / "decay.csv"
+    table.write_text("gap_nm,relative\r\n0,2.0\r\n100,1.0\r\n200,0.5\r\n")
+    bench = tmp_path / "bench.ini"
+    bench.write_text("[light]\nwavelength_nm = 488\n[interface]\nsubstrate_n = 1.518\nmedium_n = 1.337\nangle_deg = 70\n"
+                     "[decay]\nmodel = table\nfile = decay.csv\n")
+    decay = {row["gap_nm"]: row["in_force"] for row in numbers("-i", str(bench))["decay"]}
+    assert decay[100] == pytest.approx(0.5) and decay[50] == pytest.approx(0.5**0.5)
+    for text, where, word in [("gap_nm,relative\n0,1\n10,1.2\n", "decay.csv:3", "must fall"),
+                              ("gap_nm,relative\n5,1\n10,0.9\n", "decay.csv:2", "begin at 0"),
+                              ("gap_nm,relative\n0,1\n\n10,x\n", "decay.csv:4", "not a number"),
+                              ("gap_nm,relative\n0,1\n20,0.5\n10,0.4\n", "decay.csv:4", "must rise"),
+                              ("gap_nm;relative\n0;1\n", "decay.csv:1", "semicolons"),
+                              ("gap_nm,relative\n0,1\n10\n", "decay.csv:3", "1 fields"),
+                              ("z,relative\n0,1\n10,0.5\n", "decay.csv:1", "gap_nm,relative"),
+                              ("gap_nm,relative\n0,1\n", "decay.csv", "rows"),
+                              ("", "decay.csv", "header"),
+                              ('gap_nm,relative\n0,"1\n', "decay.csv:2", "never closed")]:
+        table.write_text(text)
+        run = Run(["optics", "-i", str(bench)])
+        assert run.status == 2 and where in run.err and word in run.err, run.err
 
 
 def test_laser_caution_stands_where_an_angle_is_shown():

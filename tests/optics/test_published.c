@@ -158,14 +158,63 @@ static void test_stray_light(void **state)
     uf_error error;
     uf_bench b = three_layers(0);
     b.na_effective = uf_na_from_depth(100, 488, b.medium_n);
-    uf_stray stray = {0.1, 1000};
-    assert_int_equal(uf_decay_make(&decay, &b, UF_FIELD_EXPONENTIAL, stray, &error), UF_OK);
+    static const uf_decay_law law = {UF_FIELD_EXPONENTIAL, {0.1, 1000}, {0}};
+    assert_int_equal(uf_decay_make(&decay, &b, &law, &error), UF_OK);
     for (size_t k = 0; k < sizeof rows / sizeof rows[0]; k++) {
-        double relative = uf_relative_excitation(&b, UF_FIELD_EXPONENTIAL, stray, rows[k][0]);
+        double relative = uf_relative_excitation(&b, &law, rows[k][0]);
         assert_near_abs(relative, rows[k][1], 1e-9);
         assert_near_abs(-100 * log(relative), rows[k][2], 1e-5);
         assert_near_abs(uf_decay_gap(&decay, log(rows[k][1])), rows[k][0], 0.01);
     }
+}
+
+/* A coating between glass and water changes the amplitude, not the depth, whatever its index: 10 nm of 1.40, and 50 nm
+ * of 1.45 (in which light propagates), s polarized, 488 nm, 70 deg; thin-film matrix, computed outside. */
+static void test_coating(void **state)
+{
+    (void)state;
+    uf_bench b = three_layers(0);
+    b.coating_n = 1.40;
+    b.coating_nm = 10;
+    assert_near_abs(uf_interface_intensity(&b), 1.896393, 1e-6);
+    b.cell_n = b.medium_n;
+    assert_near_abs(uf_layered_intensity(&b, 0), 1.896393, 1e-6);
+    assert_near_rel(uf_layered_intensity(&b, 100) / uf_layered_intensity(&b, 0), exp(-100 / 77.275384), 1e-6);
+    b.coating_n = 1.45;
+    b.coating_nm = 50;
+    assert_near_abs(uf_interface_intensity(&b), 1.619991, 1e-6);
+    assert_near_rel(uf_layered_intensity(&b, 100) / uf_layered_intensity(&b, 0), exp(-100 / 77.275384), 1e-6);
+    /* a coating of the medium's own index is nothing but a gap (closed form) */
+    b.coating_n = b.medium_n;
+    b.coating_nm = 10;
+    assert_near_abs(uf_interface_intensity(&b), 1.814484, 1e-6);
+}
+
+/* The far field of a deep gap stays finite: only decaying exponentials occur. */
+static void test_no_gap_is_too_large(void **state)
+{
+    (void)state;
+    uf_bench b = three_layers(0.5);
+    b.na_effective = 1.517;
+    double far = uf_layered_intensity(&b, 20000);
+    assert_true(far >= 0 && far < 1e-100);
+}
+
+/* A measured table: at its points what was measured, straight in the logarithm between and beyond them. */
+static void test_measured_table(void **state)
+{
+    (void)state;
+    static uf_decay_law law = {UF_FIELD_TABLE, {0, 0}, {4, {0, 40, 90, 200}, {0, -0.5, -0.9, -1.5}}};
+    static uf_decay decay;
+    uf_error error;
+    uf_bench b = three_layers(0);
+    assert_int_equal(uf_decay_make(&decay, &b, &law, &error), UF_OK);
+    assert_near_abs(uf_relative_excitation(&b, &law, 40), exp(-0.5), 1e-12);
+    assert_near_abs(uf_decay_gap(&decay, -0.25), 20, 0.01);
+    assert_near_abs(uf_decay_gap(&decay, -0.7), 65, 0.01);
+    assert_near_abs(uf_decay_gap(&decay, -2.1), 310, 0.01);
+    law.points.ln_relative[2] = -0.5; /* does not fall: a ratio has no one gap */
+    assert_int_equal(uf_decay_make(&decay, &b, &law, &error), UF_INPUT);
 }
 
 /* Tables of every model give back the gap that an excitation was computed for, within 0.01 nm (closed forms in, the
@@ -174,18 +223,18 @@ static void test_tables_invert_their_model(void **state)
 {
     (void)state;
     static uf_decay decay;
+    static uf_decay_law law = {UF_FIELD_EXPONENTIAL, {0, 1385}, {4, {0, 37.3, 91.7, 213}, {0, -0.47, -1.03, -2.06}}};
     uf_error error;
-    for (int polarization = 0; polarization < 3; polarization++)
-        for (int model = UF_FIELD_EXPONENTIAL; model <= UF_FIELD_LAYERED; model++)
-            for (int scattered = 0; scattered < 2; scattered++) {
-                uf_bench b = three_layers(polarization / 2.0);
-                uf_stray stray = {scattered ? 0.083 : 0, 1385};
-                assert_int_equal(uf_decay_make(&decay, &b, (uf_field_model)model, stray, &error), UF_OK);
-                for (double gap = 0; gap < 600; gap += 2.385) {
-                    double relative = uf_relative_excitation(&b, (uf_field_model)model, stray, gap);
-                    assert_near_abs(uf_decay_gap(&decay, log(relative)), gap, 0.01);
-                }
-            }
+    for (int variant = 0; variant < 36; variant++) {
+        uf_bench b = three_layers(variant % 3 / 2.0);
+        b.coating_n = 1.431;
+        b.coating_nm = variant / 3 % 2 * 23.85;
+        law.model = (uf_field_model)(variant / 6 % 3);
+        law.stray.fraction = variant / 18 ? 0.083 : 0;
+        assert_int_equal(uf_decay_make(&decay, &b, &law, &error), UF_OK);
+        for (double gap = 0; gap < 600; gap += 2.385)
+            assert_near_abs(uf_decay_gap(&decay, log(uf_relative_excitation(&b, &law, gap))), gap, 0.01);
+    }
 }
 
 /* A depth error follows the angle's and the index's: moved by hand. n1 + 0.002 and theta + 0.5 deg at 488 nm, 1.518 /
@@ -210,6 +259,7 @@ int main(void)
         cmocka_unit_test(test_textbook_angles), cmocka_unit_test(test_nothing_below_the_critical_angle),
         cmocka_unit_test(test_interface_intensities), cmocka_unit_test(test_three_layers),
         cmocka_unit_test(test_layered_effect), cmocka_unit_test(test_gap_of_intensity), cmocka_unit_test(test_sensitivity),
-        cmocka_unit_test(test_stray_light), cmocka_unit_test(test_tables_invert_their_model)};
+        cmocka_unit_test(test_stray_light), cmocka_unit_test(test_coating),
+        cmocka_unit_test(test_no_gap_is_too_large), cmocka_unit_test(test_measured_table), cmocka_unit_test(test_tables_invert_their_model)};
     return cmocka_run_group_tests(tests, NULL, NULL);
 }

@@ -76,9 +76,47 @@ static void test_angle_in_another_index(void **state)
     assert_non_null(strstr(error.text, "not totally reflected"));
 }
 
+/* Indices by name: Sellmeier's formula over air for the glass, IAPWS R9-97 for water (both held to published tables in
+ * tests/optics/test_refractive.c); here only that they reach the depth, and that a recipe's spread reaches its sd. */
+static void test_indices_by_name(void **state)
+{
+    (void)state;
+    static uf_plan plan;
+    uf_error error;
+    assert_int_equal(plan_of("[interface]\nsubstrate = bk7\nmedium = water\ntemperature_c = 25\nna_effective = 1.44\n",
+                             0.1, &plan, NULL), UF_OK);
+    assert_near_abs(plan.bench.substrate_n, 1.522242 * 1.0002743, 2e-6);
+    assert_near_abs(plan.bench.medium_n, 1.336894, 2e-6);
+    double depth = 488 / (4 * 3.14159265358979323846 * sqrt(1.44 * 1.44 - 1.336894 * 1.336894));
+    assert_near_rel(plan.depth_nm, depth, 2e-5);
+    assert_near_abs(plan.depth_sd_nm, 0, 1e-12);
+    assert_int_equal(plan_of("[interface]\nmedium = culture-medium\nna_effective = 1.44\n", 0.1, &plan, NULL), UF_OK);
+    assert_true(plan.depth_sd_nm > 0.3);
+    assert_int_equal(plan_of("[light]\nwavelength_nm = 1200\n[interface]\nmedium = water\nna_effective = 1.44\n", 0.1,
+                             &plan, &error), UF_INPUT);
+    assert_non_null(strstr(error.text, "300 to 1100 nm"));
+}
+
+/* A coating changes amplitudes, never the depth in the medium (Axelrod's reviews, from memory; thin-film sums in
+ * tests/optics/test_published.c): the exponential is untouched, the layered field nearly so. */
+static void test_coating_in_the_plan(void **state)
+{
+    (void)state;
+    static uf_plan bare, coated;
+    static const char layered[] = "[interface]\nangle_deg = 70\n[decay]\nmodel = layered\n";
+    assert_int_equal(plan_of(layered, 0.1, &bare, NULL), UF_OK);
+    char text[200];
+    (void)snprintf(text, sizeof text, "%s[interface]\ncoating_n = 1.45\ncoating_nm = 50\n", layered);
+    assert_int_equal(plan_of(text, 0.1, &coated, NULL), UF_OK);
+    assert_near_abs(coated.depth_nm, bare.depth_nm, 0);
+    double shift = uf_decay_gap(&coated.decay, -1) - uf_decay_gap(&bare.decay, -1);
+    assert_true(fabs(shift) > 0.05 && fabs(shift) < 5);
+}
+
 int main(void)
 {
     const struct CMUnitTest tests[] = {cmocka_unit_test(test_depth_three_ways), cmocka_unit_test(test_reference_at_a_gap),
-                                       cmocka_unit_test(test_pixel_size), cmocka_unit_test(test_angle_in_another_index)};
+                                       cmocka_unit_test(test_pixel_size), cmocka_unit_test(test_angle_in_another_index),
+                                       cmocka_unit_test(test_indices_by_name), cmocka_unit_test(test_coating_in_the_plan)};
     return cmocka_run_group_tests(tests, NULL, NULL);
 }

@@ -160,7 +160,8 @@ static void test_faults_name_line_and_mend(void **state)
     refused("[light]\nblue light\n", "/bench/day1.ini:2: ", "neither");
     refused("[light\n", "/bench/day1.ini:1: ", "no section");
     refused("[light] x\n", "/bench/day1.ini:1: ", "no section");
-    refused("[decay]\nmodel = table\n", "/bench/day1.ini:2: ", "not in this version");
+    refused("[reference]\nkind = film\n", "/bench/day1.ini:2: ", "not in this version");
+    refused("[interface]\nmedium_n = 1.33\nmedium = water\n", "/bench/day1.ini:3: ", "contradicts medium_n in line 2");
     refused("[series]\nangles_deg = 69, 71\n", "/bench/day1.ini:2: ", "not in this version");
 }
 
@@ -246,10 +247,27 @@ static void test_what_measuring_needs(void **state)
     uf_settings_free(&settings);
 }
 
+/* A name takes back an index that an earlier file gave, and the other way round; so says the page of settings. */
+static void test_name_and_number_exclude_each_other(void **state)
+{
+    (void)state;
+    uf_settings *settings = fresh();
+    assert_int_equal(settings->interface.medium, UF_SETTING_NOT_GIVEN);
+    assert_int_equal(parse(settings, "[interface]\nmedium_n = 1.335\n", UF_INSTRUMENT_FILE, NULL), UF_OK);
+    assert_int_equal(parse(settings, "[interface]\nmedium = pbs\n", UF_INSTRUMENT_FILE, NULL), UF_OK);
+    assert_int_equal(settings->interface.medium, UF_PBS);
+    assert_true(isnan(settings->interface.medium_n));
+    assert_int_equal(parse(settings, "[interface]\nmedium_n = 1.335\n", UF_INSTRUMENT_FILE, NULL), UF_OK);
+    assert_int_equal(settings->interface.medium, UF_SETTING_NOT_GIVEN);
+    assert_near_abs(settings->interface.medium_n, 1.335, 0);
+    uf_settings_free(&settings);
+}
+
 int main(void)
 {
     const struct CMUnitTest tests[] = {
         cmocka_unit_test(test_table_is_sound), cmocka_unit_test(test_every_setting_can_be_set),
+        cmocka_unit_test(test_name_and_number_exclude_each_other),
         cmocka_unit_test(test_text_as_people_write_it), cmocka_unit_test(test_faults_name_line_and_mend),
         cmocka_unit_test(test_bytes_that_are_no_text), cmocka_unit_test(test_later_files_override),
         cmocka_unit_test(test_fuzz), cmocka_unit_test(test_what_measuring_needs)};
