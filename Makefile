@@ -21,7 +21,7 @@ ifeq ($(origin CC),default)
 CC := gcc
 endif
 
-LIBRARIES := libtiff-4 libpng fftw3f jansson libxxhash
+LIBRARIES := libtiff-4 libpng fftw3f gsl jansson libxxhash
 HAVE_LIBRARIES := $(shell pkg-config --exists $(LIBRARIES) 2>/dev/null && echo yes)
 ifeq ($(HAVE_LIBRARIES),yes)
 LIB_CFLAGS := $(shell pkg-config --cflags $(LIBRARIES))
@@ -112,7 +112,7 @@ $(BUILD)/flags: FORCE
 
 # ---- what a fresh machine needs ------------------------------------------------------------------
 
-BUILD_PACKAGES := gcc make pkg-config libc6-dev libtiff-dev libpng-dev libfftw3-dev libjansson-dev libxxhash-dev libcsv-dev
+BUILD_PACKAGES := gcc make pkg-config libc6-dev libtiff-dev libpng-dev libfftw3-dev libjansson-dev libxxhash-dev libcsv-dev libgsl-dev
 TEST_PACKAGES  := clang libcmocka-dev python3 python3-numpy python3-scipy python3-skimage python3-tifffile python3-pytest python3-pil
 
 packages:

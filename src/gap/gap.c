@@ -5,6 +5,7 @@
 
 #include "base/text.h"
 #include "gap/edge_fall.h"
+#include "image/restore.h"
 #include "image/smooth.h"
 #include "optics/detection.h"
 
@@ -15,7 +16,7 @@ typedef struct gap_job {
     const uf_cell_map *cells;
     uf_gap_map *map;
     uf_edge_fall fall;
-    uf_plane near_smooth, dye_smooth;
+    uf_plane near_smooth, dye_smooth, near_fine, dye_fine;
     float ln_reference;
     double detection_sigma;
 } gap_job;
@@ -40,6 +41,25 @@ static void signal_rows(void *context, int hand, int y0, int y1)
                 dye[x] /= uf_edge_fall_at(&job->fall, distance[x]);
         }
     }
+}
+
+/* Both signals at the scale of the point spread function, to judge what can be seen, and with the blur taken out, to
+ * tell the gap. Dye goes through the same as near: at outlines both then fall alike. */
+static uf_status filter_signals(uf_work *work, gap_job *job, double psf_px, uf_error *error)
+{
+    const uf_plane in[] = {job->map->near_adu, job->map->dye_adu};
+    uf_plane *smooth[] = {&job->near_smooth, &job->dye_smooth}, *fine[] = {&job->near_fine, &job->dye_fine};
+    uf_status status = UF_OK;
+    for (int k = 0; status == UF_OK && k < 2; k++) {
+        status = uf_plane_take(work, in[k].width, in[k].height, smooth[k], error);
+        if (status == UF_OK)
+            status = uf_plane_take(work, in[k].width, in[k].height, fine[k], error);
+        if (status == UF_OK)
+            status = uf_smooth(work, in[k], psf_px, *smooth[k], error);
+        if (status == UF_OK)
+            status = uf_restore(work, *smooth[k], psf_px, job->plan->restore_gain, *fine[k], error);
+    }
+    return status;
 }
 
 /* ---- gaps ------------------------------------------------------------------------------------ */
@@ -95,8 +115,8 @@ static void gap_rows(void *context, int hand, int y0, int y1)
     for (int y = y0; y < y1; y++) {
         int from, to;
         cell_span(job->cells->labels, y, &from, &to);
-        job->kernels->gap(uf_plane_row(job->map->gap_nm, y) + from, uf_plane_row(job->map->near_adu, y) + from,
-                          uf_plane_row(job->map->dye_adu, y) + from, job->ln_reference, lookup, to - from);
+        job->kernels->gap(uf_plane_row(job->map->gap_nm, y) + from, uf_plane_row(job->near_fine, y) + from,
+                          uf_plane_row(job->dye_fine, y) + from, job->ln_reference, lookup, to - from);
         job->kernels->gap(uf_plane_row(job->map->smooth_gap_nm, y) + from, uf_plane_row(job->near_smooth, y) + from,
                           uf_plane_row(job->dye_smooth, y) + from, job->ln_reference, lookup, to - from);
         judge_row(job, y);
@@ -135,13 +155,7 @@ uf_status uf_gap_find(uf_work *work, const uf_plan *plan, double detection_sigma
         return status;
     uf_rows_run(work, height, signal_rows, &job);
     uf_arena_mark mark = uf_arena_now(&work->arena);
-    status = uf_plane_take(work, width, height, &job.near_smooth, error);
-    if (status == UF_OK)
-        status = uf_plane_take(work, width, height, &job.dye_smooth, error);
-    if (status == UF_OK)
-        status = uf_smooth(work, map->near_adu, psf_px, job.near_smooth, error);
-    if (status == UF_OK)
-        status = uf_smooth(work, map->dye_adu, psf_px, job.dye_smooth, error);
+    status = filter_signals(work, &job, psf_px, error);
     if (status == UF_OK)
         uf_rows_run(work, height, gap_rows, &job);
     uf_arena_back(&work->arena, mark);

@@ -71,8 +71,8 @@ static tally tally_cell(cell_job *job, int label, uf_cell *row)
     uf_labels labels = in->cells->labels;
     float core_px = (float)(2.0 * 2.3548 * in->plan->psf_sigma_um / in->plan->pixel_size_um) + 0.5f;
     float rim_px = (float)(in->settings->contact.rim_um / in->plan->pixel_size_um) + 0.5f;
-    float below_zero = (float)(-3.0 * uf_gap_noise_nm(in->plan, in->near, in->wide, row->near_mean_adu + 1e-9,
-                                                      row->wide_mean_adu + 1e-9));
+    float below_zero = (float)(-3.0 * uf_gap_noise_nm(in->plan, in->plan->restore_variance, in->near, in->wide,
+                                                      row->near_mean_adu + 1e-9, row->wide_mean_adu + 1e-9));
     tally t = {0};
     for (int y = box.y0; y < box.y1; y++) {
         const int32_t *label_row = uf_labels_row(labels, y);
@@ -104,7 +104,7 @@ static tally tally_cell(cell_job *job, int label, uf_cell *row)
 /* ---- contact patches ------------------------------------------------------------------------- */
 
 typedef struct patches {
-    double count, largest_px, contact_px, contact_rim_px;
+    double count, largest_px, contact_px, contact_rim_px, border_px;
 } patches;
 
 /* Pixels of one cell at or under the cutoff, as a mask of its box. */
@@ -123,6 +123,25 @@ static void mark_contact(const cell_job *job, int label, uf_mask mask)
     }
 }
 
+/* Length of the kept patches' borders: transitions along rows and columns times pi / 4 (Crofton, two directions). */
+static double border_length(uf_labels patch_of, const int64_t *areas, double least)
+{
+    int64_t transitions = 0;
+    for (int y = 0; y <= patch_of.height; y++) {
+        const int32_t *here = y < patch_of.height ? uf_labels_row(patch_of, y) : NULL;
+        const int32_t *above = y ? uf_labels_row(patch_of, y - 1) : NULL;
+        int left = 0;
+        for (int x = 0; x < patch_of.width; x++) {
+            int kept = here && here[x] && (double)areas[here[x]] >= least;
+            int kept_above = above && above[x] && (double)areas[above[x]] >= least;
+            transitions += (kept != left) + (kept != kept_above);
+            left = kept;
+        }
+        transitions += left;
+    }
+    return UF_PI / 4 * (double)transitions;
+}
+
 /* Keeps the patches that are large enough, in the field's contact map, and sums them up. */
 static void keep_patches(const cell_job *job, int label, uf_labels patch_of, const int64_t *areas, patches *sums)
 {
@@ -135,6 +154,7 @@ static void keep_patches(const cell_job *job, int label, uf_labels patch_of, con
             sums->contact_px += (double)areas[k];
             sums->largest_px = fmax(sums->largest_px, (double)areas[k]);
         }
+    sums->border_px = border_length(patch_of, areas, least);
     for (int y = box.y0; y < box.y1; y++) {
         const int32_t *patch = uf_labels_row(patch_of, y - box.y0);
         const float *distance = uf_plane_row(job->in->cells->distance_px, y);
@@ -241,6 +261,7 @@ static void fill_contact(const cell_job *job, const tally *t, const patches *p, 
     }
     row->contact_area_um2 = p->contact_px * job->um2;
     row->attachment_fraction = p->contact_px / (double)t->pixels;
+    row->contact_border_um = p->border_px * job->in->plan->pixel_size_um;
     row->contact_patches = p->count;
     row->largest_patch_um2 = p->largest_px * job->um2;
     row->contact_in_rim_fraction = p->contact_px > 0 ? p->contact_rim_px / p->contact_px : (double)NAN;

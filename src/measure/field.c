@@ -28,8 +28,7 @@ void uf_measure_field(const uf_measure_input *input, const uf_cell *rows, int sp
     field->wide_noise_adu = input->wide->noise_adu;
     field->near_saturated_fraction = input->near->saturated_fraction;
     field->wide_saturated_fraction = input->wide->saturated_fraction;
-    field->near_focus = field->wide_focus = field->near_unevenness = field->wide_unevenness = (double)NAN;
-    field->pedestal_fraction = (double)NAN;
+    field->near_focus = field->wide_focus = (double)NAN;
     field->reference_ratio = input->plan->reference_ratio;
     field->depth_nm = input->plan->depth_nm;
     if (!labels.count)

@@ -32,7 +32,7 @@ static double needed_contrast(const uf_measure_input *in, const uf_cell *row, do
 {
     double dye = row->wide_mean_adu;
     double near = dye * in->plan->reference_ratio * exp(uf_decay_ln(&in->plan->decay, gap_nm));
-    double noise = uf_gap_noise_nm(in->plan, in->near, in->wide, near, dye) * sqrt(uf_psf_smoothing(in->plan));
+    double noise = uf_gap_noise_nm(in->plan, uf_psf_smoothing(in->plan), in->near, in->wide, near, dye);
     double by_noise = in->settings->spots.contrast_sigma * noise;
     return by_noise > least_contrast_nm || isnan(by_noise) ? by_noise : least_contrast_nm;
 }

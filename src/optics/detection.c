@@ -33,13 +33,13 @@ double uf_gap_per_ln(const uf_plan *plan, double gap_nm)
     return fabs(uf_decay_gap(&plan->decay, ln + step) - uf_decay_gap(&plan->decay, ln - step)) / (2 * step);
 }
 
-double uf_gap_noise_nm(const uf_plan *plan, const uf_channel *near, const uf_channel *wide, double near_adu,
-                       double dye_adu)
+double uf_gap_noise_nm(const uf_plan *plan, double filter, const uf_channel *near, const uf_channel *wide,
+                       double near_adu, double dye_adu)
 {
     if (!(near_adu > 0) || !(dye_adu > 0))
         return (double)NAN;
     double near_variance = uf_noise_variance(&near->noise, near->background_adu + near_adu) / (near_adu * near_adu);
     double wide_variance = uf_noise_variance(&wide->noise, wide->background_adu + dye_adu) / (dye_adu * dye_adu);
     double gap = uf_decay_gap(&plan->decay, log(near_adu / dye_adu / plan->reference_ratio));
-    return uf_gap_per_ln(plan, gap) * sqrt(near_variance + wide_variance);
+    return uf_gap_per_ln(plan, gap) * sqrt(filter * (near_variance + wide_variance));
 }

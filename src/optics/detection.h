@@ -18,10 +18,11 @@ double uf_smoothed_sd(const uf_plan *plan, const uf_channel *channel, double sig
 double uf_gap_limit_nm(const uf_plan *plan, double detection_sigma, const uf_channel *near, const uf_channel *wide,
                        double dye_adu);
 
-/* 1 sigma of one pixel's gap from the noise of both channels: |d gap / d ln| times the relative noise of
- * near and wide in squares. NaN where either signal is not above 0. */
-double uf_gap_noise_nm(const uf_plan *plan, const uf_channel *near, const uf_channel *wide, double near_adu,
-                       double dye_adu);
+/* 1 sigma of a gap from the noise of both channels: |d gap / d ln| times the relative noise of near and wide in squares.
+ * `filter` is what the map's filter leaves of a pixel's variance: plan->restore_variance for the gap map,
+ * uf_psf_smoothing for the smooth one. NaN where either signal is not above 0. */
+double uf_gap_noise_nm(const uf_plan *plan, double filter, const uf_channel *near, const uf_channel *wide,
+                       double near_adu, double dye_adu);
 
 /* |d gap / d ln(relative excitation)| at a gap: the depth, for an exponential. */
 double uf_gap_per_ln(const uf_plan *plan, double gap_nm);

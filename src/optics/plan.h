@@ -11,7 +11,9 @@ typedef struct uf_plan {
     uf_decay decay;
     uf_decay_law law;
     double pixel_size_um;
-    double psf_sigma_um; /* of the near image: 0.21 emission wavelength / NA */
+    double psf_sigma_um;     /* of the near image: 0.21 emission wavelength / NA */
+    double restore_gain;     /* for uf_restore on a plane smoothed by psf_sigma_um */
+    double restore_variance; /* of a pixel's noise after that */
     double depth_nm, depth_sd_nm;
     double reference_ratio;   /* near / wide that stands for gap 0 */
     double reference_gap_nm;  /* gap it was measured at: a depth error is a gap error around this gap */

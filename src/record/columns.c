@@ -112,11 +112,12 @@ static const uf_column field_columns[] = {
     FIELD(wide_saturated_fraction, REAL, "Share of wide pixels at full scale."),
     FIELD(near_focus, REAL, "Sharpness of the near image inside cells. Not in this version."),
     FIELD(wide_focus, REAL, "Sharpness of the wide image at the outlines. Not in this version."),
-    FIELD(near_unevenness, REAL, "Range of the near background over the field, relative. Not in this version."),
-    FIELD(wide_unevenness, REAL, "Range of the wide background over the field, relative. Not in this version."),
+    FIELD(near_unevenness, REAL, "Slope of the near background: its change over the field, relative to its level; 0 when none can be told. Taken out."),
+    FIELD(wide_unevenness, REAL, "The same of the wide background."),
     FIELD(reference_ratio, REAL, "near / wide ratio that stands for gap 0 in this field."),
     FIELD(depth_nm, REAL, "1/e depth of the evanescent intensity in the medium."),
-    FIELD(pedestal_fraction, REAL, "Share of blurred wide light in the near image. Not in this version."),
+    FIELD(pedestal_fraction, REAL, "Blurred light of the cells under the near image, as a share of the wide image; 0 when none can be told. Taken out."),
+    FIELD(haze_fraction, REAL, "Blurred light of the cells in the wide image, as a share of their own; 0 when none can be told. Taken out."),
     FIELD(flags, FLAGS, "Words that call for a look."),
 };
 

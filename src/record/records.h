@@ -56,6 +56,7 @@ typedef struct uf_cell {
     double spots_per_100um2, spot_area_total_um2, spot_area_median_um2, spot_length_median_um, spot_alignment;
     uf_gap_kind gap_kind;
     uf_flags flags;
+    double contact_border_um;            /* length of the borders of contact; not a column */
     int box_x0, box_y0, box_x1, box_y1;  /* half-open bounding box, pixels; not a column */
     uint32_t gap_histogram[UF_GAP_BINS]; /* resolved pixels; not a column */
 } uf_cell;
@@ -82,7 +83,7 @@ typedef struct uf_field {
     double near_background_adu, wide_background_adu, near_noise_adu, wide_noise_adu;
     double near_saturated_fraction, wide_saturated_fraction;
     double near_focus, wide_focus, near_unevenness, wide_unevenness;
-    double reference_ratio, depth_nm, pedestal_fraction;
+    double reference_ratio, depth_nm, pedestal_fraction, haze_fraction;
     uf_flags flags;
 } uf_field;
 

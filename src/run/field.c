@@ -8,6 +8,7 @@
 #include <math.h>
 #include <stdlib.h>
 
+#include "correct/halo.h"
 #include "correct/shift.h"
 #include "gap/gap.h"
 #include "image/smooth.h"
@@ -70,6 +71,22 @@ static uf_status find_cells(uf_work *work, const uf_plan *plan, const uf_setting
     return status;
 }
 
+/* Haze is the wide image's own light fallen beside the cells; the pedestal is the same light under the near image. */
+static uf_status remove_halos(uf_work *work, const uf_plan *plan, uf_field_result *r, uf_error *error)
+{
+    uf_halo haze, pedestal;
+    uf_status status = uf_halo_remove(work, &r->wide, &r->cells, plan->pixel_size_um, &r->wide, &haze, error);
+    if (status == UF_OK)
+        status = uf_halo_remove(work, &r->wide, &r->cells, plan->pixel_size_um, &r->near, &pedestal, error);
+    if (status != UF_OK)
+        return status;
+    r->field.haze_fraction = haze.share;
+    r->field.pedestal_fraction = pedestal.share;
+    r->field.near_unevenness = pedestal.slope;
+    r->field.wide_unevenness = haze.slope;
+    return UF_OK;
+}
+
 static uf_status measure(uf_work *work, const uf_plan *plan, const uf_settings *settings, uf_field_result *r,
                          uf_error *error)
 {
@@ -89,6 +106,8 @@ uf_status uf_field_run(uf_work *work, const uf_plan *plan, const uf_settings *se
     uf_status status = align(work, settings, result, error);
     if (status == UF_OK)
         status = find_cells(work, plan, settings, result, error);
+    if (status == UF_OK)
+        status = remove_halos(work, plan, result, error);
     if (status == UF_OK)
         status = uf_gap_find(work, plan, settings->contact.detection_sigma, &result->near, &result->wide,
                              &result->cells, &result->gaps, error);
