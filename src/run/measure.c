@@ -12,6 +12,7 @@
 #include "io/image_file.h"
 #include "io/input.h"
 #include "io/output.h"
+#include "report/outlines.h"
 #include "report/overlay.h"
 #include "run/decay_law.h"
 #include "run/field.h"
@@ -292,7 +293,7 @@ static int overlay_wanted(const measure_job *job)
     }
 }
 
-static uf_status draw_overlay(measure_job *job, uf_text *png, uf_error *error)
+static uf_status draw_overlay(measure_job *job, uf_text *png, uf_overlay_layout *layout, uf_error *error)
 {
     const uf_field_result *r = &job->result;
     uf_text line = {0}, flags = {0};
@@ -314,8 +315,7 @@ static uf_status draw_overlay(measure_job *job, uf_text *png, uf_error *error)
                               .full = job->settings->output.overlay == UF_OVERLAY_FULL};
     uf_arena_mark mark = uf_arena_now(&job->work.arena);
     uf_indexed picture;
-    uf_overlay_layout layout;
-    uf_status status = uf_overlay_draw(&job->work, &input, &picture, &layout, error);
+    uf_status status = uf_overlay_draw(&job->work, &input, &picture, layout, error);
     if (status == UF_OK)
         status = uf_encode_indexed_png(png, &picture, error);
     uf_arena_back(&job->work.arena, mark);
@@ -326,12 +326,19 @@ static uf_status draw_overlay(measure_job *job, uf_text *png, uf_error *error)
 
 static uf_status write_overlay(measure_job *job, uf_error *error)
 {
-    uf_text png = {0};
+    uf_text png = {0}, outlines = {0};
+    uf_outlines_input input = {.labels = job->result.cells.labels, .pixel_size_um = job->plan.pixel_size_um};
     int wanted = overlay_wanted(job);
-    uf_status status = wanted ? draw_overlay(job, &png, error) : UF_OK;
+    uf_status status = wanted ? draw_overlay(job, &png, &input.layout, error) : UF_OK;
     if (status == UF_OK)
         status = write_or_remove(job, "overlay", ".png", wanted ? &png : NULL, error);
+    input.overlay_name = job->overlay_name;
+    if (status == UF_OK && wanted)
+        status = uf_outlines_json(&job->work, &input, &outlines, error);
+    if (status == UF_OK)
+        status = write_or_remove(job, "outlines", ".json", wanted ? &outlines : NULL, error);
     uf_text_free(&png);
+    uf_text_free(&outlines);
     return status;
 }
 

@@ -152,7 +152,7 @@ const uf_setting uf_setting_table[] = {
     A_LATER("compare", "drop_flags", "Flags whose cells are left out."),
 
     A_CHOICE("output", "overlay", output.overlay, "yes|flagged|full|no", UF_OVERLAY_YES,
-             "Overlay pictures: of every field, of flagged fields only, at full size, none."),
+             "Overlay pictures and their outlines: of every field, of flagged fields only, at full size, none."),
     A_CHOICE("output", "maps", output.maps, "yes|no", UF_NO, "Gap and label TIFFs."),
 };
 

@@ -14,7 +14,7 @@ import tifffile
 from conftest import ROOT, Run, measure_arguments, tree
 
 TABLES = ("cells.csv", "spots.csv", "fields.csv")
-PICTURES = ("overlay/a_near.png", "gap/a_near.tif", "labels/a_near.tif")
+PICTURES = ("overlay/a_near.png", "outlines/a_near.json", "gap/a_near.tif", "labels/a_near.tif")
 
 
 def rows(path):
