@@ -1,8 +1,9 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
 /*
  * The two panels. Images are reduced row by row while they are drawn, so a picture needs a few rows of
- * scratch and no reduced copies: near values are averaged, a pixel counts as contact when at least half of
- * what it shows is, labels are taken from the upper left pixel, and gaps are averaged where there are any.
+ * scratch and no reduced copies: near values are averaged, a pixel counts as contact when more than
+ * half of what it shows is (the upper left pixel decides between halves, so that the tint is as large as the contact),
+ * labels are taken from the upper left pixel, and gaps are averaged where there are any.
  */
 #include <math.h>
 #include <stdbool.h>
@@ -83,10 +84,10 @@ static void contact_row(const overlay_scene *scene, int y, uint8_t *out)
         memcpy(out, a, (size_t)scene->width);
         return;
     }
-    for (int x = 0; x < contact.width / 2; x++)
-        out[x] = a[2 * x] + a[2 * x + 1] + b[2 * x] + b[2 * x + 1] >= 2;
+    for (int x = 0; x < contact.width / 2; x++) /* the upper left pixel twice: it decides between halves */
+        out[x] = 2 * a[2 * x] + a[2 * x + 1] + b[2 * x] + b[2 * x + 1] >= 3;
     if (contact.width % 2)
-        out[contact.width / 2] = a[contact.width - 1] + b[contact.width - 1] >= 1;
+        out[contact.width / 2] = a[contact.width - 1];
 }
 
 /* A pixel of a cell is on its outline when one of its four neighbours is not of that cell. What lies beyond

@@ -764,6 +764,9 @@ static void reduction_follows_its_rules(void **state)
     contact[0][2] = contact[1][3] = 1;
     contact[0][1024] = 1;
     contact[2][4] = 1; /* half of the lower border's block */
+    contact[0][7] = contact[1][6] = 1;                  /* the other half: upper left is off */
+    contact[0][9] = contact[1][8] = contact[1][9] = 1;  /* three quarters */
+    contact[2][7] = 1;
     for (int x = 512; x < 1025; x++)
         near[0][x] = near[1][x] = near[2][x] = 4211.5f;
     near[0][0] = 2211.5f, near[0][1] = 211.5f, near[1][0] = 1211.5f,
@@ -780,6 +783,9 @@ static void reduction_follows_its_rules(void **state)
     assert_true(near_ink(s, 1, 0) >= UF_INK_CONTACT);
     assert_true(near_ink(s, 512, 0) >= UF_INK_CONTACT);
     assert_true(near_ink(s, 2, 1) >= UF_INK_CONTACT);
+    assert_true(near_ink(s, 3, 0) < UF_INK_CONTACT);
+    assert_true(near_ink(s, 4, 0) >= UF_INK_CONTACT);
+    assert_true(near_ink(s, 3, 1) < UF_INK_CONTACT);
     double level = (UF_NEAR_LEVELS - 1) * sqrt(800.0 / 4000.0);
     assert_true(fabs(near_ink(s, 0, 0) - UF_INK_NEAR - level) < 0.8);
     free_scene(s);
