@@ -249,11 +249,16 @@ static void fill_gaps(cell_job *job, const tally *t, uf_cell *row)
     row->gap_kind = UF_GAP_ABSOLUTE;
 }
 
+static int is_too_dim(const uf_cell *row)
+{
+    return row->flags >> UF_FLAG_TOO_DIM & 1u;
+}
+
 static void fill_contact(const cell_job *job, const tally *t, const patches *p, uf_cell *row)
 {
     double cutoff = job->in->settings->contact.cutoff_nm;
     row->rim_area_fraction = (double)t->rim / (double)t->pixels;
-    if (row->flags >> UF_FLAG_TOO_DIM & 1u) {
+    if (is_too_dim(row)) {
         row->contact_area_um2 = row->attachment_fraction = row->contact_area_minus10_um2 = (double)NAN;
         row->contact_area_plus10_um2 = row->contact_patches = row->largest_patch_um2 = (double)NAN;
         row->contact_in_rim_fraction = (double)NAN;
@@ -310,7 +315,7 @@ static uf_status measure_cell(uf_work *work, cell_job *job, int label, uf_cell *
 {
     uf_box box = job->boxes[label];
     uf_shape shape;
-    patches p;
+    patches p = {0};
     memset(row, 0, sizeof *row);
     row->cell = label;
     row->box_x0 = box.x0;
@@ -318,8 +323,6 @@ static uf_status measure_cell(uf_work *work, cell_job *job, int label, uf_cell *
     row->box_x1 = box.x1;
     row->box_y1 = box.y1;
     uf_status status = uf_shape_of(work, job->in->cells->labels, label, box, &shape, error);
-    if (status == UF_OK)
-        status = find_patches(work, job, label, &p, error);
     if (status != UF_OK)
         return status;
     fill_shape(job, &shape, row);
@@ -328,6 +331,10 @@ static uf_status measure_cell(uf_work *work, cell_job *job, int label, uf_cell *
     tally t = tally_cell(job, label, row);
     fill_flags(job, &t, row);
     fill_gaps(job, &t, row);
+    if (!is_too_dim(row)) /* what is not reported is not on the contact map either */
+        status = find_patches(work, job, label, &p, error);
+    if (status != UF_OK)
+        return status;
     fill_contact(job, &t, &p, row);
     uf_fill_intervals(job->in, row);
     return UF_OK;

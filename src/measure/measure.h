@@ -18,7 +18,8 @@ typedef struct uf_measure_input {
 } uf_measure_input;
 
 /* One row a cell into rows[0 .. count - 1] (made in the arena), everything but spots, and the contact map: 1
- * where the gap is at most the cutoff, in patches of at least min_patch_um2. UF_MEMORY. */
+ * where the gap is at most the cutoff, in patches of at least min_patch_um2, of cells whose contact is reported.
+ * UF_MEMORY. */
 UF_MUST_USE uf_status uf_measure_cells(uf_work *work, const uf_measure_input *input, uf_cell **rows, uf_mask *contact,
                                        uf_error *error);
 

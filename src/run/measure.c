@@ -293,6 +293,33 @@ static int overlay_wanted(const measure_job *job)
     }
 }
 
+static int all_resolved(const measure_job *job)
+{
+    for (int k = 0; k < job->result.cells.labels.count; k++)
+        if (job->result.rows[k].unresolved_um2 > 0)
+            return 0;
+    return 1;
+}
+
+/* The gaps that the overlay shows. Where none is measured the map holds the detection limit, which must not be drawn
+ * as if it were one: of a dim cell it may lie in the colours of contact. */
+static uf_status measured_gaps(measure_job *job, uf_plane *gap_nm, uf_error *error)
+{
+    const uf_gap_map *map = &job->result.gaps;
+    *gap_nm = map->gap_nm;
+    if (all_resolved(job))
+        return UF_OK;
+    uf_status status = uf_plane_take(&job->work, map->gap_nm.width, map->gap_nm.height, gap_nm, error);
+    for (int y = 0; status == UF_OK && y < gap_nm->height; y++) {
+        const float *from = uf_plane_row(map->gap_nm, y);
+        const uint8_t *state = uf_mask_row(map->state, y);
+        float *to = uf_plane_row(*gap_nm, y);
+        for (int x = 0; x < gap_nm->width; x++)
+            to[x] = state[x] == UF_GAP_RESOLVED ? from[x] : (float)NAN;
+    }
+    return status;
+}
+
 static uf_status draw_overlay(measure_job *job, uf_text *png, uf_overlay_layout *layout, uf_error *error)
 {
     const uf_field_result *r = &job->result;
@@ -301,7 +328,6 @@ static uf_status draw_overlay(measure_job *job, uf_text *png, uf_overlay_layout 
     flag_words(r->field.flags, &flags);
     uf_overlay_input input = {.near_adu = r->gaps.near_adu,
                               .labels = r->cells.labels,
-                              .gap_nm = r->gaps.gap_nm,
                               .contact = r->contact,
                               .cells = r->rows,
                               .spots = r->spots,
@@ -315,7 +341,9 @@ static uf_status draw_overlay(measure_job *job, uf_text *png, uf_overlay_layout 
                               .full = job->settings->output.overlay == UF_OVERLAY_FULL};
     uf_arena_mark mark = uf_arena_now(&job->work.arena);
     uf_indexed picture;
-    uf_status status = uf_overlay_draw(&job->work, &input, &picture, layout, error);
+    uf_status status = measured_gaps(job, &input.gap_nm, error);
+    if (status == UF_OK)
+        status = uf_overlay_draw(&job->work, &input, &picture, layout, error);
     if (status == UF_OK)
         status = uf_encode_indexed_png(png, &picture, error);
     uf_arena_back(&job->work.arena, mark);

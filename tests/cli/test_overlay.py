@@ -152,13 +152,13 @@ class Page:
         x, y = panels[which]["x"], panels[which]["y"]
         return self.rgb[y:y + panels["height"], x:x + panels["width"]]
 
-    def numbers(self):
-        """Cell numbers and their halos, a pixel too wide: greys in the gap panel other than the two greys that the
-        legend explains, the commonest of which is the ground."""
+    def numbers(self, hatched=False):
+        """Cell numbers and their halos, a pixel too wide: greys in the gap panel other than the greys that the legend
+        explains. The commonest of them is the ground; when there is hatching, its lines are the next."""
         gap = self.panel("gap")
         grey = numpy.where(is_grey(gap), gap[..., 0].astype(int), -1)
-        ground = numpy.bincount(grey[grey >= 0]).argmax()
-        return scipy.ndimage.binary_dilation((grey >= 0) & (grey != ground), BLOCK)
+        explained = numpy.argsort(numpy.bincount(grey[grey >= 0]))[-2 if hatched else -1:]
+        return scipy.ndimage.binary_dilation((grey >= 0) & ~numpy.isin(grey, explained), BLOCK)
 
     def shown_labels(self):
         """Labels at the middle of each panel pixel: exact at 1:1, half an image pixel off at 2:1."""
@@ -510,6 +510,44 @@ def test_tinted_pixels_add_up_to_the_contact_areas(page):
         total, wanted_total = total + found, wanted_total + wanted
         assert found == pytest.approx(wanted, rel=0.05, abs=0.05 * float(row["spread_area_um2"]))
     assert total == pytest.approx(wanted_total, rel=0.02)
+
+
+# ---- cells without a gap -------------------------------------------------------------------------------------
+
+
+@pytest.fixture(scope="module", params=["some", "most"])
+def dim_page(demo, tmp_path_factory, request):
+    """Field d with so little near light, and a reference to match, that many pixels have no measurable gap."""
+    folder, share = tmp_path_factory.mktemp("dim"), {"some": 3e-4, "most": 1e-4}[request.param]
+    random, gain = numpy.random.default_rng(5), 2.17
+    counts = numpy.maximum(tifffile.imread(f"{demo}/d_near.tif").astype(float) - 100, 0)
+    counts = 100 + random.poisson(counts * share * gain) / gain + random.normal(0, 1.6 / gain, counts.shape)
+    tifffile.imwrite(folder / "d_near.tif", numpy.rint(counts).astype("uint16"))
+    with open(f"{demo}/instrument.ini") as file:
+        text = file.read().replace("ratio = 1.5", f"ratio = {1.5 * share}")
+    (folder / "instrument.ini").write_text(text.replace("file = flat", f"file = {demo}/flat"))
+    run = Run(measure_arguments(demo, folder / "out", near=folder / "d_near.tif", wide=f"{demo}/d_wide.tif",
+                                instrument=folder / "instrument.ini"))
+    assert run.status == 0, run.err
+    return Page(folder / "out", "d_near")
+
+
+def test_pixels_without_a_gap_are_hatched(dim_page):
+    panel, labels = dim_page.panel("gap"), dim_page.labels
+    hidden = dim_page.numbers(hatched=True) | is_outline(panel)
+    hatched = is_grey(panel)
+    for row in dim_page.cells:
+        inside = (labels == int(row["cell"])) & ~hidden
+        share = float(row["unresolved_um2"]) / float(row["spread_area_um2"])
+        assert hatched[inside].mean() == pytest.approx(share, abs=0.04)  # what marks hide is a twentieth
+
+
+def test_cells_that_report_no_contact_have_no_tint(dim_page):
+    near = dim_page.panel("near")
+    tinted = ~is_grey(near) & ~is_spot(near) & ~is_outline(near)
+    for row in dim_page.cells:
+        found = (tinted & (dim_page.labels == int(row["cell"]))).any()
+        assert found == bool(row["contact_area_um2"] and float(row["contact_area_um2"]) > 0)
 
 
 # ---- scale bar -----------------------------------------------------------------------------------------------
