@@ -61,13 +61,17 @@ size_t uf_font_fit(uf_font font, const char *text, int width)
     return fits;
 }
 
-static void draw_glyph(uf_canvas canvas, const uf_font_face *face, const uf_glyph *glyph, int x, int y, uint8_t ink)
+/* `up` turns the glyph a quarter to the left about the pen. */
+static void draw_glyph(uf_canvas canvas, const uf_font_face *face, const uf_glyph *glyph, int x, int y, int up,
+                       uint8_t ink)
 {
     for (int row = 0; row < glyph->height; row++)
         for (int column = 0; column < glyph->width; column++) {
             int level = level_at(face, glyph, column, row);
+            int right = glyph->left + column, down = row - glyph->top;
             if (level)
-                uf_canvas_put(canvas, x + glyph->left + column, y - glyph->top + row, (uint8_t)(ink + level - 1));
+                uf_canvas_put(canvas, up ? x + down : x + right, up ? y - right : y + down,
+                              (uint8_t)(ink + level - 1));
         }
 }
 
@@ -78,7 +82,7 @@ int uf_font_draw_bytes(uf_canvas canvas, uf_font font, int x, int y, const char 
     for (size_t at = 0; at < count; at += used) {
         const uf_glyph *glyph = find_glyph(face, next_character(text + at, count - at, &used));
         if (canvas.data)
-            draw_glyph(canvas, face, glyph, x, y, ink);
+            draw_glyph(canvas, face, glyph, x, y, 0, ink);
         x += glyph->advance;
     }
     return x;
@@ -87,6 +91,19 @@ int uf_font_draw_bytes(uf_canvas canvas, uf_font font, int x, int y, const char 
 int uf_font_draw(uf_canvas canvas, uf_font font, int x, int y, const char *text, uint8_t ink)
 {
     return uf_font_draw_bytes(canvas, font, x, y, text, strlen(text), ink);
+}
+
+int uf_font_draw_up(uf_canvas canvas, uf_font font, int x, int y, const char *text, uint8_t ink)
+{
+    const uf_font_face *face = &uf_font_faces[font];
+    size_t length = strlen(text), used;
+    for (size_t at = 0; at < length; at += used) {
+        const uf_glyph *glyph = find_glyph(face, next_character(text + at, length - at, &used));
+        if (canvas.data)
+            draw_glyph(canvas, face, glyph, x, y, 1, ink);
+        y -= glyph->advance;
+    }
+    return y;
 }
 
 /* Faint levels get no halo, or the halo would be wider where a stroke happens to fall between pixels. */

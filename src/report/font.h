@@ -45,7 +45,11 @@ size_t uf_font_fit(uf_font font, const char *text, int width);
  * .. UF_FONT_LEVELS, becomes index ink + k - 1; level 0 leaves what is there. Returns where the pen ends. */
 int uf_font_draw(uf_canvas canvas, uf_font font, int x, int y, const char *text, uint8_t ink);
 
-/* The same for the first `count` bytes. */
+/* The same turned a quarter to the left: the text reads upwards, its baseline the column x, its pen starting at y and
+ * moving up. Returns where the pen ends. */
+int uf_font_draw_up(uf_canvas canvas, uf_font font, int x, int y, const char *text, uint8_t ink);
+
+/* The first, for `count` bytes only. */
 int uf_font_draw_bytes(uf_canvas canvas, uf_font font, int x, int y, const char *text, size_t count, uint8_t ink);
 
 /* Puts index `halo` on the text's pixels and their eight neighbours: drawn first, it keeps text readable on

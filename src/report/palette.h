@@ -5,8 +5,8 @@
  *
  * The gap ramp is light at the substrate and dark far from it, evenly in OKLab lightness, so that it keeps
  * its order in grey print and to colour-blind eyes; its hue runs from aqua through blue and violet to wine.
- * The contact tint has the hue of the ramp's close end: aqua means close in both panels. Outlines are orange,
- * which occurs nowhere else.
+ * The contact tint has about the hue of the ramp at its close end: light blue means close in both panels. Outlines are
+ * orange and spots yellow, which occur nowhere else.
  */
 #ifndef UF_REPORT_PALETTE_H
 #define UF_REPORT_PALETTE_H

@@ -13,5 +13,7 @@ uf_status uf_optics_report(const uf_optics_request *request, uf_text *out, uf_er
         status = uf_optics_put_json(out, &numbers, error);
     else
         uf_optics_put_words(out, &numbers);
+    if (status == UF_OK && request->plot_path)
+        status = uf_optics_plot(&numbers, request->plot_path, error);
     return status == UF_OK ? uf_text_check(out, "the report", error) : status;
 }

@@ -53,4 +53,7 @@ UF_MUST_USE uf_status uf_optics_find(const uf_optics_request *request, uf_optics
 void uf_optics_put_words(uf_text *out, const uf_optics_numbers *numbers);
 UF_MUST_USE uf_status uf_optics_put_json(uf_text *out, const uf_optics_numbers *numbers, uf_error *error);
 
+/* Writes the plot as a PNG. UF_OUTPUT when it cannot be written. */
+UF_MUST_USE uf_status uf_optics_plot(const uf_optics_numbers *numbers, const char *path, uf_error *error);
+
 #endif

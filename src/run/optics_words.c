@@ -186,7 +186,7 @@ static void put_verdict(uf_text *out, const uf_optics_numbers *n)
     else if (b->objective_na <= needed)
         uf_text_printf(out, "This objective (NA %.4g) cannot go there; 1.45 or more is usual for cells.\n",
                        b->objective_na);
-    if (fabs(n->layered_effect_nm) > 3 && n->law.model == UF_FIELD_EXPONENTIAL)
+    if (fabs(n->layered_effect_nm) > 3 && n->law.model == UF_FIELD_EXPONENTIAL && b->na_effective > b->cell_n)
         uf_text_printf(out,
                        "At the cutoff an exponential is off by %+.1f nm: use model = layered, or ask\n"
                        "--for-agreement-nm 2 for the angles where it is not.\n",

@@ -2,6 +2,7 @@
 import json
 
 import pytest
+from PIL import Image
 
 from conftest import Run
 
@@ -134,6 +135,20 @@ def test_decay_table_from_a_file(tmp_path):
         table.write_text(text)
         run = Run(["optics", "-i", str(bench)])
         assert run.status == 2 and where in run.err and word in run.err, run.err
+
+
+def test_plot_is_a_picture_and_faults_are_told(tmp_path):
+    png = tmp_path / "depth.png"
+    run = Run(["optics", *BENCH, "--angle-deg", "70", "--objective-na", "1.49", "--plot", str(png)])
+    assert run.status == 0
+    image = Image.open(png)
+    assert image.size == (1160, 560) and len(image.getcolors()) > 20
+    again = tmp_path / "again.png"
+    Run(["optics", *BENCH, "--angle-deg", "70", "--objective-na", "1.49", "--plot", str(again)])
+    assert again.read_bytes() == png.read_bytes()
+    refused = Run(["optics", *BENCH, "--angle-deg", "70", "--plot", str(tmp_path) + "/"])
+    assert refused.status == 2 and "name of a file" in refused.err
+    assert Run(["optics", *BENCH, "--angle-deg", "70", "--plot", "/proc/nowhere/x.png"]).status == 3
 
 
 def test_laser_caution_stands_where_an_angle_is_shown():

@@ -69,7 +69,7 @@ def is_outline(rgb):
 
 def is_spot(rgb):
     chroma, hue = chroma_and_hue(rgb)
-    return (chroma > 0.2) & (abs(hue - 350) < 6)
+    return (chroma > 0.15) & (abs(hue - 108) < 6)
 
 
 def is_cutoff(rgb):
@@ -490,7 +490,7 @@ def test_tint_is_where_the_contact_is(page):
     wanted = sum(float(row["contact_area_um2"] or 0) for row in page.cells)
     assert contact.sum() * PIXEL_UM ** 2 == pytest.approx(wanted, rel=1e-4)
     chroma, hue = chroma_and_hue(near[tinted])
-    assert abs(numpy.median(hue) - 190) < 6
+    assert abs(numpy.median(hue) - 240) < 8
 
 
 def test_tinted_pixels_add_up_to_the_contact_areas(page):
@@ -607,5 +607,12 @@ def test_colours_differ_for_every_eye(pages, who):
     assert distance(ramp) > 0.08
     assert distance(grey) > 0.08
     assert distance(tint) > 0.08
+    spot = seen_by(colours[is_spot(colours)], who)
+    assert len(spot) == 1
+    for others in (grey, tint, outline):
+        assert numpy.linalg.norm(seen_by(others, who) - spot[0], axis=1).min() > 0.08
+    # The tint beside the grey of the same lightness, in most of the range.
+    nearest = [numpy.linalg.norm(seen_by(grey, who) - colour, axis=1).min() for colour in seen_by(tint, who)]
+    assert numpy.median(nearest) > 0.03
     ends = seen_by(ramp[[0, -1]], who)
     assert numpy.linalg.norm(ends[0] - ends[1]) > 0.5
