@@ -158,7 +158,7 @@ docs: all ## the pages that come from the tables in the code
 
 docs-pictures: demo ## the README's picture, from the demo
 	@mkdir -p docs/pictures
-	cp $(DEMO)/results_a/overlay/a_near.png docs/pictures/overlay.png
+	cp $(DEMO)/results_a/overlay/day1_a_near.png docs/pictures/overlay.png
 
 # ---- install ---------------------------------------------------------------------------------------------
 

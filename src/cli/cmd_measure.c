@@ -139,6 +139,6 @@ const uf_command uf_command_measure = {
     "substrate, and measures contact area, attachment and focal spots of every cell. Writes cells.csv,\n"
     "spots.csv, fields.csv, run.json and an overlay picture (docs/columns.md explains every column).",
     "  underfoot demo try-me\n"
-    "  underfoot measure try-me/a_near.tif try-me/a_wide.tif -i try-me/instrument.ini -a try-me/assay.ini -o "
+    "  underfoot measure try-me/day1_a_near.tif try-me/day1_a_wide.tif -i try-me/day1.ini -a try-me/assay.ini -o "
     "try-me/results",
     command_measure};

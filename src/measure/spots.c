@@ -22,8 +22,13 @@
 /* Two maxima of contrast are one spot when the saddle between them reaches this share of the lower one. */
 static const double one_spot_saddle = 0.6;
 
-/* Natural unevenness of a membrane reaches some nm of contrast; a spot must stand out of it. */
-static const double least_contrast_nm = 7.0;
+/* Natural unevenness of a membrane reaches some nm of contrast, and a tenth of the signal where it is far; a spot must
+ * stand out of it. */
+static const double least_contrast_nm = 7.0, least_contrast_share = 0.1;
+
+/* At the outline near and wide fall by blur, and what one takes the other's fall for may be wrong by this share; the error
+ * is gone this far inside. A gap wrong by that looks like a spot where the membrane is far. */
+static const double rim_error = 0.35, rim_reach_um = 1.0;
 
 /* ---- cut ------------------------------------------------------------------------------------- */
 
@@ -34,7 +39,8 @@ static double needed_contrast(const uf_measure_input *in, const uf_cell *row, do
     double near = dye * in->plan->reference_ratio * exp(uf_decay_ln(&in->plan->decay, gap_nm));
     double noise = uf_gap_noise_nm(in->plan, uf_psf_smoothing(in->plan), in->near, in->wide, near, dye);
     double by_noise = in->settings->spots.contrast_sigma * noise;
-    return by_noise > least_contrast_nm || isnan(by_noise) ? by_noise : least_contrast_nm;
+    double least = fmax(least_contrast_nm, least_contrast_share * uf_gap_per_ln(in->plan, gap_nm));
+    return by_noise > least || isnan(by_noise) ? by_noise : least;
 }
 
 enum { GAP_STEPS = 64, GAP_STEP_NM = 8 };
@@ -171,10 +177,19 @@ static uf_status grow_regions(uf_work *work, const uf_measure_input *in, uf_plan
     return UF_OK;
 }
 
+/* Contrast that an error of the fall at the outline does not reach at this place. */
+static double needed_at_rim(const uf_measure_input *in, const spot_sums *s)
+{
+    double distance_px = (double)uf_plane_row(in->cells->distance_px, s->top_y)[s->top_x];
+    double share = 1 - distance_px * in->plan->pixel_size_um / rim_reach_um;
+    return share > 0 ? share * rim_error * uf_gap_per_ln(in->plan, (double)(s->least_gap + s->top)) : 0;
+}
+
 static int is_spot(const uf_measure_input *in, const spot_sums *s, const float *needed, const uf_spot *spot)
 {
     const uf_settings *settings = in->settings;
-    return s->top >= needed_at(needed + (size_t)s->cell * GAP_STEPS, s->least_gap) &&
+    return (double)s->top >= needed_at_rim(in, s) &&
+           s->top >= needed_at(needed + (size_t)s->cell * GAP_STEPS, s->least_gap) &&
            spot->length_um >= settings->spots.min_length_um && spot->length_um <= settings->spots.max_length_um;
 }
 

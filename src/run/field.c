@@ -113,6 +113,9 @@ uf_status uf_field_run(uf_work *work, const uf_plan *plan, const uf_settings *se
                              &result->cells, &result->gaps, error);
     if (status == UF_OK)
         status = measure(work, plan, settings, result, error);
+    /* An empty field has no shift to be sure of. */
+    if (status == UF_OK && !result->field.cells)
+        result->field.flags &= ~(1u << UF_FLAG_SHIFT_UNSURE | 1u << UF_FLAG_SHIFT_DIFFERS);
     if (status == UF_OK)
         result->field.status = result->field.flags ? UF_FIELD_FLAGGED : UF_FIELD_OK;
     return status;

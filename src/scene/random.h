@@ -24,7 +24,8 @@ typedef enum uf_scene_stream {
     UF_STREAM_SPOTS,
     UF_STREAM_DYE,
     UF_STREAM_NEAR_CAMERA,
-    UF_STREAM_WIDE_CAMERA
+    UF_STREAM_WIDE_CAMERA,
+    UF_STREAM_DUST
 } uf_scene_stream;
 
 /* splitmix64: steps `state` and returns the next number (Steele, Lea and Flood 2014, OOPSLA, "Fast splittable

@@ -43,6 +43,7 @@ uf_scene_settings uf_scene_defaults(void)
                                .offset_adu = 100,
                                .gain_e_per_adu = 2.17,
                                .read_noise_e = 1.6,
+                               .cell_n = 1.37,
                                .scattered_depth_nm = 1200,
                                .psf_sigma_um = 0.115,
                                .near_unevenness = 0.12,
@@ -55,6 +56,23 @@ static double evanescent_depth_nm(const uf_scene_settings *s)
     double sine = sin(s->angle_deg * 3.14159265358979323846 / 180);
     double along = s->substrate_n * sine;
     return s->wavelength_nm / (4 * 3.14159265358979323846 * sqrt(along * along - s->medium_n * s->medium_n));
+}
+
+/* Decay constants of the field amplitude, per nm, in a medium of index n. */
+static double field_decay(const uf_scene_settings *s, double n)
+{
+    double along = s->substrate_n * sin(s->angle_deg * 3.14159265358979323846 / 180);
+    return 2 * 3.14159265358979323846 / s->wavelength_nm * sqrt(along * along - n * n);
+}
+
+double uf_scene_layered(const uf_scene_settings *s, double gap_nm)
+{
+    double cosine = cos(s->angle_deg * 3.14159265358979323846 / 180);
+    double across = 2 * 3.14159265358979323846 / s->wavelength_nm * s->substrate_n * cosine;
+    double medium = field_decay(s, s->medium_n), cell = field_decay(s, s->cell_n);
+    double even = cosh(medium * gap_nm), odd = sinh(medium * gap_nm);
+    double field = even + cell / medium * odd, slope = medium * odd + cell * even;
+    return 4 / (field * field + slope * slope / (across * across));
 }
 
 /* ---- dye ------------------------------------------------------------------------------------- */
@@ -82,14 +100,23 @@ static uf_status make_dye(uf_work *work, const uf_scene_settings *s, uf_labels l
 
 /* ---- light ----------------------------------------------------------------------------------- */
 
+/* Blur of what is in focus. */
+static double focus_sigma_um(const uf_scene_settings *s)
+{
+    return hypot(s->psf_sigma_um, s->defocus_um);
+}
+
 static void near_light(const uf_scene_settings *s, double depth_nm, uf_plane dye, uf_plane gap_nm, uf_plane out)
 {
+    double at_contact = s->layered ? uf_scene_layered(s, 0) : 1;
     for (int y = 0; y < out.height; y++)
         for (int x = 0; x < out.width; x++) {
             double gap = (double)uf_plane_row(gap_nm, y)[x], light = 0;
-            if (!isnan(gap))
-                light = (1 - s->scattered_fraction) * exp(-gap / depth_nm) +
-                        s->scattered_fraction * exp(-gap / s->scattered_depth_nm);
+            if (!isnan(gap)) {
+                double field = s->layered ? uf_scene_layered(s, gap) / at_contact : exp(-gap / depth_nm);
+                double scattered = s->scattered_fraction > 0 ? exp(-gap / s->scattered_depth_nm) : 0;
+                light = (1 - s->scattered_fraction) * field + s->scattered_fraction * scattered;
+            }
             uf_plane_row(out, y)[x] = (float)(s->near_peak_adu * (double)uf_plane_row(dye, y)[x] * light);
         }
 }
@@ -115,9 +142,9 @@ static uf_status wide_light(uf_work *work, const uf_scene_settings *s, uf_plane 
     uf_plane blurred;
     uf_status status = uf_plane_take(work, out.width, out.height, &blurred, error);
     if (status == UF_OK)
-        status = uf_psf_blur(work, dye, s->psf_sigma_um / px, dx, dy, out, error);
+        status = uf_psf_blur(work, dye, focus_sigma_um(s) / px, dx, dy, out, error);
     if (status == UF_OK)
-        status = uf_psf_blur(work, dye, dorsal_sigma_um / px, dx, dy, blurred, error);
+        status = uf_psf_blur(work, dye, hypot(dorsal_sigma_um, s->defocus_um) / px, dx, dy, blurred, error);
     if (status != UF_OK)
         return status;
     scale(out, 1 - dorsal_share);
@@ -129,6 +156,30 @@ static uf_status wide_light(uf_work *work, const uf_scene_settings *s, uf_plane 
     }
     scale(out, s->wide_peak_adu);
     return status;
+}
+
+/* One speck, far out of focus: a soft disc that shines in both channels, or takes light from both. */
+static void add_speck(const uf_scene_settings *s, uf_scene *scene, uf_random *random, int dark)
+{
+    double radius = uf_random_between(random, 1.2, 3.5) / s->pixel_size_um;
+    double x0 = uf_random_between(random, 0, s->width), y0 = uf_random_between(random, 0, s->height);
+    double strength = dark ? uf_random_between(random, 0.3, 0.7) : uf_random_between(random, 0.4, 2.0);
+    int reach = (int)(2 * radius) + 1;
+    for (int y = (int)fmax(0, y0 - reach); y < fmin(s->height, y0 + reach); y++)
+        for (int x = (int)fmax(0, x0 - reach); x < fmin(s->width, x0 + reach); x++) {
+            double disc = strength / (1 + exp((hypot(x - x0, y - y0) - radius) / (0.12 * radius)));
+            float *near = &uf_plane_row(scene->near_adu, y)[x], *wide = &uf_plane_row(scene->wide_adu, y)[x];
+            *near = (float)(dark ? (double)*near * (1 - disc) : (double)*near + 0.05 * disc * s->near_peak_adu);
+            *wide = (float)(dark ? (double)*wide * (1 - disc) : (double)*wide + disc * s->wide_peak_adu);
+        }
+}
+
+static void add_dust(const uf_scene_settings *s, uf_scene *scene)
+{
+    uf_random random;
+    uf_random_start(&random, s->seed, UF_STREAM_DUST);
+    for (int k = 0; k < s->dust; k++)
+        add_speck(s, scene, &random, k % 2);
 }
 
 /* Background, uneven light, camera. */
@@ -155,11 +206,12 @@ static uf_status make_images(uf_work *work, const uf_scene_settings *s, uf_scene
     if (status != UF_OK)
         return status;
     near_light(s, scene->depth_nm, dye, scene->gap_nm, scene->near_adu);
-    status = uf_psf_blur(work, scene->near_adu, s->psf_sigma_um / s->pixel_size_um, 0, 0, scene->near_adu, error);
+    status = uf_psf_blur(work, scene->near_adu, focus_sigma_um(s) / s->pixel_size_um, 0, 0, scene->near_adu, error);
     if (status == UF_OK)
         status = wide_light(work, s, dye, scene->wide_adu, error);
     if (status != UF_OK)
         return status;
+    add_dust(s, scene);
     uf_scene_illuminate(scene->near_flat, s->near_unevenness, 0.05, -0.03);
     uf_scene_illuminate(scene->wide_flat, s->wide_unevenness, -0.02, 0.04);
     expose(s, scene->near_adu, scene->near_flat, s->near_background_adu, UF_STREAM_NEAR_CAMERA);

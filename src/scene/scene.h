@@ -27,8 +27,12 @@ typedef struct uf_scene_settings {
     double near_peak_adu, wide_peak_adu; /* signal at gap 0; of a full membrane */
     double near_background_adu, wide_background_adu, offset_adu;
     double gain_e_per_adu, read_noise_e;
+    int layered; /* the field under a cell of cell_n (s polarized), not exp(-gap / depth) */
+    double cell_n;
     double scattered_fraction, scattered_depth_nm; /* stray light in the excitation, share at gap 0 */
     double psf_sigma_um;
+    double defocus_um;                       /* sigma of more blur in both channels: the stage stood wrong */
+    int dust;                                /* specks, every other one dark */
     double haze;                             /* share of widely blurred light added to the wide image */
     double shift_dx_px, shift_dy_px;         /* of the wide image relative to the near image */
     double near_unevenness, wide_unevenness; /* fall of illumination to the corner, relative */
@@ -45,6 +49,14 @@ typedef struct uf_scene {
     double depth_nm;        /* of the evanescent intensity */
     double reference_ratio; /* near / wide at gap 0 after flat fields of mean 1 */
 } uf_scene;
+
+/*
+ * |E|^2 per unit incident intensity at the cell's side of substrate | medium of thickness gap | cell, s polarized, both
+ * evanescent. Tangential fields are continuous: inside the gap the field is that at the cell times cosh(m z) + (c / m)
+ * sinh(m z), z up from the cell's side, m and c the decay constants in medium and cell; at the substrate it meets the
+ * incident and the reflected wave of normal wave number k, which leaves 4 / (F^2 + (F' / k)^2).
+ */
+double uf_scene_layered(const uf_scene_settings *settings, double gap_nm);
 
 /* A reasonable bench and a dozen spread cells at 512 x 512. */
 uf_scene_settings uf_scene_defaults(void);

@@ -29,8 +29,8 @@ def tree(folder):
 
 
 def measure_arguments(demo, out, field="a", near=None, wide=None, instrument=None):
-    return ["measure", near or f"{demo}/{field}_near.tif", wide or f"{demo}/{field}_wide.tif",
-            "-i", instrument or f"{demo}/instrument.ini", "-a", f"{demo}/assay.ini", "-o", out]
+    return ["measure", near or f"{demo}/day1_{field}_near.tif", wide or f"{demo}/day1_{field}_wide.tif",
+            "-i", instrument or f"{demo}/day1.ini", "-a", f"{demo}/assay.ini", "-o", out]
 
 
 @pytest.fixture(scope="session")

@@ -28,8 +28,8 @@ def nothing_written(folder):
 def instrument(demo, tmp_path):
     """Writes the demo's instrument file with changes: (pattern, replacement) pairs."""
     def write(*changes, more=""):
-        with open(f"{demo}/instrument.ini") as file:
-            text = file.read().replace("file = flat", f"file = {demo}/flat")
+        with open(f"{demo}/day1.ini") as file:
+            text = file.read().replace("file = day1_flat", f"file = {demo}/day1_flat")
         for pattern, replacement in changes:
             text, count = re.subn(pattern, replacement, text)
             assert count, pattern
@@ -50,7 +50,7 @@ def with_image(demo, tmp_path, image, **keywords):
 
 
 def test_truncated_tiff(demo, tmp_path):
-    with open(f"{demo}/a_near.tif", "rb") as file:
+    with open(f"{demo}/day1_a_near.tif", "rb") as file:
         (tmp_path / "cut.tif").write_bytes(file.read()[:200000])
     run = Run(measure_arguments(demo, tmp_path / "out", near=tmp_path / "cut.tif"))
     refused(run, 2, "cut.tif")
@@ -67,7 +67,7 @@ def test_two_sizes(demo, tmp_path):
     refused(run, 2, "511 x 512")
     (tmp_path / "plain.ini").write_text("[near.flat]\n")
     tifffile.imwrite(tmp_path / "wide.tif", numpy.zeros((100, 90), numpy.uint16))
-    with open(f"{demo}/instrument.ini") as file:
+    with open(f"{demo}/day1.ini") as file:
         (tmp_path / "i.ini").write_text(re.sub(r"\n\[(near|wide)\.flat\]\nfile = .*\n", "\n", file.read()))
     run = Run(measure_arguments(demo, tmp_path / "out", wide=tmp_path / "wide.tif", instrument=tmp_path / "i.ini"))
     refused(run, 2, "512 x 512", "90 x 100", "same size")
@@ -141,7 +141,7 @@ def test_settings_that_cannot_be_used(demo, instrument, tmp_path, pattern, repla
 
 
 def test_no_pixel_size_anywhere(demo, instrument, tmp_path):
-    tifffile.imwrite(tmp_path / "near.tif", tifffile.imread(f"{demo}/a_near.tif"))
+    tifffile.imwrite(tmp_path / "near.tif", tifffile.imread(f"{demo}/day1_a_near.tif"))
     path = instrument((r"\[pixel\]\nsize_um = .*\n", ""))
     run = Run(measure_arguments(demo, tmp_path / "out", near=tmp_path / "near.tif", instrument=path))
     refused(run, 2, "size_um", "[pixel]")
@@ -157,8 +157,8 @@ def test_pixel_size_from_the_file(demo, instrument, tmp_path, results):
 
 def test_instrument_file_given_as_assay(demo, tmp_path):
     arguments = measure_arguments(demo, tmp_path / "out")
-    arguments[arguments.index("-a") + 1] = f"{demo}/instrument.ini"
-    refused(Run(arguments), 2, "instrument.ini:2:", "belongs into an instrument file")
+    arguments[arguments.index("-a") + 1] = f"{demo}/day1.ini"
+    refused(Run(arguments), 2, "day1.ini:2:", "belongs into an instrument file")
 
 
 # ---- usage -----------------------------------------------------------------------------------------------------

@@ -14,7 +14,7 @@ import tifffile
 from conftest import ROOT, Run, measure_arguments, tree
 
 TABLES = ("cells.csv", "spots.csv", "fields.csv")
-PICTURES = ("overlay/a_near.png", "outlines/a_near.json", "gap/a_near.tif", "labels/a_near.tif")
+PICTURES = ("overlay/day1_a_near.png", "outlines/day1_a_near.json", "gap/day1_a_near.tif", "labels/day1_a_near.tif")
 
 
 def rows(path):
@@ -37,7 +37,7 @@ def test_summary_says_what_was_found_and_where(demo, tmp_path):
     run = Run(measure_arguments(demo, tmp_path / "out"))
     cells = rows(tmp_path / "out/cells.csv")
     assert re.match(rf"{len(cells)} cells", run.out)
-    assert "overlay/a_near.png" in run.out
+    assert "overlay/day1_a_near.png" in run.out
     used = [r for r in cells if r["used"] == "yes"]
     attached = [r for r in used if number(r["attachment_fraction"]) >= 0.1]  # the default threshold
     assert f"{len(attached)} of {len(used)} used cells are attached" in run.out
@@ -65,7 +65,7 @@ def test_bands_add_up_to_the_spread_area(results):
 
 def test_tables_agree_with_the_maps(results):
     # area, contact and medians of each cell again from labels and gap TIFF, by numpy
-    labels, gap = (tifffile.imread(f"{results['a']}/{k}/a_near.tif") for k in ("labels", "gap"))
+    labels, gap = (tifffile.imread(f"{results['a']}/{k}/day1_a_near.tif") for k in ("labels", "gap"))
     for row in rows(f"{results['a']}/cells.csv"):
         inside = gap[labels == int(row["cell"])]
         um2 = 0.11 ** 2
@@ -83,7 +83,7 @@ def test_run_json_tells_settings_inputs_and_method(results, demo):
         story = json.load(file)
     settings = {(s["section"], s["key"]): s for s in story["settings"]}
     assert settings["light", "wavelength_nm"]["value"] == "488"
-    assert settings["light", "wavelength_nm"]["from"].startswith(f"{demo}/instrument.ini:")
+    assert settings["light", "wavelength_nm"]["from"].startswith(f"{demo}/day1.ini:")
     assert settings["contact", "focal_nm"]["from"] == "default"
     assert {i["role"] for i in story["inputs"]} == {"near", "wide", "near flat", "wide flat"}
     assert "half of each cell's own level" in story["methods"]
@@ -97,8 +97,8 @@ def test_run_json_tells_settings_inputs_and_method(results, demo):
 
 def matched(demo, folder, field):
     """Pairs (true label, found label) with an overlap of more than half of their union."""
-    truth = tifffile.imread(f"{demo}/{field}_truth_labels.tif").astype(int)
-    found = tifffile.imread(f"{folder}/labels/{field}_near.tif").astype(int)
+    truth = tifffile.imread(f"{demo}/day1_{field}_truth_labels.tif").astype(int)
+    found = tifffile.imread(f"{folder}/labels/day1_{field}_near.tif").astype(int)
     pairs = []
     for t in range(1, truth.max() + 1):
         inside = found[truth == t]
@@ -115,7 +115,7 @@ def test_cells_contact_and_gaps_match_the_truth(demo, results):
     area_errors, fraction_errors, gap_errors = [], [], []
     for field, folder in results.items():
         truth, found, pairs = matched(demo, folder, field)
-        gap = tifffile.imread(f"{demo}/{field}_truth_gap.tif")
+        gap = tifffile.imread(f"{demo}/day1_{field}_truth_gap.tif")
         table = {int(r["cell"]): r for r in rows(f"{folder}/cells.csv")}
         true_cells, found_cells, both = true_cells + truth.max(), found_cells + found.max(), both + len(pairs)
         for t, f in pairs:
@@ -135,7 +135,7 @@ def test_spots_match_the_truth(demo, results):
     with open(f"{demo}/truth_spots.csv", newline="") as file:
         truth = list(csv.DictReader(file))
     for field, folder in results.items():
-        t = numpy.array([[float(r["x_px"]), float(r["y_px"])] for r in truth if r["field"] == field])
+        t = numpy.array([[float(r["x_px"]), float(r["y_px"])] for r in truth if r["field"] == f"day1_{field}"])
         f = numpy.array([[number(r["x_px"]), number(r["y_px"])] for r in rows(f"{folder}/spots.csv")])
         distance = numpy.hypot(*(t[:, None] - f[None]).transpose(2, 0, 1)) * 0.11
         hits += (distance.min(axis=1) <= 0.7).sum()
@@ -226,7 +226,7 @@ def flat_pair(folder, size=256, value=600):
 
 
 def instrument_without_flats(demo):
-    with open(f"{demo}/instrument.ini") as file:
+    with open(f"{demo}/day1.ini") as file:
         return re.sub(r"\n\[(near|wide)\.flat\]\nfile = .*\n", "\n", file.read())
 
 
@@ -263,11 +263,11 @@ def test_a_constant_image_is_empty(demo, tmp_path):
 
 
 def test_saturated_cells_are_flagged(demo, tmp_path):
-    near = tifffile.imread(f"{demo}/a_near.tif")
+    near = tifffile.imread(f"{demo}/day1_a_near.tif")
     tifffile.imwrite(tmp_path / "near.tif", numpy.minimum(near, 4000))
-    with open(f"{demo}/instrument.ini") as file:
+    with open(f"{demo}/day1.ini") as file:
         text = file.read().replace("full_scale_adu = 65535", "full_scale_adu = 4000", 1)
-    (tmp_path / "i.ini").write_text(text.replace("file = flat", f"file = {demo}/flat"))
+    (tmp_path / "i.ini").write_text(text.replace("file = day1_flat", f"file = {demo}/day1_flat"))
     run = Run(measure_arguments(demo, tmp_path / "out", near=tmp_path / "near.tif", instrument=tmp_path / "i.ini"))
     assert run.status == 0, run.err
     assert float(rows(tmp_path / "out/fields.csv")[0]["near_saturated_fraction"]) > 0.01
@@ -284,7 +284,7 @@ def test_dark_frame_does_what_the_offset_does(demo, results, tmp_path):
 
 
 def test_defects_and_hot_pixels_leave_the_results_alone(demo, results, tmp_path):
-    near = tifffile.imread(f"{demo}/a_near.tif")
+    near = tifffile.imread(f"{demo}/day1_a_near.tif")
     random = numpy.random.default_rng(3)
     defects = numpy.zeros(near.shape, numpy.uint8)
     spoiled = near.copy()

@@ -177,10 +177,10 @@ def boundary(labels):
 def mosaic(demo, channel, height, width, kind="field"):
     """The demo's four fields side by side, again and again."""
     if kind == "flat":
-        tile = tifffile.imread(f"{demo}/flat_{channel}.tif")
+        tile = tifffile.imread(f"{demo}/day1_flat_{channel}.tif")
         tile = numpy.block([[tile, tile], [tile, tile]])
     else:
-        a, b, c, d = (tifffile.imread(f"{demo}/{field}_{channel}.tif") for field in "abcd")
+        a, b, c, d = (tifffile.imread(f"{demo}/day1_{field}_{channel}.tif") for field in "abcd")
         tile = numpy.block([[a, b], [c, d]])
     times = -(-height // tile.shape[0]), -(-width // tile.shape[1])
     return numpy.tile(tile, times)[:height, :width]
@@ -188,14 +188,14 @@ def mosaic(demo, channel, height, width, kind="field"):
 
 def measure_mosaic(demo, folder, size, overlay="yes", cutoff=50):
     for channel in ("near", "wide"):
-        tifffile.imwrite(folder / f"m_{channel}.tif", mosaic(demo, channel, *size))
-        tifffile.imwrite(folder / f"flat_{channel}.tif", mosaic(demo, channel, *size, kind="flat"))
-    with open(f"{demo}/instrument.ini") as file:
-        (folder / "instrument.ini").write_text(file.read())
+        tifffile.imwrite(folder / f"day1_m_{channel}.tif", mosaic(demo, channel, *size))
+        tifffile.imwrite(folder / f"day1_flat_{channel}.tif", mosaic(demo, channel, *size, kind="flat"))
+    with open(f"{demo}/day1.ini") as file:
+        (folder / "day1.ini").write_text(file.read())
     (folder / "assay.ini").write_text(f"[contact]\ncutoff_nm = {cutoff}\n[output]\noverlay = {overlay}\nmaps = yes\n")
     run = Run(measure_arguments(folder, folder / "out", "m"))
     assert run.status == 0, run.err
-    return Page(folder / "out", "m_near")
+    return Page(folder / "out", "day1_m_near")
 
 
 # height, width, overlay, cutoff -> reduction: 1:1 up to 1024 px and with overlay = full, 2:1 above
@@ -212,7 +212,7 @@ NAMES = ["a", "b", "c", "d", *MADE]
 
 @pytest.fixture(scope="module")
 def pages(demo, results, tmp_path_factory):
-    made = {field: Page(results[field], f"{field}_near") for field in "abcd"}
+    made = {field: Page(results[field], f"day1_{field}_near") for field in "abcd"}
     for name, (size, overlay, cutoff, _) in MADE.items():
         made[name] = measure_mosaic(demo, tmp_path_factory.mktemp("mosaic"), size, overlay, cutoff)
     return made
@@ -318,8 +318,8 @@ def test_polygons_have_corners_only(page):
 
 
 def test_outlines_name_their_overlay_and_pixel_size(results):
-    page = Page(results["a"], "a_near")
-    assert page.outlines["overlay"] == "overlay/a_near.png"
+    page = Page(results["a"], "day1_a_near")
+    assert page.outlines["overlay"] == "overlay/day1_a_near.png"
     assert page.outlines["pixel_size_um"] == PIXEL_UM
     assert set(page.outlines) == {"image", "pixel_size_um", "overlay", "panels", "coordinates", "cells"}
 
@@ -327,20 +327,20 @@ def test_outlines_name_their_overlay_and_pixel_size(results):
 def test_outlines_are_the_same_bytes_again(demo, results, tmp_path):
     run = Run([*measure_arguments(demo, tmp_path / "out", "c"), "--threads", "1"])
     assert run.status == 0, run.err
-    assert tree(tmp_path / "out")["outlines/c_near.json"] == tree(results["c"])["outlines/c_near.json"]
+    assert tree(tmp_path / "out")["outlines/day1_c_near.json"] == tree(results["c"])["outlines/day1_c_near.json"]
 
 
 @pytest.mark.parametrize("overlay,there", [("no", False), ("flagged", False), ("full", True)])
 def test_outlines_come_and_go_with_the_overlay(demo, tmp_path, overlay, there):
     out = tmp_path / "out"
     assert Run(measure_arguments(demo, out)).status == 0
-    assert os.path.exists(out / "outlines/a_near.json")
+    assert os.path.exists(out / "outlines/day1_a_near.json")
     with open(f"{demo}/assay.ini") as file:
         (tmp_path / "assay.ini").write_text(file.read().replace("overlay = yes", f"overlay = {overlay}"))
     arguments = measure_arguments(demo, out)
     arguments[arguments.index("-a") + 1] = str(tmp_path / "assay.ini")
     assert Run(arguments).status == 0
-    assert os.path.exists(out / "outlines/a_near.json") == os.path.exists(out / "overlay/a_near.png") == there
+    assert os.path.exists(out / "outlines/day1_a_near.json") == os.path.exists(out / "overlay/day1_a_near.png") == there
 
 
 # ---- colour bar ----------------------------------------------------------------------------------------------
@@ -520,13 +520,13 @@ def dim_page(demo, tmp_path_factory, request):
     """Field d with so little near light, and a reference to match, that many pixels have no measurable gap."""
     folder, share = tmp_path_factory.mktemp("dim"), {"some": 3e-4, "most": 1e-4}[request.param]
     random, gain = numpy.random.default_rng(5), 2.17
-    counts = numpy.maximum(tifffile.imread(f"{demo}/d_near.tif").astype(float) - 100, 0)
+    counts = numpy.maximum(tifffile.imread(f"{demo}/day1_d_near.tif").astype(float) - 100, 0)
     counts = 100 + random.poisson(counts * share * gain) / gain + random.normal(0, 1.6 / gain, counts.shape)
     tifffile.imwrite(folder / "d_near.tif", numpy.rint(counts).astype("uint16"))
-    with open(f"{demo}/instrument.ini") as file:
+    with open(f"{demo}/day1.ini") as file:
         text = file.read().replace("ratio = 1.5", f"ratio = {1.5 * share}")
-    (folder / "instrument.ini").write_text(text.replace("file = flat", f"file = {demo}/flat"))
-    run = Run(measure_arguments(demo, folder / "out", near=folder / "d_near.tif", wide=f"{demo}/d_wide.tif",
+    (folder / "instrument.ini").write_text(text.replace("file = day1_flat", f"file = {demo}/day1_flat"))
+    run = Run(measure_arguments(demo, folder / "out", near=folder / "d_near.tif", wide=f"{demo}/day1_d_wide.tif",
                                 instrument=folder / "instrument.ini"))
     assert run.status == 0, run.err
     return Page(folder / "out", "d_near")

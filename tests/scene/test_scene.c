@@ -893,6 +893,38 @@ static void test_shift_moves_the_wide_image(void **state)
     assert_true(same_pixels(still.near_adu, moved.near_adu));
 }
 
+/* Glass 1.518 | water 1.335 | cytoplasm 1.37, s polarized, 488 nm, 70 deg, at the cytoplasm's boundary: thin-film matrix,
+ * computed outside. */
+static void test_layered_field_is_the_thin_film_s(void **state)
+{
+    (void)state;
+    static const double rows[][2] = {{0, 2.522598}, {10, 2.225201}, {30, 1.727614}, {100, 0.704103}, {300, 0.053076}};
+    uf_scene_settings s = uf_scene_defaults();
+    s.medium_n = 1.335;
+    for (size_t k = 0; k < sizeof rows / sizeof rows[0]; k++)
+        assert_near(uf_scene_layered(&s, rows[k][0]), rows[k][1], 1e-6);
+}
+
+/* Specks change their own place and no other; on an empty field dark ones have only the background to hide. */
+static void test_dust_shines_and_hides_where_it_falls(void **state)
+{
+    (void)state;
+    uf_scene_settings s = uf_scene_defaults();
+    s.width = s.height = 384;
+    s.cells = 0;
+    uf_scene clean = make(&s);
+    s.dust = 6;
+    uf_scene dusty = make(&s);
+    int changed = 0, brighter = 0;
+    for (int k = 0; k < 384 * 384; k++) {
+        float difference = dusty.wide_adu.data[k] - clean.wide_adu.data[k];
+        changed += fabsf(difference) > 100.0f;
+        brighter += difference > 100.0f;
+    }
+    assert_true(changed > 100 && changed < 384 * 384 / 2);
+    assert_true(brighter > changed / 2);
+}
+
 int main(void)
 {
     const struct CMUnitTest tests[] = {
@@ -921,6 +953,8 @@ int main(void)
         cmocka_unit_test_teardown(test_spots_belong_to_cells_that_hold_on, tear_down),
         cmocka_unit_test_teardown(test_edge_distance_matches_slow_search, tear_down),
         cmocka_unit_test_teardown(test_same_settings_same_bytes, tear_down),
+        cmocka_unit_test_teardown(test_layered_field_is_the_thin_film_s, tear_down),
+        cmocka_unit_test_teardown(test_dust_shines_and_hides_where_it_falls, tear_down),
         cmocka_unit_test_teardown(test_haze_adds_its_share, tear_down),
         cmocka_unit_test_teardown(test_shift_moves_the_wide_image, tear_down),
     };
