@@ -156,8 +156,10 @@ docs: all ## the pages that come from the tables in the code
 	$(PROGRAM) docs settings > docs/settings.md
 	$(PROGRAM) docs columns > docs/columns.md
 
-docs-pictures: demo ## the README's picture, from the demo
+docs-pictures: demo ## the pictures of README and docs
 	@mkdir -p docs/pictures
+	$(PROGRAM) optics --wavelength-nm 488 --substrate coverglass --medium culture-medium --objective-na 1.49 --angle-deg 70 \
+	    --angle-sd-deg 0.5 --plot docs/pictures/optics-good.png > /dev/null
 	cp $(DEMO)/results_a/overlay/day1_a_near.png docs/pictures/overlay.png
 
 # ---- install ---------------------------------------------------------------------------------------------

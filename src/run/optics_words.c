@@ -85,8 +85,10 @@ static void put_angles(uf_text *out, const uf_optics_numbers *n)
 
 static void put_field(uf_text *out, const uf_optics_numbers *n)
 {
-    uf_text_printf(out, "\n%-38s%9.1f nm (1 sd %.1f nm)\n", "depth: 1/e of the intensity, in medium", n->depth_nm,
-                   n->depth_sd_nm);
+    uf_text_printf(out, "\n%-38s%9.1f nm", "depth: 1/e of the intensity, in medium", n->depth_nm);
+    if (n->depth_sd_nm > 0)
+        uf_text_printf(out, " (1 sd %.1f nm)", n->depth_sd_nm);
+    uf_text_add(out, "\n");
     if (!isnan(n->depth_with_cell_n_nm))
         uf_text_printf(out, "%-38s%9.1f nm (a frequent slip: medium fills the gap)\n",
                        "  with the cell's index it would be", n->depth_with_cell_n_nm);
