@@ -28,21 +28,31 @@ static uf_status flat_mean(uf_plane flat, const char *name, double *mean, uf_err
 
 /* ---- counts to image ------------------------------------------------------------------------- */
 
+/* Pixels at either end of the camera's range. */
+typedef struct fault_counts {
+    int64_t saturated, clipped;
+} fault_counts;
+
 typedef struct correction {
     const uf_raw_channel *raw;
     double flat_mean;
-    float *scratch;           /* two rows a hand */
-    int64_t *saturated_count; /* one a hand */
+    float *scratch;       /* two rows a hand */
+    fault_counts *counts; /* one a hand */
 } correction;
 
-static int note_saturated(const float *counts, float full_scale, uint8_t *saturated, int n)
+/* A count of 0 is what a camera writes for anything darker; float images have no such floor. */
+static void note_faults(const float *values, double full_scale, uint8_t *fault, int n, fault_counts *counts)
 {
-    int count = 0;
+    float top = (float)full_scale, bottom = isfinite(full_scale) ? 0.0f : -INFINITY;
+    int saturated = 0, clipped = 0;
     for (int x = 0; x < n; x++) {
-        saturated[x] = counts[x] >= full_scale;
-        count += saturated[x];
+        int full = values[x] >= top, empty = values[x] <= bottom;
+        fault[x] = (uint8_t)(full ? UF_PIXEL_SATURATED : empty ? UF_PIXEL_CLIPPED : UF_PIXEL_FINE);
+        saturated += full;
+        clipped += empty;
     }
-    return count;
+    counts->saturated += saturated;
+    counts->clipped += clipped;
 }
 
 static void correct_rows(void *context, int hand, int y0, int y1)
@@ -55,10 +65,10 @@ static void correct_rows(void *context, int hand, int y0, int y1)
         offset[x] = (float)raw->camera->offset_adu;
         gain[x] = 1.0f;
     }
-    int saturated = 0;
+    fault_counts found = {0};
     for (int y = y0; y < y1; y++) {
         float *counts = uf_plane_row(raw->counts, y);
-        saturated += note_saturated(counts, (float)raw->full_scale_adu, uf_mask_row(raw->saturated, y), width);
+        note_faults(counts, raw->full_scale_adu, uf_mask_row(raw->saturated, y), width, &found);
         const float *dark = raw->dark.data ? uf_plane_row(raw->dark, y) : offset;
         if (raw->flat.data) {
             const float *flat = uf_plane_row(raw->flat, y);
@@ -69,7 +79,8 @@ static void correct_rows(void *context, int hand, int y0, int y1)
         for (int x = 0; x < width; x++)
             counts[x] = (counts[x] - dark[x]) * gain[x];
     }
-    c->saturated_count[hand] += saturated;
+    c->counts[hand].saturated += found.saturated;
+    c->counts[hand].clipped += found.clipped;
 }
 
 /* ---- bad pixels ------------------------------------------------------------------------------ */
@@ -143,9 +154,9 @@ static uf_status take_scratch(uf_work *work, correction *c, int width, uf_error 
     size_t hands = (size_t)uf_hands(work);
     uf_status status = uf_take(work, hands * 2 * (size_t)width, sizeof(float), "correction", &c->scratch, error);
     if (status == UF_OK)
-        status = uf_take(work, hands, sizeof(int64_t), "correction", &c->saturated_count, error);
+        status = uf_take(work, hands, sizeof *c->counts, "correction", &c->counts, error);
     for (size_t k = 0; status == UF_OK && k < hands; k++)
-        c->saturated_count[k] = 0;
+        c->counts[k] = (fault_counts){0};
     return status;
 }
 
@@ -172,12 +183,15 @@ uf_status uf_correct_channel(uf_work *work, const uf_raw_channel *raw, uf_channe
     if (status != UF_OK)
         return status;
     uf_rows_run(work, height, correct_rows, &c);
-    int64_t saturated = 0;
-    for (size_t k = 0; k < (size_t)uf_hands(work); k++)
-        saturated += c.saturated_count[k];
+    fault_counts all = {0};
+    for (size_t k = 0; k < (size_t)uf_hands(work); k++) {
+        all.saturated += c.counts[k].saturated;
+        all.clipped += c.counts[k].clipped;
+    }
     uf_arena_back(&work->arena, mark);
-    channel->saturated_fraction = (double)saturated / ((double)width * height);
-    if (saturated)
+    channel->saturated_fraction = (double)all.saturated / ((double)width * height);
+    channel->clipped_fraction = (double)all.clipped / ((double)width * height);
+    if (all.saturated || all.clipped)
         channel->saturated = raw->saturated;
     if (raw->defects.data)
         status = replace_mapped(channel->image, raw->defects, raw->name, &channel->replaced, error);

@@ -14,14 +14,17 @@ typedef struct uf_noise {
     double excess2;
 } uf_noise;
 
+/* A count that says only that the light was at least, or at most, so strong. */
+typedef enum uf_pixel_fault { UF_PIXEL_FINE, UF_PIXEL_SATURATED, UF_PIXEL_CLIPPED } uf_pixel_fault;
+
 typedef struct uf_channel {
     uf_plane image;    /* ADU, offset subtracted, flat-fielded, bad pixels replaced; background still in */
-    uf_mask saturated; /* 1 where the camera was at full scale; data NULL when nowhere */
+    uf_mask saturated; /* uf_pixel_fault of each pixel; data NULL when there is none */
     uf_noise noise;
     double background_adu;
     double background_sd_adu; /* 1 sigma of background_adu */
     double noise_adu;         /* 1 sigma noise of a pixel at the background level */
-    double saturated_fraction;
+    double saturated_fraction, clipped_fraction;
     int64_t replaced;   /* bad pixels replaced */
     int display_scaled; /* looks contrast-stretched to 8 bits */
 } uf_channel;

@@ -20,7 +20,7 @@ typedef struct cell_job {
 
 /* Sums over the pixels of one cell. */
 typedef struct tally {
-    int64_t pixels, resolved, core_pixels, core_resolved, above_reference, saturated, rim, touching;
+    int64_t pixels, resolved, core_pixels, core_resolved, above_reference, saturated, clipped, rim, touching;
     int64_t focal, close, far;
     double dye, volume_nm;
 } tally;
@@ -64,6 +64,12 @@ static int touches_other(uf_labels labels, int x, int y, int label)
            (below && below != label);
 }
 
+static int has_fault(const uf_measure_input *in, int x, int y, uf_pixel_fault fault)
+{
+    const uf_mask near = in->near->saturated, wide = in->wide->saturated;
+    return (near.data && uf_mask_row(near, y)[x] == fault) || (wide.data && uf_mask_row(wide, y)[x] == fault);
+}
+
 static tally tally_cell(cell_job *job, int label, uf_cell *row)
 {
     const uf_measure_input *in = job->in;
@@ -86,8 +92,8 @@ static tally tally_cell(cell_job *job, int label, uf_cell *row)
             t.dye += (double)uf_plane_row(in->gaps->dye_adu, y)[x];
             t.rim += distance[x] <= rim_px;
             t.core_pixels += is_core;
-            t.saturated += (in->near->saturated.data && uf_mask_row(in->near->saturated, y)[x]) ||
-                           (in->wide->saturated.data && uf_mask_row(in->wide->saturated, y)[x]);
+            t.saturated += has_fault(in, x, y, UF_PIXEL_SATURATED);
+            t.clipped += has_fault(in, x, y, UF_PIXEL_CLIPPED);
             if (distance[x] < 1.5f)
                 t.touching += touches_other(labels, x, y, label);
             if (!is_resolved)
@@ -280,6 +286,9 @@ static void fill_flags(const cell_job *job, const tally *t, uf_cell *row)
 {
     if (t->saturated)
         row->flags |= 1u << UF_FLAG_SATURATED;
+    /* A pixel or two at 0 is chance; a hundredth is a floor that takes noise off one side. */
+    if (100 * t->clipped > t->pixels)
+        row->flags |= 1u << UF_FLAG_CLIPPED;
     if (t->touching)
         row->flags |= 1u << UF_FLAG_TOUCHING;
     if (4 * (t->pixels - t->resolved) > t->pixels)
@@ -295,21 +304,68 @@ static void fill_means(const cell_job *job, int label, uf_cell *row)
 {
     const uf_measure_input *in = job->in;
     uf_box box = job->boxes[label];
-    double near = 0, wide = 0, pixels = 0;
+    double near = 0, wide = 0, near2 = 0, wide2 = 0, pixels = 0, background = in->wide->background_adu;
     for (int y = box.y0; y < box.y1; y++) {
         const int32_t *labels = uf_labels_row(in->cells->labels, y);
         const float *near_row = uf_plane_row(in->gaps->near_adu, y), *wide_row = uf_plane_row(in->wide->image, y);
         for (int x = box.x0; x < box.x1; x++)
             if (labels[x] == label) {
-                near += (double)near_row[x];
-                wide += (double)wide_row[x];
+                double n = (double)near_row[x], w = (double)wide_row[x] - background;
+                near += n;
+                wide += w;
+                near2 += n * n;
+                wide2 += w * w;
                 pixels++;
             }
     }
     row->near_mean_adu = near / pixels;
-    row->wide_mean_adu = wide / pixels - in->wide->background_adu;
+    row->wide_mean_adu = wide / pixels;
+    row->near_variation = sqrt(fmax(0, near2 / pixels - pow(near / pixels, 2))) / fabs(near / pixels);
+    row->wide_variation = sqrt(fmax(0, wide2 / pixels - pow(wide / pixels, 2))) / fabs(wide / pixels);
     row->ratio_mean = row->near_mean_adu / row->wide_mean_adu;
 }
+
+/* ---- moved between the two images? ----------------------------------------------------------- */
+
+static const double step_um = 0.8;     /* how far beside the outline is looked */
+static const double moved_share = 0.6; /* of the rim's light that lies beside it */
+
+/* Near light just outside the outline in direction (dx, dy), over that just inside: strips of the cell's pixels that
+ * leave all cells when moved by the step. A still cell leaves only blur there. */
+static double light_beside(const cell_job *job, int label, int dx, int dy)
+{
+    const uf_measure_input *in = job->in;
+    uf_labels labels = in->cells->labels;
+    uf_box box = job->boxes[label];
+    double inside = 0, outside = 0;
+    int pixels = 0;
+    for (int y = box.y0; y < box.y1; y += 2)
+        for (int x = box.x0; x < box.x1; x += 2) {
+            int u = x + dx, v = y + dy;
+            if (uf_labels_row(labels, y)[x] != label || u < 0 || v < 0 || u >= labels.width || v >= labels.height ||
+                uf_labels_row(labels, v)[u])
+                continue;
+            inside += (double)uf_plane_row(in->gaps->near_adu, y)[x];
+            outside += (double)uf_plane_row(in->gaps->near_adu, v)[u];
+            pixels++;
+        }
+    double least = 3 * in->near->noise_adu * pixels; /* a dim rim tells nothing */
+    return outside > least ? outside / fmax(inside, least) : 0;
+}
+
+static int has_moved(const cell_job *job, int label)
+{
+    double step_px = step_um / job->in->plan->pixel_size_um;
+    for (int k = 0; k < 8; k++) {
+        double angle = k * UF_PI / 4;
+        if (light_beside(job, label, (int)lround(step_px * cos(angle)), (int)lround(step_px * sin(angle))) >
+            moved_share)
+            return 1;
+    }
+    return 0;
+}
+
+/* ---- one cell -------------------------------------------------------------------------------- */
 
 static uf_status measure_cell(uf_work *work, cell_job *job, int label, uf_cell *row, uf_error *error)
 {
@@ -328,6 +384,8 @@ static uf_status measure_cell(uf_work *work, cell_job *job, int label, uf_cell *
     fill_shape(job, &shape, row);
     fill_edge(job, label, row);
     fill_means(job, label, row);
+    if (has_moved(job, label))
+        row->flags |= 1u << UF_FLAG_MOVED;
     tally t = tally_cell(job, label, row);
     fill_flags(job, &t, row);
     fill_gaps(job, &t, row);

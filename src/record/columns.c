@@ -110,8 +110,8 @@ static const uf_column field_columns[] = {
     FIELD(wide_noise_adu, REAL, "The same for the wide image."),
     FIELD(near_saturated_fraction, REAL, "Share of near pixels at full scale."),
     FIELD(wide_saturated_fraction, REAL, "Share of wide pixels at full scale."),
-    FIELD(near_focus, REAL, "Sharpness of the near image inside cells. Not in this version."),
-    FIELD(wide_focus, REAL, "Sharpness of the wide image at the outlines. Not in this version."),
+    FIELD(near_focus, REAL, "Sharpness of the near image inside cells, 0 (blurred) to 1; about 0.6 in focus."),
+    FIELD(wide_focus, REAL, "The same of the wide image; about 0.45 in focus."),
     FIELD(near_unevenness, REAL, "Slope of the near background: its change over the field, relative to its level; 0 when none can be told. Taken out."),
     FIELD(wide_unevenness, REAL, "The same of the wide background."),
     FIELD(reference_ratio, REAL, "near / wide ratio that stands for gap 0 in this field."),
@@ -142,6 +142,14 @@ static const char *const flag_words[UF_FLAG_COUNT] = {
     [UF_FLAG_SHIFT_DIFFERS] = "shift_differs",
     [UF_FLAG_DISPLAY_SCALED] = "display_scaled",
     [UF_FLAG_LAYERED_EFFECT] = "layered_effect",
+    [UF_FLAG_OUT_OF_FOCUS] = "out_of_focus",
+    [UF_FLAG_UNEVEN] = "uneven",
+    [UF_FLAG_CROWDED] = "crowded",
+    [UF_FLAG_LOW_SIGNAL] = "low_signal",
+    [UF_FLAG_NEAR_TOO_BRIGHT] = "near_too_bright",
+    [UF_FLAG_CHANNELS_SWAPPED] = "channels_swapped",
+    [UF_FLAG_MOVED] = "moved",
+    [UF_FLAG_CLIPPED] = "clipped",
 };
 
 static const char *const gap_kind_words[] = {"none", "relative", "absolute"};

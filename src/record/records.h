@@ -11,16 +11,24 @@
 
 /* Things worth telling about a field or a cell; in a row they are words joined by ';'. */
 typedef enum uf_flag {
-    UF_FLAG_EDGE,           /* cell: cut by the image edge */
-    UF_FLAG_SATURATED,      /* saturated pixels inside */
-    UF_FLAG_TOO_DIM,        /* the detection limit lies below the contact cutoff: no contact reported */
-    UF_FLAG_TOUCHING,       /* cell: shares an outline with another */
-    UF_FLAG_UNRESOLVED,     /* cell: more than a quarter of it has no measurable gap */
-    UF_FLAG_EMPTY,          /* field: no cells */
-    UF_FLAG_SHIFT_UNSURE,   /* field: the estimated shift cannot be trusted and was not applied */
-    UF_FLAG_SHIFT_DIFFERS,  /* field: the estimate differs from the bench's value by more than 1 px */
-    UF_FLAG_DISPLAY_SCALED, /* field: looks contrast-stretched to 8 bits; ratios mean nothing */
-    UF_FLAG_LAYERED_EFFECT, /* field: a layered model would read the cutoff more than 3 nm elsewhere */
+    UF_FLAG_EDGE,             /* cell: cut by the image edge */
+    UF_FLAG_SATURATED,        /* saturated pixels inside */
+    UF_FLAG_TOO_DIM,          /* the detection limit lies below the contact cutoff: no contact reported */
+    UF_FLAG_TOUCHING,         /* cell: shares an outline with another */
+    UF_FLAG_UNRESOLVED,       /* cell: more than a quarter of it has no measurable gap */
+    UF_FLAG_EMPTY,            /* field: no cells */
+    UF_FLAG_SHIFT_UNSURE,     /* field: the estimated shift cannot be trusted and was not applied */
+    UF_FLAG_SHIFT_DIFFERS,    /* field: the estimate differs from the bench's value by more than 1 px */
+    UF_FLAG_DISPLAY_SCALED,   /* field: looks contrast-stretched to 8 bits; ratios mean nothing */
+    UF_FLAG_LAYERED_EFFECT,   /* field: a layered model would read the cutoff more than 3 nm elsewhere */
+    UF_FLAG_OUT_OF_FOCUS,     /* field: either channel's focus is low */
+    UF_FLAG_UNEVEN,           /* field: the background slopes by more than a quarter of itself */
+    UF_FLAG_CROWDED,          /* field: less than a twentieth of it is free of cells */
+    UF_FLAG_LOW_SIGNAL,       /* field: the median cell is less than ten times its noise in either channel */
+    UF_FLAG_NEAR_TOO_BRIGHT,  /* field: near is brighter than the reference allows over much of the median cell */
+    UF_FLAG_CHANNELS_SWAPPED, /* field: near looks like a wide image and wide like a near one */
+    UF_FLAG_MOVED,            /* cell: light of the near image lies beside its outline */
+    UF_FLAG_CLIPPED,          /* cell, field: pixels at the lowest count, cut off by the camera's offset */
     UF_FLAG_COUNT
 } uf_flag;
 
@@ -56,9 +64,10 @@ typedef struct uf_cell {
     double spots_per_100um2, spot_area_total_um2, spot_area_median_um2, spot_length_median_um, spot_alignment;
     uf_gap_kind gap_kind;
     uf_flags flags;
-    double contact_border_um;            /* length of the borders of contact; not a column */
-    int box_x0, box_y0, box_x1, box_y1;  /* half-open bounding box, pixels; not a column */
-    uint32_t gap_histogram[UF_GAP_BINS]; /* resolved pixels; not a column */
+    double near_variation, wide_variation; /* standard deviation over mean inside the cell; not columns */
+    double contact_border_um;              /* length of the borders of contact; not a column */
+    int box_x0, box_y0, box_x1, box_y1;    /* half-open bounding box, pixels; not a column */
+    uint32_t gap_histogram[UF_GAP_BINS];   /* resolved pixels; not a column */
 } uf_cell;
 
 typedef struct uf_spot {

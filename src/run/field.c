@@ -9,6 +9,7 @@
 #include <stdlib.h>
 
 #include "correct/halo.h"
+#include "correct/quality.h"
 #include "correct/shift.h"
 #include "gap/gap.h"
 #include "image/smooth.h"
@@ -87,6 +88,14 @@ static uf_status remove_halos(uf_work *work, const uf_plan *plan, uf_field_resul
     return UF_OK;
 }
 
+static uf_status judge_focus(uf_work *work, const uf_plan *plan, uf_field_result *r, uf_error *error)
+{
+    double psf_px = plan->psf_sigma_um / plan->pixel_size_um;
+    uf_status status = uf_focus_of(work, &r->near, r->cells.labels, psf_px, &r->field.near_focus, error);
+    return status == UF_OK ? uf_focus_of(work, &r->wide, r->cells.labels, psf_px, &r->field.wide_focus, error)
+                           : status;
+}
+
 static uf_status measure(uf_work *work, const uf_plan *plan, const uf_settings *settings, uf_field_result *r,
                          uf_error *error)
 {
@@ -108,6 +117,8 @@ uf_status uf_field_run(uf_work *work, const uf_plan *plan, const uf_settings *se
         status = find_cells(work, plan, settings, result, error);
     if (status == UF_OK)
         status = remove_halos(work, plan, result, error);
+    if (status == UF_OK)
+        status = judge_focus(work, plan, result, error);
     if (status == UF_OK)
         status = uf_gap_find(work, plan, settings->contact.detection_sigma, &result->near, &result->wide,
                              &result->cells, &result->gaps, error);
