@@ -30,7 +30,8 @@ void uf_measure_field(const uf_measure_input *input, const uf_cell *rows, int sp
     field->wide_saturated_fraction = input->wide->saturated_fraction;
     field->near_focus = field->wide_focus = field->near_unevenness = field->wide_unevenness = (double)NAN;
     field->pedestal_fraction = (double)NAN;
-    field->reference_ratio = input->plan->reference_ratio;
+    /* What a series finds for itself is no reference that anything was measured against. */
+    field->reference_ratio = input->plan->series.count ? (double)NAN : input->plan->reference_ratio;
     field->depth_nm = input->plan->depth_nm;
     if (!labels.count)
         field->flags |= 1u << UF_FLAG_EMPTY;

@@ -28,12 +28,18 @@ static double background_part(const uf_measure_input *in, const uf_cell *row, do
     double dye = row->wide_mean_adu, near = near_at(in->plan, gap_nm, dye);
     if (!(dye > 0) || !(near > 0))
         return 0;
+    if (in->plan->series.count) {
+        uf_field_kind kind = {&in->plan->bench, in->plan->model, in->plan->stray};
+        return uf_series_background_nm(&in->plan->series, &kind, in->near, near, gap_nm);
+    }
     return uf_gap_per_ln(in->plan, gap_nm) *
            hypot(in->near->background_sd_adu / near, in->wide->background_sd_adu / dye);
 }
 
 static double systematic_part(const uf_plan *plan, double gap_nm)
 {
+    if (plan->series.count)
+        return uf_series_systematic(&plan->series, gap_nm);
     double ratio = uf_gap_per_ln(plan, gap_nm) * hypot(plan->reference_sd, plan->normalisation_sd);
     double depth = fabs(gap_nm - plan->reference_gap_nm) * plan->depth_sd_nm / plan->depth_nm;
     return hypot(ratio, depth);

@@ -38,6 +38,11 @@ double uf_gap_noise_nm(const uf_plan *plan, const uf_channel *near, const uf_cha
 {
     if (!(near_adu > 0) || !(dye_adu > 0))
         return (double)NAN;
+    if (plan->series.count) {
+        uf_field_kind kind = {&plan->bench, plan->model, plan->stray};
+        double at = uf_decay_gap(&plan->decay, log(near_adu / dye_adu / plan->reference_ratio));
+        return uf_series_noise_nm(&plan->series, &kind, near, near_adu, at);
+    }
     double near_variance = uf_noise_variance(&near->noise, near->background_adu + near_adu) / (near_adu * near_adu);
     double wide_variance = uf_noise_variance(&wide->noise, wide->background_adu + dye_adu) / (dye_adu * dye_adu);
     double gap = uf_decay_gap(&plan->decay, log(near_adu / dye_adu / plan->reference_ratio));

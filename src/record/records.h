@@ -21,6 +21,7 @@ typedef enum uf_flag {
     UF_FLAG_SHIFT_DIFFERS,  /* field: the estimate differs from the bench's value by more than 1 px */
     UF_FLAG_DISPLAY_SCALED, /* field: looks contrast-stretched to 8 bits; ratios mean nothing */
     UF_FLAG_LAYERED_EFFECT, /* field: a layered model would read the cutoff more than 3 nm elsewhere */
+    UF_FLAG_SERIES_MISFIT,  /* field: the pages of a series do not obey the field in force */
     UF_FLAG_COUNT
 } uf_flag;
 
@@ -82,7 +83,7 @@ typedef struct uf_field {
     double near_background_adu, wide_background_adu, near_noise_adu, wide_noise_adu;
     double near_saturated_fraction, wide_saturated_fraction;
     double near_focus, wide_focus, near_unevenness, wide_unevenness;
-    double reference_ratio, depth_nm, pedestal_fraction;
+    double reference_ratio, depth_nm, pedestal_fraction, series_chi_square;
     uf_flags flags;
 } uf_field;
 

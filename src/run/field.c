@@ -9,7 +9,9 @@
 #include <stdlib.h>
 
 #include "correct/shift.h"
+#include "fit/robust.h"
 #include "gap/gap.h"
+#include "gap/series.h"
 #include "image/smooth.h"
 #include "segment/segment.h"
 
@@ -65,9 +67,56 @@ static uf_status find_cells(uf_work *work, const uf_plan *plan, const uf_setting
     uf_status status = uf_segment(work, &r->wide, settings, plan->pixel_size_um, &r->cells, error);
     if (status == UF_OK)
         status = uf_background_refine(work, &r->cells, clear_px, &r->near, error);
+    for (int k = 0; status == UF_OK && k < plan->series.count; k++)
+        status = uf_background_refine(work, &r->cells, clear_px, &r->pages[k], error);
     if (status == UF_OK)
         status = uf_background_refine(work, &r->cells, clear_px, &r->wide, error);
     return status;
+}
+
+/* ---- gaps ------------------------------------------------------------------------------------ */
+
+/* Beyond this the pages do not obey the field in force: an angle, index or power is wrong. */
+static const double implausible_chi_square = 3.0;
+
+/* The median reduced chi-square over a lattice of resolved pixels. */
+static uf_status judge_series(uf_work *work, uf_field_result *r, uf_error *error)
+{
+    enum { SAMPLE = 1 << 16 };
+    const uf_gap_map *gaps = &r->gaps;
+    int width = gaps->state.width, height = gaps->state.height;
+    int step = (int)ceil(sqrt((double)width * height / SAMPLE));
+    size_t count = 0;
+    double *values;
+    uf_arena_mark mark = uf_arena_now(&work->arena);
+    uf_status status = uf_take(work, SAMPLE, sizeof *values, "the series", &values, error);
+    if (status != UF_OK)
+        return status;
+    for (int y = step / 2; y < height; y += step)
+        for (int x = step / 2; x < width && count < SAMPLE; x += step) {
+            double value = (double)uf_plane_row(gaps->chi_square, y)[x];
+            if (uf_mask_row(gaps->state, y)[x] == UF_GAP_RESOLVED && !isnan(value))
+                values[count++] = value;
+        }
+    r->field.series_chi_square = uf_median(values, count);
+    if (r->field.series_chi_square > implausible_chi_square)
+        r->field.flags |= 1u << UF_FLAG_SERIES_MISFIT;
+    uf_arena_back(&work->arena, mark);
+    return UF_OK;
+}
+
+/* Gaps by ratio or by series. A series finds its own reference, which `own` gets beside all else of the plan. */
+static uf_status find_gaps(uf_work *work, const uf_plan *plan, double detection_sigma, uf_field_result *r, uf_plan *own,
+                           uf_error *error)
+{
+    *own = *plan;
+    r->field.series_chi_square = (double)NAN;
+    r->reference_ratio = plan->reference_ratio;
+    if (!plan->series.count)
+        return uf_gap_find(work, plan, detection_sigma, &r->near, &r->wide, &r->cells, &r->gaps, error);
+    uf_status status = uf_gap_find_series(work, own, detection_sigma, r->pages, &r->wide, &r->cells, &r->gaps, error);
+    r->reference_ratio = own->reference_ratio;
+    return status == UF_OK ? judge_series(work, r, error) : status;
 }
 
 static uf_status measure(uf_work *work, const uf_plan *plan, const uf_settings *settings, uf_field_result *r,
@@ -86,14 +135,14 @@ static uf_status measure(uf_work *work, const uf_plan *plan, const uf_settings *
 uf_status uf_field_run(uf_work *work, const uf_plan *plan, const uf_settings *settings, uf_field_result *result,
                        uf_error *error)
 {
+    uf_plan own;
     uf_status status = align(work, settings, result, error);
     if (status == UF_OK)
         status = find_cells(work, plan, settings, result, error);
     if (status == UF_OK)
-        status = uf_gap_find(work, plan, settings->contact.detection_sigma, &result->near, &result->wide,
-                             &result->cells, &result->gaps, error);
+        status = find_gaps(work, plan, settings->contact.detection_sigma, result, &own, error);
     if (status == UF_OK)
-        status = measure(work, plan, settings, result, error);
+        status = measure(work, &own, settings, result, error);
     if (status == UF_OK)
         result->field.status = result->field.flags ? UF_FIELD_FLAGGED : UF_FIELD_OK;
     return status;

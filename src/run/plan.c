@@ -3,6 +3,8 @@
 
 #include <math.h>
 
+#include "run/series_plan.h"
+
 /* Emission is redder than excitation by about this (common practice, no source), and a diffraction-limited
  * image of a point is close to a Gaussian of sigma 0.21 wavelength / NA (Zhang, Zerubia and Olivo-Marin 2007,
  * Appl. Opt. 46:1819; value from memory). */
@@ -90,7 +92,8 @@ uf_status uf_plan_make(const uf_settings *s, double image_pixel_um, uf_plan *pla
     *plan = (uf_plan){0};
     uf_status status = uf_settings_check(s, error);
     if (status == UF_OK)
-        status = uf_bench_make(s, &plan->bench, error);
+        status = s->series.angles_deg.count ? uf_series_plan_bench(s, plan, error)
+                                            : uf_bench_make(s, &plan->bench, error);
     if (status == UF_OK)
         status = find_pixel_size(s, image_pixel_um, &plan->pixel_size_um, error);
     if (status != UF_OK)
@@ -103,6 +106,11 @@ uf_status uf_plan_make(const uf_settings *s, double image_pixel_um, uf_plan *pla
         return status;
     double na = isnan(s->interface.objective_na) ? usual_na : s->interface.objective_na;
     plan->psf_sigma_um = uf_round_digits(psf_per_wavelength * stokes_shift * b->wavelength_nm * 1e-3 / na, 12);
+    if (plan->series.count) {
+        plan->reference_ratio = (double)NAN;
+        uf_series_plan_sd(s, plan);
+        return UF_OK;
+    }
     plan->reference_gap_nm = s->reference.gap_nm;
     double at_zero = s->reference.ratio * exp(-uf_decay_ln(&plan->decay, s->reference.gap_nm));
     plan->reference_ratio = uf_round_digits(at_zero, 12);

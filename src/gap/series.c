@@ -1,0 +1,401 @@
+/* SPDX-License-Identifier: GPL-3.0-or-later */
+#include "gap/series.h"
+
+#include <math.h>
+#include <string.h>
+
+#include "base/text.h"
+#include "fit/robust.h"
+#include "gap/signals.h"
+#include "image/smooth.h"
+#include "optics/detection.h"
+
+/* ---- the table ------------------------------------------------------------------------------- */
+
+void uf_series_tabulate(const uf_series *series, const uf_field_kind *kind, uf_series_table *table)
+{
+    table->count = series->count;
+    for (int j = 0; j < UF_SERIES_NODES; j++) {
+        uf_series_field(series, kind, UF_SERIES_FIRST_NM + j, table->field[j], table->slope[j]);
+        for (int k = 0; k < series->count; k++) {
+            table->field[j][k] = uf_round_digits(table->field[j][k], 12);
+            table->slope[j][k] = uf_round_digits(table->slope[j][k], 9);
+            if (j % UF_SERIES_COARSE_STEP == 0)
+                table->coarse[j / UF_SERIES_COARSE_STEP][k] = (float)table->field[j][k];
+        }
+    }
+}
+
+/* Fields and slopes between nodes: the slope by a straight line, the field by its integral. */
+static void look_up(const uf_series_table *table, double gap_nm, double *field, double *slope)
+{
+    double at = gap_nm - UF_SERIES_FIRST_NM;
+    int j = (int)at;
+    j = j > UF_SERIES_NODES - 2 ? UF_SERIES_NODES - 2 : j;
+    double part = at - j;
+    for (int k = 0; k < table->count; k++) {
+        double bend = part * (table->slope[j + 1][k] - table->slope[j][k]);
+        field[k] = table->field[j][k] + part * (table->slope[j][k] + bend / 2);
+        slope[k] = table->slope[j][k] + bend;
+    }
+}
+
+/* ---- the coarse start ------------------------------------------------------------------------ */
+
+enum { BLOCK = 64 };
+
+/* Pixels of one stretch, signals times weights beside the weights. */
+typedef struct stretch {
+    int n;
+    float weighted[UF_SERIES_MOST][BLOCK], weight[UF_SERIES_MOST][BLOCK];
+} stretch;
+
+/* best[x] is the coarse node with the largest (sum w I T)^2 / sum w T^2 of those with a positive sum w I T; -1: none. */
+static void coarse_start(const uf_series_table *table, const stretch *s, int *best)
+{
+    float most[BLOCK], along[BLOCK], square[BLOCK];
+    for (int x = 0; x < BLOCK; x++) {
+        most[x] = 0.0f;
+        best[x] = -1;
+    }
+    for (int j = 0; j < UF_SERIES_COARSE; j++) {
+        memset(along, 0, sizeof along);
+        memset(square, 0, sizeof square);
+        for (int k = 0; k < table->count; k++) {
+            float field = table->coarse[j][k], field2 = field * field;
+            for (int x = 0; x < BLOCK; x++) {
+                along[x] += s->weighted[k][x] * field;
+                square[x] += s->weight[k][x] * field2;
+            }
+        }
+        for (int x = 0; x < BLOCK; x++) {
+            float up = along[x] > 0.0f ? along[x] : 0.0f, gain = up * up / square[x];
+            best[x] = gain > most[x] ? j : best[x];
+            most[x] = gain > most[x] ? gain : most[x];
+        }
+    }
+}
+
+/* ---- one pixel ------------------------------------------------------------------------------- */
+
+typedef struct pixel {
+    int count;
+    double signal[UF_SERIES_MOST], weight[UF_SERIES_MOST];
+} pixel;
+
+/* Sums of a pixel at one gap: with t the field, s its slope, i the signal. */
+typedef struct sums {
+    double ii, it, is, tt, ts, ss;
+} sums;
+
+static sums sums_at(const uf_series_table *table, const pixel *p, double gap_nm)
+{
+    double field[UF_SERIES_MOST], slope[UF_SERIES_MOST];
+    sums m = {0};
+    look_up(table, gap_nm, field, slope);
+    for (int k = 0; k < p->count; k++) {
+        double w = p->weight[k], wi = w * p->signal[k], wt = w * field[k];
+        m.ii += wi * p->signal[k];
+        m.it += wi * field[k];
+        m.is += wi * slope[k];
+        m.tt += wt * field[k];
+        m.ts += wt * slope[k];
+        m.ss += w * slope[k] * slope[k];
+    }
+    return m;
+}
+
+/* The step of Gauss and Newton in the gap, A profiled out: its sign is that of the falling chi-square. */
+static double step_of(const sums *m)
+{
+    double a = m->it / m->tt, across = m->tt * m->ss - m->ts * m->ts;
+    return a > 0 && across > 0 ? (m->tt * m->is - m->ts * m->it) / (a * across) : 0;
+}
+
+static double fit_pixel(const uf_series_table *table, const pixel *p, int coarse, sums *m)
+{
+    enum { MOST_TURNS = 20 };
+    const double close_nm = 2e-3;
+    double start = UF_SERIES_FIRST_NM + (double)UF_SERIES_COARSE_STEP * coarse, last = UF_SERIES_NODES - 1;
+    double low = fmax(UF_SERIES_FIRST_NM, start - UF_SERIES_COARSE_STEP);
+    double high = fmin(UF_SERIES_FIRST_NM + last, start + UF_SERIES_COARSE_STEP), gap = start;
+    for (int turn = 0;; turn++) {
+        *m = sums_at(table, p, gap);
+        double step = step_of(m);
+        if (fabs(step) < close_nm || high - low < close_nm || turn == MOST_TURNS)
+            return gap;
+        if (step > 0)
+            low = gap;
+        else
+            high = gap;
+        double next = gap + step;
+        gap = next > low && next < high ? next : (low + high) / 2;
+    }
+}
+
+static void fit_stretch(const uf_series_table *table, const stretch *s, const float *const *signal, int from,
+                        float *gap_nm, float *chi_square)
+{
+    int best[BLOCK];
+    pixel p = {.count = table->count};
+    coarse_start(table, s, best);
+    for (int x = 0; x < s->n; x++) {
+        gap_nm[x] = NAN;
+        if (chi_square)
+            chi_square[x] = NAN;
+        if (best[x] < 0)
+            continue;
+        for (int k = 0; k < p.count; k++) {
+            p.signal[k] = (double)signal[k][from + x];
+            p.weight[k] = (double)s->weight[k][x];
+        }
+        sums m;
+        gap_nm[x] = (float)fit_pixel(table, &p, best[x], &m);
+        if (chi_square && p.count > 2)
+            chi_square[x] = (float)((m.ii - m.it * m.it / m.tt) / (p.count - 2));
+    }
+}
+
+void uf_series_fit_row(const uf_series_table *table, const float *const *signal, const float *const *weight, int n,
+                       float *gap_nm, float *chi_square)
+{
+    stretch s;
+    for (int from = 0; from < n; from += BLOCK) {
+        s.n = n - from < BLOCK ? n - from : BLOCK;
+        for (int k = 0; k < table->count; k++)
+            for (int x = 0; x < BLOCK; x++) {
+                int inside = x < s.n ? x : s.n - 1; /* the tail repeats its last pixel: the loops stay whole */
+                s.weight[k][x] = weight[k][from + inside];
+                s.weighted[k][x] = weight[k][from + inside] * signal[k][from + inside];
+            }
+        fit_stretch(table, &s, signal, from, gap_nm + from, chi_square ? chi_square + from : NULL);
+    }
+}
+
+/* ---- the field's pixels ---------------------------------------------------------------------- */
+
+typedef struct series_job {
+    const uf_plan *plan;
+    const uf_channel *pages, *near, *wide;
+    const uf_cell_map *cells;
+    uf_gap_map *map;
+    uf_series_table *table;
+    uf_plane smooth[UF_SERIES_MOST], dye_smooth;
+    float *weights; /* a row of each page a hand */
+    double detection_sigma;
+} series_job;
+
+static void subtract_rows(void *context, int hand, int y0, int y1)
+{
+    (void)hand;
+    series_job *job = context;
+    for (int k = 0; k < job->plan->series.count; k++) {
+        float background = (float)job->pages[k].background_adu;
+        if (k == job->plan->series.widest)
+            continue; /* near_adu, done with the dye */
+        for (int y = y0; y < y1; y++) {
+            float *row = uf_plane_row(job->pages[k].image, y);
+            for (int x = 0; x < job->pages[k].image.width; x++)
+                row[x] -= background;
+        }
+    }
+}
+
+/* One over the variance that the noise model gives a page's pixel, by its smoothed signal: a pixel's own would give
+ * more weight to those that noise made dark. */
+static void weigh_row(const uf_channel *page, const float *smooth, int n, float *weight)
+{
+    float background = (float)page->background_adu, read2 = (float)(page->noise.read_adu * page->noise.read_adu);
+    float per_adu = (float)(page->noise.excess2 / page->noise.gain_e_per_adu);
+    float least = (float)fmax(1e-6, page->noise_adu * page->noise_adu);
+    for (int x = 0; x < n; x++) {
+        float variance = (background + smooth[x]) * per_adu + read2;
+        weight[x] = 1.0f / (variance > least ? variance : least);
+    }
+}
+
+/* Takes the weight of saturated pixels away, where two good pages are left. */
+static void drop_saturated(const series_job *job, int y, int from, int n, float *const *weight)
+{
+    int count = job->plan->series.count;
+    for (int x = 0; x < n; x++) {
+        int good = count;
+        for (int k = 0; k < count; k++)
+            good -= job->pages[k].saturated.data && uf_mask_row(job->pages[k].saturated, y)[from + x];
+        for (int k = 0; k < count && good >= 2 && good < count; k++)
+            if (job->pages[k].saturated.data && uf_mask_row(job->pages[k].saturated, y)[from + x])
+                weight[k][x] = 0.0f;
+    }
+}
+
+static void fit_span(const series_job *job, int hand, int y, int from, int n)
+{
+    const float *signal[UF_SERIES_MOST], *smooth[UF_SERIES_MOST];
+    float *weight[UF_SERIES_MOST];
+    int count = job->plan->series.count, width = job->near->image.width, any_saturated = 0;
+    for (int k = 0; k < count; k++) {
+        signal[k] = uf_plane_row(job->pages[k].image, y) + from;
+        smooth[k] = uf_plane_row(job->smooth[k], y) + from;
+        weight[k] = job->weights + ((size_t)hand * (size_t)count + (size_t)k) * (size_t)width;
+        weigh_row(&job->pages[k], smooth[k], n, weight[k]);
+        any_saturated |= job->pages[k].saturated.data != NULL;
+    }
+    if (any_saturated)
+        drop_saturated(job, y, from, n, weight);
+    const float *const *w = (const float *const *)weight;
+    uf_series_fit_row(job->table, smooth, w, n, uf_plane_row(job->map->smooth_gap_nm, y) + from, NULL);
+    uf_series_fit_row(job->table, signal, w, n, uf_plane_row(job->map->gap_nm, y) + from,
+                      uf_plane_row(job->map->chi_square, y) + from);
+}
+
+/* Runs of pixels in cells, each fitted; the rest of the row has no gap. */
+static void fit_row(const series_job *job, int hand, int y)
+{
+    const int32_t *labels = uf_labels_row(job->cells->labels, y);
+    float *gap = uf_plane_row(job->map->gap_nm, y), *chi_square = uf_plane_row(job->map->chi_square, y);
+    float *smooth = uf_plane_row(job->map->smooth_gap_nm, y);
+    int width = job->cells->labels.width;
+    for (int x = 0; x < width;) {
+        int from = x;
+        for (; x < width && !labels[x]; x++) {
+            gap[x] = chi_square[x] = NAN;
+            smooth[x] = UF_GAP_NOWHERE;
+        }
+        for (from = x; x < width && labels[x];)
+            x++;
+        if (x > from)
+            fit_span(job, hand, y, from, x - from);
+    }
+}
+
+static void fit_rows(void *context, int hand, int y0, int y1)
+{
+    series_job *job = context;
+    float least = (float)(job->detection_sigma * uf_smoothed_sd(job->plan, job->near, 0));
+    for (int y = y0; y < y1; y++) {
+        const int32_t *labels = uf_labels_row(job->cells->labels, y);
+        const float *near = uf_plane_row(job->smooth[job->plan->series.widest], y);
+        const float *smooth = uf_plane_row(job->map->smooth_gap_nm, y);
+        float *gap = uf_plane_row(job->map->gap_nm, y);
+        uint8_t *state = uf_mask_row(job->map->state, y);
+        fit_row(job, hand, y);
+        for (int x = 0; x < job->cells->labels.width; x++) {
+            int seen = labels[x] && near[x] > least && !isnan(smooth[x]);
+            state[x] = !labels[x] ? UF_GAP_OUTSIDE : seen ? UF_GAP_RESOLVED : UF_GAP_UNRESOLVED;
+            /* A resolved place may still hold a pixel whose signals add up to nothing: it takes its surroundings. */
+            gap[x] = labels[x] && isnan(gap[x]) ? smooth[x] : gap[x];
+        }
+    }
+}
+
+/* ---- the field's own reference, for limits ----------------------------------------------------- */
+
+enum { SAMPLE = 1 << 14 };
+
+static int sample_step(uf_labels labels)
+{
+    int step = (int)ceil(sqrt((double)labels.width * labels.height / SAMPLE));
+    return step < 1 ? 1 : step;
+}
+
+/* near / dye / decay(gap) at a lattice of resolved pixels; where nothing is resolved, what makes the detection limit
+ * of a typical pixel a gap of 0: nothing was seen there. */
+static uf_status own_reference(uf_work *work, const series_job *job, double *ratio, uf_error *error)
+{
+    uf_labels labels = job->cells->labels;
+    int step = sample_step(labels);
+    size_t count = 0, dyes = 0;
+    double *values, *dye;
+    uf_status status = uf_take(work, SAMPLE, sizeof *values, "gaps", &values, error);
+    if (status == UF_OK)
+        status = uf_take(work, SAMPLE, sizeof *dye, "gaps", &dye, error);
+    if (status != UF_OK)
+        return status;
+    double dye_least = job->detection_sigma * uf_smoothed_sd(job->plan, job->wide, 0);
+    for (int y = step / 2; y < labels.height; y += step)
+        for (int x = step / 2; x < labels.width && dyes < SAMPLE; x += step) {
+            double d = (double)uf_plane_row(job->dye_smooth, y)[x], gap = (double)uf_plane_row(job->map->smooth_gap_nm, y)[x];
+            if (!uf_labels_row(labels, y)[x] || !(d > dye_least))
+                continue;
+            dye[dyes++] = d;
+            double near = (double)uf_plane_row(job->smooth[job->plan->series.widest], y)[x];
+            if (uf_mask_row(job->map->state, y)[x] == UF_GAP_RESOLVED)
+                values[count++] = near / d * exp(-uf_decay_ln(&job->plan->decay, gap));
+        }
+    double unseen = job->detection_sigma * uf_smoothed_sd(job->plan, job->near, 0) / uf_median(dye, dyes);
+    *ratio = count ? uf_median(values, count) : dyes ? unseen : 1;
+    return UF_OK;
+}
+
+static void limit_rows(void *context, int hand, int y0, int y1)
+{
+    (void)hand;
+    series_job *job = context;
+    for (int y = y0; y < y1; y++) {
+        const uint8_t *state = uf_mask_row(job->map->state, y);
+        const float *dye = uf_plane_row(job->dye_smooth, y);
+        for (int x = 0; x < job->cells->labels.width; x++)
+            if (state[x] == UF_GAP_UNRESOLVED)
+                uf_plane_row(job->map->gap_nm, y)[x] = uf_plane_row(job->map->smooth_gap_nm, y)[x] =
+                    (float)uf_gap_limit_nm(job->plan, job->detection_sigma, job->near, job->wide, (double)dye[x]);
+    }
+}
+
+/* ---- all of it ------------------------------------------------------------------------------- */
+
+static uf_status smooth_all(uf_work *work, series_job *job, double psf_px, uf_error *error)
+{
+    int width = job->near->image.width, height = job->near->image.height;
+    uf_status status = uf_plane_take(work, width, height, &job->dye_smooth, error);
+    if (status == UF_OK)
+        status = uf_smooth(work, job->map->dye_adu, psf_px, job->dye_smooth, error);
+    for (int k = 0; status == UF_OK && k < job->plan->series.count; k++) {
+        status = uf_plane_take(work, width, height, &job->smooth[k], error);
+        if (status == UF_OK)
+            status = uf_smooth(work, job->pages[k].image, psf_px, job->smooth[k], error);
+    }
+    return status;
+}
+
+static uf_status fit_field(uf_work *work, series_job *job, uf_plan *plan, uf_error *error)
+{
+    size_t row = (size_t)plan->series.count * (size_t)job->near->image.width;
+    uf_field_kind kind = {&plan->bench, plan->model, plan->stray};
+    uf_status status = uf_take(work, 1, sizeof *job->table, "gaps", &job->table, error);
+    if (status == UF_OK)
+        status = uf_take(work, (size_t)uf_hands(work) * row, sizeof(float), "gaps", &job->weights, error);
+    if (status == UF_OK)
+        status = smooth_all(work, job, plan->psf_sigma_um / plan->pixel_size_um, error);
+    if (status != UF_OK)
+        return status;
+    uf_series_tabulate(&plan->series, &kind, job->table);
+    uf_rows_run(work, job->near->image.height, fit_rows, job);
+    double ratio = 1;
+    status = own_reference(work, job, &ratio, error);
+    plan->reference_ratio = uf_round_digits(ratio, 9);
+    uf_rows_run(work, job->near->image.height, limit_rows, job);
+    return status;
+}
+
+uf_status uf_gap_find_series(uf_work *work, uf_plan *plan, double detection_sigma, uf_channel *pages,
+                             const uf_channel *wide, const uf_cell_map *cells, uf_gap_map *map, uf_error *error)
+{
+    uf_channel *near = &pages[plan->series.widest];
+    series_job job = {.plan = plan,
+                      .pages = pages,
+                      .near = near,
+                      .wide = wide,
+                      .cells = cells,
+                      .map = map,
+                      .detection_sigma = detection_sigma};
+    uf_status status = uf_gap_signals(work, plan, near, wide, cells, map, error);
+    if (status == UF_OK)
+        status = uf_plane_take(work, near->image.width, near->image.height, &map->chi_square, error);
+    if (status != UF_OK)
+        return status;
+    uf_rows_run(work, near->image.height, subtract_rows, &job);
+    uf_arena_mark mark = uf_arena_now(&work->arena);
+    status = fit_field(work, &job, plan, error);
+    uf_arena_back(&work->arena, mark);
+    return status;
+}
