@@ -15,6 +15,7 @@
 void uf_series_tabulate(const uf_series *series, const uf_field_kind *kind, uf_series_table *table)
 {
     table->count = series->count;
+    table->last_nm = fmin(UF_SERIES_FIRST_NM + UF_SERIES_NODES - 1, series->farthest_nm);
     for (int j = 0; j < UF_SERIES_NODES; j++) {
         uf_series_field(series, kind, UF_SERIES_FIRST_NM + j, table->field[j], table->slope[j]);
         for (int k = 0; k < series->count; k++) {
@@ -58,7 +59,8 @@ static void coarse_start(const uf_series_table *table, const stretch *s, int *be
         most[x] = 0.0f;
         best[x] = -1;
     }
-    for (int j = 0; j < UF_SERIES_COARSE; j++) {
+    int last = (int)((table->last_nm - UF_SERIES_FIRST_NM) / UF_SERIES_COARSE_STEP);
+    for (int j = 0; j <= last; j++) {
         memset(along, 0, sizeof along);
         memset(square, 0, sizeof square);
         for (int k = 0; k < table->count; k++) {
@@ -85,7 +87,7 @@ typedef struct pixel {
 
 /* Sums of a pixel at one gap: with t the field, s its slope, i the signal. */
 typedef struct sums {
-    double ii, it, is, tt, ts, ss;
+    double it, is, tt, ts, ss;
 } sums;
 
 static sums sums_at(const uf_series_table *table, const pixel *p, double gap_nm)
@@ -95,7 +97,6 @@ static sums sums_at(const uf_series_table *table, const pixel *p, double gap_nm)
     look_up(table, gap_nm, field, slope);
     for (int k = 0; k < p->count; k++) {
         double w = p->weight[k], wi = w * p->signal[k], wt = w * field[k];
-        m.ii += wi * p->signal[k];
         m.it += wi * field[k];
         m.is += wi * slope[k];
         m.tt += wt * field[k];
@@ -112,16 +113,16 @@ static double step_of(const sums *m)
     return a > 0 && across > 0 ? (m->tt * m->is - m->ts * m->it) / (a * across) : 0;
 }
 
-static double fit_pixel(const uf_series_table *table, const pixel *p, int coarse, sums *m)
+static double fit_pixel(const uf_series_table *table, const pixel *p, int coarse)
 {
     enum { MOST_TURNS = 20 };
     const double close_nm = 2e-3;
-    double start = UF_SERIES_FIRST_NM + (double)UF_SERIES_COARSE_STEP * coarse, last = UF_SERIES_NODES - 1;
+    double start = UF_SERIES_FIRST_NM + (double)UF_SERIES_COARSE_STEP * coarse, gap = start;
     double low = fmax(UF_SERIES_FIRST_NM, start - UF_SERIES_COARSE_STEP);
-    double high = fmin(UF_SERIES_FIRST_NM + last, start + UF_SERIES_COARSE_STEP), gap = start;
+    double high = fmin(table->last_nm, start + UF_SERIES_COARSE_STEP);
     for (int turn = 0;; turn++) {
-        *m = sums_at(table, p, gap);
-        double step = step_of(m);
+        sums m = sums_at(table, p, gap);
+        double step = step_of(&m);
         if (fabs(step) < close_nm || high - low < close_nm || turn == MOST_TURNS)
             return gap;
         if (step > 0)
@@ -133,42 +134,54 @@ static double fit_pixel(const uf_series_table *table, const pixel *p, int coarse
     }
 }
 
-static void fit_stretch(const uf_series_table *table, const stretch *s, const float *const *signal, int from,
-                        float *gap_nm, float *chi_square)
+/* One stretch of n pixels from `from` on; the tail of the block repeats its last pixel, so that loops stay whole. */
+static void load(stretch *s, int count, const float *const *signal, const float *const *weight, int from, int n)
 {
-    int best[BLOCK];
-    pixel p = {.count = table->count};
-    coarse_start(table, s, best);
-    for (int x = 0; x < s->n; x++) {
-        gap_nm[x] = NAN;
-        if (chi_square)
-            chi_square[x] = NAN;
-        if (best[x] < 0)
-            continue;
-        for (int k = 0; k < p.count; k++) {
-            p.signal[k] = (double)signal[k][from + x];
-            p.weight[k] = (double)s->weight[k][x];
+    s->n = n;
+    for (int k = 0; k < count; k++)
+        for (int x = 0; x < BLOCK; x++) {
+            int inside = from + (x < n ? x : n - 1);
+            s->weight[k][x] = weight[k][inside];
+            s->weighted[k][x] = weight[k][inside] * signal[k][inside];
         }
-        sums m;
-        gap_nm[x] = (float)fit_pixel(table, &p, best[x], &m);
-        if (chi_square && p.count > 2)
-            chi_square[x] = (float)((m.ii - m.it * m.it / m.tt) / (p.count - 2));
-    }
 }
 
 void uf_series_fit_row(const uf_series_table *table, const float *const *signal, const float *const *weight, int n,
-                       float *gap_nm, float *chi_square)
+                       float *gap_nm)
 {
     stretch s;
+    int best[BLOCK];
+    pixel p = {.count = table->count};
     for (int from = 0; from < n; from += BLOCK) {
-        s.n = n - from < BLOCK ? n - from : BLOCK;
-        for (int k = 0; k < table->count; k++)
-            for (int x = 0; x < BLOCK; x++) {
-                int inside = x < s.n ? x : s.n - 1; /* the tail repeats its last pixel: the loops stay whole */
-                s.weight[k][x] = weight[k][from + inside];
-                s.weighted[k][x] = weight[k][from + inside] * signal[k][from + inside];
+        load(&s, table->count, signal, weight, from, n - from < BLOCK ? n - from : BLOCK);
+        coarse_start(table, &s, best);
+        for (int x = 0; x < s.n; x++) {
+            for (int k = 0; k < p.count; k++) {
+                p.signal[k] = (double)signal[k][from + x];
+                p.weight[k] = (double)s.weight[k][x];
             }
-        fit_stretch(table, &s, signal, from, gap_nm + from, chi_square ? chi_square + from : NULL);
+            gap_nm[from + x] = best[x] < 0 ? NAN : (float)fit_pixel(table, &p, best[x]);
+        }
+    }
+}
+
+void uf_series_chi_square_row(const uf_series_table *table, const float *const *signal, const float *const *weight,
+                              int n, const float *gap_nm, float *chi_square)
+{
+    double field[UF_SERIES_MOST], slope[UF_SERIES_MOST];
+    for (int x = 0; x < n; x++) {
+        double ii = 0, it = 0, tt = 0;
+        chi_square[x] = NAN;
+        if (isnan(gap_nm[x]))
+            continue;
+        look_up(table, (double)gap_nm[x], field, slope);
+        for (int k = 0; k < table->count; k++) {
+            double i = (double)signal[k][x], w = (double)weight[k][x];
+            ii += w * i * i;
+            it += w * i * field[k];
+            tt += w * field[k] * field[k];
+        }
+        chi_square[x] = (float)((ii - it * it / tt) / (table->count - 1));
     }
 }
 
@@ -243,22 +256,21 @@ static void fit_span(const series_job *job, int hand, int y, int from, int n)
     if (any_saturated)
         drop_saturated(job, y, from, n, weight);
     const float *const *w = (const float *const *)weight;
-    uf_series_fit_row(job->table, smooth, w, n, uf_plane_row(job->map->smooth_gap_nm, y) + from, NULL);
-    uf_series_fit_row(job->table, signal, w, n, uf_plane_row(job->map->gap_nm, y) + from,
-                      uf_plane_row(job->map->chi_square, y) + from);
+    float *gap = uf_plane_row(job->map->smooth_gap_nm, y) + from;
+    uf_series_fit_row(job->table, smooth, w, n, gap);
+    uf_series_chi_square_row(job->table, signal, w, n, gap, uf_plane_row(job->map->chi_square, y) + from);
 }
 
 /* Runs of pixels in cells, each fitted; the rest of the row has no gap. */
 static void fit_row(const series_job *job, int hand, int y)
 {
     const int32_t *labels = uf_labels_row(job->cells->labels, y);
-    float *gap = uf_plane_row(job->map->gap_nm, y), *chi_square = uf_plane_row(job->map->chi_square, y);
-    float *smooth = uf_plane_row(job->map->smooth_gap_nm, y);
+    float *smooth = uf_plane_row(job->map->smooth_gap_nm, y), *chi_square = uf_plane_row(job->map->chi_square, y);
     int width = job->cells->labels.width;
     for (int x = 0; x < width;) {
         int from = x;
         for (; x < width && !labels[x]; x++) {
-            gap[x] = chi_square[x] = NAN;
+            chi_square[x] = NAN;
             smooth[x] = UF_GAP_NOWHERE;
         }
         for (from = x; x < width && labels[x];)
@@ -272,18 +284,17 @@ static void fit_rows(void *context, int hand, int y0, int y1)
 {
     series_job *job = context;
     float least = (float)(job->detection_sigma * uf_smoothed_sd(job->plan, job->near, 0));
+    float last = (float)job->table->last_nm - 0.5f;
     for (int y = y0; y < y1; y++) {
         const int32_t *labels = uf_labels_row(job->cells->labels, y);
         const float *near = uf_plane_row(job->smooth[job->plan->series.widest], y);
-        const float *smooth = uf_plane_row(job->map->smooth_gap_nm, y);
-        float *gap = uf_plane_row(job->map->gap_nm, y);
+        float *smooth = uf_plane_row(job->map->smooth_gap_nm, y), *gap = uf_plane_row(job->map->gap_nm, y);
         uint8_t *state = uf_mask_row(job->map->state, y);
         fit_row(job, hand, y);
         for (int x = 0; x < job->cells->labels.width; x++) {
-            int seen = labels[x] && near[x] > least && !isnan(smooth[x]);
+            int seen = labels[x] && near[x] > least && smooth[x] < last; /* NaN: not seen */
             state[x] = !labels[x] ? UF_GAP_OUTSIDE : seen ? UF_GAP_RESOLVED : UF_GAP_UNRESOLVED;
-            /* A resolved place may still hold a pixel whose signals add up to nothing: it takes its surroundings. */
-            gap[x] = labels[x] && isnan(gap[x]) ? smooth[x] : gap[x];
+            gap[x] = labels[x] ? smooth[x] : NAN;
         }
     }
 }
@@ -327,17 +338,32 @@ static uf_status own_reference(uf_work *work, const series_job *job, double *rat
     return UF_OK;
 }
 
+/* Beyond the search's end a pixel must be darker, over its dye, than the field's reference at that end. */
+static float darkest_at_end(const series_job *job)
+{
+    int to_the_table_end = job->table->last_nm >= UF_SERIES_FIRST_NM + UF_SERIES_NODES - 1;
+    double relative = exp(uf_decay_ln(&job->plan->decay, job->table->last_nm));
+    return to_the_table_end ? -1.0f : (float)(job->plan->reference_ratio * relative);
+}
+
 static void limit_rows(void *context, int hand, int y0, int y1)
 {
     (void)hand;
     series_job *job = context;
+    float darkest = darkest_at_end(job);
     for (int y = y0; y < y1; y++) {
-        const uint8_t *state = uf_mask_row(job->map->state, y);
+        uint8_t *state = uf_mask_row(job->map->state, y);
         const float *dye = uf_plane_row(job->dye_smooth, y);
-        for (int x = 0; x < job->cells->labels.width; x++)
-            if (state[x] == UF_GAP_UNRESOLVED)
-                uf_plane_row(job->map->gap_nm, y)[x] = uf_plane_row(job->map->smooth_gap_nm, y)[x] =
-                    (float)uf_gap_limit_nm(job->plan, job->detection_sigma, job->near, job->wide, (double)dye[x]);
+        const float *near = uf_plane_row(job->smooth[job->plan->series.widest], y);
+        float *gap = uf_plane_row(job->map->gap_nm, y), *smooth = uf_plane_row(job->map->smooth_gap_nm, y);
+        for (int x = 0; x < job->cells->labels.width; x++) {
+            if (state[x] == UF_GAP_RESOLVED && near[x] < darkest * dye[x])
+                state[x] = UF_GAP_UNRESOLVED;
+            if (state[x] != UF_GAP_UNRESOLVED)
+                continue;
+            gap[x] = smooth[x] =
+                (float)uf_gap_limit_nm(job->plan, job->detection_sigma, job->near, job->wide, (double)dye[x]);
+        }
     }
 }
 

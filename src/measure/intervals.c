@@ -60,13 +60,15 @@ static void fill_gap_sds(const uf_measure_input *in, uf_cell *row)
 }
 
 /* Pixels within a noise sigma of the cutoff fall to either side by chance: their number's standard deviation.
- * The variance of a sum of coin tosses over a band of even density n a nm and normal noise s is n s / sqrt pi. */
+ * The variance of a sum of coin tosses over a band of even density n a nm and normal noise s is n s / sqrt pi.
+ * The gaps of a series are smoothed, by a factor f of the variance: s sqrt f, tossed in groups of 1 / f. */
 static double chance_pixels(const uf_measure_input *in, const uf_cell *row, double cutoff)
 {
     double near = near_at(in->plan, cutoff, row->wide_mean_adu);
     double noise = uf_gap_noise_nm(in->plan, in->near, in->wide, near, row->wide_mean_adu);
     double density = (uf_area_under(row, cutoff + 2) - uf_area_under(row, cutoff - 2)) / 4;
-    return isnan(noise) ? 0 : sqrt(density * noise / 1.7724538509055159);
+    double smoothing = in->plan->series.count ? uf_psf_smoothing(in->plan) : 1;
+    return isnan(noise) ? 0 : sqrt(density * noise / sqrt(smoothing) / 1.7724538509055159);
 }
 
 void uf_fill_intervals(const uf_measure_input *in, uf_cell *row)

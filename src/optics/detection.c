@@ -24,7 +24,8 @@ double uf_gap_limit_nm(const uf_plan *plan, double detection_sigma, const uf_cha
     double least = detection_sigma * uf_smoothed_sd(plan, near, 0);
     double wide_least = detection_sigma * uf_smoothed_sd(plan, wide, 0);
     double ratio = least / (dye_adu > wide_least ? dye_adu : wide_least);
-    return uf_decay_gap(&plan->decay, log(ratio / plan->reference_ratio));
+    double limit = uf_decay_gap(&plan->decay, log(ratio / plan->reference_ratio));
+    return plan->series.count ? fmin(limit, plan->series.farthest_nm) : limit;
 }
 
 double uf_gap_per_ln(const uf_plan *plan, double gap_nm)

@@ -48,6 +48,34 @@ void uf_series_field(const uf_series *series, const uf_field_kind *kind, double 
     }
 }
 
+/* Cosine of the angle between the pages at a gap and at contact, weighed by photon noise at contact. */
+static double likeness(const uf_series *series, const uf_field_kind *kind, double gap_nm)
+{
+    double both = 0, here = 0, contact = 0;
+    for (int k = 0; k < series->count; k++) {
+        double at_contact = series->power[k] * uf_absolute_excitation(kind, series->na_effective[k], 0);
+        double at_gap = series->power[k] * uf_absolute_excitation(kind, series->na_effective[k], gap_nm);
+        both += at_gap;
+        here += at_gap * at_gap / at_contact;
+        contact += at_contact;
+    }
+    return both / sqrt(here * contact);
+}
+
+double uf_series_farthest(const uf_series *series, const uf_field_kind *kind)
+{
+    const double step = 5;
+    double gap = step, last = likeness(series, kind, gap);
+    while (gap < UF_SERIES_FARTHEST_NM) {
+        double next = likeness(series, kind, gap + step);
+        if (next >= last)
+            break;
+        last = next;
+        gap += step;
+    }
+    return gap;
+}
+
 /* ---- the fit --------------------------------------------------------------------------------- */
 
 typedef struct moments {

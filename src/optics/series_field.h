@@ -10,12 +10,13 @@
 #include "image/channel.h"
 #include "optics/decay.h"
 
-enum { UF_SERIES_MOST = 32, UF_SERIES_GAPS = 31, UF_SERIES_GAP_STEP_NM = 10 };
+enum { UF_SERIES_MOST = 32, UF_SERIES_FARTHEST_NM = 500, UF_SERIES_GAPS = 31, UF_SERIES_GAP_STEP_NM = 10 };
 
 typedef struct uf_series {
     int count;  /* of pages; 0: no series */
     int widest; /* page of the smallest angle, whose field reaches farthest: it stands for the near channel */
     double na_effective[UF_SERIES_MOST], power[UF_SERIES_MOST];
+    double farthest_nm; /* the search for a gap ends here */
     double systematic_nm[UF_SERIES_GAPS]; /* 1 sigma of a gap by angle and indices, at gaps 0, 10 .. 300 nm */
 } uf_series;
 
@@ -35,6 +36,13 @@ double uf_absolute_excitation(const uf_field_kind *kind, double na_effective, do
 /* power_k T_k(gap) of every page, and its derivative by the gap (a nm). Below 0 its logarithm goes on as a
  * straight line, so that noise may take a gap there. */
 void uf_series_field(const uf_series *series, const uf_field_kind *kind, double gap_nm, double *field, double *slope);
+
+/*
+ * The gap up to which a larger gap makes the pages less alike to those at contact, at most 500 nm. Beyond it, where
+ * stray light outshines the field, they grow alike again, and a far gap looks like a near one: no series
+ * can tell them by shape.
+ */
+double uf_series_farthest(const uf_series *series, const uf_field_kind *kind);
 
 /*
  * What a small change of each page's signal does to the fitted gap, nm, for A = 1 (else divide by A): with weights w

@@ -56,7 +56,7 @@ static const uf_column cell_columns[] = {
     CELL(near_mean_adu, REAL, "Mean near signal over the cell, background subtracted, flat-fielded. The near image of a series is the page of its smallest angle."),
     CELL(wide_mean_adu, REAL, "Mean wide signal over the cell, background subtracted, flat-fielded."),
     CELL(ratio_mean, REAL, "near_mean_adu / wide_mean_adu."),
-    CELL(above_reference_fraction, REAL, "Share of the resolved area that is brighter than the reference ratio allows at gap 0 by more than its noise."),
+    CELL(above_reference_fraction, REAL, "Share of the resolved area that is brighter than the reference ratio allows at gap 0 by more than its noise. Empty for a series."),
     CELL(spot_count, COUNT, "Number of focal spots in the cell."),
     CELL(spots_per_100um2, REAL, "Focal spots per 100 square micrometres of spread area."),
     CELL(spot_area_total_um2, REAL, "Summed area of the focal spots."),
@@ -117,7 +117,7 @@ static const uf_column field_columns[] = {
     FIELD(reference_ratio, REAL, "near / wide ratio that stands for gap 0 in this field. Empty for a series, which needs none."),
     FIELD(depth_nm, REAL, "1/e depth of the evanescent intensity in the medium; of a series, at its smallest angle."),
     FIELD(pedestal_fraction, REAL, "Share of blurred wide light in the near image. Not in this version."),
-    FIELD(series_chi_square, REAL, "Median over resolved pixels of the reduced chi-square of a series' fit: somewhat below 1 where the pages obey the field in force. Empty without a series, and for one of two angles."),
+    FIELD(series_chi_square, REAL, "Median over resolved pixels of the reduced chi-square of a series' fit: somewhat below 1 where the pages obey the field in force. Empty without a series."),
     FIELD(flags, FLAGS, "Words that call for a look."),
 };
 

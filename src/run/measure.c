@@ -192,6 +192,11 @@ static void warn_optics(measure_job *job)
             "n sin(angle) %.4f does not exceed cell_n + 2 sd (%.3f): light may pass into the cell where it "
             "touches; a steeper angle avoids it\n",
             plan->bench.na_effective, plan->bench.cell_n + 2 * plan->bench.cell_n_sd);
+    if (plan->series.count && plan->series.farthest_nm < UF_SERIES_FARTHEST_NM)
+        uf_text_printf(&job->warnings,
+                       "with this stray light the series cannot tell gaps beyond %.0f nm from closer ones; places darker "
+                       "than that are left unresolved\n",
+                       plan->series.farthest_nm);
     if (fabs(plan->layered_effect_nm) > 3)
         uf_text_printf(&job->warnings,
                        "a layered model reads the %.4g nm cutoff %+.1f nm differently from the exponential in force; %s\n",

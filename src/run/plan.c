@@ -108,7 +108,7 @@ uf_status uf_plan_make(const uf_settings *s, double image_pixel_um, uf_plan *pla
     plan->psf_sigma_um = uf_round_digits(psf_per_wavelength * stokes_shift * b->wavelength_nm * 1e-3 / na, 12);
     if (plan->series.count) {
         plan->reference_ratio = (double)NAN;
-        uf_series_plan_sd(s, plan);
+        uf_series_plan_limits(s, plan);
         return UF_OK;
     }
     plan->reference_gap_nm = s->reference.gap_nm;

@@ -77,6 +77,7 @@ static json_t *series_json(const uf_series *series)
         json_array_append_new(sd, json_number(series->systematic_nm[k]));
     json_object_set_new(o, "na_effective", na);
     json_object_set_new(o, "near_page", json_integer(series->widest + 1));
+    json_object_set_new(o, "farthest_nm", json_number(series->farthest_nm));
     json_object_set_new(o, "gap_systematic_nm_every_50_nm", sd);
     return o;
 }

@@ -120,13 +120,15 @@ static double layered_effect(const uf_plan *plan, double gap_nm)
     return uf_series_fit(&plan->series, &in_force, signal, weight, NULL) - gap_nm;
 }
 
-void uf_series_plan_sd(const uf_settings *s, uf_plan *plan)
+void uf_series_plan_limits(const uf_settings *s, uf_plan *plan)
 {
     const movement inputs[] = {{.angle_deg = s->interface.angle_sd_deg},
                                {.na_effective = s->interface.na_effective_sd},
                                {.substrate_n = s->interface.substrate_n_sd},
                                {.medium_n = s->interface.medium_n_sd},
                                {.cell_n = plan->model == UF_FIELD_LAYERED ? s->interface.cell_n_sd : 0}};
+    uf_field_kind kind = {&plan->bench, plan->model, plan->stray};
+    plan->series.farthest_nm = uf_series_farthest(&plan->series, &kind);
     for (int g = 0; g < UF_SERIES_GAPS; g++) {
         double squares = 0;
         for (size_t k = 0; k < sizeof inputs / sizeof inputs[0]; k++) {

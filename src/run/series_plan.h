@@ -15,11 +15,11 @@ int uf_series_widest(const uf_settings *settings);
 UF_MUST_USE uf_status uf_series_plan_bench(const uf_settings *settings, uf_plan *plan, uf_error *error);
 
 /*
- * Once bench, model and stray light stand: 1 sigma of a gap by the angles (one shift common to all), the indices of
+ * Once bench, model and stray light stand: how far the series can tell gaps, and 1 sigma of a gap by the angles (one shift common to all), the indices of
  * substrate, medium and, with a layered field, cell. Each is moved up and down by its sd, the fields made anew, and
  * what that does to the gap fitted to the unmoved signals (weights those of photon noise) is added in squares. Also
  * how far the exponential, if in force, reads a layered cutoff off.
  */
-void uf_series_plan_sd(const uf_settings *settings, uf_plan *plan);
+void uf_series_plan_limits(const uf_settings *settings, uf_plan *plan);
 
 #endif
