@@ -172,7 +172,7 @@ void uf_series_chi_square_row(const uf_series_table *table, const float *const *
     for (int x = 0; x < n; x++) {
         double ii = 0, it = 0, tt = 0;
         chi_square[x] = NAN;
-        if (isnan(gap_nm[x]))
+        if (isnan(gap_nm[x]) || table->count < 3)
             continue;
         look_up(table, (double)gap_nm[x], field, slope);
         for (int k = 0; k < table->count; k++) {
@@ -309,32 +309,49 @@ static int sample_step(uf_labels labels)
     return step < 1 ? 1 : step;
 }
 
-/* near / dye / decay(gap) at a lattice of resolved pixels; where nothing is resolved, what makes the detection limit
- * of a typical pixel a gap of 0: nothing was seen there. */
-static uf_status own_reference(uf_work *work, const series_job *job, double *ratio, uf_error *error)
+/* Room for what a lattice of pixels says. */
+typedef struct lattice {
+    double *reference, *dye;
+    size_t references, dyes;
+} lattice;
+
+/* near / dye / decay(gap) of the lattice's pixels well above detection, since chance alone lifts some just above it; and
+ * the dye of all. */
+static void collect(const series_job *job, double near_least, lattice *found)
 {
     uf_labels labels = job->cells->labels;
     int step = sample_step(labels);
-    size_t count = 0, dyes = 0;
-    double *values, *dye;
-    uf_status status = uf_take(work, SAMPLE, sizeof *values, "gaps", &values, error);
-    if (status == UF_OK)
-        status = uf_take(work, SAMPLE, sizeof *dye, "gaps", &dye, error);
-    if (status != UF_OK)
-        return status;
     double dye_least = job->detection_sigma * uf_smoothed_sd(job->plan, job->wide, 0);
     for (int y = step / 2; y < labels.height; y += step)
-        for (int x = step / 2; x < labels.width && dyes < SAMPLE; x += step) {
-            double d = (double)uf_plane_row(job->dye_smooth, y)[x], gap = (double)uf_plane_row(job->map->smooth_gap_nm, y)[x];
-            if (!uf_labels_row(labels, y)[x] || !(d > dye_least))
-                continue;
-            dye[dyes++] = d;
+        for (int x = step / 2; x < labels.width && found->dyes < SAMPLE; x += step) {
+            double dye = (double)uf_plane_row(job->dye_smooth, y)[x];
             double near = (double)uf_plane_row(job->smooth[job->plan->series.widest], y)[x];
-            if (uf_mask_row(job->map->state, y)[x] == UF_GAP_RESOLVED)
-                values[count++] = near / d * exp(-uf_decay_ln(&job->plan->decay, gap));
+            double gap = (double)uf_plane_row(job->map->smooth_gap_nm, y)[x];
+            if (!uf_labels_row(labels, y)[x] || !(dye > dye_least))
+                continue;
+            found->dye[found->dyes++] = dye;
+            if (uf_mask_row(job->map->state, y)[x] == UF_GAP_RESOLVED && near > near_least)
+                found->reference[found->references++] = near / dye * exp(-uf_decay_ln(&job->plan->decay, gap));
         }
-    double unseen = job->detection_sigma * uf_smoothed_sd(job->plan, job->near, 0) / uf_median(dye, dyes);
-    *ratio = count ? uf_median(values, count) : dyes ? unseen : 1;
+}
+
+/* Where no pixel tells, the reference is what makes the detection limit of a typical pixel a gap of 0: nothing was
+ * seen there. */
+static uf_status own_reference(uf_work *work, const series_job *job, double *ratio, uf_error *error)
+{
+    lattice found = {0};
+    uf_status status = uf_take(work, SAMPLE, sizeof(double), "gaps", &found.reference, error);
+    if (status == UF_OK)
+        status = uf_take(work, SAMPLE, sizeof(double), "gaps", &found.dye, error);
+    if (status != UF_OK)
+        return status;
+    double least = job->detection_sigma * uf_smoothed_sd(job->plan, job->near, 0);
+    collect(job, 3 * least, &found);
+    *ratio = 1;
+    if (found.references)
+        *ratio = uf_median(found.reference, found.references);
+    else if (found.dyes)
+        *ratio = least / uf_median(found.dye, found.dyes);
     return UF_OK;
 }
 

@@ -28,7 +28,8 @@ void uf_series_tabulate(const uf_series *series, const uf_field_kind *kind, uf_s
 void uf_series_fit_row(const uf_series_table *table, const float *const *signal, const float *const *weight, int n,
                        float *gap_nm);
 
-/* chi2 / (count - 1) of n pixels at given gaps, A profiled out; NaN where the gap is. */
+/* chi2 / (count - 1) of n pixels at given gaps, A profiled out; NaN where the gap is, and for two
+ * pages, which any gap fits. */
 void uf_series_chi_square_row(const uf_series_table *table, const float *const *signal, const float *const *weight,
                               int n, const float *gap_nm, float *chi_square);
 
@@ -44,7 +45,7 @@ void uf_series_chi_square_row(const uf_series_table *table, const float *const *
  * A pixel is unresolved when the widest page's signal, smoothed, is below detection_sigma times its noise, or when its gap
  * lies at the end of the search; and, where stray light ends the search early (uf_series_farthest), when it is darker
  * than the field's own reference lets a pixel be at that end. The limit is that of the ratio method
- * (optics/detection.h) with the field's own reference: the median, over resolved pixels, of near / dye / decay(gap),
+ * (optics/detection.h) with the field's own reference: the median, over pixels well above detection, of near / dye / decay(gap),
  * which is put into plan->reference_ratio. UF_MEMORY.
  */
 UF_MUST_USE uf_status uf_gap_find_series(uf_work *work, uf_plan *plan, double detection_sigma, uf_channel *pages,

@@ -12,7 +12,8 @@ typedef struct uf_plan {
     uf_decay decay;
     uf_field_model model;
     uf_stray stray;
-    uf_series series; /* count 0: gaps come from the ratio. Else bench, decay, depth are those of its smallest angle, and
+    uf_series
+        series; /* count 0: gaps come from the ratio. Else bench, decay, depth are those of its smallest angle, and
                          the reference ratio is not known before the field is (NaN) */
     double pixel_size_um;
     double psf_sigma_um; /* of the near image: 0.21 emission wavelength / NA */

@@ -16,7 +16,7 @@ typedef struct uf_series {
     int count;  /* of pages; 0: no series */
     int widest; /* page of the smallest angle, whose field reaches farthest: it stands for the near channel */
     double na_effective[UF_SERIES_MOST], power[UF_SERIES_MOST];
-    double farthest_nm; /* the search for a gap ends here */
+    double farthest_nm;                   /* the search for a gap ends here */
     double systematic_nm[UF_SERIES_GAPS]; /* 1 sigma of a gap by angle and indices, at gaps 0, 10 .. 300 nm */
 } uf_series;
 

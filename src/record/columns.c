@@ -117,7 +117,7 @@ static const uf_column field_columns[] = {
     FIELD(reference_ratio, REAL, "near / wide ratio that stands for gap 0 in this field. Empty for a series, which needs none."),
     FIELD(depth_nm, REAL, "1/e depth of the evanescent intensity in the medium; of a series, at its smallest angle."),
     FIELD(pedestal_fraction, REAL, "Share of blurred wide light in the near image. Not in this version."),
-    FIELD(series_chi_square, REAL, "Median over resolved pixels of the reduced chi-square of a series' fit: somewhat below 1 where the pages obey the field in force. Empty without a series."),
+    FIELD(series_chi_square, REAL, "Median over resolved pixels of the reduced chi-square of a series' fit: somewhat below 1 where the pages obey the field in force. Empty without a series, and for one of two angles."),
     FIELD(flags, FLAGS, "Words that call for a look."),
 };
 

@@ -106,8 +106,8 @@ static uf_status judge_series(uf_work *work, uf_field_result *r, uf_error *error
 }
 
 /* Gaps by ratio or by series. A series finds its own reference, which `own` gets beside all else of the plan. */
-static uf_status find_gaps(uf_work *work, const uf_plan *plan, double detection_sigma, uf_field_result *r, uf_plan *own,
-                           uf_error *error)
+static uf_status find_gaps(uf_work *work, const uf_plan *plan, double detection_sigma, uf_field_result *r,
+                           uf_plan *own, uf_error *error)
 {
     *own = *plan;
     r->field.series_chi_square = (double)NAN;

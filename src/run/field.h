@@ -8,8 +8,8 @@
 
 /* What one field gives. Planes and rows live in the worker's arena; spots are freed by uf_field_result_free. */
 typedef struct uf_field_result {
-    uf_channel near, wide; /* wide after the shift */
-    uf_channel *pages;     /* of a series, in the order of its angles, in the arena; near is the widest of them. NULL
+    uf_channel near, wide;  /* wide after the shift */
+    uf_channel *pages;      /* of a series, in the order of its angles, in the arena; near is the widest of them. NULL
                               without a series */
     double reference_ratio; /* near / wide that stands for gap 0: the plan's, or what a series found */
     uf_cell_map cells;

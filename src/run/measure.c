@@ -93,9 +93,29 @@ static uf_status check_pages(const measure_job *job, const char *path, int found
                        "%s: has %d page%s, but [series] angles_deg has %d angles; a series needs one page an angle, "
                        "in their order",
                        path, found, found == 1 ? "" : "s", expected);
-    return uf_fail(error, UF_INPUT,
-                   "%s: has %d pages, expected one; save the page to measure as a file of its own%s", path, found,
-                   path == job->request->near_path ? ", or give a series its [series] angles_deg" : "");
+    return uf_fail(error, UF_INPUT, "%s: has %d pages, expected one; save the page to measure as a file of its own%s",
+                   path, found, path == job->request->near_path ? ", or give a series its [series] angles_deg" : "");
+}
+
+/* Raw counts of the pages of one file, all of one size, with room for their saturated pixels. */
+static uf_status read_pages(measure_job *job, const char *role, const char *path, int count, uf_raw_channel *raw,
+                            uf_image_info *info, uf_error *error)
+{
+    uf_status status = read_image(job, role, path, &raw[0].counts, info, error);
+    if (status == UF_OK)
+        status = check_pages(job, path, info->pages, count, error);
+    for (int k = 1; status == UF_OK && k < count; k++) {
+        status = uf_image_read(&job->work, path, k, &limits, &raw[k].counts, NULL, error);
+        if (status == UF_OK &&
+            (raw[k].counts.width != raw[0].counts.width || raw[k].counts.height != raw[0].counts.height))
+            status = uf_fail(
+                error, UF_INPUT,
+                "%s, page %d: is %d x %d px, page 1 is %d x %d; the pages of a series must have one size", path,
+                k + 1, raw[k].counts.width, raw[k].counts.height, raw[0].counts.width, raw[0].counts.height);
+    }
+    for (int k = 0; status == UF_OK && k < count; k++)
+        status = uf_mask_take(&job->work, raw[k].counts.width, raw[k].counts.height, &raw[k].saturated, error);
+    return status;
 }
 
 /* Reads the pages of one channel, one but for the near channel of a series, and corrects them; what corrects them is
@@ -104,30 +124,20 @@ static uf_status read_channel(measure_job *job, uf_channel_name which, uf_channe
                               uf_error *error)
 {
     const char *path = which == UF_NEAR ? job->request->near_path : job->request->wide_path;
-    uf_raw_channel raw[UF_REALS_LIMIT] = {{.name = channel_names[which]}};
+    uf_raw_channel raw[UF_REALS_LIMIT] = {0}, page = {.name = channel_names[which]};
     uf_image_info info;
-    uf_status status = read_image(job, raw[0].name, path, &raw[0].counts, &info, error);
-    if (status == UF_OK)
-        status = check_pages(job, path, info.pages, count, error);
-    for (int k = 1; status == UF_OK && k < count; k++)
-        status = uf_image_read(&job->work, path, k, &limits, &raw[k].counts, NULL, error);
-    for (int k = 1; status == UF_OK && k < count; k++)
-        if (raw[k].counts.width != raw[0].counts.width || raw[k].counts.height != raw[0].counts.height)
-            status = uf_fail(error, UF_INPUT, "%s, page %d: is not as large as page 1; the pages of a series must be",
-                             path, k + 1);
-    for (int k = 0; status == UF_OK && k < count; k++)
-        status = uf_mask_take(&job->work, raw[0].counts.width, raw[0].counts.height, &raw[k].saturated, error);
+    uf_status status = read_pages(job, page.name, path, count, raw, &info, error);
     if (status != UF_OK)
         return status;
     *pixel_um = info.pixel_size_x_um;
+    page.camera = &job->settings->camera[which];
+    page.full_scale_adu = full_scale(page.camera, &info);
+    page.counts = raw[0].counts;
     uf_arena_mark mark = uf_arena_now(&job->work.arena);
-    status = read_companions(job, which, &raw[0], error);
+    status = read_companions(job, which, &page, error);
     for (int k = 0; status == UF_OK && k < count; k++) {
-        uf_raw_channel page = raw[0];
         page.counts = raw[k].counts;
         page.saturated = raw[k].saturated;
-        page.camera = &job->settings->camera[which];
-        page.full_scale_adu = full_scale(page.camera, &info);
         status = uf_field_correct(&job->work, &page, &pages[k], error);
     }
     uf_arena_back(&job->work.arena, mark);
@@ -193,16 +203,18 @@ static void warn_optics(measure_job *job)
             "touches; a steeper angle avoids it\n",
             plan->bench.na_effective, plan->bench.cell_n + 2 * plan->bench.cell_n_sd);
     if (plan->series.count && plan->series.farthest_nm < UF_SERIES_FARTHEST_NM)
-        uf_text_printf(&job->warnings,
-                       "with this stray light the series cannot tell gaps beyond %.0f nm from closer ones; places darker "
-                       "than that are left unresolved\n",
-                       plan->series.farthest_nm);
+        uf_text_printf(
+            &job->warnings,
+            "with this stray light the series cannot tell gaps beyond %.0f nm from closer ones; places darker "
+            "than that are left unresolved\n",
+            plan->series.farthest_nm);
     if (fabs(plan->layered_effect_nm) > 3)
-        uf_text_printf(&job->warnings,
-                       "a layered model reads the %.4g nm cutoff %+.1f nm differently from the exponential in force; %s\n",
-                       job->settings->contact.cutoff_nm, -plan->layered_effect_nm,
-                       plan->series.count ? "a series shows the full difference: use model = layered"
-                                          : "the two agree best around n sin(angle) 1.44");
+        uf_text_printf(
+            &job->warnings,
+            "a layered model reads the %.4g nm cutoff %+.1f nm differently from the exponential in force; %s\n",
+            job->settings->contact.cutoff_nm, -plan->layered_effect_nm,
+            plan->series.count ? "a series shows the full difference: use model = layered"
+                               : "the two agree best around n sin(angle) 1.44");
 }
 
 static void warn_settings(measure_job *job)
@@ -233,10 +245,11 @@ static void warn_field(measure_job *job)
                     "this field's own shift differs from the bench's by more than a pixel; check [shift] "
                     "or set estimate = yes\n");
     if (field->flags >> UF_FLAG_SERIES_MISFIT & 1u)
-        uf_text_printf(&job->warnings,
-                       "the pages of the series do not obey the field in force (median reduced chi-square %.1f): check "
-                       "angles_deg, power and the indices, and whether the cells moved or bleached between pages\n",
-                       field->series_chi_square);
+        uf_text_printf(
+            &job->warnings,
+            "the pages of the series do not obey the field in force (median reduced chi-square %.1f): check "
+            "angles_deg, power and the indices, and whether the cells moved or bleached between pages\n",
+            field->series_chi_square);
     if (field->flags >> UF_FLAG_EMPTY & 1u)
         uf_text_add(&job->warnings, "no cells were found\n");
 }

@@ -92,8 +92,8 @@ uf_status uf_plan_make(const uf_settings *s, double image_pixel_um, uf_plan *pla
     *plan = (uf_plan){0};
     uf_status status = uf_settings_check(s, error);
     if (status == UF_OK)
-        status = s->series.angles_deg.count ? uf_series_plan_bench(s, plan, error)
-                                            : uf_bench_make(s, &plan->bench, error);
+        status =
+            s->series.angles_deg.count ? uf_series_plan_bench(s, plan, error) : uf_bench_make(s, &plan->bench, error);
     if (status == UF_OK)
         status = find_pixel_size(s, image_pixel_um, &plan->pixel_size_um, error);
     if (status != UF_OK)

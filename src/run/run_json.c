@@ -139,17 +139,19 @@ static void methods_of_gap(uf_text *out, const uf_settings *s, const uf_plan *pl
         most = fmax(most, s->series.angles_deg.values[k]);
     }
     if (plan->series.count)
-        uf_text_printf(out,
-                       "The membrane-substrate gap was fitted, pixel by pixel and weighted by the noise, to near images "
-                       "at %d angles of %.4g to %.4g deg by %s with a 1/e depth of %.1f nm at the smallest angle (medium "
-                       "index %.4f%s",
-                       plan->series.count, least, most, field,
-                       plan->depth_nm, plan->bench.medium_n, plan->model == UF_FIELD_LAYERED ? ", cell index " : "");
+        uf_text_printf(
+            out,
+            "The membrane-substrate gap was fitted, pixel by pixel and weighted by the noise, to near images "
+            "at %d angles of %.4g to %.4g deg by %s with a 1/e depth of %.1f nm at the smallest angle (medium "
+            "index %.4f%s",
+            plan->series.count, least, most, field, plan->depth_nm, plan->bench.medium_n,
+            plan->model == UF_FIELD_LAYERED ? ", cell index " : "");
     else
-        uf_text_printf(out,
-                       "The near/wide ratio was converted to the membrane-substrate gap by %s with a 1/e depth of %.1f "
-                       "nm (s.d. %.1f nm; medium index %.4f",
-                       field, plan->depth_nm, plan->depth_sd_nm, plan->bench.medium_n);
+        uf_text_printf(
+            out,
+            "The near/wide ratio was converted to the membrane-substrate gap by %s with a 1/e depth of %.1f "
+            "nm (s.d. %.1f nm; medium index %.4f",
+            field, plan->depth_nm, plan->depth_sd_nm, plan->bench.medium_n);
     if (plan->series.count && plan->model == UF_FIELD_LAYERED)
         uf_text_printf(out, "%.4f", plan->bench.cell_n);
     uf_text_add(out, ")");

@@ -24,10 +24,11 @@ static uf_status check_angle(const uf_settings *s, int k, double na, uf_error *e
     double n = angle_index(s), cell_n = s->interface.cell_n;
     if (na > cell_n)
         return UF_OK;
-    return uf_fail(error, UF_INPUT,
-                   "[series] angles_deg: %.6g deg, the angle of page %d, is not totally reflected where a cell touches "
-                   "(n sin(angle) %.4f, cell_n %.4f); angles must be larger than %.2f deg",
-                   s->series.angles_deg.values[k], k + 1, na, cell_n, uf_angle_from_na(cell_n, n));
+    return uf_fail(
+        error, UF_INPUT,
+        "[series] angles_deg: %.6g deg, the angle of page %d, is not totally reflected where a cell touches "
+        "(n sin(angle) %.4f, cell_n %.4f); angles must be larger than %.2f deg",
+        s->series.angles_deg.values[k], k + 1, na, cell_n, uf_angle_from_na(cell_n, n));
 }
 
 /* The bench of one page: the settings' own with that page's angle. */
