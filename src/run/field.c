@@ -111,11 +111,9 @@ static uf_status find_gaps(uf_work *work, const uf_plan *plan, double detection_
 {
     *own = *plan;
     r->field.series_chi_square = (double)NAN;
-    r->reference_ratio = plan->reference_ratio;
     if (!plan->series.count)
         return uf_gap_find(work, plan, detection_sigma, &r->near, &r->wide, &r->cells, &r->gaps, error);
     uf_status status = uf_gap_find_series(work, own, detection_sigma, r->pages, &r->wide, &r->cells, &r->gaps, error);
-    r->reference_ratio = own->reference_ratio;
     return status == UF_OK ? judge_series(work, r, error) : status;
 }
 

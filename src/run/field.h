@@ -11,7 +11,6 @@ typedef struct uf_field_result {
     uf_channel near, wide;  /* wide after the shift */
     uf_channel *pages;      /* of a series, in the order of its angles, in the arena; near is the widest of them. NULL
                               without a series */
-    double reference_ratio; /* near / wide that stands for gap 0: the plan's, or what a series found */
     uf_cell_map cells;
     uf_gap_map gaps;
     uf_mask contact;

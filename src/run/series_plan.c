@@ -14,31 +14,32 @@ int uf_series_widest(const uf_settings *s)
     return widest;
 }
 
-static double angle_index(const uf_settings *s)
+/* The bench says the substrate's index, however the settings name it. */
+static double angle_index(const uf_settings *s, const uf_bench *bench)
 {
-    return isnan(s->interface.angle_n) ? s->interface.substrate_n : s->interface.angle_n;
+    return isnan(s->interface.angle_n) ? bench->substrate_n : s->interface.angle_n;
 }
 
-static uf_status check_angle(const uf_settings *s, int k, double na, uf_error *error)
+static uf_status refuse_angle(const uf_settings *s, int k, const uf_bench *bench, uf_error *error)
 {
-    double n = angle_index(s), cell_n = s->interface.cell_n;
-    if (na > cell_n)
-        return UF_OK;
     return uf_fail(
         error, UF_INPUT,
         "[series] angles_deg: %.6g deg, the angle of page %d, is not totally reflected where a cell touches "
         "(n sin(angle) %.4f, cell_n %.4f); angles must be larger than %.2f deg",
-        s->series.angles_deg.values[k], k + 1, na, cell_n, uf_angle_from_na(cell_n, n));
+        s->series.angles_deg.values[k], k + 1, bench->na_effective, bench->cell_n,
+        uf_angle_from_na(bench->cell_n, angle_index(s, bench)));
 }
 
 /* The bench of one page: the settings' own with that page's angle. */
 static uf_status bench_at(const uf_settings *s, int k, uf_bench *bench, uf_error *error)
 {
     uf_settings page = *s;
+    *bench = (uf_bench){0};
     page.interface.angle_deg = s->series.angles_deg.values[k];
     page.interface.na_effective = page.interface.depth_nm = (double)NAN;
-    uf_status status = check_angle(s, k, uf_na_from_angle(page.interface.angle_deg, angle_index(s)), error);
-    return status == UF_OK ? uf_bench_make(&page, bench, error) : status;
+    uf_status status = uf_bench_make(&page, bench, error);
+    int is_made = bench->substrate_n > 0;
+    return is_made && bench->na_effective <= bench->cell_n ? refuse_angle(s, k, bench, error) : status;
 }
 
 uf_status uf_series_plan_bench(const uf_settings *s, uf_plan *plan, uf_error *error)
@@ -48,6 +49,11 @@ uf_status uf_series_plan_bench(const uf_settings *s, uf_plan *plan, uf_error *er
     series->count = s->series.angles_deg.count;
     series->widest = uf_series_widest(s);
     uf_status status = UF_OK;
+    if (s->decay.model == UF_DECAY_TABLE)
+        status =
+            uf_fail(error, UF_INPUT,
+                    "a series needs the field itself, a table has its fall only; set [decay] model to layered or "
+                    "exponential");
     for (int k = 0; status == UF_OK && k < series->count; k++) {
         uf_bench page;
         status = bench_at(s, k, &page, error);
@@ -67,7 +73,7 @@ typedef struct movement {
 static void move(const uf_settings *s, const uf_plan *plan, movement by, double sign, uf_bench *bench,
                  uf_series *series)
 {
-    double n = angle_index(s);
+    double n = angle_index(s, &plan->bench);
     *bench = plan->bench;
     *series = plan->series;
     bench->substrate_n += sign * by.substrate_n;
@@ -125,9 +131,9 @@ void uf_series_plan_limits(const uf_settings *s, uf_plan *plan)
 {
     const movement inputs[] = {{.angle_deg = s->interface.angle_sd_deg},
                                {.na_effective = s->interface.na_effective_sd},
-                               {.substrate_n = s->interface.substrate_n_sd},
-                               {.medium_n = s->interface.medium_n_sd},
-                               {.cell_n = plan->model == UF_FIELD_LAYERED ? s->interface.cell_n_sd : 0}};
+                               {.substrate_n = plan->bench.substrate_n_sd},
+                               {.medium_n = plan->bench.medium_n_sd},
+                               {.cell_n = plan->model == UF_FIELD_LAYERED ? plan->bench.cell_n_sd : 0}};
     uf_field_kind kind = {&plan->bench, plan->model, plan->stray};
     plan->series.farthest_nm = uf_series_farthest(&plan->series, &kind);
     for (int g = 0; g < UF_SERIES_GAPS; g++) {
@@ -136,7 +142,7 @@ void uf_series_plan_limits(const uf_settings *s, uf_plan *plan)
             double sd = moved_sd(s, plan, inputs[k], g * UF_SERIES_GAP_STEP_NM);
             squares += sd * sd;
         }
-        plan->series.systematic_nm[g] = uf_round_digits(sqrt(squares), 9);
+        plan->series.systematic_nm[g] = round(sqrt(squares) * 1e6) * 1e-6;
     }
     plan->layered_effect_nm = 0;
     if (plan->model == UF_FIELD_EXPONENTIAL)
