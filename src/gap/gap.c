@@ -5,6 +5,7 @@
 
 #include "base/text.h"
 #include "gap/edge_fall.h"
+#include "gap/signals.h"
 #include "image/restore.h"
 #include "image/smooth.h"
 #include "optics/detection.h"
@@ -127,6 +128,7 @@ static void gap_rows(void *context, int hand, int y0, int y1)
 
 static uf_status take_map(uf_work *work, int width, int height, uf_gap_map *map, uf_error *error)
 {
+    map->chi_square = (uf_plane){0};
     uf_plane *planes[] = {&map->gap_nm, &map->dye_adu, &map->smooth_gap_nm};
     uf_status status = uf_mask_take(work, width, height, &map->state, error);
     for (size_t k = 0; status == UF_OK && k < sizeof planes / sizeof planes[0]; k++)
@@ -134,10 +136,24 @@ static uf_status take_map(uf_work *work, int width, int height, uf_gap_map *map,
     return status;
 }
 
+uf_status uf_gap_signals(uf_work *work, const uf_plan *plan, uf_channel *near, const uf_channel *wide,
+                         const uf_cell_map *cells, uf_gap_map *map, uf_error *error)
+{
+    double psf_px = plan->psf_sigma_um / plan->pixel_size_um;
+    gap_job job = {.near = near, .wide = wide, .cells = cells, .map = map};
+    uf_status status = take_map(work, near->image.width, near->image.height, map, error);
+    map->near_adu = near->image;
+    if (status == UF_OK)
+        status = uf_edge_fall_measure(work, wide, cells, plan->pixel_size_um, psf_px, &job.fall, error);
+    if (status == UF_OK)
+        uf_rows_run(work, near->image.height, signal_rows, &job);
+    return status;
+}
+
 uf_status uf_gap_find(uf_work *work, const uf_plan *plan, double detection_sigma, uf_channel *near,
                       const uf_channel *wide, const uf_cell_map *cells, uf_gap_map *map, uf_error *error)
 {
-    int width = near->image.width, height = near->image.height;
+    int height = near->image.height;
     double psf_px = plan->psf_sigma_um / plan->pixel_size_um;
     gap_job job = {.kernels = uf_kernels_in_use(),
                    .plan = plan,
@@ -147,13 +163,9 @@ uf_status uf_gap_find(uf_work *work, const uf_plan *plan, double detection_sigma
                    .map = map,
                    .detection_sigma = detection_sigma};
     job.ln_reference = (float)uf_round_digits(log(plan->reference_ratio), 12);
-    uf_status status = take_map(work, width, height, map, error);
-    map->near_adu = near->image;
-    if (status == UF_OK)
-        status = uf_edge_fall_measure(work, wide, cells, plan->pixel_size_um, psf_px, &job.fall, error);
+    uf_status status = uf_gap_signals(work, plan, near, wide, cells, map, error);
     if (status != UF_OK)
         return status;
-    uf_rows_run(work, height, signal_rows, &job);
     uf_arena_mark mark = uf_arena_now(&work->arena);
     status = filter_signals(work, &job, psf_px, error);
     if (status == UF_OK)

@@ -59,6 +59,7 @@ typedef struct uf_gap_map {
     uf_plane near_adu;      /* near signal, background subtracted: the near channel's own image, in its place */
     uf_plane dye_adu;       /* wide signal that stands for dye density: background subtracted, the fall of the wide
                            blur towards outlines taken out */
+    uf_plane chi_square;    /* reduced chi-square of a series' fit; data NULL without a series */
     uf_plane smooth_gap_nm; /* at the scale of the point spread function, for spots; UF_GAP_NOWHERE outside */
 } uf_gap_map;
 

@@ -251,7 +251,9 @@ static void fill_gaps(cell_job *job, const tally *t, uf_cell *row)
     row->band_far_um2 = (double)t->far * job->um2;
     row->unresolved_um2 = (double)(t->pixels - t->resolved) * job->um2;
     row->cleft_volume_um3 = t->volume_nm * 1e-3 * job->um2;
-    row->above_reference_fraction = t->resolved ? (double)t->above_reference / (double)t->resolved : (double)NAN;
+    row->above_reference_fraction = (double)NAN;
+    if (t->resolved && !job->in->plan->series.count)
+        row->above_reference_fraction = (double)t->above_reference / (double)t->resolved;
     row->gap_kind = UF_GAP_ABSOLUTE;
 }
 

@@ -114,7 +114,8 @@ void uf_measure_field(const uf_measure_input *input, const uf_cell *rows, int sp
     field->wide_noise_adu = input->wide->noise_adu;
     field->near_saturated_fraction = input->near->saturated_fraction;
     field->wide_saturated_fraction = input->wide->saturated_fraction;
-    field->reference_ratio = input->plan->reference_ratio;
+    /* What a series finds for itself is no reference that anything was measured against. */
+    field->reference_ratio = input->plan->series.count ? (double)NAN : input->plan->reference_ratio;
     field->depth_nm = input->plan->depth_nm;
     field->flags |= field_flags(input, rows, labels.count, field);
 }

@@ -32,12 +32,18 @@ static double background_part(const uf_measure_input *in, const uf_cell *row, do
     double dye = row->wide_mean_adu, near = near_at(in->plan, gap_nm, dye);
     if (!(dye > 0) || !(near > 0))
         return 0;
+    if (in->plan->series.count) {
+        uf_field_kind kind = {&in->plan->bench, in->plan->law.model, in->plan->law.stray};
+        return uf_series_background_nm(&in->plan->series, &kind, in->near, near, gap_nm);
+    }
     return uf_gap_per_ln(in->plan, gap_nm) *
            hypot(in->near->background_sd_adu / near, in->wide->background_sd_adu / dye);
 }
 
 static double systematic_part(const uf_plan *plan, double gap_nm)
 {
+    if (plan->series.count)
+        return uf_series_systematic(&plan->series, gap_nm);
     double ratio = uf_gap_per_ln(plan, gap_nm) * hypot(plan->reference_sd, plan->normalisation_sd);
     double depth = fabs(gap_nm - plan->reference_gap_nm) * plan->depth_sd_nm / plan->depth_nm;
     return hypot(ratio, depth);
@@ -59,14 +65,16 @@ static void fill_gap_sds(const uf_measure_input *in, uf_cell *row)
 }
 
 /* Pixels within a noise sigma of the cutoff fall to either side by chance: their number's standard deviation.
- * The variance of a sum of coin tosses over a band of even density n a nm and normal noise s is n s / sqrt pi. */
+ * The variance of a sum of coin tosses over a band of even density n a nm and normal noise s is n s / sqrt pi.
+ * The gaps of a series are smoothed, by a factor f of the variance: s sqrt f, tossed in groups of 1 / f. */
 static double chance_pixels(const uf_measure_input *in, const uf_cell *row, double cutoff)
 {
     double near = near_at(in->plan, cutoff, row->wide_mean_adu);
     double noise =
         uf_gap_noise_nm(in->plan, in->plan->restore_variance, in->near, in->wide, near, row->wide_mean_adu);
     double density = (uf_area_under(row, cutoff + 2) - uf_area_under(row, cutoff - 2)) / 4;
-    return isnan(noise) ? 0 : sqrt(density * noise / 1.7724538509055159);
+    double smoothing = in->plan->series.count ? uf_psf_smoothing(in->plan) : 1;
+    return isnan(noise) ? 0 : sqrt(density * noise / sqrt(smoothing) / 1.7724538509055159);
 }
 
 void uf_fill_intervals(const uf_measure_input *in, uf_cell *row)

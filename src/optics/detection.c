@@ -24,7 +24,8 @@ double uf_gap_limit_nm(const uf_plan *plan, double detection_sigma, const uf_cha
     double least = detection_sigma * uf_smoothed_sd(plan, near, 0);
     double wide_least = detection_sigma * uf_smoothed_sd(plan, wide, 0);
     double ratio = least / (dye_adu > wide_least ? dye_adu : wide_least);
-    return uf_decay_gap(&plan->decay, log(ratio / plan->reference_ratio));
+    double limit = uf_decay_gap(&plan->decay, log(ratio / plan->reference_ratio));
+    return plan->series.count ? fmin(limit, plan->series.farthest_nm) : limit;
 }
 
 double uf_gap_per_ln(const uf_plan *plan, double gap_nm)
@@ -38,6 +39,11 @@ double uf_gap_noise_nm(const uf_plan *plan, double filter, const uf_channel *nea
 {
     if (!(near_adu > 0) || !(dye_adu > 0))
         return (double)NAN;
+    if (plan->series.count) {
+        uf_field_kind kind = {&plan->bench, plan->law.model, plan->law.stray};
+        double at = uf_decay_gap(&plan->decay, log(near_adu / dye_adu / plan->reference_ratio));
+        return uf_series_noise_nm(&plan->series, &kind, near, near_adu, at);
+    }
     double near_variance = uf_noise_variance(&near->noise, near->background_adu + near_adu) / (near_adu * near_adu);
     double wide_variance = uf_noise_variance(&wide->noise, wide->background_adu + dye_adu) / (dye_adu * dye_adu);
     double gap = uf_decay_gap(&plan->decay, log(near_adu / dye_adu / plan->reference_ratio));

@@ -14,11 +14,12 @@ double uf_psf_smoothing(const uf_plan *plan);
 double uf_smoothed_sd(const uf_plan *plan, const uf_channel *channel, double signal_adu);
 
 /* The largest gap that can be told from none where the dye signal is `dye_adu`: there the near signal is
- * detection_sigma times its noise. */
+ * detection_sigma times its noise. Of a series at most where its search ends. */
 double uf_gap_limit_nm(const uf_plan *plan, double detection_sigma, const uf_channel *near, const uf_channel *wide,
                        double dye_adu);
 
-/* 1 sigma of a gap from the noise of both channels: |d gap / d ln| times the relative noise of near and wide in squares.
+/* 1 sigma of a gap from the noise of both channels: |d gap / d ln| times the relative noise of near and wide in squares;
+ * of a series, from its pages, which are as the filter leaves them.
  * `filter` is what the map's filter leaves of a pixel's variance: plan->restore_variance for the gap map,
  * uf_psf_smoothing for the smooth one. NaN where either signal is not above 0. */
 double uf_gap_noise_nm(const uf_plan *plan, double filter, const uf_channel *near, const uf_channel *wide,

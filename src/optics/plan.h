@@ -5,11 +5,15 @@
 #define UF_OPTICS_PLAN_H
 
 #include "optics/decay.h"
+#include "optics/series_field.h"
 
 typedef struct uf_plan {
     uf_bench bench;
     uf_decay decay;
     uf_decay_law law;
+    uf_series
+        series; /* count 0: gaps come from the ratio. Else bench, decay, depth are those of its smallest angle, and
+                         the reference ratio is not known before the field is (NaN) */
     double pixel_size_um;
     double psf_sigma_um;     /* of the near image: 0.21 emission wavelength / NA */
     double restore_gain;     /* for uf_restore on a plane smoothed by psf_sigma_um */

@@ -50,20 +50,20 @@ static const uf_column cell_columns[] = {
     CELL(gap_p95_nm, REAL, "95th percentile of the gap."),
     CELL(gap_core_median_nm, REAL, "Median gap without the outer 2 widths (FWHM) of the point spread function."),
     CELL(gap_random_nm, REAL, "1 sigma of the median from camera and photon noise and from the two backgrounds."),
-    CELL(gap_systematic_nm, REAL, "1 sigma of the median from depth, reference and normalisation, which shift all cells of a session together (normalisation: cell by cell)."),
+    CELL(gap_systematic_nm, REAL, "1 sigma of the median from depth, reference and normalisation, which shift all cells of a session together (normalisation: cell by cell); of a series, from angles and indices."),
     CELL(gap_limit_nm, REAL, "Largest gap that could be told from none in this cell (detection_sigma times the noise)."),
     CELL(cleft_volume_um3, REAL, "Volume between cell and substrate: gap times area over resolved pixels, a lower bound when flagged unresolved."),
-    CELL(near_mean_adu, REAL, "Mean near signal over the cell, background subtracted, flat-fielded."),
+    CELL(near_mean_adu, REAL, "Mean near signal over the cell, background subtracted, flat-fielded. The near image of a series is the page of its smallest angle."),
     CELL(wide_mean_adu, REAL, "Mean wide signal over the cell, background subtracted, flat-fielded."),
     CELL(ratio_mean, REAL, "near_mean_adu / wide_mean_adu."),
-    CELL(above_reference_fraction, REAL, "Share of the resolved area that is brighter than the reference ratio allows at gap 0 by more than its noise."),
+    CELL(above_reference_fraction, REAL, "Share of the resolved area that is brighter than the reference ratio allows at gap 0 by more than its noise. Empty for a series."),
     CELL(spot_count, COUNT, "Number of focal spots in the cell."),
     CELL(spots_per_100um2, REAL, "Focal spots per 100 square micrometres of spread area."),
     CELL(spot_area_total_um2, REAL, "Summed area of the focal spots."),
     CELL(spot_area_median_um2, REAL, "Median area of the focal spots."),
     CELL(spot_length_median_um, REAL, "Median length of the focal spots."),
     CELL(spot_alignment, REAL, "How parallel the spots lie: bias-corrected length of the mean doubled-angle vector, 0 random, 1 parallel. Empty below 5 spots."),
-    CELL(gap_kind, GAP_KIND, "absolute (measured reference), relative (assumed reference) or none."),
+    CELL(gap_kind, GAP_KIND, "absolute (measured reference, or a series of angles), relative (assumed reference) or none."),
     CELL(flags, FLAGS, "Words that call for a look; see docs/measurement.md."),
 };
 
@@ -114,10 +114,11 @@ static const uf_column field_columns[] = {
     FIELD(wide_focus, REAL, "The same of the wide image; about 0.45 in focus."),
     FIELD(near_unevenness, REAL, "Slope of the near background: its change over the field, relative to its level; 0 when none can be told. Taken out."),
     FIELD(wide_unevenness, REAL, "The same of the wide background."),
-    FIELD(reference_ratio, REAL, "near / wide ratio that stands for gap 0 in this field."),
-    FIELD(depth_nm, REAL, "1/e depth of the evanescent intensity in the medium."),
+    FIELD(reference_ratio, REAL, "near / wide ratio that stands for gap 0 in this field. Empty for a series, which needs none."),
+    FIELD(depth_nm, REAL, "1/e depth of the evanescent intensity in the medium; of a series, at its smallest angle."),
     FIELD(pedestal_fraction, REAL, "Blurred light of the cells under the near image, as a share of the wide image; 0 when none can be told. Taken out."),
     FIELD(haze_fraction, REAL, "Blurred light of the cells in the wide image, as a share of their own; 0 when none can be told. Taken out."),
+    FIELD(series_chi_square, REAL, "Median over resolved pixels of the reduced chi-square of a series' fit: somewhat below 1 where the pages obey the field in force. Empty without a series, and for one of two angles."),
     FIELD(flags, FLAGS, "Words that call for a look."),
 };
 
@@ -150,6 +151,7 @@ static const char *const flag_words[UF_FLAG_COUNT] = {
     [UF_FLAG_CHANNELS_SWAPPED] = "channels_swapped",
     [UF_FLAG_MOVED] = "moved",
     [UF_FLAG_CLIPPED] = "clipped",
+    [UF_FLAG_SERIES_MISFIT] = "series_misfit",
 };
 
 static const char *const gap_kind_words[] = {"none", "relative", "absolute"};

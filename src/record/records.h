@@ -29,6 +29,7 @@ typedef enum uf_flag {
     UF_FLAG_CHANNELS_SWAPPED, /* field: near looks like a wide image and wide like a near one */
     UF_FLAG_MOVED,            /* cell: light of the near image lies beside its outline */
     UF_FLAG_CLIPPED,          /* cell, field: pixels at the lowest count, cut off by the camera's offset */
+    UF_FLAG_SERIES_MISFIT,    /* field: the pages of a series do not obey the field in force */
     UF_FLAG_COUNT
 } uf_flag;
 
@@ -92,7 +93,7 @@ typedef struct uf_field {
     double near_background_adu, wide_background_adu, near_noise_adu, wide_noise_adu;
     double near_saturated_fraction, wide_saturated_fraction;
     double near_focus, wide_focus, near_unevenness, wide_unevenness;
-    double reference_ratio, depth_nm, pedestal_fraction, haze_fraction;
+    double reference_ratio, depth_nm, pedestal_fraction, haze_fraction, series_chi_square;
     uf_flags flags;
 } uf_field;
 

@@ -11,7 +11,9 @@
 #include "correct/halo.h"
 #include "correct/quality.h"
 #include "correct/shift.h"
+#include "fit/robust.h"
 #include "gap/gap.h"
+#include "gap/series.h"
 #include "image/smooth.h"
 #include "segment/segment.h"
 
@@ -67,6 +69,8 @@ static uf_status find_cells(uf_work *work, const uf_plan *plan, const uf_setting
     uf_status status = uf_segment(work, &r->wide, settings, plan->pixel_size_um, &r->cells, error);
     if (status == UF_OK)
         status = uf_background_refine(work, &r->cells, clear_px, &r->near, error);
+    for (int k = 0; status == UF_OK && k < plan->series.count; k++)
+        status = uf_background_refine(work, &r->cells, clear_px, &r->pages[k], error);
     if (status == UF_OK)
         status = uf_background_refine(work, &r->cells, clear_px, &r->wide, error);
     return status;
@@ -75,9 +79,17 @@ static uf_status find_cells(uf_work *work, const uf_plan *plan, const uf_setting
 /* Haze is the wide image's own light fallen beside the cells; the pedestal is the same light under the near image. */
 static uf_status remove_halos(uf_work *work, const uf_plan *plan, uf_field_result *r, uf_error *error)
 {
-    uf_halo haze, pedestal;
+    uf_halo haze, pedestal, of_page;
     uf_status status = uf_halo_remove(work, &r->wide, &r->cells, plan->pixel_size_um, &r->wide, &haze, error);
-    if (status == UF_OK)
+    for (int k = 0; status == UF_OK && k < plan->series.count; k++) {
+        status = uf_halo_remove(work, &r->wide, &r->cells, plan->pixel_size_um, &r->pages[k], &of_page, error);
+        if (k == plan->series.widest) { /* the near channel is this page: the same pixels */
+            pedestal = of_page;
+            r->near.background_adu = r->pages[k].background_adu;
+            r->near.background_sd_adu = r->pages[k].background_sd_adu;
+        }
+    }
+    if (status == UF_OK && !plan->series.count)
         status = uf_halo_remove(work, &r->wide, &r->cells, plan->pixel_size_um, &r->near, &pedestal, error);
     if (status != UF_OK)
         return status;
@@ -96,6 +108,49 @@ static uf_status judge_focus(uf_work *work, const uf_plan *plan, uf_field_result
                            : status;
 }
 
+/* ---- gaps ------------------------------------------------------------------------------------ */
+
+/* Beyond this the pages do not obey the field in force: an angle, index or power is wrong. */
+static const double implausible_chi_square = 3.0;
+
+/* The median reduced chi-square over a lattice of resolved pixels. */
+static uf_status judge_series(uf_work *work, uf_field_result *r, uf_error *error)
+{
+    enum { SAMPLE = 1 << 16 };
+    const uf_gap_map *gaps = &r->gaps;
+    int width = gaps->state.width, height = gaps->state.height;
+    int step = (int)ceil(sqrt((double)width * height / SAMPLE));
+    size_t count = 0;
+    double *values;
+    uf_arena_mark mark = uf_arena_now(&work->arena);
+    uf_status status = uf_take(work, SAMPLE, sizeof *values, "the series", &values, error);
+    if (status != UF_OK)
+        return status;
+    for (int y = step / 2; y < height; y += step)
+        for (int x = step / 2; x < width && count < SAMPLE; x += step) {
+            double value = (double)uf_plane_row(gaps->chi_square, y)[x];
+            if (uf_mask_row(gaps->state, y)[x] == UF_GAP_RESOLVED && !isnan(value))
+                values[count++] = value;
+        }
+    r->field.series_chi_square = uf_median(values, count);
+    if (r->field.series_chi_square > implausible_chi_square)
+        r->field.flags |= 1u << UF_FLAG_SERIES_MISFIT;
+    uf_arena_back(&work->arena, mark);
+    return UF_OK;
+}
+
+/* Gaps by ratio or by series. A series finds its own reference, which `own` gets beside all else of the plan. */
+static uf_status find_gaps(uf_work *work, const uf_plan *plan, double detection_sigma, uf_field_result *r,
+                           uf_plan *own, uf_error *error)
+{
+    *own = *plan;
+    r->field.series_chi_square = (double)NAN;
+    if (!plan->series.count)
+        return uf_gap_find(work, plan, detection_sigma, &r->near, &r->wide, &r->cells, &r->gaps, error);
+    uf_status status = uf_gap_find_series(work, own, detection_sigma, r->pages, &r->wide, &r->cells, &r->gaps, error);
+    return status == UF_OK ? judge_series(work, r, error) : status;
+}
+
 static uf_status measure(uf_work *work, const uf_plan *plan, const uf_settings *settings, uf_field_result *r,
                          uf_error *error)
 {
@@ -112,6 +167,7 @@ static uf_status measure(uf_work *work, const uf_plan *plan, const uf_settings *
 uf_status uf_field_run(uf_work *work, const uf_plan *plan, const uf_settings *settings, uf_field_result *result,
                        uf_error *error)
 {
+    uf_plan own;
     uf_status status = align(work, settings, result, error);
     if (status == UF_OK)
         status = find_cells(work, plan, settings, result, error);
@@ -120,10 +176,9 @@ uf_status uf_field_run(uf_work *work, const uf_plan *plan, const uf_settings *se
     if (status == UF_OK)
         status = judge_focus(work, plan, result, error);
     if (status == UF_OK)
-        status = uf_gap_find(work, plan, settings->contact.detection_sigma, &result->near, &result->wide,
-                             &result->cells, &result->gaps, error);
+        status = find_gaps(work, plan, settings->contact.detection_sigma, result, &own, error);
     if (status == UF_OK)
-        status = measure(work, plan, settings, result, error);
+        status = measure(work, &own, settings, result, error);
     /* An empty field has no shift to be sure of. */
     if (status == UF_OK && !result->field.cells)
         result->field.flags &= ~(1u << UF_FLAG_SHIFT_UNSURE | 1u << UF_FLAG_SHIFT_DIFFERS);

@@ -9,6 +9,8 @@
 /* What one field gives. Planes and rows live in the worker's arena; spots are freed by uf_field_result_free. */
 typedef struct uf_field_result {
     uf_channel near, wide; /* wide after the shift */
+    uf_channel *pages;     /* of a series, in the order of its angles, in the arena; near is the widest of them. NULL
+                              without a series */
     uf_cell_map cells;
     uf_gap_map gaps;
     uf_mask contact;
@@ -21,7 +23,7 @@ typedef struct uf_field_result {
 UF_MUST_USE uf_status uf_field_correct(uf_work *work, const uf_raw_channel *raw, uf_channel *channel,
                                        uf_error *error);
 
-/* Measures the field whose corrected channels stand in result->near and ->wide (of one size; overwritten).
+/* Measures the field whose corrected channels stand in result->near, ->pages and ->wide (of one size; overwritten).
  * UF_MEMORY is the only failure. */
 UF_MUST_USE uf_status uf_field_run(uf_work *work, const uf_plan *plan, const uf_settings *settings,
                                    uf_field_result *result, uf_error *error);

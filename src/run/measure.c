@@ -18,6 +18,7 @@
 #include "run/field.h"
 #include "run/plan.h"
 #include "run/run_json.h"
+#include "run/series_plan.h"
 
 static const uf_image_limits limits = {.max_pixels = 1e9};
 
@@ -86,27 +87,62 @@ static uf_status read_companions(measure_job *job, uf_channel_name which, uf_raw
     return status;
 }
 
-/* Reads one channel and corrects it; what corrects it is given back to the arena. */
-static uf_status read_channel(measure_job *job, uf_channel_name which, double *pixel_um, uf_error *error)
+static uf_status check_pages(const measure_job *job, const char *path, int found, int expected, uf_error *error)
+{
+    if (found == expected)
+        return UF_OK;
+    if (expected > 1)
+        return uf_fail(error, UF_INPUT,
+                       "%s: has %d page%s, but [series] angles_deg has %d angles; a series needs one page an angle, "
+                       "in their order",
+                       path, found, found == 1 ? "" : "s", expected);
+    return uf_fail(error, UF_INPUT, "%s: has %d pages, expected one; save the page to measure as a file of its own%s",
+                   path, found, path == job->request->near_path ? ", or give a series its [series] angles_deg" : "");
+}
+
+/* Raw counts of the pages of one file, all of one size, with room for their saturated pixels. */
+static uf_status read_pages(measure_job *job, const char *role, const char *path, int count, uf_raw_channel *raw,
+                            uf_image_info *info, uf_error *error)
+{
+    uf_status status = read_image(job, role, path, &raw[0].counts, info, error);
+    if (status == UF_OK)
+        status = check_pages(job, path, info->pages, count, error);
+    for (int k = 1; status == UF_OK && k < count; k++) {
+        status = uf_image_read(&job->work, path, k, &limits, &raw[k].counts, NULL, error);
+        if (status == UF_OK &&
+            (raw[k].counts.width != raw[0].counts.width || raw[k].counts.height != raw[0].counts.height))
+            status = uf_fail(
+                error, UF_INPUT,
+                "%s, page %d: is %d x %d px, page 1 is %d x %d; the pages of a series must have one size", path,
+                k + 1, raw[k].counts.width, raw[k].counts.height, raw[0].counts.width, raw[0].counts.height);
+    }
+    for (int k = 0; status == UF_OK && k < count; k++)
+        status = uf_mask_take(&job->work, raw[k].counts.width, raw[k].counts.height, &raw[k].saturated, error);
+    return status;
+}
+
+/* Reads the pages of one channel, one but for the near channel of a series, and corrects them; what corrects them is
+ * given back to the arena. */
+static uf_status read_channel(measure_job *job, uf_channel_name which, uf_channel *pages, int count, double *pixel_um,
+                              uf_error *error)
 {
     const char *path = which == UF_NEAR ? job->request->near_path : job->request->wide_path;
-    uf_raw_channel raw = {.camera = &job->settings->camera[which], .name = channel_names[which]};
+    uf_raw_channel raw[UF_REALS_LIMIT] = {0}, page = {.name = channel_names[which]};
     uf_image_info info;
-    uf_status status = read_image(job, raw.name, path, &raw.counts, &info, error);
+    uf_status status = read_pages(job, page.name, path, count, raw, &info, error);
     if (status != UF_OK)
         return status;
-    if (info.pages > 1)
-        return uf_fail(error, UF_INPUT,
-                       "%s: has %d pages, expected one; save the page to measure as a file of its own", path,
-                       info.pages);
-    raw.full_scale_adu = full_scale(raw.camera, &info);
     *pixel_um = info.pixel_size_x_um;
-    status = uf_mask_take(&job->work, raw.counts.width, raw.counts.height, &raw.saturated, error);
+    page.camera = &job->settings->camera[which];
+    page.full_scale_adu = full_scale(page.camera, &info);
+    page.counts = raw[0].counts;
     uf_arena_mark mark = uf_arena_now(&job->work.arena);
-    if (status == UF_OK)
-        status = read_companions(job, which, &raw, error);
-    if (status == UF_OK)
-        status = uf_field_correct(&job->work, &raw, which == UF_NEAR ? &job->result.near : &job->result.wide, error);
+    status = read_companions(job, which, &page, error);
+    for (int k = 0; status == UF_OK && k < count; k++) {
+        page.counts = raw[k].counts;
+        page.saturated = raw[k].saturated;
+        status = uf_field_correct(&job->work, &page, &pages[k], error);
+    }
     uf_arena_back(&job->work.arena, mark);
     return status;
 }
@@ -126,17 +162,45 @@ static uf_status note_decay_file(measure_job *job, uf_error *error)
     return status;
 }
 
+/* The pages of a series. The one of the smallest angle is the near channel, but its saturated pixels are those of the
+ * page that has most of them. */
+static uf_status read_series(measure_job *job, double *pixel_um, uf_error *error)
+{
+    int count = job->settings->series.angles_deg.count, widest = uf_series_widest(job->settings);
+    uf_status status = uf_take(&job->work, (size_t)count, sizeof(uf_channel), "a series", &job->result.pages, error);
+    if (status == UF_OK)
+        status = read_channel(job, UF_NEAR, job->result.pages, count, pixel_um, error);
+    if (status != UF_OK)
+        return status;
+    job->result.near = job->result.pages[widest];
+    for (int k = 0; k < count; k++) {
+        const uf_channel *page = &job->result.pages[k];
+        job->result.near.display_scaled |= page->display_scaled;
+        if (page->saturated_fraction > job->result.near.saturated_fraction) {
+            job->result.near.saturated_fraction = page->saturated_fraction;
+            job->result.near.saturated = page->saturated;
+        }
+    }
+    return UF_OK;
+}
+
+static uf_status read_near(measure_job *job, double *pixel_um, uf_error *error)
+{
+    return job->settings->series.angles_deg.count ? read_series(job, pixel_um, error)
+                                                  : read_channel(job, UF_NEAR, &job->result.near, 1, pixel_um, error);
+}
+
 /* Everything that can be wrong with the settings is said before pixels are worked on. */
 static uf_status read_inputs(measure_job *job, uf_error *error)
 {
     double near_um = (double)NAN, wide_um = (double)NAN;
-    uf_status status = read_channel(job, UF_NEAR, &near_um, error);
+    uf_status status = read_near(job, &near_um, error);
     if (status == UF_OK)
         status = uf_plan_make(job->settings, near_um, &job->plan, error);
     if (status == UF_OK)
         status = note_decay_file(job, error);
     if (status == UF_OK)
-        status = read_channel(job, UF_WIDE, &wide_um, error);
+        status = read_channel(job, UF_WIDE, &job->result.wide, 1, &wide_um, error);
     if (status != UF_OK)
         return status;
     uf_plane near = job->result.near.image, wide = job->result.wide.image;
@@ -158,11 +222,19 @@ static void warn_optics(measure_job *job)
             "n sin(angle) %.4f does not exceed cell_n + 2 sd (%.3f): light may pass into the cell where it "
             "touches; a steeper angle avoids it\n",
             plan->bench.na_effective, plan->bench.cell_n + 2 * plan->bench.cell_n_sd);
+    if (plan->series.count && plan->series.farthest_nm < UF_SERIES_FARTHEST_NM)
+        uf_text_printf(
+            &job->warnings,
+            "with this stray light the series cannot tell gaps beyond %.0f nm from closer ones; places darker "
+            "than that are left unresolved\n",
+            plan->series.farthest_nm);
     if (fabs(plan->layered_effect_nm) > 3)
-        uf_text_printf(&job->warnings,
-                       "a layered model reads the %.4g nm cutoff %+.1f nm differently from the exponential in force; "
-                       "the two agree best around n sin(angle) 1.44\n",
-                       job->settings->contact.cutoff_nm, -plan->layered_effect_nm);
+        uf_text_printf(
+            &job->warnings,
+            "a layered model reads the %.4g nm cutoff %+.1f nm differently from the exponential in force; %s\n",
+            job->settings->contact.cutoff_nm, -plan->layered_effect_nm,
+            plan->series.count ? "a series shows the full difference: use model = layered"
+                               : "the two agree best around n sin(angle) 1.44");
 }
 
 static void warn_settings(measure_job *job)
@@ -192,6 +264,12 @@ static void warn_field(measure_job *job)
         uf_text_add(&job->warnings,
                     "this field's own shift differs from the bench's by more than a pixel; check [shift] "
                     "or set estimate = yes\n");
+    if (field->flags >> UF_FLAG_SERIES_MISFIT & 1u)
+        uf_text_printf(
+            &job->warnings,
+            "the pages of the series do not obey the field in force (median reduced chi-square %.1f): check "
+            "angles_deg, power and the indices, and whether the cells moved or bleached between pages\n",
+            field->series_chi_square);
     if (field->flags >> UF_FLAG_EMPTY & 1u)
         uf_text_add(&job->warnings, "no cells were found\n");
 }
@@ -269,9 +347,13 @@ static void settings_line(const measure_job *job, uf_text *line)
     static const char *const models[] = {
         [UF_FIELD_EXPONENTIAL] = "exponential", [UF_FIELD_LAYERED] = "layered", [UF_FIELD_TABLE] = "measured"};
     const uf_settings *s = job->settings;
-    uf_text_printf(line, "%s decay%s, depth %.1f nm, contact at most %.4g nm, reference %.4g at gap 0",
-                   models[job->plan.law.model], job->plan.law.stray.fraction > 0 ? " with stray light" : "",
-                   job->plan.depth_nm, s->contact.cutoff_nm, job->plan.reference_ratio);
+    uf_text_printf(line, "%s decay%s, depth %.1f nm, contact at most %.4g nm, ", models[job->plan.law.model],
+                   job->plan.law.stray.fraction > 0 ? " with stray light" : "", job->plan.depth_nm,
+                   s->contact.cutoff_nm);
+    if (job->plan.series.count)
+        uf_text_printf(line, "series of %d angles", job->plan.series.count);
+    else
+        uf_text_printf(line, "reference %.4g at gap 0", job->plan.reference_ratio);
 }
 
 static void flag_words(uf_flags flags, uf_text *words)

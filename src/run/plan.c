@@ -6,6 +6,7 @@
 #include "image/restore.h"
 #include "optics/refractive.h"
 #include "run/decay_law.h"
+#include "run/series_plan.h"
 
 /* Emission is redder than excitation by about this (common practice, no source), and a diffraction-limited
  * image of a point is close to a Gaussian of sigma 0.21 wavelength / NA (Zhang, Zerubia and Olivo-Marin 2007,
@@ -116,7 +117,8 @@ uf_status uf_plan_make(const uf_settings *s, double image_pixel_um, uf_plan *pla
     *plan = (uf_plan){0};
     uf_status status = uf_settings_check(s, error);
     if (status == UF_OK)
-        status = uf_bench_make(s, &plan->bench, error);
+        status =
+            s->series.angles_deg.count ? uf_series_plan_bench(s, plan, error) : uf_bench_make(s, &plan->bench, error);
     if (status == UF_OK)
         status = find_pixel_size(s, image_pixel_um, &plan->pixel_size_um, error);
     if (status != UF_OK)
@@ -132,6 +134,11 @@ uf_status uf_plan_make(const uf_settings *s, double image_pixel_um, uf_plan *pla
     plan->restore_gain = 1 + real_over_ideal * real_over_ideal;
     plan->restore_variance =
         uf_round_digits(uf_restore_variance(plan->psf_sigma_um / plan->pixel_size_um, plan->restore_gain), 12);
+    if (plan->series.count) {
+        plan->reference_ratio = (double)NAN;
+        uf_series_plan_limits(s, plan);
+        return UF_OK;
+    }
     plan->reference_gap_nm = s->reference.gap_nm;
     double at_zero = s->reference.ratio * exp(-uf_decay_ln(&plan->decay, s->reference.gap_nm));
     plan->reference_ratio = uf_round_digits(at_zero, 12);

@@ -68,6 +68,20 @@ static json_t *inputs_json(const uf_run_story *story)
     return list;
 }
 
+static json_t *series_json(const uf_series *series)
+{
+    json_t *o = json_object(), *na = json_array(), *sd = json_array();
+    for (int k = 0; k < series->count; k++)
+        json_array_append_new(na, json_number(series->na_effective[k]));
+    for (int k = 0; k < UF_SERIES_GAPS; k += 5)
+        json_array_append_new(sd, json_number(series->systematic_nm[k]));
+    json_object_set_new(o, "na_effective", na);
+    json_object_set_new(o, "near_page", json_integer(series->widest + 1));
+    json_object_set_new(o, "farthest_nm", json_number(series->farthest_nm));
+    json_object_set_new(o, "gap_systematic_nm_every_50_nm", sd);
+    return o;
+}
+
 static json_t *plan_json(const uf_plan *plan)
 {
     json_t *o = json_object();
@@ -82,6 +96,8 @@ static json_t *plan_json(const uf_plan *plan)
     json_object_set_new(o, "pixel_size_um", json_number(plan->pixel_size_um));
     json_object_set_new(o, "psf_sigma_um", json_number(plan->psf_sigma_um));
     json_object_set_new(o, "layered_effect_at_cutoff_nm", json_number(plan->layered_effect_nm));
+    if (plan->series.count)
+        json_object_set_new(o, "series", series_json(&plan->series));
     return o;
 }
 
@@ -112,28 +128,54 @@ static json_t *libraries_json(void)
     return o;
 }
 
-void uf_methods_paragraph(uf_text *out, const uf_settings *s, const uf_plan *plan)
+static void methods_of_gap(uf_text *out, const uf_settings *s, const uf_plan *plan)
 {
     static const char *const models[] = {[UF_FIELD_EXPONENTIAL] = "an exponential decay",
                                          [UF_FIELD_LAYERED] =
                                              "the field of a substrate, medium and cell of three indices (layered),",
                                          [UF_FIELD_TABLE] = "a measured decay (table), in an evanescent field"};
+    const char *field = models[plan->law.model];
+    double least = (double)INFINITY, most = 0;
+    for (int k = 0; k < plan->series.count; k++) {
+        least = fmin(least, s->series.angles_deg.values[k]);
+        most = fmax(most, s->series.angles_deg.values[k]);
+    }
+    if (plan->series.count)
+        uf_text_printf(
+            out,
+            "The membrane-substrate gap was fitted, pixel by pixel and weighted by the noise, to near images "
+            "at %d angles of %.4g to %.4g deg by %s with a 1/e depth of %.1f nm at the smallest angle (medium "
+            "index %.4f%s",
+            plan->series.count, least, most, field, plan->depth_nm, plan->bench.medium_n,
+            plan->law.model == UF_FIELD_LAYERED ? ", cell index " : "");
+    else
+        uf_text_printf(
+            out,
+            "The near/wide ratio was converted to the membrane-substrate gap by %s with a 1/e depth of %.1f "
+            "nm (s.d. %.1f nm; medium index %.4f",
+            field, plan->depth_nm, plan->depth_sd_nm, plan->bench.medium_n);
+    if (plan->series.count && plan->law.model == UF_FIELD_LAYERED)
+        uf_text_printf(out, "%.4f", plan->bench.cell_n);
+    uf_text_add(out, ")");
+    if (plan->law.stray.fraction > 0)
+        uf_text_printf(out, ", %.3g of it stray light of %.4g nm depth,", plan->law.stray.fraction,
+                       plan->law.stray.depth_nm);
+    if (plan->series.count)
+        uf_text_add(out, "; amplitude and gap were free and no reference was used. ");
+    else
+        uf_text_printf(out, " relative to a measured ratio of %.4g at a gap of %.4g nm. ", s->reference.ratio,
+                       plan->reference_gap_nm);
+}
+
+void uf_methods_paragraph(uf_text *out, const uf_settings *s, const uf_plan *plan)
+{
     const uf_bench *b = &plan->bench;
     uf_text_printf(out,
                    "Near-surface (evanescent, %.4g nm, n sin angle %.4f) and widefield images were measured with "
                    "Underfoot %s. Cells were outlined in the widefield image at half of each cell's own level over "
                    "its local background and touching cells split by shape. ",
                    b->wavelength_nm, b->na_effective, UF_VERSION);
-    uf_text_printf(
-        out,
-        "The near/wide ratio was converted to the membrane-substrate gap by %s with a 1/e depth of %.1f nm "
-        "(s.d. %.1f nm; medium index %.4f)",
-        models[plan->law.model], plan->depth_nm, plan->depth_sd_nm, b->medium_n);
-    if (plan->law.stray.fraction > 0)
-        uf_text_printf(out, ", %.3g of it stray light of %.4g nm depth,", plan->law.stray.fraction,
-                       plan->law.stray.depth_nm);
-    uf_text_printf(out, " relative to a measured ratio of %.4g at a gap of %.4g nm. ", s->reference.ratio,
-                   plan->reference_gap_nm);
+    methods_of_gap(out, s, plan);
     uf_text_printf(out,
                    "Contact was called where the gap was at most %.4g nm, in patches of at least %.3g square "
                    "micrometres; pixels whose signal was below %.3g s.d. of its noise were not assigned a gap. The "

@@ -3,6 +3,7 @@
 
 #include <math.h>
 #include <stdint.h>
+#include <stdio.h>
 #include <stdlib.h>
 #include <string.h>
 
@@ -81,12 +82,22 @@ static void put_choice(uf_text *out, const uf_setting *entry, int chosen)
     uf_text_bytes(out, word.start, (size_t)word.length);
 }
 
+static void put_list(uf_text *out, const uf_reals *list)
+{
+    for (int k = 0; k < list->count; k++) {
+        uf_text_add(out, k ? ", " : "");
+        uf_text_number(out, list->values[k], 15);
+    }
+}
+
 void uf_setting_value(uf_text *out, const uf_settings *settings, int k)
 {
     const uf_setting *entry = &uf_setting_table[k];
     const void *member = member_of(settings, entry);
     if (entry->kind == UF_SETTING_REAL)
         uf_text_number(out, *(const double *)member, 15);
+    else if (entry->kind == UF_SETTING_REALS)
+        put_list(out, member);
     else if (entry->kind == UF_SETTING_PATH)
         uf_text_add(out, *(char *const *)member ? *(char *const *)member : "");
     else if (entry->kind == UF_SETTING_CHOICE)
@@ -103,20 +114,64 @@ const uf_setting *uf_setting_at(size_t member)
 
 /* ---- setting one value ----------------------------------------------------------------------- */
 
-static uf_status set_real(uf_settings *settings, const uf_setting *entry, const char *value, uf_error *error)
+static uf_status read_number(const uf_setting *entry, const char *value, double *number, uf_error *error)
 {
-    double number;
-    if (!uf_parse_number(value, &number))
+    if (!uf_parse_number(value, number))
         return uf_fail(error, UF_INPUT, "%s = %.80s is not a number; write it with a decimal point, like 0.11",
                        entry->key, value);
-    if (number < entry->least || number > entry->most) {
+    if (*number < entry->least || *number > entry->most) {
         char least[UF_NUMBER_TEXT], most[UF_NUMBER_TEXT];
         uf_format_number(least, entry->least, 6);
         uf_format_number(most, entry->most, 6);
         return uf_fail(error, UF_INPUT, "%s = %.80s is out of range: expected %s to %s", entry->key, value, least,
                        most);
     }
-    *(double *)member_of(settings, entry) = number;
+    return UF_OK;
+}
+
+static uf_status set_real(uf_settings *settings, const uf_setting *entry, const char *value, uf_error *error)
+{
+    double number = 0;
+    uf_status status = read_number(entry, value, &number, error);
+    if (status == UF_OK)
+        *(double *)member_of(settings, entry) = number;
+    return status;
+}
+
+/* One item of a list, blanks around it cut off; says which one is wrong. */
+static uf_status read_item(const uf_setting *entry, const char *item, size_t length, int position, double *number,
+                           uf_error *error)
+{
+    char text[UF_NUMBER_TEXT + 64];
+    for (; length && strchr(" \t", *item); length--)
+        item++;
+    while (length && strchr(" \t", item[length - 1]))
+        length--;
+    (void)snprintf(text, sizeof text, "%.*s", (int)(length < sizeof text ? length : sizeof text - 1), item);
+    uf_status status = read_number(entry, text, number, error);
+    if (status != UF_OK) {
+        char where[32];
+        (void)snprintf(where, sizeof where, "number %d of the list", position);
+        uf_fail_in(error, status, where);
+    }
+    return status;
+}
+
+/* Numbers between commas. */
+static uf_status set_reals(uf_settings *settings, const uf_setting *entry, const char *value, uf_error *error)
+{
+    uf_reals list = {0};
+    for (const char *at = value; at; list.count++) {
+        const char *comma = strchr(at, ',');
+        if (list.count == UF_REALS_LIMIT)
+            return uf_fail(error, UF_INPUT, "%s has more than %d numbers", entry->key, UF_REALS_LIMIT);
+        size_t length = comma ? (size_t)(comma - at) : strlen(at);
+        uf_status status = read_item(entry, at, length, list.count + 1, &list.values[list.count], error);
+        if (status != UF_OK)
+            return status;
+        at = comma ? comma + 1 : NULL;
+    }
+    *(uf_reals *)member_of(settings, entry) = list;
     return UF_OK;
 }
 
@@ -182,6 +237,9 @@ static uf_status set_entry(uf_settings *settings, int k, const char *value, cons
                        entry->key);
     case UF_SETTING_REAL:
         status = set_real(settings, entry, value, error);
+        break;
+    case UF_SETTING_REALS:
+        status = set_reals(settings, entry, value, error);
         break;
     case UF_SETTING_CHOICE:
         status = set_choice(settings, entry, value, error);
@@ -424,14 +482,36 @@ uf_status uf_settings_check_optics(const uf_settings *s, uf_error *error)
     return status == UF_OK ? need(medium, "medium_n (or medium, by name)", "interface", error) : status;
 }
 
+/* Gap and dye are two unknowns a pixel: two angles that differ are the least. */
+static uf_status check_series(const uf_settings *settings, uf_error *error)
+{
+    const uf_reals *angles = &settings->series.angles_deg, *power = &settings->series.power;
+    double least = 90, most = 0;
+    for (int k = 0; k < angles->count; k++) {
+        least = fmin(least, angles->values[k]);
+        most = fmax(most, angles->values[k]);
+    }
+    if (power->count && power->count != angles->count)
+        return uf_fail(error, UF_INPUT,
+                       "[series] power has %d numbers and angles_deg %d; give one power for each angle", power->count,
+                       angles->count);
+    if (angles->count && !(most > least))
+        return uf_fail(error, UF_INPUT,
+                       "[series] angles_deg has no two different angles; a gap needs at least two, better five");
+    return UF_OK;
+}
+
 uf_status uf_settings_check(const uf_settings *settings, uf_error *error)
 {
-    uf_status status = uf_settings_check_optics(settings, error);
+    bool by_series = settings->series.angles_deg.count > 0;
+    uf_status status = check_series(settings, error);
     if (status == UF_OK)
+        status = uf_settings_check_optics(settings, error);
+    if (status == UF_OK && !by_series) /* a series needs no reference */
         status = need(settings->reference.ratio, "ratio", "reference", error);
     if (status != UF_OK)
         return status;
-    if (isnan(settings->interface.angle_deg) && isnan(settings->interface.na_effective) &&
+    if (!by_series && isnan(settings->interface.angle_deg) && isnan(settings->interface.na_effective) &&
         isnan(settings->interface.depth_nm))
         return uf_fail(error, UF_INPUT,
                        "the instrument file says no angle; add angle_deg, na_effective or depth_nm to [interface]");
@@ -453,6 +533,8 @@ static void put_range(uf_text *out, const uf_setting *entry)
     else if (entry->kind == UF_SETTING_PATH)
         uf_text_add(out, "file");
     else {
+        if (entry->kind == UF_SETTING_REALS)
+            uf_text_add(out, "numbers between commas, each ");
         uf_text_number(out, entry->least, 6);
         uf_text_add(out, " to ");
         uf_text_number(out, entry->most, 6);

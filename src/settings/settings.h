@@ -39,7 +39,13 @@ typedef struct uf_camera_settings {
     char *dark, *defects;
 } uf_camera_settings;
 
-enum { UF_SETTINGS_LIMIT = 80, UF_SETTING_NOT_GIVEN = -1 };
+enum { UF_SETTINGS_LIMIT = 80, UF_SETTING_NOT_GIVEN = -1, UF_REALS_LIMIT = 32 };
+
+/* A list of numbers as one setting holds it; count 0: not given. */
+typedef struct uf_reals {
+    int count;
+    double values[UF_REALS_LIMIT];
+} uf_reals;
 
 struct uf_settings {
     struct {
@@ -75,6 +81,9 @@ struct uf_settings {
         int kind;
     } reference;
     struct {
+        uf_reals angles_deg, power;
+    } series;
+    struct {
         int label;
         double smooth_um, min_area_um2, max_area_um2, split;
         int edge_cells;
@@ -93,6 +102,7 @@ struct uf_settings {
 
 typedef enum uf_setting_kind {
     UF_SETTING_REAL,
+    UF_SETTING_REALS,
     UF_SETTING_CHOICE,
     UF_SETTING_PATH,
     UF_SETTING_LATER
@@ -103,7 +113,7 @@ typedef struct uf_setting {
     const char *section, *key; /* the key carries the unit */
     uf_setting_kind kind;
     size_t offset;       /* in struct uf_settings */
-    double least, most;  /* allowed range of a real, both included */
+    double least, most;  /* allowed range of a real, or of each of a list, both included */
     double initial;      /* default of a real (NaN: none) or of a choice (its index, or UF_SETTING_NOT_GIVEN) */
     const char *choices; /* "s|p|mixed"; a word after '!' is known but not in this version */
     const char *group;   /* of the entries with one group name, one file may give only one */

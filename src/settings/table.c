@@ -12,6 +12,8 @@
 
 #define I_REAL(section, key, member, least, most, initial, help) \
     KEY(INSTRUMENT, section, key, REAL, AT(member), least, most, initial, NULL, NULL, help)
+#define I_REALS(section, key, member, least, most, help) \
+    KEY(INSTRUMENT, section, key, REALS, AT(member), least, most, NONE, NULL, NULL, help)
 #define I_CHOICE(section, key, member, choices, initial, help) \
     KEY(INSTRUMENT, section, key, CHOICE, AT(member), 0, 0, initial, choices, NULL, help)
 #define I_PATH(section, key, member, help) \
@@ -115,8 +117,11 @@ const uf_setting uf_setting_table[] = {
     I_REAL("reference", "normalisation_sd", reference.normalisation_sd, 0, 1, 0.05,
            "Cell-to-cell spread (relative) of what the wide image sees beside the ventral membrane."),
 
-    I_LATER("series", "angles_deg", "Angles of a series."),
-    I_LATER("series", "power", "Relative power at each angle of a series."),
+    I_REALS("series", "angles_deg", series.angles_deg, 0, 90,
+            "Angles of a series, quoted like angle_deg: the near file has one page an angle, in this order. Gaps then come "
+            "from the series, without a reference."),
+    I_REALS("series", "power", series.power, 1e-6, 1e6,
+            "Relative power (times exposure) at each angle of a series. Default: the same at all."),
 
     A_CHOICE("cells", "label", cells.label, "membrane|!cytosol|!adhesion-protein", UF_LABEL_MEMBRANE,
              "What carries the dye."),

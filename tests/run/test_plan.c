@@ -113,10 +113,75 @@ static void test_coating_in_the_plan(void **state)
     assert_true(fabs(shift) > 0.05 && fabs(shift) < 5);
 }
 
+/* ---- a series of angles ---------------------------------------------------------------------- */
+
+static void test_series_needs_no_reference_and_no_angle(void **state)
+{
+    (void)state;
+    static uf_plan plan;
+    assert_int_equal(plan_of("[series]\nangles_deg = 73, 69, 77\npower = 1, 2, 3\n[pixel]\nsize_um = 0.1\n", 0.1, &plan,
+                             NULL), UF_OK);
+    assert_int_equal(plan.series.count, 3);
+    assert_int_equal(plan.series.widest, 1);
+    assert_near_abs(plan.series.power[2], 3, 0);
+    assert_near_rel(plan.bench.na_effective, 1.518 * sin(69 * 3.14159265358979323846 / 180), 1e-11);
+    assert_true(isnan(plan.reference_ratio));
+}
+
+/* asin(1.37 / 1.518) = 64.489090 deg: 64 deg is not enough, and it is page 2. */
+static void test_series_refuses_what_is_not_reflected_by_the_cell(void **state)
+{
+    (void)state;
+    static uf_plan plan;
+    uf_error error;
+    assert_int_equal(plan_of("[series]\nangles_deg = 69, 64, 62\n", 0.1, &plan, &error), UF_INPUT);
+    assert_non_null(strstr(error.text, "64 deg, the angle of page 2"));
+    assert_non_null(strstr(error.text, "64.49 deg"));
+    assert_int_equal(plan_of("[interface]\nobjective_na = 1.45\n[series]\nangles_deg = 69, 80\n", 0.1, &plan, &error),
+                     UF_INPUT);
+    assert_non_null(strstr(error.text, "aperture"));
+}
+
+/* Signals of the bench as it says, fitted with each input moved up and down by its sd, by the fit itself. */
+static void test_series_systematic_part(void **state)
+{
+    (void)state;
+    static uf_plan plan;
+    const double angles[] = {69, 71, 73, 75, 77}, sds[] = {0.2, 0.004, 0.01};
+    assert_int_equal(plan_of("[decay]\nmodel = layered\n[interface]\nangle_sd_deg = 0.2\nmedium_n_sd = 0.004\n"
+                             "[series]\nangles_deg = 69, 71, 73, 75, 77\n", 0.1, &plan, NULL), UF_OK);
+    for (double gap = 20; gap < 120; gap += 40) {
+        double signal[UF_SERIES_MOST], slope[UF_SERIES_MOST], weight[UF_SERIES_MOST], squares = 0;
+        uf_field_kind kind = {&plan.bench, plan.law.model, plan.law.stray};
+        uf_series_field(&plan.series, &kind, gap, signal, slope);
+        for (int k = 0; k < 5; k++)
+            weight[k] = 1 / signal[k];
+        for (int input = 0; input < 3; input++) {
+            double found[2];
+            for (int side = 0; side < 2; side++) {
+                double by = (side ? 1 : -1) * sds[input];
+                uf_bench other = plan.bench;
+                uf_series series = plan.series;
+                for (int k = 0; k < 5; k++)
+                    series.na_effective[k] = uf_na_from_angle(angles[k] + (input == 0 ? by : 0), 1.518);
+                other.medium_n += input == 1 ? by : 0;
+                other.cell_n += input == 2 ? by : 0;
+                uf_field_kind moved = {&other, plan.law.model, plan.law.stray};
+                found[side] = uf_series_fit(&series, &moved, signal, weight, NULL);
+            }
+            squares += (found[1] - found[0]) * (found[1] - found[0]) / 4;
+        }
+        assert_near_rel(uf_series_systematic(&plan.series, gap), sqrt(squares), 0.05); /* first order against all orders */
+    }
+}
+
 int main(void)
 {
     const struct CMUnitTest tests[] = {cmocka_unit_test(test_depth_three_ways), cmocka_unit_test(test_reference_at_a_gap),
                                        cmocka_unit_test(test_pixel_size), cmocka_unit_test(test_angle_in_another_index),
-                                       cmocka_unit_test(test_indices_by_name), cmocka_unit_test(test_coating_in_the_plan)};
+                                       cmocka_unit_test(test_indices_by_name), cmocka_unit_test(test_coating_in_the_plan),
+                                       cmocka_unit_test(test_series_needs_no_reference_and_no_angle),
+                                       cmocka_unit_test(test_series_refuses_what_is_not_reflected_by_the_cell),
+                                       cmocka_unit_test(test_series_systematic_part)};
     return cmocka_run_group_tests(tests, NULL, NULL);
 }

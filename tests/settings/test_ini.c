@@ -115,6 +115,8 @@ static void test_every_setting_can_be_set(void **state)
             check_choices(settings, k);
         else if (entry->kind == UF_SETTING_PATH)
             set_and_read(settings, k, "/flats/a.tif", "/flats/a.tif");
+        else if (entry->kind == UF_SETTING_REALS)
+            set_and_read(settings, k, "69 ,71.5,\t73", "69, 71.5, 73");
         else {
             assert_int_equal(uf_settings_set(settings, entry->section, entry->key, "1", &error), UF_INPUT);
             assert_non_null(strstr(error.text, "not in this version"));
@@ -162,7 +164,13 @@ static void test_faults_name_line_and_mend(void **state)
     refused("[light] x\n", "/bench/day1.ini:1: ", "no section");
     refused("[reference]\nkind = film\n", "/bench/day1.ini:2: ", "not in this version");
     refused("[interface]\nmedium_n = 1.33\nmedium = water\n", "/bench/day1.ini:3: ", "contradicts medium_n in line 2");
-    refused("[series]\nangles_deg = 69, 71\n", "/bench/day1.ini:2: ", "not in this version");
+    refused("[series]\nangles_deg = 69, 71x\n", "/bench/day1.ini:2: ", "number 2 of the list");
+    refused("[series]\nangles_deg = 69,, 71\n", "/bench/day1.ini:2: ", "number 2 of the list");
+    refused("[series]\nangles_deg = 69, 71,\n", "/bench/day1.ini:2: ", "number 3 of the list");
+    refused("[series]\nangles_deg = 69 71\n", "/bench/day1.ini:2: ", "not a number");
+    refused("[series]\nangles_deg = 69, 91\n", "/bench/day1.ini:2: ", "out of range");
+    refused("[series]\npower = 1,1,1,1,1,1,1,1,1,1,1,1,1,1,1,1,1,1,1,1,1,1,1,1,1,1,1,1,1,1,1,1,1\n", "/bench/day1.ini:2: ",
+            "more than 32");
 }
 
 static void test_bytes_that_are_no_text(void **state)
@@ -263,6 +271,25 @@ static void test_name_and_number_exclude_each_other(void **state)
     uf_settings_free(&settings);
 }
 
+/* A series stands for angle and reference; its lists must fit each other. */
+static void test_what_a_series_needs(void **state)
+{
+    (void)state;
+    uf_settings *settings = fresh();
+    uf_error error;
+    static const char good[] = "[light]\nwavelength_nm = 488\n[interface]\nsubstrate_n = 1.518\nmedium_n = 1.337\n"
+                               "[series]\nangles_deg = 69, 73\n";
+    assert_int_equal(parse(settings, good, UF_INSTRUMENT_FILE, &error), UF_OK);
+    assert_int_equal(uf_settings_check(settings, &error), UF_OK);
+    assert_int_equal(parse(settings, "[series]\npower = 1, 2, 3\n", UF_INSTRUMENT_FILE, &error), UF_OK);
+    assert_int_equal(uf_settings_check(settings, &error), UF_INPUT);
+    assert_non_null(strstr(error.text, "power has 3 numbers and angles_deg 2"));
+    assert_int_equal(parse(settings, "[series]\nangles_deg = 69, 69, 69\n", UF_INSTRUMENT_FILE, &error), UF_OK);
+    assert_int_equal(uf_settings_check(settings, &error), UF_INPUT);
+    assert_non_null(strstr(error.text, "two different angles"));
+    uf_settings_free(&settings);
+}
+
 int main(void)
 {
     const struct CMUnitTest tests[] = {
@@ -270,6 +297,7 @@ int main(void)
         cmocka_unit_test(test_name_and_number_exclude_each_other),
         cmocka_unit_test(test_text_as_people_write_it), cmocka_unit_test(test_faults_name_line_and_mend),
         cmocka_unit_test(test_bytes_that_are_no_text), cmocka_unit_test(test_later_files_override),
-        cmocka_unit_test(test_fuzz), cmocka_unit_test(test_what_measuring_needs)};
+        cmocka_unit_test(test_fuzz), cmocka_unit_test(test_what_measuring_needs),
+        cmocka_unit_test(test_what_a_series_needs)};
     return cmocka_run_group_tests(tests, NULL, NULL);
 }
