@@ -102,10 +102,13 @@ UF_API double uf_depth_nm(double wavelength_nm, double na_effective, double medi
 
 typedef struct uf_measure_request {
     const char *near_path; /* evanescent image of the field */
-    const char *wide_path; /* widefield image of the same field */
-    const char *out_dir;   /* made when missing; files of an earlier run in it are replaced */
-    int threads;           /* 1 or more; results do not depend on it */
-    const char *command;   /* what the user typed, for the log; may be NULL */
+    const char *wide_path; /* widefield image of the same field; NULL with label = adhesion-protein: cells are then
+                              outlined in the near image */
+    const char
+        *mask_path; /* label image, 0 outside cells, of the same size: takes the place of segmentation; or NULL */
+    const char *out_dir; /* made when missing; files of an earlier run in it are replaced */
+    int threads;         /* 1 or more; results do not depend on it */
+    const char *command; /* what the user typed, for the log; may be NULL */
 } uf_measure_request;
 
 typedef struct uf_measure_summary {

@@ -10,7 +10,7 @@ enum { MOST_FILES = 16 };
 typedef struct measure_arguments {
     const char *instruments[MOST_FILES], *assays[MOST_FILES], *images[2];
     int instrument_count, assay_count, image_count;
-    const char *out, *threads;
+    const char *out, *threads, *mask;
     bool quiet, help;
 } measure_arguments;
 
@@ -30,7 +30,8 @@ static int print_summary(const measure_arguments *a, const uf_measure_summary *s
     uf_text_printf(&out, "%d cells (%d used), %d focal spots; depth %.1f nm\n", s->cells, s->cells_used, s->spots,
                    s->depth_nm);
     if (s->cells_used) {
-        uf_text_printf(&out, "%d of %d used cells are attached\n", s->cells_attached, s->cells_used);
+        if (!isnan(s->attachment_fraction_median))
+            uf_text_printf(&out, "%d of %d used cells are attached\n", s->cells_attached, s->cells_used);
         uf_text_add(&out, "Medians over used cells:\n");
         put_median(&out, "spread area", s->spread_area_median_um2, " um2");
         put_median(&out, "contact area", s->contact_area_median_um2, " um2");
@@ -58,7 +59,7 @@ static void print_warnings(const char *lines)
 
 static uf_status check_arguments(const measure_arguments *a, uf_error *error)
 {
-    if (a->image_count != 2)
+    if (a->image_count < 1)
         return uf_fail(error, UF_USAGE,
                        "measure needs two images, the near and the wide one: underfoot measure NEAR "
                        "WIDE -i INSTRUMENT -o OUT");
@@ -74,9 +75,12 @@ static uf_status check_arguments(const measure_arguments *a, uf_error *error)
 static uf_status run_measure(const measure_arguments *a, uf_measure_summary *summary, uf_error *error)
 {
     uf_settings *settings = NULL;
-    uf_measure_request request = {.near_path = a->images[0], .wide_path = a->images[1], .out_dir = a->out};
+    uf_measure_request request = {.near_path = a->images[0],
+                                  .wide_path = a->image_count > 1 ? a->images[1] : NULL,
+                                  .mask_path = a->mask,
+                                  .out_dir = a->out};
     uf_text command = {0};
-    uf_text_printf(&command, "underfoot measure %s %s", a->images[0], a->images[1]);
+    uf_text_printf(&command, "underfoot measure %s %s", a->images[0], a->image_count > 1 ? a->images[1] : "");
     request.command = command.bytes;
     uf_status status = uf_threads(a->threads, &request.threads, error);
     if (status == UF_OK)
@@ -110,6 +114,7 @@ static int command_measure(int argc, char **argv)
         {"assay", 'a', "FILE", "choices about the analysis; may be repeated", NULL, NULL, a.assays, &a.assay_count,
          MOST_FILES},
         {"out", 'o', "DIR", "where results go; made when missing", &a.out, NULL, NULL, NULL, 0},
+        {"mask", 'm', "FILE", "label image (0 outside cells) instead of segmentation", &a.mask, NULL, NULL, NULL, 0},
         {"threads", 't', "N", "threads, default one a processor; results do not depend on it", &a.threads, NULL, NULL,
          NULL, 0},
         {"quiet", 'q', NULL, "no summary and no notes", NULL, &a.quiet, NULL, NULL, 0}};
@@ -133,7 +138,7 @@ static int command_measure(int argc, char **argv)
 
 const uf_command uf_command_measure = {
     "measure",
-    "NEAR WIDE -i INSTRUMENT [-a ASSAY] -o OUT",
+    "NEAR WIDE -i INSTRUMENT [-a ASSAY] [-m MASK] -o OUT",
     "measure one field from its near and wide image",
     "Segments the cells in the wide image, turns the near/wide ratio into the gap between membrane and\n"
     "substrate, and measures contact area, attachment and focal spots of every cell. Writes cells.csv,\n"

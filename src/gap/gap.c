@@ -5,6 +5,7 @@
 
 #include "base/text.h"
 #include "gap/edge_fall.h"
+#include "gap/own_reference.h"
 #include "gap/signals.h"
 #include "image/restore.h"
 #include "image/smooth.h"
@@ -12,7 +13,7 @@
 
 typedef struct gap_job {
     const uf_kernels *kernels;
-    const uf_plan *plan;
+    uf_plan *plan;
     const uf_channel *near, *wide;
     const uf_cell_map *cells;
     uf_gap_map *map;
@@ -79,7 +80,8 @@ static void judge_row(gap_job *job, int y)
     uint8_t *state = uf_mask_row(job->map->state, y);
     double sigma = job->detection_sigma;
     float near_least = (float)(sigma * uf_smoothed_sd(job->plan, job->near, 0));
-    float wide_least = (float)(sigma * uf_smoothed_sd(job->plan, job->wide, 0));
+    float wide_least =
+        job->plan->signal == UF_SIGNAL_NEAR ? 0.0f : (float)(sigma * uf_smoothed_sd(job->plan, job->wide, 0));
     for (int x = 0; x < job->cells->labels.width; x++) {
         if (!labels[x]) {
             gap[x] = NAN;
@@ -136,13 +138,29 @@ static uf_status take_map(uf_work *work, int width, int height, uf_gap_map *map,
     return status;
 }
 
-uf_status uf_gap_signals(uf_work *work, const uf_plan *plan, uf_channel *near, const uf_channel *wide,
+/* Near alone tells the gap: the dye is even over each cell, and falls at outlines as near does. */
+static uf_status even_dye(uf_work *work, const gap_job *job, double psf_px, uf_error *error)
+{
+    uf_labels labels = job->cells->labels;
+    float background = (float)job->near->background_adu;
+    for (int y = 0; y < labels.height; y++)
+        for (int x = 0; x < labels.width; x++) {
+            uf_plane_row(job->map->dye_adu, y)[x] = uf_labels_row(labels, y)[x] ? 1.0f : 0.0f;
+            uf_plane_row(job->map->near_adu, y)[x] -= background;
+        }
+    double near_blur = sqrt(job->plan->restore_gain - 1) * psf_px;
+    return uf_smooth(work, job->map->dye_adu, near_blur, job->map->dye_adu, error);
+}
+
+uf_status uf_gap_signals(uf_work *work, uf_plan *plan, uf_channel *near, const uf_channel *wide,
                          const uf_cell_map *cells, uf_gap_map *map, uf_error *error)
 {
     double psf_px = plan->psf_sigma_um / plan->pixel_size_um;
-    gap_job job = {.near = near, .wide = wide, .cells = cells, .map = map};
+    gap_job job = {.plan = plan, .near = near, .wide = wide, .cells = cells, .map = map};
     uf_status status = take_map(work, near->image.width, near->image.height, map, error);
     map->near_adu = near->image;
+    if (status == UF_OK && plan->signal == UF_SIGNAL_NEAR)
+        return even_dye(work, &job, psf_px, error);
     if (status == UF_OK)
         status = uf_edge_fall_measure(work, wide, cells, plan->pixel_size_um, psf_px, &job.fall, error);
     if (status == UF_OK)
@@ -150,8 +168,27 @@ uf_status uf_gap_signals(uf_work *work, const uf_plan *plan, uf_channel *near, c
     return status;
 }
 
-uf_status uf_gap_find(uf_work *work, const uf_plan *plan, double detection_sigma, uf_channel *near,
-                      const uf_channel *wide, const uf_cell_map *cells, uf_gap_map *map, uf_error *error)
+/* Each cell's own reference, as a factor of its dye, so that one ratio serves the field. */
+static uf_status find_own_reference(uf_work *work, gap_job *job, uf_error *error)
+{
+    uf_labels labels = job->cells->labels;
+    uf_plane planes[] = {job->map->dye_adu, job->dye_smooth, job->dye_fine};
+    float *factor;
+    uf_status status = uf_take(work, (size_t)labels.count + 1, sizeof *factor, "the reference", &factor, error);
+    if (status == UF_OK)
+        status = uf_own_reference(work, job->plan, job->near_smooth, job->dye_smooth, job->cells, factor, error);
+    for (int k = 0; status == UF_OK && k < 3; k++)
+        for (int y = 0; y < labels.height; y++) {
+            const int32_t *label = uf_labels_row(labels, y);
+            float *row = uf_plane_row(planes[k], y);
+            for (int x = 0; x < labels.width; x++)
+                row[x] *= factor[label[x]];
+        }
+    return status;
+}
+
+uf_status uf_gap_find(uf_work *work, uf_plan *plan, double detection_sigma, uf_channel *near, const uf_channel *wide,
+                      const uf_cell_map *cells, uf_gap_map *map, uf_error *error)
 {
     int height = near->image.height;
     double psf_px = plan->psf_sigma_um / plan->pixel_size_um;
@@ -162,12 +199,14 @@ uf_status uf_gap_find(uf_work *work, const uf_plan *plan, double detection_sigma
                    .cells = cells,
                    .map = map,
                    .detection_sigma = detection_sigma};
-    job.ln_reference = (float)uf_round_digits(log(plan->reference_ratio), 12);
     uf_status status = uf_gap_signals(work, plan, near, wide, cells, map, error);
     if (status != UF_OK)
         return status;
     uf_arena_mark mark = uf_arena_now(&work->arena);
     status = filter_signals(work, &job, psf_px, error);
+    if (status == UF_OK && plan->reference_from_cell)
+        status = find_own_reference(work, &job, error);
+    job.ln_reference = (float)uf_round_digits(log(plan->reference_ratio), 12);
     if (status == UF_OK)
         uf_rows_run(work, height, gap_rows, &job);
     uf_arena_back(&work->arena, mark);

@@ -18,9 +18,12 @@
  * A pixel is unresolved when its near or dye signal, smoothed to the scale of the point spread function, is
  * below detection_sigma times its noise there (background's uncertainty included).
  *
+ * With plan->signal == UF_SIGNAL_NEAR the wide signal plays no part: the dye counts as even over each cell. With
+ * plan->reference_from_cell the reference is found here (gap/own_reference.h) and put into plan->reference_ratio.
+ *
  * The near image is overwritten: map->near_adu takes its place. UF_MEMORY.
  */
-UF_MUST_USE uf_status uf_gap_find(uf_work *work, const uf_plan *plan, double detection_sigma, uf_channel *near,
+UF_MUST_USE uf_status uf_gap_find(uf_work *work, uf_plan *plan, double detection_sigma, uf_channel *near,
                                   const uf_channel *wide, const uf_cell_map *cells, uf_gap_map *map, uf_error *error);
 
 #endif

@@ -78,7 +78,7 @@ static tally tally_cell(cell_job *job, int label, uf_cell *row)
     float core_px = (float)(2.0 * 2.3548 * in->plan->psf_sigma_um / in->plan->pixel_size_um) + 0.5f;
     float rim_px = (float)(in->settings->contact.rim_um / in->plan->pixel_size_um) + 0.5f;
     float below_zero = (float)(-3.0 * uf_gap_noise_nm(in->plan, in->plan->restore_variance, in->near, in->wide,
-                                                      row->near_mean_adu + 1e-9, row->wide_mean_adu + 1e-9));
+                                                      row->near_mean_adu + 1e-9, row->dye_mean_adu + 1e-9));
     tally t = {0};
     for (int y = box.y0; y < box.y1; y++) {
         const int32_t *label_row = uf_labels_row(labels, y);
@@ -119,13 +119,16 @@ static void mark_contact(const cell_job *job, int label, uf_mask mask)
     const uf_measure_input *in = job->in;
     uf_box box = job->boxes[label];
     float cutoff = (float)in->settings->contact.cutoff_nm;
+    float bright = (float)in->settings->contact.near_threshold_adu; /* NaN: nothing is */
     for (int y = box.y0; y < box.y1; y++) {
         const int32_t *labels = uf_labels_row(in->cells->labels, y);
-        const float *gap = uf_plane_row(in->gaps->gap_nm, y);
+        const float *gap = uf_plane_row(in->gaps->gap_nm, y), *near = uf_plane_row(in->gaps->near_adu, y);
         const uint8_t *state = uf_mask_row(in->gaps->state, y);
         uint8_t *row = uf_mask_row(mask, y - box.y0);
-        for (int x = box.x0; x < box.x1; x++)
-            row[x - box.x0] = labels[x] == label && state[x] == UF_GAP_RESOLVED && gap[x] <= cutoff;
+        for (int x = box.x0; x < box.x1; x++) {
+            int touches = in->plan->has_gap ? state[x] == UF_GAP_RESOLVED && gap[x] <= cutoff : near[x] >= bright;
+            row[x - box.x0] = labels[x] == label && touches;
+        }
     }
 }
 
@@ -254,19 +257,50 @@ static void fill_gaps(cell_job *job, const tally *t, uf_cell *row)
     row->above_reference_fraction = (double)NAN;
     if (t->resolved && !job->in->plan->series.count)
         row->above_reference_fraction = (double)t->above_reference / (double)t->resolved;
-    row->gap_kind = UF_GAP_ABSOLUTE;
+    row->gap_kind = job->in->plan->is_relative ? UF_GAP_RELATIVE : UF_GAP_ABSOLUTE;
 }
 
-static int is_too_dim(const uf_cell *row)
+/* No gap, nothing that is made of gaps. */
+static void blank_gaps(uf_cell *row)
 {
-    return row->flags >> UF_FLAG_TOO_DIM & 1u;
+    double *const values[] = {&row->gap_p05_nm,
+                              &row->gap_p25_nm,
+                              &row->gap_median_nm,
+                              &row->gap_p75_nm,
+                              &row->gap_p95_nm,
+                              &row->gap_core_median_nm,
+                              &row->band_focal_um2,
+                              &row->band_close_um2,
+                              &row->band_far_um2,
+                              &row->unresolved_um2,
+                              &row->cleft_volume_um3,
+                              &row->above_reference_fraction,
+                              &row->gap_random_nm,
+                              &row->gap_systematic_nm,
+                              &row->gap_limit_nm,
+                              &row->contact_area_low_um2,
+                              &row->contact_area_high_um2,
+                              &row->attachment_fraction_low,
+                              &row->attachment_fraction_high,
+                              &row->contact_area_minus10_um2,
+                              &row->contact_area_plus10_um2};
+    for (size_t k = 0; k < sizeof values / sizeof values[0]; k++)
+        *values[k] = (double)NAN;
+    row->gap_kind = UF_GAP_NONE;
+}
+
+/* Whether contact is reported: not below the detection limit, and without a gap only by a threshold. */
+static int has_contact(const cell_job *job, const uf_cell *row)
+{
+    return job->in->plan->has_gap ? !(row->flags >> UF_FLAG_TOO_DIM & 1u)
+                                  : !isnan(job->in->settings->contact.near_threshold_adu);
 }
 
 static void fill_contact(const cell_job *job, const tally *t, const patches *p, uf_cell *row)
 {
     double cutoff = job->in->settings->contact.cutoff_nm;
     row->rim_area_fraction = (double)t->rim / (double)t->pixels;
-    if (is_too_dim(row)) {
+    if (!has_contact(job, row)) {
         row->contact_area_um2 = row->attachment_fraction = row->contact_area_minus10_um2 = (double)NAN;
         row->contact_area_plus10_um2 = row->contact_patches = row->largest_patch_um2 = (double)NAN;
         row->contact_in_rim_fraction = (double)NAN;
@@ -293,11 +327,11 @@ static void fill_flags(const cell_job *job, const tally *t, uf_cell *row)
         row->flags |= 1u << UF_FLAG_CLIPPED;
     if (t->touching)
         row->flags |= 1u << UF_FLAG_TOUCHING;
-    if (4 * (t->pixels - t->resolved) > t->pixels)
+    if (job->in->plan->has_gap && 4 * (t->pixels - t->resolved) > t->pixels)
         row->flags |= 1u << UF_FLAG_UNRESOLVED;
     row->gap_limit_nm = uf_gap_limit_nm(job->in->plan, job->in->settings->contact.detection_sigma, job->in->near,
                                         job->in->wide, t->dye / (double)t->pixels);
-    if (row->gap_limit_nm < job->in->settings->contact.cutoff_nm)
+    if (job->in->plan->has_gap && row->gap_limit_nm < job->in->settings->contact.cutoff_nm)
         row->flags |= 1u << UF_FLAG_TOO_DIM;
 }
 
@@ -306,7 +340,7 @@ static void fill_means(const cell_job *job, int label, uf_cell *row)
 {
     const uf_measure_input *in = job->in;
     uf_box box = job->boxes[label];
-    double near = 0, wide = 0, near2 = 0, wide2 = 0, pixels = 0, background = in->wide->background_adu;
+    double near = 0, wide = 0, dye = 0, near2 = 0, wide2 = 0, pixels = 0, background = in->wide->background_adu;
     for (int y = box.y0; y < box.y1; y++) {
         const int32_t *labels = uf_labels_row(in->cells->labels, y);
         const float *near_row = uf_plane_row(in->gaps->near_adu, y), *wide_row = uf_plane_row(in->wide->image, y);
@@ -315,6 +349,7 @@ static void fill_means(const cell_job *job, int label, uf_cell *row)
                 double n = (double)near_row[x], w = (double)wide_row[x] - background;
                 near += n;
                 wide += w;
+                dye += (double)uf_plane_row(in->gaps->dye_adu, y)[x];
                 near2 += n * n;
                 wide2 += w * w;
                 pixels++;
@@ -322,6 +357,7 @@ static void fill_means(const cell_job *job, int label, uf_cell *row)
     }
     row->near_mean_adu = near / pixels;
     row->wide_mean_adu = wide / pixels;
+    row->dye_mean_adu = dye / pixels;
     row->near_variation = sqrt(fmax(0, near2 / pixels - pow(near / pixels, 2))) / fabs(near / pixels);
     row->wide_variation = sqrt(fmax(0, wide2 / pixels - pow(wide / pixels, 2))) / fabs(wide / pixels);
     row->ratio_mean = row->near_mean_adu / row->wide_mean_adu;
@@ -391,12 +427,14 @@ static uf_status measure_cell(uf_work *work, cell_job *job, int label, uf_cell *
     tally t = tally_cell(job, label, row);
     fill_flags(job, &t, row);
     fill_gaps(job, &t, row);
-    if (!is_too_dim(row)) /* what is not reported is not on the contact map either */
+    if (has_contact(job, row)) /* what is not reported is not on the contact map either */
         status = find_patches(work, job, label, &p, error);
     if (status != UF_OK)
         return status;
     fill_contact(job, &t, &p, row);
     uf_fill_intervals(job->in, row);
+    if (!job->in->plan->has_gap)
+        blank_gaps(row);
     return UF_OK;
 }
 

@@ -37,11 +37,6 @@ static double variation_ratio(const uf_measure_input *input, const uf_cell *row)
     return row->wide_variation / row->near_variation;
 }
 
-static double near_over_wide(const uf_measure_input *input, const uf_cell *row)
-{
-    return row->ratio_mean / input->plan->reference_ratio;
-}
-
 /* Share of cells whose value exceeds the limit: more than half of them is more than half of the field. */
 static int most_cells_exceed(const uf_measure_input *input, const uf_cell *rows, int count, cell_value *value,
                              double limit)
@@ -83,8 +78,9 @@ static uf_flags field_flags(const uf_measure_input *input, const uf_cell *rows, 
 {
     if (!count)
         return 1u << UF_FLAG_EMPTY;
-    int swapped = most_cells_exceed(input, rows, count, variation_ratio, swapped_variation) &&
-                  most_cells_exceed(input, rows, count, near_over_wide, 1);
+    /* A membrane's wide image is the evener one; cytosol is not. */
+    int swapped = input->plan->signal == UF_SIGNAL_RATIO &&
+                  most_cells_exceed(input, rows, count, variation_ratio, swapped_variation);
     int too_bright = most_cells_exceed(input, rows, count, too_bright_share, most_too_bright);
     return channel_flags(input, field) |
            flag_if(field->near_focus < least_near_focus || field->wide_focus < least_wide_focus,
@@ -98,6 +94,7 @@ void uf_measure_field(const uf_measure_input *input, const uf_cell *rows, int sp
 {
     uf_labels labels = input->cells->labels;
     double px = input->plan->pixel_size_um, contact = 0;
+    int reported = 0;
     field->cells = labels.count;
     field->cells_counted = 0;
     field->spots = spots;
@@ -105,9 +102,10 @@ void uf_measure_field(const uf_measure_input *input, const uf_cell *rows, int sp
     for (int k = 0; k < labels.count; k++) {
         field->cells_counted += rows[k].box_x0 > 0 && rows[k].box_y0 > 0;
         contact = sum_or_zero(contact, rows[k].contact_area_um2);
+        reported += !isnan(rows[k].contact_area_um2);
     }
     field->cells_per_mm2 = field->cells_counted / field->field_area_mm2;
-    field->contact_um2_per_mm2 = contact / field->field_area_mm2;
+    field->contact_um2_per_mm2 = reported || !labels.count ? contact / field->field_area_mm2 : (double)NAN;
     field->near_background_adu = input->near->background_adu;
     field->wide_background_adu = input->wide->background_adu;
     field->near_noise_adu = input->near->noise_adu;
@@ -115,7 +113,8 @@ void uf_measure_field(const uf_measure_input *input, const uf_cell *rows, int sp
     field->near_saturated_fraction = input->near->saturated_fraction;
     field->wide_saturated_fraction = input->wide->saturated_fraction;
     /* What a series finds for itself is no reference that anything was measured against. */
-    field->reference_ratio = input->plan->series.count ? (double)NAN : input->plan->reference_ratio;
+    int has_reference = input->plan->has_gap && !input->plan->series.count;
+    field->reference_ratio = has_reference ? input->plan->reference_ratio : (double)NAN;
     field->depth_nm = input->plan->depth_nm;
     field->flags |= field_flags(input, rows, labels.count, field);
 }

@@ -29,15 +29,15 @@ static double near_at(const uf_plan *plan, double gap_nm, double dye_adu)
 /* 1 sigma that both backgrounds' uncertainties move a gap by. */
 static double background_part(const uf_measure_input *in, const uf_cell *row, double gap_nm)
 {
-    double dye = row->wide_mean_adu, near = near_at(in->plan, gap_nm, dye);
+    double dye = row->dye_mean_adu, near = near_at(in->plan, gap_nm, dye);
     if (!(dye > 0) || !(near > 0))
         return 0;
     if (in->plan->series.count) {
         uf_field_kind kind = {&in->plan->bench, in->plan->law.model, in->plan->law.stray};
         return uf_series_background_nm(&in->plan->series, &kind, in->near, near, gap_nm);
     }
-    return uf_gap_per_ln(in->plan, gap_nm) *
-           hypot(in->near->background_sd_adu / near, in->wide->background_sd_adu / dye);
+    double of_wide = in->plan->signal == UF_SIGNAL_NEAR ? 0 : in->wide->background_sd_adu / dye;
+    return uf_gap_per_ln(in->plan, gap_nm) * hypot(in->near->background_sd_adu / near, of_wide);
 }
 
 static double systematic_part(const uf_plan *plan, double gap_nm)
@@ -46,7 +46,7 @@ static double systematic_part(const uf_plan *plan, double gap_nm)
         return uf_series_systematic(&plan->series, gap_nm);
     double ratio = uf_gap_per_ln(plan, gap_nm) * hypot(plan->reference_sd, plan->normalisation_sd);
     double depth = fabs(gap_nm - plan->reference_gap_nm) * plan->depth_sd_nm / plan->depth_nm;
-    return hypot(ratio, depth);
+    return hypot(hypot(ratio, depth), plan->reference_gap_sd_nm);
 }
 
 static void fill_gap_sds(const uf_measure_input *in, uf_cell *row)
@@ -56,9 +56,8 @@ static void fill_gap_sds(const uf_measure_input *in, uf_cell *row)
     if (isnan(gap))
         return;
     double pixels = row->spread_area_um2 / (px * px);
-    double near = near_at(in->plan, gap, row->wide_mean_adu);
-    double noise =
-        uf_gap_noise_nm(in->plan, in->plan->restore_variance, in->near, in->wide, near, row->wide_mean_adu);
+    double near = near_at(in->plan, gap, row->dye_mean_adu);
+    double noise = uf_gap_noise_nm(in->plan, in->plan->restore_variance, in->near, in->wide, near, row->dye_mean_adu);
     double median_part = isnan(noise) ? 0 : 1.2533 * noise / sqrt(pixels);
     row->gap_random_nm = hypot(median_part, background_part(in, row, gap));
     row->gap_systematic_nm = systematic_part(in->plan, gap);
@@ -69,9 +68,8 @@ static void fill_gap_sds(const uf_measure_input *in, uf_cell *row)
  * The gaps of a series are smoothed, by a factor f of the variance: s sqrt f, tossed in groups of 1 / f. */
 static double chance_pixels(const uf_measure_input *in, const uf_cell *row, double cutoff)
 {
-    double near = near_at(in->plan, cutoff, row->wide_mean_adu);
-    double noise =
-        uf_gap_noise_nm(in->plan, in->plan->restore_variance, in->near, in->wide, near, row->wide_mean_adu);
+    double near = near_at(in->plan, cutoff, row->dye_mean_adu);
+    double noise = uf_gap_noise_nm(in->plan, in->plan->restore_variance, in->near, in->wide, near, row->dye_mean_adu);
     double density = (uf_area_under(row, cutoff + 2) - uf_area_under(row, cutoff - 2)) / 4;
     double smoothing = in->plan->series.count ? uf_psf_smoothing(in->plan) : 1;
     return isnan(noise) ? 0 : sqrt(density * noise / sqrt(smoothing) / 1.7724538509055159);

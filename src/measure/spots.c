@@ -35,7 +35,7 @@ static const double rim_error = 0.35, rim_reach_um = 1.0;
 /* Contrast that noise alone does not reach in this cell, by gap: the noise grows with the gap. */
 static double needed_contrast(const uf_measure_input *in, const uf_cell *row, double gap_nm)
 {
-    double dye = row->wide_mean_adu;
+    double dye = row->dye_mean_adu;
     double near = dye * in->plan->reference_ratio * exp(uf_decay_ln(&in->plan->decay, gap_nm));
     double noise = uf_gap_noise_nm(in->plan, uf_psf_smoothing(in->plan), in->near, in->wide, near, dye);
     double by_noise = in->settings->spots.contrast_sigma * noise;
@@ -206,8 +206,8 @@ static uf_spot make_spot(const uf_measure_input *in, const spot_sums *s)
     spot.length_um = shape.axis_long_px * px;
     spot.width_um = shape.axis_short_px * px;
     spot.orientation_deg = shape.orientation_deg;
-    spot.gap_nm = (double)s->least_gap;
-    spot.contrast_nm = (double)s->top;
+    spot.gap_nm = in->plan->has_gap ? (double)s->least_gap : (double)NAN;
+    spot.contrast_nm = in->plan->has_gap ? (double)s->top : (double)NAN;
     spot.near_peak_adu = (double)s->near_peak;
     int x = (int)lround(spot.x_px), y = (int)lround(spot.y_px);
     spot.rim_distance_um = fmax(0, ((double)uf_plane_row(in->cells->distance_px, y)[x] - 0.5)) * px;

@@ -22,7 +22,7 @@ double uf_gap_limit_nm(const uf_plan *plan, double detection_sigma, const uf_cha
                        double dye_adu)
 {
     double least = detection_sigma * uf_smoothed_sd(plan, near, 0);
-    double wide_least = detection_sigma * uf_smoothed_sd(plan, wide, 0);
+    double wide_least = plan->signal == UF_SIGNAL_NEAR ? 0 : detection_sigma * uf_smoothed_sd(plan, wide, 0);
     double ratio = least / (dye_adu > wide_least ? dye_adu : wide_least);
     double limit = uf_decay_gap(&plan->decay, log(ratio / plan->reference_ratio));
     return plan->series.count ? fmin(limit, plan->series.farthest_nm) : limit;
@@ -45,7 +45,10 @@ double uf_gap_noise_nm(const uf_plan *plan, double filter, const uf_channel *nea
         return uf_series_noise_nm(&plan->series, &kind, near, near_adu, at);
     }
     double near_variance = uf_noise_variance(&near->noise, near->background_adu + near_adu) / (near_adu * near_adu);
-    double wide_variance = uf_noise_variance(&wide->noise, wide->background_adu + dye_adu) / (dye_adu * dye_adu);
+    double wide_variance =
+        plan->signal == UF_SIGNAL_NEAR
+            ? 0
+            : uf_noise_variance(&wide->noise, wide->background_adu + dye_adu) / (dye_adu * dye_adu);
     double gap = uf_decay_gap(&plan->decay, log(near_adu / dye_adu / plan->reference_ratio));
     return uf_gap_per_ln(plan, gap) * sqrt(filter * (near_variance + wide_variance));
 }

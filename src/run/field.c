@@ -52,6 +52,10 @@ static uf_status align(uf_work *work, const uf_settings *settings, uf_field_resu
 {
     uf_shift_estimate found = {0};
     uf_status status = UF_OK;
+    if (r->one_image) {
+        r->field.shift_dx_px = r->field.shift_dy_px = r->field.shift_score = (double)NAN;
+        return UF_OK;
+    }
     if (settings->shift.estimate != UF_ESTIMATE_NO)
         status = uf_shift_find(work, &r->near, &r->wide, &found, error);
     if (status != UF_OK)
@@ -66,7 +70,7 @@ static uf_status find_cells(uf_work *work, const uf_plan *plan, const uf_setting
                             uf_error *error)
 {
     double clear_px = clear_um / plan->pixel_size_um;
-    uf_status status = uf_segment(work, &r->wide, settings, plan->pixel_size_um, &r->cells, error);
+    uf_status status = uf_segment(work, &r->wide, settings, plan->pixel_size_um, r->mask, &r->cells, error);
     if (status == UF_OK)
         status = uf_background_refine(work, &r->cells, clear_px, &r->near, error);
     for (int k = 0; status == UF_OK && k < plan->series.count; k++)
@@ -139,16 +143,24 @@ static uf_status judge_series(uf_work *work, uf_field_result *r, uf_error *error
     return UF_OK;
 }
 
-/* Gaps by ratio or by series. A series finds its own reference, which `own` gets beside all else of the plan. */
+/* Gaps by ratio or by series. A reference that is found in the field is what `own` gets beside all else of the plan. */
 static uf_status find_gaps(uf_work *work, const uf_plan *plan, double detection_sigma, uf_field_result *r,
                            uf_plan *own, uf_error *error)
 {
     *own = *plan;
     r->field.series_chi_square = (double)NAN;
     if (!plan->series.count)
-        return uf_gap_find(work, plan, detection_sigma, &r->near, &r->wide, &r->cells, &r->gaps, error);
+        return uf_gap_find(work, own, detection_sigma, &r->near, &r->wide, &r->cells, &r->gaps, error);
     uf_status status = uf_gap_find_series(work, own, detection_sigma, r->pages, &r->wide, &r->cells, &r->gaps, error);
     return status == UF_OK ? judge_series(work, r, error) : status;
+}
+
+/* Where no gap is reported none is drawn or written either. */
+static void forget_gaps(uf_gap_map *gaps)
+{
+    for (int y = 0; y < gaps->gap_nm.height; y++)
+        for (int x = 0; x < gaps->gap_nm.width; x++)
+            uf_plane_row(gaps->gap_nm, y)[x] = NAN;
 }
 
 static uf_status measure(uf_work *work, const uf_plan *plan, const uf_settings *settings, uf_field_result *r,
@@ -161,6 +173,8 @@ static uf_status measure(uf_work *work, const uf_plan *plan, const uf_settings *
         status = uf_measure_spots(work, &in, r->rows, &r->spots, &spots, error);
     if (status == UF_OK)
         uf_measure_field(&in, r->rows, spots, &r->field);
+    if (status == UF_OK && !plan->has_gap)
+        forget_gaps(&r->gaps);
     return status;
 }
 
@@ -179,6 +193,7 @@ uf_status uf_field_run(uf_work *work, const uf_plan *plan, const uf_settings *se
         status = find_gaps(work, plan, settings->contact.detection_sigma, result, &own, error);
     if (status == UF_OK)
         status = measure(work, &own, settings, result, error);
+    result->reference_ratio = status == UF_OK ? own.reference_ratio : (double)NAN;
     /* An empty field has no shift to be sure of. */
     if (status == UF_OK && !result->field.cells)
         result->field.flags &= ~(1u << UF_FLAG_SHIFT_UNSURE | 1u << UF_FLAG_SHIFT_DIFFERS);

@@ -8,9 +8,12 @@
 
 /* What one field gives. Planes and rows live in the worker's arena; spots are freed by uf_field_result_free. */
 typedef struct uf_field_result {
-    uf_channel near, wide; /* wide after the shift */
-    uf_channel *pages;     /* of a series, in the order of its angles, in the arena; near is the widest of them. NULL
+    uf_channel near, wide;  /* wide after the shift */
+    uf_channel *pages;      /* of a series, in the order of its angles, in the arena; near is the widest of them. NULL
                               without a series */
+    uf_plane mask;          /* given labels, data NULL without */
+    int one_image;          /* wide is a copy of near: there is no shift between them */
+    double reference_ratio; /* at gap 0, as it was in force in this field */
     uf_cell_map cells;
     uf_gap_map gaps;
     uf_mask contact;

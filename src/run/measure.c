@@ -190,6 +190,24 @@ static uf_status read_near(measure_job *job, double *pixel_um, uf_error *error)
                                                   : read_channel(job, UF_NEAR, &job->result.near, 1, pixel_um, error);
 }
 
+/* Without a wide image cells are outlined in the near one, which must then be kept beside what becomes of it. */
+static uf_status copy_near(measure_job *job, uf_error *error)
+{
+    uf_channel *wide = &job->result.wide;
+    uf_plane near = job->result.near.image;
+    if (job->settings->cells.label != UF_LABEL_ADHESION_PROTEIN)
+        return uf_fail(
+            error, UF_USAGE,
+            "measure needs the wide image as well: underfoot measure NEAR WIDE; only label = adhesion-protein "
+            "does without");
+    *wide = job->result.near;
+    job->result.one_image = 1;
+    uf_status status = uf_plane_take(&job->work, near.width, near.height, &wide->image, error);
+    for (int y = 0; status == UF_OK && y < near.height; y++)
+        memcpy(uf_plane_row(wide->image, y), uf_plane_row(near, y), (size_t)near.width * sizeof(float));
+    return status;
+}
+
 /* Everything that can be wrong with the settings is said before pixels are worked on. */
 static uf_status read_inputs(measure_job *job, uf_error *error)
 {
@@ -200,7 +218,11 @@ static uf_status read_inputs(measure_job *job, uf_error *error)
     if (status == UF_OK)
         status = note_decay_file(job, error);
     if (status == UF_OK)
-        status = read_channel(job, UF_WIDE, &job->result.wide, 1, &wide_um, error);
+        status = job->request->wide_path ? read_channel(job, UF_WIDE, &job->result.wide, 1, &wide_um, error)
+                                         : copy_near(job, error);
+    if (status == UF_OK)
+        status =
+            read_companion(job, "mask", job->request->mask_path, job->result.near.image, &job->result.mask, error);
     if (status != UF_OK)
         return status;
     uf_plane near = job->result.near.image, wide = job->result.wide.image;
@@ -248,6 +270,25 @@ static void warn_settings(measure_job *job)
         if (!job->settings->flat[k].file)
             uf_text_printf(&job->warnings, "no [%s.flat]: uneven light goes into the gaps\n", channel_names[k]);
     }
+}
+
+static void warn_reference(measure_job *job)
+{
+    const uf_plan *plan = &job->plan;
+    if (!plan->has_gap)
+        uf_text_printf(&job->warnings,
+                       "an adhesion protein's light tells no gap: gap columns are empty, spots are told by "
+                       "near contrast%s\n",
+                       isnan(job->settings->contact.near_threshold_adu)
+                           ? ", and contact is not reported without near_threshold_adu in [contact]"
+                           : ", contact by near_threshold_adu");
+    else if (plan->is_relative)
+        uf_text_printf(&job->warnings,
+                       "gaps are relative%s: compare them within this bench and label, not with measured distances\n",
+                       plan->reference_from_cell
+                           ? " to each cell's own closest part, so that a cell lifted as a whole does "
+                             "not show"
+                           : "");
 }
 
 static void warn_field(measure_job *job)
@@ -347,11 +388,17 @@ static void settings_line(const measure_job *job, uf_text *line)
     static const char *const models[] = {
         [UF_FIELD_EXPONENTIAL] = "exponential", [UF_FIELD_LAYERED] = "layered", [UF_FIELD_TABLE] = "measured"};
     const uf_settings *s = job->settings;
+    if (!job->plan.has_gap) {
+        uf_text_add(line, "adhesion-protein label: no gap; spots by the contrast of the near image");
+        return;
+    }
     uf_text_printf(line, "%s decay%s, depth %.1f nm, contact at most %.4g nm, ", models[job->plan.law.model],
                    job->plan.law.stray.fraction > 0 ? " with stray light" : "", job->plan.depth_nm,
                    s->contact.cutoff_nm);
     if (job->plan.series.count)
         uf_text_printf(line, "series of %d angles", job->plan.series.count);
+    else if (job->plan.reference_from_cell)
+        uf_text_printf(line, "each cell's closest part taken to lie at %.4g nm", job->plan.reference_gap_nm);
     else
         uf_text_printf(line, "reference %.4g at gap 0", job->plan.reference_ratio);
 }
@@ -545,6 +592,7 @@ static uf_status measure_and_write(measure_job *job, double started, uf_measure_
     job->result.field.field_id = job->request->near_path;
     warn_optics(job);
     warn_settings(job);
+    warn_reference(job);
     warn_field(job);
     /* run.json goes last: where it stands, the rest stands too. An older one must not vouch for new tables. */
     status = uf_output_remove(&job->output, NULL, "run.json", error);

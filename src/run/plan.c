@@ -100,16 +100,70 @@ static uf_status find_pixel_size(const uf_settings *s, double image_pixel_um, do
                    "neither the instrument file nor the image says how large a pixel is; add size_um to [pixel]");
 }
 
+/* Dye all through the cell above the gap: each field is weighed by how deep it reaches into the cell, the evanescent one
+ * by its depth there, the stray light by its own. */
+static uf_status weigh_stray_by_depth(uf_plan *plan, uf_error *error)
+{
+    const uf_bench *b = &plan->bench;
+    double in_cell = uf_depth_nm(b->wavelength_nm, b->na_effective, b->cell_n), share = plan->law.stray.fraction;
+    if (isnan(in_cell))
+        return uf_fail(
+            error, UF_INPUT,
+            "label = cytosol needs light that is totally reflected by the cell: n sin(angle) %.4f is not above "
+            "cell_n %.4f",
+            b->na_effective, b->cell_n);
+    double stray = share * plan->law.stray.depth_nm;
+    plan->law.stray.fraction = uf_round_digits(stray / ((1 - share) * in_cell + stray), 12);
+    return UF_OK;
+}
+
 /* The plain exponential has its closed form; every other table is walked. */
 static uf_status make_decay(const uf_settings *s, uf_plan *plan, uf_error *error)
 {
     uf_status status = uf_decay_law_make(s, &plan->law, error);
     if (status != UF_OK)
         return status;
+    if (s->cells.label == UF_LABEL_CYTOSOL)
+        status = weigh_stray_by_depth(plan, error);
+    if (status != UF_OK)
+        return status;
     if (plan->law.model != UF_FIELD_EXPONENTIAL || plan->law.stray.fraction > 0)
         return uf_decay_make(&plan->decay, &plan->bench, &plan->law, error);
     uf_decay_exponential(&plan->decay, plan->depth_nm);
     return UF_OK;
+}
+
+/* A film is one layer in the wide image, a cell two; and above the film is medium, above the gap of a cell the cell. So
+ * at gap 0 a cell shows half the ratio, times what the cell adds to the field there. */
+static double film_to_cell(const uf_settings *s, const uf_plan *plan)
+{
+    uf_decay_law under_medium = plan->law;
+    if (under_medium.model == UF_FIELD_LAYERED)
+        under_medium.model = UF_FIELD_EXPONENTIAL;
+    double at_film = uf_relative_excitation(&plan->bench, &under_medium, s->reference.gap_nm);
+    double cell_adds = uf_layered_intensity(&plan->bench, 0) / uf_interface_intensity(&plan->bench);
+    return s->reference.ratio / at_film / 2 * cell_adds;
+}
+
+/* An assumed reference is found in each field (gap/own_reference.h); until then its ratio is not known. */
+static void set_reference(const uf_settings *s, uf_plan *plan)
+{
+    int measured = s->reference.from == UF_SETTING_NOT_GIVEN;
+    plan->has_gap = s->cells.label != UF_LABEL_ADHESION_PROTEIN;
+    plan->signal = s->cells.label == UF_LABEL_MEMBRANE ? UF_SIGNAL_RATIO : UF_SIGNAL_NEAR;
+    plan->is_relative = !measured || s->cells.label == UF_LABEL_CYTOSOL;
+    plan->reference_from_cell = !measured || !plan->has_gap;
+    plan->reference_gap_nm = s->reference.gap_nm;
+    plan->reference_gap_sd_nm = s->reference.gap_sd_nm;
+    plan->normalisation_sd = s->reference.normalisation_sd;
+    plan->reference_ratio = (double)NAN;
+    if (plan->reference_from_cell)
+        return;
+    double at_zero = s->reference.kind == UF_REFERENCE_FILM
+                         ? film_to_cell(s, plan)
+                         : s->reference.ratio * exp(-uf_decay_ln(&plan->decay, s->reference.gap_nm));
+    plan->reference_ratio = uf_round_digits(at_zero, 12);
+    plan->reference_sd = s->reference.ratio_sd / s->reference.ratio;
 }
 
 uf_status uf_plan_make(const uf_settings *s, double image_pixel_um, uf_plan *plan, uf_error *error)
@@ -136,14 +190,11 @@ uf_status uf_plan_make(const uf_settings *s, double image_pixel_um, uf_plan *pla
         uf_round_digits(uf_restore_variance(plan->psf_sigma_um / plan->pixel_size_um, plan->restore_gain), 12);
     if (plan->series.count) {
         plan->reference_ratio = (double)NAN;
+        plan->has_gap = 1;
         uf_series_plan_limits(s, plan);
         return UF_OK;
     }
-    plan->reference_gap_nm = s->reference.gap_nm;
-    double at_zero = s->reference.ratio * exp(-uf_decay_ln(&plan->decay, s->reference.gap_nm));
-    plan->reference_ratio = uf_round_digits(at_zero, 12);
-    plan->reference_sd = s->reference.ratio_sd / s->reference.ratio;
-    plan->normalisation_sd = s->reference.normalisation_sd;
+    set_reference(s, plan);
     if (plan->law.model == UF_FIELD_EXPONENTIAL)
         plan->layered_effect_nm = uf_round_digits(uf_layered_effect_nm(b, s->contact.cutoff_nm), 9);
     return UF_OK;

@@ -128,6 +128,22 @@ static json_t *libraries_json(void)
     return o;
 }
 
+static void reference_of_gap(uf_text *out, const uf_settings *s, const uf_plan *plan)
+{
+    if (plan->reference_from_cell)
+        uf_text_printf(out, " relative to each cell's own closest hundredth, assumed to lie at %.4g nm. ",
+                       plan->reference_gap_nm);
+    else if (s->reference.kind == UF_REFERENCE_FILM)
+        uf_text_printf(out,
+                       " relative to a ratio of %.4g measured on a film at %.4g nm, corrected for one layer of dye "
+                       "and for medium above it. ",
+                       s->reference.ratio, plan->reference_gap_nm);
+    else
+        uf_text_printf(out, " relative to a measured %s of %.4g at a gap of %.4g nm. ",
+                       plan->signal == UF_SIGNAL_NEAR ? "near signal" : "ratio", s->reference.ratio,
+                       plan->reference_gap_nm);
+}
+
 static void methods_of_gap(uf_text *out, const uf_settings *s, const uf_plan *plan)
 {
     static const char *const models[] = {[UF_FIELD_EXPONENTIAL] = "an exponential decay",
@@ -163,8 +179,7 @@ static void methods_of_gap(uf_text *out, const uf_settings *s, const uf_plan *pl
     if (plan->series.count)
         uf_text_add(out, "; amplitude and gap were free and no reference was used. ");
     else
-        uf_text_printf(out, " relative to a measured ratio of %.4g at a gap of %.4g nm. ", s->reference.ratio,
-                       plan->reference_gap_nm);
+        reference_of_gap(out, s, plan);
 }
 
 void uf_methods_paragraph(uf_text *out, const uf_settings *s, const uf_plan *plan)

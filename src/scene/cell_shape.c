@@ -113,20 +113,52 @@ static double smooth_minimum(double a, double b)
     return (a < b ? a : b) - (h > 0 ? h * h / (4 * fillet) : 0);
 }
 
-static double drawn_value(const uf_cell_shape *shape, double x, double y)
+/* Whether an arm is so far that joining it with `value` would leave that as it is. */
+static bool is_far(double x, double y, double value, const uf_shape_arm *arm)
+{
+    double dx = x - arm->middle_x, dy = y - arm->middle_y, needed = value + fillet + arm->reach;
+    return needed <= 0 || dx * dx + dy * dy >= needed * needed;
+}
+
+static bool all_arms_far(const uf_cell_shape *shape, double x, double y, double value)
+{
+    for (int k = 0; k < shape->arms; k++)
+        if (!is_far(x, y, value, &shape->arm[k]))
+            return false;
+    return true;
+}
+
+/* Joining arms only ever lowers the value, so that most points are decided by the body, or by being far from it. */
+static bool is_inside(const uf_cell_shape *shape, double x, double y)
 {
     double r = sqrt(x * x + y * y);
     if (r < shape->radius_min)
-        return r - shape->radius_min;
+        return true;
+    if (r > shape->radius_max && all_arms_far(shape, x, y, r - shape->radius_min))
+        return false;
     double value = r - (r < shape->radius_max + 1 ? body_radius(shape, x, y) : shape->radius_max);
-    for (int k = 0; k < shape->arms; k++)
-        value = smooth_minimum(value, arm_value(x, y, &shape->arm[k]));
-    return value;
+    for (int k = 0; k < shape->arms && value >= 0; k++)
+        if (!is_far(x, y, value, &shape->arm[k]))
+            value = smooth_minimum(value, arm_value(x, y, &shape->arm[k]));
+    return value < 0;
 }
 
-double uf_shape_value(const uf_cell_shape *shape, double x, double y)
+bool uf_shape_covers(const uf_cell_shape *shape, double x, double y)
 {
-    return shape->scale * drawn_value(shape, x / shape->scale, y / shape->scale);
+    return is_inside(shape, x / shape->scale, y / shape->scale);
+}
+
+static void bound_arms(uf_cell_shape *shape)
+{
+    for (int k = 0; k < shape->arms; k++) {
+        uf_shape_arm *arm = &shape->arm[k];
+        arm->middle_x = (arm->x[0] + arm->x[1] + arm->x[2]) / 3;
+        arm->middle_y = (arm->y[0] + arm->y[1] + arm->y[2]) / 3;
+        arm->reach = 0;
+        for (int i = 0; i < 3; i++)
+            arm->reach = fmax(arm->reach, hypot(arm->x[i] - arm->middle_x, arm->y[i] - arm->middle_y));
+        arm->reach += fmax(arm->root_width, arm->tip_width);
+    }
 }
 
 /* Area by counting on a grid: 0.5 % is plenty for a size. */
@@ -142,7 +174,7 @@ static void measure_shape(uf_cell_shape *shape)
     double inside = 0;
     for (int j = -half; j <= half; j++)
         for (int i = -half; i <= half; i++)
-            inside += drawn_value(shape, i * step, j * step) < 0;
+            inside += is_inside(shape, i * step, j * step);
     shape->scale = sqrt(pi / (inside * step * step));
     shape->reach = reach * shape->scale;
 }
@@ -220,5 +252,6 @@ void uf_shape_draw(uf_random *random, double thinnest, uf_cell_shape *shape)
         draw_spread(random, thinnest, shape);
     add_filopodia(random, thinnest, shape);
     turn_shape(random, shape);
+    bound_arms(shape);
     measure_shape(shape);
 }

@@ -17,6 +17,7 @@ enum { UF_SHAPE_ANGLES = 512, UF_SHAPE_ARMS = 7 };
 typedef struct uf_shape_arm {
     double x[3], y[3];
     double root_width, tip_width;
+    double middle_x, middle_y, reach; /* a disc that holds the arm */
 } uf_shape_arm;
 
 /* Lengths are in radii of the disc of equal area, once drawn. */
@@ -32,7 +33,7 @@ typedef struct uf_cell_shape {
 /* Draws a cell. No arm gets thinner than `thinnest` at its tip (half-width, in the shape's unit). */
 void uf_shape_draw(uf_random *random, double thinnest, uf_cell_shape *shape);
 
-/* The implicit curve at a point, in radii of the disc of equal area; exact only in its sign. */
-double uf_shape_value(const uf_cell_shape *shape, double x, double y);
+/* Whether a point, in radii of the disc of equal area, lies in the cell. */
+bool uf_shape_covers(const uf_cell_shape *shape, double x, double y);
 
 #endif

@@ -48,7 +48,7 @@ void uf_stamp_draw(uf_cell_stamp *stamp, uf_random *random, double radius_px)
     for (int y = first; y <= last; y++) {
         uint8_t *row = uf_mask_row(stamp->mask, y);
         for (int x = first; x <= last; x++) {
-            row[x] = uf_shape_value(&shape, (x - cx) / radius_px, (y - cy) / radius_px) < 0;
+            row[x] = uf_shape_covers(&shape, (x - cx) / radius_px, (y - cy) / radius_px);
             if (row[x]) {
                 grow_box(&stamp->box, x, y);
                 stamp->area++;

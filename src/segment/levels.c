@@ -31,6 +31,7 @@ typedef struct levels {
     uf_labels side;                                      /* 1 inside, 0 outside */
     uf_plane distance;                                   /* to the other side, coarse pixels */
     double background, floor;                            /* nothing below `floor` is a cell */
+    float share;                                         /* of the way from outside to inside: the outline */
     double grid_px_um;                                   /* size of a coarse pixel */
     uf_plane value, weight, spread_value, spread_weight; /* scratch; the last two on a coarser grid still */
     uf_expand_column *columns;
@@ -191,8 +192,8 @@ static uf_status one_round(levels *l, uf_cell_map *map, uf_error *error)
         const float *inside = uf_plane_row(map->plateau_adu, y), *outside = uf_plane_row(map->outside_adu, y);
         float *level = uf_plane_row(l->level, y);
         for (int x = 0; x < l->level.width; x++) {
-            float middle = 0.5f * (inside[x] + outside[x]);
-            level[x] = (double)middle > l->floor ? middle : (float)l->floor;
+            float outline = outside[x] + l->share * (inside[x] - outside[x]);
+            level[x] = (double)outline > l->floor ? outline : (float)l->floor;
         }
     }
     return status;
@@ -200,8 +201,8 @@ static uf_status one_round(levels *l, uf_cell_map *map, uf_error *error)
 
 /* ---- all of it ------------------------------------------------------------------------------- */
 
-/* Below this nothing is a cell: 6 sigma of a coarse pixel's noise, and a twentieth of the field's bright end,
- * below which stray reflections and haze live. */
+/* Below this nothing is a cell: 6 sigma of a coarse pixel's noise, and a tenth of the outline's share of the field's
+ * bright end, below which stray reflections and haze live. */
 static void find_floor(levels *l, const uf_channel *wide, int factor)
 {
     size_t count = (size_t)l->image.width * (size_t)l->image.height,
@@ -209,7 +210,8 @@ static void find_floor(levels *l, const uf_channel *wide, int factor)
     memcpy(l->value.data, l->image.data, count * sizeof *l->value.data);
     double bright = (double)uf_select(l->value.data, count, bright_at) - l->background;
     double noise = 6.0 * wide->noise_adu / factor + 3.0 * wide->background_sd_adu;
-    l->floor = l->background + (0.05 * bright > noise ? 0.05 * bright : noise);
+    double dim = 0.1 * (double)l->share * bright;
+    l->floor = l->background + (dim > noise ? dim : noise);
 }
 
 static uf_status take_planes(levels *l, int width, int height, uf_error *error)
@@ -233,7 +235,7 @@ static void hold_floor(const levels *l, uf_cell_map *map)
         float *inside = uf_plane_row(map->plateau_adu, y);
         const float *outside = uf_plane_row(map->outside_adu, y);
         for (int x = 0; x < map->plateau_adu.width; x++) {
-            float least = 2.0f * (float)l->floor - outside[x];
+            float least = outside[x] + ((float)l->floor - outside[x]) / l->share;
             inside[x] = inside[x] > least ? inside[x] : least;
         }
     }
@@ -244,7 +246,7 @@ static int coarse_size(int pixels, int factor)
     return (pixels + factor - 1) / factor;
 }
 
-uf_status uf_levels_find(uf_work *work, const uf_channel *wide, double pixel_size_um, uf_cell_map *map,
+uf_status uf_levels_find(uf_work *work, const uf_channel *wide, double pixel_size_um, float share, uf_cell_map *map,
                          uf_error *error)
 {
     int factor = (int)(grid_um / pixel_size_um + 0.5);
@@ -255,7 +257,8 @@ uf_status uf_levels_find(uf_work *work, const uf_channel *wide, double pixel_siz
     if (status == UF_OK)
         status = uf_plane_take(work, width, height, &map->outside_adu, error);
     uf_arena_mark mark = uf_arena_now(&work->arena);
-    levels l = {.work = work, .background = wide->background_adu, .grid_px_um = factor * pixel_size_um};
+    levels l = {
+        .work = work, .background = wide->background_adu, .share = share, .grid_px_um = factor * pixel_size_um};
     if (status == UF_OK)
         status = take_planes(&l, width, height, error);
     if (status == UF_OK) {

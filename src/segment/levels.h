@@ -5,9 +5,10 @@
 
 #include "image/channel.h"
 
-/* Fills factor, plateau_adu and outside_adu of the map. UF_MEMORY. */
-UF_MUST_USE uf_status uf_levels_find(uf_work *work, const uf_channel *wide, double pixel_size_um, uf_cell_map *map,
-                                     uf_error *error);
+/* Fills factor, plateau_adu and outside_adu of the map; `share` of the way from outside to plateau is the outline.
+ * UF_MEMORY. */
+UF_MUST_USE uf_status uf_levels_find(uf_work *work, const uf_channel *wide, double pixel_size_um, float share,
+                                     uf_cell_map *map, uf_error *error);
 
 /* Distance from cells on the coarse grid, in image pixels, into map->outside_px (from map->labels). */
 UF_MUST_USE uf_status uf_levels_outside(uf_work *work, uf_cell_map *map, uf_error *error);

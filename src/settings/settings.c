@@ -507,14 +507,22 @@ uf_status uf_settings_check(const uf_settings *settings, uf_error *error)
     uf_status status = check_series(settings, error);
     if (status == UF_OK)
         status = uf_settings_check_optics(settings, error);
-    if (status == UF_OK && !by_series) /* a series needs no reference */
-        status = need(settings->reference.ratio, "ratio", "reference", error);
+    bool assumed = settings->reference.from != UF_SETTING_NOT_GIVEN;
+    bool no_gap = settings->cells.label == UF_LABEL_ADHESION_PROTEIN;
+    if (status == UF_OK && !by_series && !assumed && !no_gap)
+        status =
+            need(settings->reference.ratio, "ratio (or from = cell, with an assumed gap_nm)", "reference", error);
     if (status != UF_OK)
         return status;
     if (!by_series && isnan(settings->interface.angle_deg) && isnan(settings->interface.na_effective) &&
         isnan(settings->interface.depth_nm))
         return uf_fail(error, UF_INPUT,
                        "the instrument file says no angle; add angle_deg, na_effective or depth_nm to [interface]");
+    if (settings->cells.label != UF_LABEL_MEMBRANE && by_series)
+        return uf_fail(error, UF_INPUT, "a series of angles needs label = membrane; take [series] out, or the label");
+    if (settings->cells.label != UF_LABEL_MEMBRANE && settings->reference.kind == UF_REFERENCE_FILM)
+        return uf_fail(error, UF_INPUT,
+                       "kind = film stands for a membrane's dye; with another label use kind = cell");
     if (settings->contact.focal_nm > settings->contact.close_nm)
         return uf_fail(error, UF_INPUT, "focal_nm is larger than close_nm; the focal band must be the closer one");
     if (settings->spots.min_length_um > settings->spots.max_length_um)

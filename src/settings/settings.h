@@ -24,6 +24,7 @@ typedef enum uf_medium_name { UF_WATER, UF_CULTURE_MEDIUM, UF_PBS } uf_medium_na
 typedef enum uf_decay_model { UF_DECAY_EXPONENTIAL, UF_DECAY_LAYERED, UF_DECAY_TABLE } uf_decay_model;
 typedef enum uf_estimate { UF_ESTIMATE_CHECK, UF_ESTIMATE_YES, UF_ESTIMATE_NO } uf_estimate;
 typedef enum uf_reference_kind { UF_REFERENCE_CELL, UF_REFERENCE_FILM } uf_reference_kind;
+typedef enum uf_reference_from { UF_FROM_WELLS, UF_FROM_POOLED, UF_FROM_CELL } uf_reference_from;
 typedef enum uf_label { UF_LABEL_MEMBRANE, UF_LABEL_CYTOSOL, UF_LABEL_ADHESION_PROTEIN } uf_label;
 typedef enum uf_edge_cells { UF_EDGE_WEIGHT, UF_EDGE_KEEP, UF_EDGE_DROP } uf_edge_cells;
 typedef enum uf_overlay_choice {
@@ -39,7 +40,7 @@ typedef struct uf_camera_settings {
     char *dark, *defects;
 } uf_camera_settings;
 
-enum { UF_SETTINGS_LIMIT = 80, UF_SETTING_NOT_GIVEN = -1, UF_REALS_LIMIT = 32 };
+enum { UF_SETTINGS_LIMIT = 96, UF_SETTING_NOT_GIVEN = -1, UF_REALS_LIMIT = 32 };
 
 /* A list of numbers as one setting holds it; count 0: not given. */
 typedef struct uf_reals {
@@ -77,8 +78,8 @@ struct uf_settings {
         int estimate;
     } shift;
     struct {
-        double ratio, ratio_sd, gap_nm, normalisation_sd;
-        int kind;
+        double ratio, ratio_sd, gap_nm, gap_sd_nm, normalisation_sd;
+        int kind, from; /* from: UF_SETTING_NOT_GIVEN when ratio is measured */
     } reference;
     struct {
         uf_reals angles_deg, power;
@@ -90,6 +91,7 @@ struct uf_settings {
     } cells;
     struct {
         double cutoff_nm, focal_nm, close_nm, detection_sigma, attached_threshold, rim_um, min_patch_um2;
+        double near_threshold_adu;
     } contact;
     struct {
         double min_length_um, max_length_um, contrast_sigma;

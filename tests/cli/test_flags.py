@@ -1,0 +1,131 @@
+# SPDX-License-Identifier: GPL-3.0-or-later
+"""Each flag raised by a field that deserves it, made from the demo's first field, and none by that field itself."""
+import csv
+
+import numpy
+import pytest
+import tifffile
+from scipy import ndimage
+
+from conftest import Run
+
+OFFSET = 100
+
+
+def rows(path):
+    with open(path, newline="") as file:
+        return list(csv.DictReader(file))
+
+
+@pytest.fixture
+def flags(demo, tmp_path):
+    """Measures a spoilt pair: (flags of the field, flags of the cells)."""
+    def measure(near, wide, changes=(), more=()):
+        for name, image in (("near", near), ("wide", wide)):
+            tifffile.imwrite(tmp_path / f"{name}.tif", numpy.clip(numpy.rint(image), 0, 65535).astype(numpy.uint16))
+        with open(f"{demo}/day1.ini") as file:
+            text = file.read().replace("file = day1", f"file = {demo}/day1")
+        for old, new in changes:
+            assert old in text
+            text = text.replace(old, new)
+        (tmp_path / "bench.ini").write_text(text)
+        run = Run(["measure", str(tmp_path / "near.tif"), str(tmp_path / "wide.tif"), "-i", str(tmp_path / "bench.ini"),
+                   "-a", f"{demo}/assay.ini", "-o", str(tmp_path / "out"), *more])
+        assert run.status == 0, run.err
+        cells = [set(row["flags"].split(";")) - {""} for row in rows(tmp_path / "out/cells.csv")]
+        return set(rows(tmp_path / "out/fields.csv")[0]["flags"].split(";")) - {""}, cells
+    return measure
+
+
+@pytest.fixture
+def pair(demo):
+    return tuple(tifffile.imread(f"{demo}/day1_a_{k}.tif").astype(float) for k in ("near", "wide"))
+
+
+def test_a_good_field_has_none(flags, pair):
+    field, cells = flags(*pair)
+    assert field == set()
+    assert set().union(*cells) <= {"touching"}
+
+
+def noisy(image, seed=5):
+    """Photon noise of the demo's camera put back after blurring or dimming took it out: 2.17 electrons a count."""
+    dice = numpy.random.default_rng(seed)
+    return dice.poisson(numpy.maximum(image - OFFSET, 0) * 2.17) / 2.17 + OFFSET
+
+
+def test_out_of_focus(flags, pair):
+    near, wide = (noisy(ndimage.gaussian_filter(image, 6)) for image in pair)
+    assert "out_of_focus" in flags(near, wide)[0]
+
+
+def test_uneven(flags, pair):
+    slope = numpy.linspace(0, 300, 512)[None, :]
+    assert "uneven" in flags(pair[0] + slope, pair[1])[0]
+
+
+def test_low_signal(flags, pair):
+    near, wide = (noisy((image - OFFSET) / 120 + OFFSET + 40) for image in pair)
+    field, cells = flags(near, wide)
+    assert "low_signal" in field or "empty" in field
+
+
+def test_near_too_bright(flags, pair):
+    assert "near_too_bright" in flags(*pair, changes=[("ratio = 1.5", "ratio = 0.3"), ("ratio_sd = 0.03", "ratio_sd = 0")])[0]
+
+
+def test_channels_swapped(flags, pair):
+    assert "channels_swapped" in flags(pair[1], pair[0])[0]
+
+
+def test_moved_cells(flags, pair):
+    # the near image of everything moved by 1.6 um; the bench says there is no shift, and none is estimated
+    near = numpy.roll(pair[0], 15, axis=1)
+    field, cells = flags(near, pair[1], changes=[("estimate = yes", "estimate = no")])
+    assert sum("moved" in flag for flag in cells) >= 0.7 * len(cells)
+
+
+def test_clipped(flags, pair):
+    near = numpy.maximum(pair[0] - 2500, 0)
+    field, cells = flags(near, pair[1])
+    assert "clipped" in field and any("clipped" in flag for flag in cells)
+
+
+def test_saturated(flags, pair):
+    near = numpy.minimum(pair[0], 5000)
+    field, cells = flags(near, pair[1], changes=[("full_scale_adu = 65535", "full_scale_adu = 5000")])
+    assert "saturated" in field and any("saturated" in flag for flag in cells)
+
+
+def test_crowded(flags, pair, tmp_path):
+    mask = numpy.ones((512, 512), numpy.uint16)
+    mask[:, 256:] = 2
+    mask[:8] = 0
+    tifffile.imwrite(tmp_path / "mask.tif", mask)
+    assert "crowded" in flags(*pair, more=("-m", str(tmp_path / "mask.tif")))[0]
+
+
+def test_shift_differs(flags, pair):
+    field, _ = flags(*pair, changes=[("estimate = yes", "estimate = check"), ])
+    assert "shift_differs" in field  # the demo's shift is 1.4, -0.8 px, the file says 0, 0
+
+
+def test_display_scaled(flags, pair, tmp_path, demo):
+    near, wide = (numpy.clip((image - image.min()) / numpy.percentile(image, 99) * 255, 0, 255).astype(numpy.uint8)
+                  for image in pair)
+    tifffile.imwrite(tmp_path / "n8.tif", near)
+    tifffile.imwrite(tmp_path / "w8.tif", wide)
+    with open(f"{demo}/day1.ini") as file:
+        text = file.read().replace("file = day1", f"file = {demo}/day1").replace("offset_adu = 100", "offset_adu = 0")
+    (tmp_path / "b.ini").write_text(text.replace("full_scale_adu = 65535\n", ""))
+    run = Run(["measure", str(tmp_path / "n8.tif"), str(tmp_path / "w8.tif"), "-i", str(tmp_path / "b.ini"), "-a",
+               f"{demo}/assay.ini", "-o", str(tmp_path / "out8")])
+    assert run.status == 0, run.err
+    assert "display_scaled" in rows(tmp_path / "out8/fields.csv")[0]["flags"]
+
+
+def test_empty_is_empty_and_nothing_else(flags, demo):
+    dice = numpy.random.default_rng(3)
+    blank = [dice.poisson(350 * 2.17 * tifffile.imread(f"{demo}/day1_flat_{k}.tif")) / 2.17 + OFFSET
+             for k in ("near", "wide")]
+    assert flags(*blank)[0] == {"empty"}
