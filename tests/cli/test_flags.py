@@ -65,7 +65,7 @@ def test_uneven(flags, pair):
 
 
 def test_low_signal(flags, pair):
-    near, wide = (noisy((image - OFFSET) / 120 + OFFSET + 40) for image in pair)
+    near, wide = (noisy((image - OFFSET) / 250 + OFFSET + 40) for image in pair)
     field, cells = flags(near, wide)
     assert "low_signal" in field or "empty" in field
 
