@@ -4,6 +4,7 @@
 #include <string.h>
 
 #include "correct/correct.h"
+#include "correct/noise.h"
 #include "correct/pixels.h"
 #include "fit/robust.h"
 
@@ -74,7 +75,7 @@ static void set_noise(uf_channel *channel, double spread, double pixels)
 {
     double level = channel->background_adu;
     if (isnan(channel->noise.gain_e_per_adu)) {
-        /* No camera keys: all of the spread is taken to be shot noise of the background. */
+        /* Neither camera keys nor a line through the image: all of the spread is taken to be shot noise. */
         double variance = spread > 0 ? spread * spread : 1.0;
         channel->noise.gain_e_per_adu = level > 0 ? level / variance : 1.0;
         channel->noise.excess2 = 1.0;
@@ -90,6 +91,9 @@ uf_status uf_background_first(uf_work *work, uf_channel *channel, uf_error *erro
     double *values;
     uf_status status = uf_take(work, SAMPLE, sizeof *values, "the background", &values, error);
     if (status != UF_OK)
+        return status;
+    if (isnan(channel->noise.gain_e_per_adu) && !uf_noise_from_image(work, channel, &status, error) &&
+        status != UF_OK)
         return status;
     size_t count = sample_image(channel, values);
     uf_sort(values, count);

@@ -31,7 +31,7 @@ UF_MUST_USE uf_status uf_correct_channel(uf_work *work, const uf_raw_channel *ra
 /*
  * A first background: the mode of the pixel values (of a lattice of them), since empty substrate is the narrowest peak
  * of the histogram even in crowded fields: the narrowest twentieth of the sample, and its half-sample mode. Sets background_adu, its sd,
- * noise_adu, and the noise model's gain where the camera keys do not give it (from the spread at the
+ * noise_adu, and the noise model where the camera keys do not give it (correct/noise.h, else from the spread at the
  * background, taken to be shot noise).
  */
 UF_MUST_USE uf_status uf_background_first(uf_work *work, uf_channel *channel, uf_error *error);

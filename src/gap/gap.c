@@ -72,6 +72,14 @@ static float limit_at(const gap_job *job, float dye)
     return (float)uf_gap_limit_nm(job->plan, job->detection_sigma, job->near, job->wide, (double)dye);
 }
 
+/* A saturated near pixel is brighter than it says, so its gap is an upper bound and may still prove contact. A saturated
+ * wide pixel has more dye than it says: its gap is a lower bound, which counts as not seen. */
+static int wide_is_saturated(const gap_job *job, int x, int y)
+{
+    return job->plan->signal == UF_SIGNAL_RATIO && job->wide->saturated.data &&
+           uf_mask_row(job->wide->saturated, y)[x] == UF_PIXEL_SATURATED;
+}
+
 static void judge_row(gap_job *job, int y)
 {
     const int32_t *labels = uf_labels_row(job->cells->labels, y);
@@ -89,9 +97,10 @@ static void judge_row(gap_job *job, int y)
             state[x] = UF_GAP_OUTSIDE;
             continue;
         }
-        int seen = near[x] > near_least && dye[x] > wide_least;
+        int bound = wide_is_saturated(job, x, y);
+        int seen = near[x] > near_least && dye[x] > wide_least && !bound;
         state[x] = seen ? UF_GAP_RESOLVED : UF_GAP_UNRESOLVED;
-        float limit = seen ? 0.0f : limit_at(job, dye[x]);
+        float limit = seen ? 0.0f : bound && !isnan(smooth[x]) ? smooth[x] : limit_at(job, dye[x]);
         /* A resolved place may still hold a single dark pixel without a logarithm: it takes its surroundings. */
         gap[x] = !seen ? limit : isnan(gap[x]) ? smooth[x] : gap[x];
         smooth[x] = !seen ? limit : smooth[x];

@@ -325,6 +325,7 @@ static void fill_flags(const cell_job *job, const tally *t, uf_cell *row)
     /* A pixel or two at 0 is chance; a hundredth is a floor that takes noise off one side. */
     if (100 * t->clipped > t->pixels)
         row->flags |= 1u << UF_FLAG_CLIPPED;
+    row->touching_um = (double)t->touching * job->in->plan->pixel_size_um;
     if (t->touching)
         row->flags |= 1u << UF_FLAG_TOUCHING;
     if (job->in->plan->has_gap && 4 * (t->pixels - t->resolved) > t->pixels)

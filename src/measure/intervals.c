@@ -4,9 +4,12 @@
 #include <math.h>
 
 #include "optics/detection.h"
+#include "optics/systematic.h"
 
 static const double two_sided_95 = 1.959963984540054;
-static const double outline_sd_um = 0.03;
+/* Of an outline against background, and of the border between two touching cells, along their whole length at once
+ * (seen on simulated scenes, `make truth`). */
+static const double outline_sd_um = 0.03, border_sd_um = 0.25;
 
 /* Blur that restoring leaves moves the border of contact by about this share of the point spread function's sigma,
  * inwards where contact is narrow (seen on simulated scenes with point spread functions of 0.75 to 1.5 of the assumed). */
@@ -40,15 +43,6 @@ static double background_part(const uf_measure_input *in, const uf_cell *row, do
     return uf_gap_per_ln(in->plan, gap_nm) * hypot(in->near->background_sd_adu / near, of_wide);
 }
 
-static double systematic_part(const uf_plan *plan, double gap_nm)
-{
-    if (plan->series.count)
-        return uf_series_systematic(&plan->series, gap_nm);
-    double ratio = uf_gap_per_ln(plan, gap_nm) * hypot(plan->reference_sd, plan->normalisation_sd);
-    double depth = fabs(gap_nm - plan->reference_gap_nm) * plan->depth_sd_nm / plan->depth_nm;
-    return hypot(hypot(ratio, depth), plan->reference_gap_sd_nm);
-}
-
 static void fill_gap_sds(const uf_measure_input *in, uf_cell *row)
 {
     double gap = row->gap_median_nm, px = in->plan->pixel_size_um;
@@ -60,7 +54,7 @@ static void fill_gap_sds(const uf_measure_input *in, uf_cell *row)
     double noise = uf_gap_noise_nm(in->plan, in->plan->restore_variance, in->near, in->wide, near, row->dye_mean_adu);
     double median_part = isnan(noise) ? 0 : 1.2533 * noise / sqrt(pixels);
     row->gap_random_nm = hypot(median_part, background_part(in, row, gap));
-    row->gap_systematic_nm = systematic_part(in->plan, gap);
+    row->gap_systematic_nm = uf_systematic_nm(in->plan, gap);
 }
 
 /* Pixels within a noise sigma of the cutoff fall to either side by chance: their number's standard deviation.
@@ -83,12 +77,12 @@ void uf_fill_intervals(const uf_measure_input *in, uf_cell *row)
     row->attachment_fraction_low = row->attachment_fraction_high = (double)NAN;
     if (isnan(row->contact_area_um2))
         return;
-    double moved = two_sided_95 * hypot(systematic_part(in->plan, cutoff), background_part(in, row, cutoff));
+    double moved = two_sided_95 * hypot(uf_systematic_nm(in->plan, cutoff), background_part(in, row, cutoff));
     double at = uf_area_under(row, cutoff);
     double below = (at - uf_area_under(row, cutoff - moved)) * um2;
     double above = (uf_area_under(row, cutoff + moved) - at) * um2;
     double chance = two_sided_95 * chance_pixels(in, row, cutoff) * um2;
-    double edge_area = two_sided_95 * outline_sd_um * row->perimeter_um;
+    double edge_area = two_sided_95 * hypot(outline_sd_um * row->perimeter_um, border_sd_um * row->touching_um);
     double outline = edge_area * row->attachment_fraction;
     double blur = two_sided_95 * blur_share * in->plan->psf_sigma_um * row->contact_border_um;
     double other = hypot(hypot(chance, outline), blur);

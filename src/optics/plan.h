@@ -10,6 +10,8 @@
 /* What tells the gap: near over wide, or near alone, where the wide image does not stand for the dye above the gap. */
 typedef enum uf_signal { UF_SIGNAL_RATIO, UF_SIGNAL_NEAR } uf_signal;
 
+enum { UF_OPTICS_SD_GAPS = 31, UF_OPTICS_SD_STEP_NM = 10 };
+
 typedef struct uf_plan {
     uf_bench bench;
     uf_decay decay;
@@ -22,6 +24,7 @@ typedef struct uf_plan {
     double restore_gain;     /* for uf_restore on a plane smoothed by psf_sigma_um */
     double restore_variance; /* of a pixel's noise after that */
     double depth_nm, depth_sd_nm;
+    double optics_sd_nm[UF_OPTICS_SD_GAPS]; /* of a gap, by angle and indices (optics/systematic.h) */
     uf_signal signal;
     int has_gap;             /* 0: gaps are only a scale to look for spots on, and are not reported */
     int is_relative;         /* the reference is assumed, not measured */

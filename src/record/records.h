@@ -65,6 +65,7 @@ typedef struct uf_cell {
     double spots_per_100um2, spot_area_total_um2, spot_area_median_um2, spot_length_median_um, spot_alignment;
     uf_gap_kind gap_kind;
     uf_flags flags;
+    double touching_um;                    /* length of the border shared with other cells; not a column */
     double dye_mean_adu;                   /* of what near is divided by; not a column */
     double near_variation, wide_variation; /* standard deviation over mean inside the cell; not columns */
     double contact_border_um;              /* length of the borders of contact; not a column */

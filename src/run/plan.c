@@ -5,6 +5,7 @@
 
 #include "image/restore.h"
 #include "optics/refractive.h"
+#include "optics/systematic.h"
 #include "run/decay_law.h"
 #include "run/series_plan.h"
 
@@ -195,6 +196,7 @@ uf_status uf_plan_make(const uf_settings *s, double image_pixel_um, uf_plan *pla
         return UF_OK;
     }
     set_reference(s, plan);
+    uf_optics_sd_fill(plan);
     if (plan->law.model == UF_FIELD_EXPONENTIAL)
         plan->layered_effect_nm = uf_round_digits(uf_layered_effect_nm(b, s->contact.cutoff_nm), 9);
     return UF_OK;

@@ -8,6 +8,7 @@
 #include <cmocka.h>
 
 #include "near.h"
+#include "optics/systematic.h"
 #include "run/plan.h"
 
 static const char bench[] = "[light]\nwavelength_nm = 488\n[interface]\nsubstrate_n = 1.518\nmedium_n = 1.337\n"
@@ -175,11 +176,58 @@ static void test_series_systematic_part(void **state)
     }
 }
 
+/* ---- what the inputs' sds do to a gap ------------------------------------------------------------ */
+
+/* A depth of sd s shifts a gap by (gap - reference gap) s / d: closed form of the exponential. */
+static void test_depth_error_scales_with_the_gap(void **state)
+{
+    (void)state;
+    static uf_plan plan;
+    assert_int_equal(plan_of("[interface]\ndepth_nm = 80\ndepth_sd_nm = 1.6\n[reference]\ngap_nm = 20\nnormalisation_sd = "
+                             "0\nratio_sd = 0\n", 0.1, &plan, NULL), UF_OK);
+    for (double gap = 0; gap < 200; gap += 23.85)
+        assert_near_abs(uf_systematic_nm(&plan, gap), fabs(gap - 20) * 0.02, 0.21 * 0.02 + 0.002 * fabs(gap - 20));
+}
+
+/* Ratio, normalisation and the reference's own gap: d times the relative errors in squares, and the gap's sd as it is. */
+static void test_reference_errors_move_all_gaps_alike(void **state)
+{
+    (void)state;
+    static uf_plan plan;
+    assert_int_equal(plan_of("[interface]\nangle_deg = 70\n[reference]\ngap_nm = 10\ngap_sd_nm = 3\n", 0.1, &plan, NULL),
+                     UF_OK);
+    double expected = hypot(plan.depth_nm * hypot(0.02, 0.05), 3);
+    assert_near_rel(uf_systematic_nm(&plan, 10), expected, 1e-3);
+    assert_near_rel(uf_systematic_nm(&plan, 120), expected, 1e-3);
+}
+
+/* The cell's index enters the layered field only, and more the nearer the angle is to critical (checked against the
+ * readings themselves: 66 deg, +0.01 reads 11.3 nm short at 50 nm, underfoot optics). */
+static void test_cell_index_counts_where_it_acts(void **state)
+{
+    (void)state;
+    static uf_plan exponential, steep, near_critical;
+    static const char more[] = "[reference]\nnormalisation_sd = 0\nratio_sd = 0\n[interface]\ncell_n_sd = 0.01\n";
+    char text[300];
+    (void)snprintf(text, sizeof text, "%s[interface]\nangle_deg = 70\n", more);
+    assert_int_equal(plan_of(text, 0.1, &exponential, NULL), UF_OK);
+    (void)snprintf(text, sizeof text, "%s[interface]\nangle_deg = 70\n[decay]\nmodel = layered\n", more);
+    assert_int_equal(plan_of(text, 0.1, &steep, NULL), UF_OK);
+    (void)snprintf(text, sizeof text, "%s[interface]\nangle_deg = 66.5\n[decay]\nmodel = layered\n", more);
+    assert_int_equal(plan_of(text, 0.1, &near_critical, NULL), UF_OK);
+    assert_near_abs(uf_systematic_nm(&exponential, 50), 0, 1e-9);
+    assert_true(uf_systematic_nm(&steep, 50) > 0.3 && uf_systematic_nm(&steep, 50) < 2);
+    assert_true(uf_systematic_nm(&near_critical, 50) > 3 * uf_systematic_nm(&steep, 50));
+}
+
 int main(void)
 {
     const struct CMUnitTest tests[] = {cmocka_unit_test(test_depth_three_ways), cmocka_unit_test(test_reference_at_a_gap),
                                        cmocka_unit_test(test_pixel_size), cmocka_unit_test(test_angle_in_another_index),
                                        cmocka_unit_test(test_indices_by_name), cmocka_unit_test(test_coating_in_the_plan),
+                                       cmocka_unit_test(test_depth_error_scales_with_the_gap),
+                                       cmocka_unit_test(test_reference_errors_move_all_gaps_alike),
+                                       cmocka_unit_test(test_cell_index_counts_where_it_acts),
                                        cmocka_unit_test(test_series_needs_no_reference_and_no_angle),
                                        cmocka_unit_test(test_series_refuses_what_is_not_reflected_by_the_cell),
                                        cmocka_unit_test(test_series_systematic_part)};
