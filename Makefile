@@ -72,7 +72,7 @@ SONAME  := libunderfoot.so.0
 SHARED  := $(BUILD)/$(SONAME)
 
 .DEFAULT_GOAL := all
-.PHONY: all debug asan tsan probe build-flavour unit check demo bench install uninstall clean help packages packages-test docs docs-pictures
+.PHONY: truth cover all debug asan tsan probe build-flavour unit check demo bench install uninstall clean help packages packages-test docs docs-pictures
 
 all: packages ## the command and the libraries, optimised and hardened, in build/release
 	@$(MAKE) --no-print-directory FLAVOUR=release build-flavour
@@ -151,6 +151,20 @@ check: ## all tests; the last line is "N passed, N failed"
 
 bench: all packages-test ## speed and peak memory of the main job on a 2048 x 2048 pair
 	@tests/bench/bench-measure $(PROGRAM)
+
+# How right the numbers are: tables of errors and of coverage on simulated fields, kept in the repository so that a change
+# shows (tests/bench/truth.c).
+$(BUILD)/tests/bench/truth: tests/bench/truth.c $(STATIC)
+	@mkdir -p $(@D)
+	$(call say,bench $@)
+	$(CC) $(CFLAGS_ALL) $(LINK_ALL) -MMD -MP -o $@ $< $(STATIC) $(LINK_LIBS)
+
+truth: all ## errors of every figure over a grid of simulated fields, into tests/bench/truth.csv
+	@$(MAKE) --no-print-directory FLAVOUR=release $(BUILD)/tests/bench/truth
+	$(BUILD)/tests/bench/truth > tests/bench/truth.csv
+cover: all ## how often the 95 % intervals hold the truth, into tests/bench/cover.csv
+	@$(MAKE) --no-print-directory FLAVOUR=release $(BUILD)/tests/bench/truth
+	$(BUILD)/tests/bench/truth cover > tests/bench/cover.csv
 
 docs: all ## the pages that come from the tables in the code
 	$(PROGRAM) docs settings > docs/settings.md

@@ -43,6 +43,30 @@ static double background_part(const uf_measure_input *in, const uf_cell *row, do
     return uf_gap_per_ln(in->plan, gap_nm) * hypot(in->near->background_sd_adu / near, of_wide);
 }
 
+/* Area (1 sigma) by which the outline may be wrong. */
+static double outline_area_sd(const uf_cell *row)
+{
+    return hypot(outline_sd_um * row->perimeter_um, border_sd_um * row->touching_um);
+}
+
+/* Area by which blur may have moved borders between close and far. */
+static double blur_area_sd(const uf_measure_input *in, const uf_cell *row)
+{
+    return blur_share * in->plan->psf_sigma_um * row->contact_border_um;
+}
+
+/* What wrong area does to the median: area taken off one end moves the middle by half of it, area moved across the middle
+ * by all of it; and the fewer pixels have gaps near the median, the farther it then goes. */
+static double median_by_area(const uf_measure_input *in, const uf_cell *row)
+{
+    const double reach_nm = 10;
+    double px = in->plan->pixel_size_um, gap = row->gap_median_nm;
+    double around = uf_area_under(row, gap + reach_nm) - uf_area_under(row, gap - reach_nm);
+    double area_per_nm = around * px * px / (2 * reach_nm),
+           wrong = hypot(outline_area_sd(row) / 2, blur_area_sd(in, row));
+    return area_per_nm > 0 ? fmin(wrong / area_per_nm, reach_nm) : reach_nm;
+}
+
 static void fill_gap_sds(const uf_measure_input *in, uf_cell *row)
 {
     double gap = row->gap_median_nm, px = in->plan->pixel_size_um;
@@ -53,7 +77,7 @@ static void fill_gap_sds(const uf_measure_input *in, uf_cell *row)
     double near = near_at(in->plan, gap, row->dye_mean_adu);
     double noise = uf_gap_noise_nm(in->plan, in->plan->restore_variance, in->near, in->wide, near, row->dye_mean_adu);
     double median_part = isnan(noise) ? 0 : 1.2533 * noise / sqrt(pixels);
-    row->gap_random_nm = hypot(median_part, background_part(in, row, gap));
+    row->gap_random_nm = hypot(hypot(median_part, background_part(in, row, gap)), median_by_area(in, row));
     row->gap_systematic_nm = uf_systematic_nm(in->plan, gap);
 }
 
@@ -82,9 +106,9 @@ void uf_fill_intervals(const uf_measure_input *in, uf_cell *row)
     double below = (at - uf_area_under(row, cutoff - moved)) * um2;
     double above = (uf_area_under(row, cutoff + moved) - at) * um2;
     double chance = two_sided_95 * chance_pixels(in, row, cutoff) * um2;
-    double edge_area = two_sided_95 * hypot(outline_sd_um * row->perimeter_um, border_sd_um * row->touching_um);
+    double edge_area = two_sided_95 * outline_area_sd(row);
     double outline = edge_area * row->attachment_fraction;
-    double blur = two_sided_95 * blur_share * in->plan->psf_sigma_um * row->contact_border_um;
+    double blur = two_sided_95 * blur_area_sd(in, row);
     double other = hypot(hypot(chance, outline), blur);
     double area = row->spread_area_um2, contact = row->contact_area_um2;
     row->contact_area_low_um2 = fmax(0, contact - hypot(below, other));
