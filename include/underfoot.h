@@ -106,9 +106,10 @@ typedef struct uf_measure_request {
                               outlined in the near image */
     const char
         *mask_path; /* label image, 0 outside cells, of the same size: takes the place of segmentation; or NULL */
-    const char *out_dir; /* made when missing; files of an earlier run in it are replaced */
-    int threads;         /* 1 or more; results do not depend on it */
-    const char *command; /* what the user typed, for the log; may be NULL */
+    const char *nuclei_path; /* image of nuclei, taken as the wide image was: one cell each; or NULL */
+    const char *out_dir;     /* made when missing; files of an earlier run in it are replaced */
+    int threads;             /* 1 or more; results do not depend on it */
+    const char *command;     /* what the user typed, for the log; may be NULL */
 } uf_measure_request;
 
 typedef struct uf_measure_summary {

@@ -10,7 +10,7 @@ enum { MOST_FILES = 16 };
 typedef struct measure_arguments {
     const char *instruments[MOST_FILES], *assays[MOST_FILES], *images[2];
     int instrument_count, assay_count, image_count;
-    const char *out, *threads, *mask;
+    const char *out, *threads, *mask, *nuclei;
     bool quiet, help;
 } measure_arguments;
 
@@ -78,6 +78,7 @@ static uf_status run_measure(const measure_arguments *a, uf_measure_summary *sum
     uf_measure_request request = {.near_path = a->images[0],
                                   .wide_path = a->image_count > 1 ? a->images[1] : NULL,
                                   .mask_path = a->mask,
+                                  .nuclei_path = a->nuclei,
                                   .out_dir = a->out};
     uf_text command = {0};
     uf_text_printf(&command, "underfoot measure %s %s", a->images[0], a->image_count > 1 ? a->images[1] : "");
@@ -115,6 +116,8 @@ static int command_measure(int argc, char **argv)
          MOST_FILES},
         {"out", 'o', "DIR", "where results go; made when missing", &a.out, NULL, NULL, NULL, 0},
         {"mask", 'm', "FILE", "label image (0 outside cells) instead of segmentation", &a.mask, NULL, NULL, NULL, 0},
+        {"nuclei", 'n', "FILE", "image of nuclei, taken as the wide image was: one cell each", &a.nuclei, NULL, NULL,
+         NULL, 0},
         {"threads", 't', "N", "threads, default one a processor; results do not depend on it", &a.threads, NULL, NULL,
          NULL, 0},
         {"quiet", 'q', NULL, "no summary and no notes", NULL, &a.quiet, NULL, NULL, 0}};

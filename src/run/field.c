@@ -63,14 +63,23 @@ static uf_status align(uf_work *work, const uf_settings *settings, uf_field_resu
     choose_shift(settings, &found, &r->field);
     if (r->field.shift_dx_px == 0 && r->field.shift_dy_px == 0)
         return UF_OK;
-    return uf_shift(work, r->wide.image, r->field.shift_dx_px, r->field.shift_dy_px, r->wide.image, error);
+    status = uf_shift(work, r->wide.image, r->field.shift_dx_px, r->field.shift_dy_px, r->wide.image, error);
+    uf_plane nuclei = r->nuclei.image;
+    if (status == UF_OK && nuclei.data)
+        status = uf_shift(work, nuclei, r->field.shift_dx_px, r->field.shift_dy_px, nuclei, error);
+    return status;
 }
 
 static uf_status find_cells(uf_work *work, const uf_plan *plan, const uf_settings *settings, uf_field_result *r,
                             uf_error *error)
 {
     double clear_px = clear_um / plan->pixel_size_um;
-    uf_status status = uf_segment(work, &r->wide, settings, plan->pixel_size_um, r->mask, &r->cells, error);
+    uf_labels nuclei = {0};
+    uf_status status = UF_OK;
+    if (r->nuclei.image.data)
+        status = uf_segment_nuclei(work, &r->nuclei, plan->pixel_size_um, &nuclei, error);
+    if (status == UF_OK)
+        status = uf_segment(work, &r->wide, settings, plan->pixel_size_um, r->mask, nuclei, &r->cells, error);
     if (status == UF_OK)
         status = uf_background_refine(work, &r->cells, clear_px, &r->near, error);
     for (int k = 0; status == UF_OK && k < plan->series.count; k++)

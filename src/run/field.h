@@ -12,6 +12,7 @@ typedef struct uf_field_result {
     uf_channel *pages;      /* of a series, in the order of its angles, in the arena; near is the widest of them. NULL
                               without a series */
     uf_plane mask;          /* given labels, data NULL without */
+    uf_channel nuclei;      /* imaged as the wide image was; image.data NULL without */
     int one_image;          /* wide is a copy of near: there is no shift between them */
     double reference_ratio; /* at gap 0, as it was in force in this field */
     uf_cell_map cells;

@@ -22,7 +22,7 @@
 
 static const uf_image_limits limits = {.max_pixels = 1e9};
 
-enum { MOST_INPUTS = 10 };
+enum { MOST_INPUTS = 12 };
 
 typedef struct measure_job {
     const uf_settings *settings;
@@ -208,6 +208,16 @@ static uf_status copy_near(measure_job *job, uf_error *error)
     return status;
 }
 
+/* Counts as they are: only where nuclei are matters. */
+static uf_status read_nuclei(measure_job *job, uf_error *error)
+{
+    uf_channel *nuclei = &job->result.nuclei;
+    nuclei->noise.gain_e_per_adu = (double)NAN;
+    uf_status status =
+        read_companion(job, "nuclei image", job->request->nuclei_path, job->result.near.image, &nuclei->image, error);
+    return status == UF_OK && nuclei->image.data ? uf_background_first(&job->work, nuclei, error) : status;
+}
+
 /* Everything that can be wrong with the settings is said before pixels are worked on. */
 static uf_status read_inputs(measure_job *job, uf_error *error)
 {
@@ -220,6 +230,8 @@ static uf_status read_inputs(measure_job *job, uf_error *error)
     if (status == UF_OK)
         status = job->request->wide_path ? read_channel(job, UF_WIDE, &job->result.wide, 1, &wide_um, error)
                                          : copy_near(job, error);
+    if (status == UF_OK)
+        status = read_nuclei(job, error);
     if (status == UF_OK)
         status =
             read_companion(job, "mask", job->request->mask_path, job->result.near.image, &job->result.mask, error);

@@ -82,11 +82,12 @@ static double neck_of_setting(double split)
     return sqrt(split);
 }
 
-static uf_part_settings part_settings(const uf_settings *settings, double pixel_size_um)
+static uf_part_settings part_settings(const uf_settings *settings, double pixel_size_um, uf_labels nuclei)
 {
     double um2 = pixel_size_um * pixel_size_um;
     return (uf_part_settings){.pixel_size_um = pixel_size_um,
                               .neck = neck_of_setting(settings->cells.split),
+                              .nuclei = nuclei,
                               .min_pixels = settings->cells.min_area_um2 / um2,
                               .max_pixels = settings->cells.max_area_um2 / um2};
 }
@@ -109,9 +110,9 @@ static uf_status fill_dim_places(uf_work *work, uf_plane smooth, const uf_cell_m
 
 /* Labels of cells, and the distance to the outside of all of them. */
 static uf_status find_labels(uf_work *work, const uf_channel *wide, const uf_settings *settings, double pixel_size_um,
-                             uf_cell_map *map, uf_error *error)
+                             uf_labels nuclei, uf_cell_map *map, uf_error *error)
 {
-    uf_part_settings part = part_settings(settings, pixel_size_um);
+    uf_part_settings part = part_settings(settings, pixel_size_um, nuclei);
     float outline = outline_shares[settings->cells.label];
     int width = wide->image.width, height = wide->image.height;
     uf_mask mask;
@@ -221,7 +222,7 @@ static uf_status own_distances(uf_work *work, uf_cell_map *map, uf_error *error)
 }
 
 uf_status uf_segment(uf_work *work, const uf_channel *wide, const uf_settings *settings, double pixel_size_um,
-                     uf_plane given, uf_cell_map *map, uf_error *error)
+                     uf_plane given, uf_labels nuclei, uf_cell_map *map, uf_error *error)
 {
     int width = wide->image.width, height = wide->image.height;
     *map = (uf_cell_map){0};
@@ -234,10 +235,27 @@ uf_status uf_segment(uf_work *work, const uf_channel *wide, const uf_settings *s
         status = uf_levels_find(work, wide, pixel_size_um, outline_shares[settings->cells.label], map, error);
     if (status == UF_OK)
         status = given.data ? take_given(work, given, map, error)
-                            : find_labels(work, wide, settings, pixel_size_um, map, error);
+                            : find_labels(work, wide, settings, pixel_size_um, nuclei, map, error);
     if (status == UF_OK)
         status = own_distances(work, map, error);
     if (status == UF_OK)
         status = uf_levels_outside(work, map, error);
+    return status;
+}
+
+uf_status uf_segment_nuclei(uf_work *work, const uf_channel *channel, double pixel_size_um, uf_labels *nuclei,
+                            uf_error *error)
+{
+    static const double least_um2 = 10;
+    uf_settings like = {.cells = {.label = UF_LABEL_MEMBRANE,
+                                  .smooth_um = 0.2,
+                                  .min_area_um2 = least_um2,
+                                  .max_area_um2 = 1e9,
+                                  .split = 0.65}};
+    uf_cell_map map;
+    const uf_plane no_mask = {0};
+    const uf_labels no_nuclei = {0};
+    uf_status status = uf_segment(work, channel, &like, pixel_size_um, no_mask, no_nuclei, &map, error);
+    *nuclei = map.labels;
     return status;
 }

@@ -140,6 +140,70 @@ static float usual_relief(const part_job *job)
     return count > 0 ? (float)(sum / count) : 0.0f;
 }
 
+/* ---- parts from nuclei ----------------------------------------------------------------------- */
+
+static int nucleus_at(const part_job *job, int x, int y)
+{
+    int v = fine_of(y, job->step, job->labels.height);
+    return uf_labels_row(job->settings->nuclei, v)[fine_of(x, job->step, job->labels.width)];
+}
+
+/* Counts the nuclei of each piece. Returns the pieces of several. */
+static int count_nuclei(part_job *job, int *piece_of)
+{
+    int several = 0;
+    memset(job->piece_parts, 0, ((size_t)job->labels.count + 1) * sizeof *job->piece_parts);
+    memset(piece_of, 0, ((size_t)job->settings->nuclei.count + 1) * sizeof *piece_of);
+    for (int y = 0; y < job->coarse.labels.height; y++)
+        for (int x = 0; x < job->coarse.labels.width; x++) {
+            int piece = uf_labels_row(job->coarse.labels, y)[x], nucleus = nucleus_at(job, x, y);
+            if (!piece || !nucleus || piece_of[nucleus])
+                continue;
+            piece_of[nucleus] = piece;
+            several += ++job->piece_parts[piece] == 2;
+        }
+    return several;
+}
+
+/* Coarse points take the number of their nucleus, or wait for one; a piece without any is a part of its own. */
+static void seed_nuclei(part_job *job, const int *piece_of)
+{
+    int nuclei = job->settings->nuclei.count;
+    for (int y = 0; y < job->coarse.labels.height; y++) {
+        int32_t *row = uf_labels_row(job->coarse.labels, y);
+        for (int x = 0; x < job->coarse.labels.width; x++) {
+            int piece = row[x], nucleus = piece ? nucleus_at(job, x, y) : 0;
+            if (piece)
+                row[x] = nucleus && piece_of[nucleus] == piece ? nucleus
+                         : job->piece_parts[piece]             ? -1
+                                                               : nuclei + piece;
+        }
+    }
+    job->coarse.labels.count = nuclei + job->labels.count;
+}
+
+static uf_status part_by_nuclei(part_job *job, int *several, uf_error *error)
+{
+    size_t nuclei = (size_t)job->settings->nuclei.count + 1, pieces = (size_t)job->labels.count + 1;
+    int *piece_of;
+    uf_status status = make_coarse(job, error);
+    if (status == UF_OK)
+        status = uf_take(job->work, pieces, sizeof *job->piece_parts, "segmentation", &job->piece_parts, error);
+    if (status == UF_OK)
+        status = uf_take(job->work, pieces + nuclei, sizeof *job->depth, "segmentation", &job->depth, error);
+    if (status == UF_OK)
+        status = uf_take(job->work, nuclei, sizeof *piece_of, "segmentation", &piece_of, error);
+    if (status != UF_OK)
+        return status;
+    find_depths(job);
+    *several = count_nuclei(job, piece_of);
+    seed_nuclei(job, piece_of);
+    for (size_t k = 0; k < pieces + nuclei; k++)
+        job->depth[k] = INFINITY; /* no point is sure of its cell by depth alone */
+    job->coarse.usual = usual_relief(job);
+    return uf_flood_run(job->work, &job->coarse, error);
+}
+
 static void keep_cores(part_job *job)
 {
     for (int y = 0; y < job->coarse.labels.height; y++) {
@@ -434,9 +498,12 @@ uf_status uf_part_cells(uf_work *work, const uf_channel *wide, uf_plane smooth_a
                     .step = step < 1 ? 1 : step};
     uf_arena_mark mark = uf_arena_now(&work->arena);
     uf_status status = UF_OK;
-    if (settings->neck > 0 && labels->count)
+    int by_nuclei = settings->nuclei.data != NULL;
+    if (by_nuclei && labels->count)
+        status = part_by_nuclei(&job, &several, error);
+    else if (settings->neck > 0 && labels->count)
         status = find_parts(&job, &several, error);
-    if (status == UF_OK && several)
+    if (status == UF_OK && several && !by_nuclei)
         status = join_parts(&job, error);
     if (status == UF_OK && several)
         status = draw_borders(&job, error);

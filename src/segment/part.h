@@ -9,6 +9,7 @@ typedef struct uf_part_settings {
     double pixel_size_um;
     double neck;                   /* 0 parts nothing, 1 at the slightest neck */
     double min_pixels, max_pixels; /* of a cell */
+    uf_labels nuclei;              /* one a cell, of the image's size; data NULL: none are known */
 } uf_part_settings;
 
 /*
@@ -20,6 +21,9 @@ typedef struct uf_part_settings {
  * joined again, widest neck first, unless the neck between them is narrower than `neck` times the half width of
  * the narrower one, or they differ in level and a ridge runs along their border. Last, the borders that are left
  * are drawn in full resolution by a flood of the strip around them, and labels are tidied (uf_labels_tidy).
+ *
+ * Where nuclei are known they decide instead: a piece with several is flooded from them, one with one or none is one
+ * cell, whatever its shape.
  *
  * `wide` holds background and noise, `smooth_adu` its image smoothed, `distance_px` the distance to the outside
  * of all pieces. UF_MEMORY.

@@ -7,6 +7,7 @@ import math
 import numpy
 import pytest
 import tifffile
+from scipy import ndimage
 
 from conftest import Run
 
@@ -151,3 +152,57 @@ def test_masks_that_cannot_be_used(bench, demo, tmp_path, spoil, word):
     tifffile.imwrite(tmp_path / "mask.tif", mask)
     run, _, _ = bench("ratio = 1.5\n", more=("-m", str(tmp_path / "mask.tif")))
     assert run.status == 2 and word in run.err
+
+
+# ---- nuclei --------------------------------------------------------------------------------------------------
+
+
+def nuclei_image(places):
+    """Discs of 2 um on background, with the demo's camera noise, moved like the demo's wide image (1.4, -0.8 px)."""
+    y, x = numpy.mgrid[:512, :512]
+    image = numpy.full((512, 512), 300.0)
+    for row, column in places:
+        image += 2500 / (1 + numpy.exp((numpy.hypot(y - row + 0.8, x - column - 1.4) - 18) / 1.5))
+    dice = numpy.random.default_rng(8)
+    return (dice.poisson(image * 2.17) / 2.17 + 100).astype(numpy.uint16)
+
+
+@pytest.fixture
+def truth(demo):
+    """Label -> centre of what lies deepest inside the true cell."""
+    labels = tifffile.imread(f"{demo}/day1_a_truth_labels.tif")
+    centres = {}
+    for k in range(1, labels.max() + 1):
+        depth = ndimage.distance_transform_edt(labels == k)
+        centres[k] = numpy.unravel_index(depth.argmax(), depth.shape)
+    return labels, centres
+
+
+def test_one_nucleus_a_cell(bench, truth, tmp_path):
+    labels, centres = truth
+    tifffile.imwrite(tmp_path / "n.tif", nuclei_image(centres.values()))
+    _, cells, _ = bench("ratio = 1.5\n", more=("--nuclei", str(tmp_path / "n.tif")))
+    found = tifffile.imread(tmp_path / "out/labels/day1_a_near.tif")
+    assert len(cells) == len(centres)
+    assert len({found[centre] for centre in centres.values()} - {0}) == len(centres)
+
+
+def test_nuclei_split_what_shape_would_not_and_join_what_it_would_part(bench, truth, tmp_path):
+    labels, centres = truth
+    alone = next(k for k in centres if not set(labels[ndimage.binary_dilation(labels == k, iterations=12)]) - {0, k})
+    rows_of, columns_of = numpy.nonzero(labels == alone)
+    middle = (rows_of.mean(), columns_of.mean())
+    depth = ndimage.distance_transform_edt(labels == alone)
+    good = [(r, c) for r, c in zip(rows_of, columns_of) if depth[r, c] > 21]
+    pair = [min(good, key=lambda p: p[1]), max(good, key=lambda p: p[1])]
+    if numpy.hypot(pair[0][0] - pair[1][0], pair[0][1] - pair[1][1]) < 45:
+        pair = [min(good), max(good)]
+    others = [centre for k, centre in centres.items() if k != alone]
+    tifffile.imwrite(tmp_path / "n.tif", nuclei_image(others + pair))
+    _, cells, _ = bench("ratio = 1.5\n", more=("--nuclei", str(tmp_path / "n.tif")))
+    assert len(cells) == len(centres) + 1, middle
+    # no nuclei at all: every piece is one cell
+    tifffile.imwrite(tmp_path / "n.tif", nuclei_image([]))
+    _, cells, _ = bench("ratio = 1.5\n", more=("--nuclei", str(tmp_path / "n.tif")))
+    found = tifffile.imread(tmp_path / "out/labels/day1_a_near.tif")
+    assert len(cells) == ndimage.label(found > 0)[1]
