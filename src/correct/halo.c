@@ -127,9 +127,35 @@ static double largest(uf_plane plane)
 
 /* ---- choosing the blur ----------------------------------------------------------------------- */
 
+/* A wide blur needs no fine grid: it is done on one of about two fifths of its sigma and read back between the points. */
+static uf_status blur_coarsely(uf_work *work, halo_job *job, double sigma, int step, uf_error *error)
+{
+    int width = job->light.width, height = job->light.height;
+    uf_plane coarse;
+    uf_expand_column *columns;
+    uf_arena_mark mark = uf_arena_now(&work->arena);
+    uf_status status = uf_plane_take(work, (width + step - 1) / step, (height + step - 1) / step, &coarse, error);
+    if (status == UF_OK)
+        status = uf_take(work, (size_t)width, sizeof *columns, "the halo", &columns, error);
+    if (status == UF_OK) {
+        uf_reduce(work, job->light, step, coarse);
+        status = uf_smooth(work, coarse, sigma / step, coarse, error);
+    }
+    if (status == UF_OK) {
+        uf_expand_columns(coarse.width, step, width, columns);
+        for (int y = 0; y < height; y++)
+            uf_expand_row(coarse, step, y, columns, uf_plane_row(job->blurred, y), width);
+    }
+    uf_arena_back(&work->arena, mark);
+    return status;
+}
+
 static uf_status blur_light(uf_work *work, halo_job *job, double blur_px, uf_error *error)
 {
-    return uf_smooth(work, job->light, blur_px / job->cells->factor, job->blurred, error);
+    double sigma = blur_px / job->cells->factor;
+    int step = (int)(sigma / 2.5);
+    return step > 1 ? blur_coarsely(work, job, sigma, step, error)
+                    : uf_smooth(work, job->light, sigma, job->blurred, error);
 }
 
 static int is_told(const halo_job *job)

@@ -7,7 +7,7 @@
 #include "base/text.h"
 #include "image/smooth.h"
 
-enum { STRIPS = 4, STRIP_ROWS = 128, SCALES = 3 };
+enum { STRIPS = 4, STRIP_ROWS = 64, WHOLE_UP_TO = 512, SCALES = 3 };
 static const double least_sigma_px = 0.7;
 
 /* Sums of squares over the pixels of cells. */
@@ -61,7 +61,7 @@ static uf_status look_at(uf_work *work, const uf_channel *channel, uf_labels lab
 uf_status uf_focus_of(uf_work *work, const uf_channel *channel, uf_labels labels, double psf_px, double *focus,
                       uf_error *error)
 {
-    int height = labels.height, strips = height > STRIPS * STRIP_ROWS ? STRIPS : 1;
+    int height = labels.height, strips = height > WHOLE_UP_TO ? STRIPS : 1;
     int rows = strips > 1 ? STRIP_ROWS : height;
     double sigma = fmax(2 * psf_px, least_sigma_px);
     band_sums sums = {0};

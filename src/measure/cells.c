@@ -378,8 +378,8 @@ static double light_beside(const cell_job *job, int label, int dx, int dy)
     uf_box box = job->boxes[label];
     double inside = 0, outside = 0;
     int pixels = 0;
-    for (int y = box.y0; y < box.y1; y += 2)
-        for (int x = box.x0; x < box.x1; x += 2) {
+    for (int y = box.y0; y < box.y1; y += 3)
+        for (int x = box.x0; x < box.x1; x += 3) {
             int u = x + dx, v = y + dy;
             if (uf_labels_row(labels, y)[x] != label || u < 0 || v < 0 || u >= labels.width || v >= labels.height ||
                 uf_labels_row(labels, v)[u])

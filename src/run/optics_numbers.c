@@ -179,6 +179,14 @@ static uf_status find_wishes(const uf_optics_request *request, const uf_bench *b
 
 /* ---- the set-up ------------------------------------------------------------------------------ */
 
+/* Settings that name a series of angles stand for its smallest one, whose field reaches farthest. */
+static void take_series_angle(uf_settings *s)
+{
+    for (int k = 0; k < s->series.angles_deg.count; k++)
+        if (isnan(s->interface.angle_deg) || s->series.angles_deg.values[k] < s->interface.angle_deg)
+            s->interface.angle_deg = s->series.angles_deg.values[k];
+}
+
 static int says_an_angle(const uf_settings *s)
 {
     return !isnan(s->interface.angle_deg) || !isnan(s->interface.na_effective) || !isnan(s->interface.depth_nm);
@@ -188,11 +196,15 @@ static int says_an_angle(const uf_settings *s)
 static uf_status find_bench(const uf_optics_request *request, uf_optics_numbers *n, uf_error *error)
 {
     const uf_settings *s = request->settings;
+    uf_settings with_angle = *s;
     uf_status status = uf_settings_check_optics(s, error);
     if (status != UF_OK)
         return status;
-    if (says_an_angle(s)) {
-        status = uf_bench_make(s, &n->bench, error);
+    if (!says_an_angle(s) && isnan(request->for_depth_nm) && isnan(request->for_agreement_nm))
+        take_series_angle(&with_angle);
+    n->series_angles = says_an_angle(s) ? 0 : s->series.angles_deg.count;
+    if (says_an_angle(&with_angle)) {
+        status = uf_bench_make(&with_angle, &n->bench, error);
         return status == UF_OK ? find_wishes(request, &n->bench, n, error) : status;
     }
     if (isnan(request->for_depth_nm) && isnan(request->for_agreement_nm))

@@ -33,6 +33,7 @@ typedef struct uf_optics_numbers {
     const uf_settings *settings;
     uf_bench bench;
     uf_decay_law law;
+    int series_angles;            /* the set-up is the smallest of so many angles; 0: no series in force */
     int angle_from_wish;          /* no angle was given: the set-up is the one wished for */
     double angle_deg, quoted_deg; /* in the substrate; as quoted in angle_n, NaN without */
     double critical_medium_deg, critical_cell_deg;

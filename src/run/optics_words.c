@@ -54,6 +54,9 @@ static void put_wishes(uf_text *out, const uf_optics_numbers *n)
                        "from %.2f to %.2f deg: n sin(angle) %.4f to %.4f.\n",
                        agreement->within_nm, n->cutoff_nm, 2 * n->cutoff_nm, agreement->angle_low_deg,
                        agreement->angle_high_deg, agreement->na_low, agreement->na_high);
+    if (n->series_angles && !n->angle_from_wish)
+        uf_text_printf(out, "A series of %d angles; the numbers below are those of its smallest.\n\n",
+                       n->series_angles);
     if (n->angle_from_wish)
         uf_text_printf(out, "The numbers below are those of %.2f deg.\n", n->angle_deg);
     if (depth->asked || agreement->asked)

@@ -137,6 +137,14 @@ def test_decay_table_from_a_file(tmp_path):
         assert run.status == 2 and where in run.err and word in run.err, run.err
 
 
+def test_series_stands_for_its_smallest_angle(tmp_path):
+    bench = tmp_path / "bench.ini"
+    bench.write_text("[light]\nwavelength_nm = 488\n[interface]\nsubstrate_n = 1.518\nmedium_n = 1.33\n"
+                     "[series]\nangles_deg = 74, 70, 72\n")
+    assert numbers("-i", str(bench))["depth_nm"] == pytest.approx(75.314026, rel=1e-6)
+    assert "3 angles" in Run(["optics", "-i", str(bench)]).out
+
+
 def test_plot_is_a_picture_and_faults_are_told(tmp_path):
     png = tmp_path / "depth.png"
     run = Run(["optics", *BENCH, "--angle-deg", "70", "--objective-na", "1.49", "--plot", str(png)])
