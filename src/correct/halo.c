@@ -8,10 +8,12 @@
 #include "fit/linear.h"
 #include "image/smooth.h"
 
-static const double blurs_um[] = {1.0, 1.4, 2.0, 2.8, 4.0, 5.6, 8.0};
+/* Where the first of these fits best, the light is no halo but the dorsal membrane's, a little out of focus: it belongs to
+ * the cell and to the reference, and stays. */
+static const double blurs_um[] = {1.2, 1.7, 2.4, 3.4, 4.8, 6.8};
 enum { BLURS = sizeof blurs_um / sizeof blurs_um[0], ROUNDS = 3, LEAST_BLOCKS = 200, MOST_BLOCKS = 20000 };
 
-static const double clear_um = 2.0;      /* beyond the reach of sharp light */
+static const double clear_um = 3.0;      /* beyond the reach of sharp light */
 static const double least_share = 0.002; /* less is of no consequence: a quarter of a nanometre */
 static const double least_sigmas = 4;
 static const double outlier_sigmas = 3.5;
@@ -164,33 +166,55 @@ static int is_told(const halo_job *job)
     return share > least_sigmas * sd && share > least_share * job->light_scale;
 }
 
-typedef struct blur_choice {
-    double blur_um, residual_sd; /* the best so far; blur 0: none told */
-} blur_choice;
-
-static uf_status try_blur(uf_work *work, halo_job *job, double pixel_size_um, double blur_um, blur_choice *best,
+/* Scatter that a blur leaves, as a variance; NaN when no halo is told. */
+static uf_status try_blur(uf_work *work, halo_job *job, double pixel_size_um, double blur_um, double *scatter,
                           uf_error *error)
 {
     uf_status status = blur_light(work, job, blur_um / pixel_size_um, error);
-    if (status != UF_OK || !fit_rounds(job, PARAMETERS) || !is_told(job) || job->fit.residual_sd >= best->residual_sd)
-        return status;
-    *best = (blur_choice){blur_um, job->fit.residual_sd};
-    return UF_OK;
+    int told = status == UF_OK && fit_rounds(job, PARAMETERS) && is_told(job);
+    *scatter = told ? job->fit.residual_sd * job->fit.residual_sd : (double)NAN;
+    return status;
 }
 
-/* The blur that leaves the least scatter, first coarsely, then to a twelfth; blur_um stays 0 when there is no halo to
+enum { FINE = 3 };
+static const double fine_step = 1.0 / 12;
+
+/* The bottom of a parabola through the scatter at steps -FINE .. FINE, as a step; the middle when there is none. */
+static double bottom(const double *scatter)
+{
+    uf_linear sums = {.parameters = 3};
+    uf_linear_fit fit;
+    for (int k = -FINE; k <= FINE; k++) {
+        const double x[] = {1, k, k * k};
+        if (!isnan(scatter[k + FINE]))
+            uf_linear_add(&sums, x, scatter[k + FINE] / scatter[FINE], 1);
+    }
+    if (isnan(scatter[FINE]) || !uf_linear_solve(&sums, &fit) || !(fit.value[2] > 0))
+        return 0;
+    return fmin(fmax(-fit.value[1] / (2 * fit.value[2]), -FINE), FINE);
+}
+
+/* The blur that leaves the least scatter, first of the list, then between its neighbours; 0 when there is no halo to
  * tell. */
 static uf_status choose_blur(uf_work *work, halo_job *job, double pixel_size_um, double *blur_um, uf_error *error)
 {
-    blur_choice best = {0, (double)INFINITY};
+    double least = (double)INFINITY, scatter[2 * FINE + 1];
+    int best = 0;
     uf_status status = UF_OK;
-    for (int k = 0; status == UF_OK && k < BLURS; k++)
-        status = try_blur(work, job, pixel_size_um, blurs_um[k], &best, error);
-    double coarse = best.blur_um;
-    for (int k = -3; status == UF_OK && coarse > 0 && k <= 3; k++)
-        if (k)
-            status = try_blur(work, job, pixel_size_um, coarse * (1 + k / 12.0), &best, error);
-    *blur_um = best.blur_um;
+    for (int k = 0; status == UF_OK && k < BLURS; k++) {
+        double here;
+        status = try_blur(work, job, pixel_size_um, blurs_um[k], &here, error);
+        if (here < least) {
+            least = here;
+            best = k;
+        }
+    }
+    *blur_um = 0;
+    if (status != UF_OK || best == 0)
+        return status;
+    for (int k = -FINE; status == UF_OK && k <= FINE; k++)
+        status = try_blur(work, job, pixel_size_um, blurs_um[best] * (1 + k * fine_step), &scatter[k + FINE], error);
+    *blur_um = uf_round_digits(blurs_um[best] * (1 + bottom(scatter) * fine_step), 9);
     return status;
 }
 

@@ -20,12 +20,13 @@ typedef struct uf_halo {
  *
  * The light of the cells is `source` inside outlines, above its background: the wide image's own for its haze (out-of-
  * focus light, scatter), the wide image again for the pedestal under the near image (excitation that is not
- * evanescent and reaches the whole cell). Blur of 1 to 8 um is tried on the coarse grid of `cells`; level, slopes and
+ * evanescent and reaches the whole cell). Blur of 1.2 to 8 um is tried on the coarse grid of `cells`; level, slopes and
  * share are fitted by least squares over blocks beyond the reach of the point spread function, outliers (debris) left
  * out. What is found is subtracted everywhere, cells included, and the level becomes background_adu. Nothing happens
  * where the field has too little outside to tell.
  *
- * Limits: a halo wider than 8 um counts as background. Light that stays within the cell it came from (stray
+ * Limits: light less blurred than 1.2 um is that of the dorsal membrane and stays (gap/edge_fall.h sees to it); the
+ * reference must have been measured with the same correction. A halo wider than 8 um counts as background. Light that stays within the cell it came from (stray
  * light in the excitation) leaves no trace outside; that is what scattered_fraction is for.
  */
 UF_MUST_USE uf_status uf_halo_remove(uf_work *work, const uf_channel *source, const uf_cell_map *cells,

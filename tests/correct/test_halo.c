@@ -94,12 +94,12 @@ static void test_haze_is_found_and_taken_out(void **state)
     map_cells(&b);
     b.wide = channel_of(&b, light, 0.083, 2.3, 0);
     assert_int_equal(uf_halo_remove(&b.work, &b.wide, &b.cells, pixel_um, &b.wide, &halo, NULL), UF_OK);
-    assert_near_abs(halo.share, 0.083, 0.004);
-    assert_near_rel(halo.blur_um, 2.3, 0.08);
-    assert_true(halo.share_sd > 0 && halo.share_sd < 0.004);
+    assert_near_abs(halo.share, 0.083, 0.008); /* a tenth: share and blur trade off in the tail that is seen */
+    assert_near_rel(halo.blur_um, 2.3, 0.1);
+    assert_true(halo.share_sd > 0 && halo.share_sd < 0.008);
     assert_near_abs(halo.slope, 0, 0.01);
     /* a pixel's noise of 12 is 0.3 in a mean of 1600; the light of the halo was 330 */
-    assert_true(worst(&b.wide, light, b.wide.background_adu) < 16);
+    assert_true(worst(&b.wide, light, b.wide.background_adu) < 33);
     assert_near_abs(b.wide.background_adu, level, 2);
     uf_arena_free(&b.work.arena);
 }
@@ -149,11 +149,27 @@ static void test_nothing_to_take_out(void **state)
     uf_arena_free(&b.work.arena);
 }
 
+/* Half of the light a micrometre out of focus is the dorsal membrane's: it belongs to the cell and stays. */
+static void test_dorsal_light_is_no_halo(void **state)
+{
+    (void)state;
+    bench b = {0};
+    uf_halo halo;
+    map_cells(&b);
+    b.wide = channel_of(&b, 0.55 * light, 0.45, 0.95, 0);
+    uf_channel before = channel_of(&b, 0.55 * light, 0.45, 0.95, 0);
+    assert_int_equal(uf_halo_remove(&b.work, &b.wide, &b.cells, pixel_um, &b.wide, &halo, NULL), UF_OK);
+    assert_near_abs(halo.share, 0, 0);
+    assert_memory_equal(b.wide.image.data, before.image.data, WIDTH * HEIGHT * sizeof(float));
+    uf_arena_free(&b.work.arena);
+}
+
 int main(void)
 {
     const struct CMUnitTest tests[] = {cmocka_unit_test(test_haze_is_found_and_taken_out),
                                        cmocka_unit_test(test_pedestal_under_the_near_image),
                                        cmocka_unit_test(test_slope_is_flattened),
-                                       cmocka_unit_test(test_nothing_to_take_out)};
+                                       cmocka_unit_test(test_nothing_to_take_out),
+                                       cmocka_unit_test(test_dorsal_light_is_no_halo)};
     return cmocka_run_group_tests_name("halo", tests, NULL, NULL);
 }
