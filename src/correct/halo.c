@@ -30,6 +30,8 @@ typedef struct halo_job {
     int stride;         /* every so many blocks are fitted: MOST_BLOCKS tell as much as all */
     int parameters;     /* PARAMETERS, or SHARE: without a halo */
     uf_linear_fit fit;
+    double rows;          /* that the fit stood on */
+    double share_by_blur; /* 1 sigma of the share by that of the blur */
 } halo_job;
 
 /* ---- the fit at one blur --------------------------------------------------------------------- */
@@ -64,6 +66,7 @@ static int fit_once(halo_job *job, double limit)
             regressors(job, x, y, regressor);
             uf_linear_add(&sums, regressor, value, fabs(value - fitted_at(job, x, y)) <= limit);
         }
+    job->rows = sums.rows;
     return sums.rows >= LEAST_BLOCKS && uf_linear_solve(&sums, &job->fit);
 }
 
@@ -166,31 +169,40 @@ static int is_told(const halo_job *job)
     return share > least_sigmas * sd && share > least_share * job->light_scale;
 }
 
-/* Scatter that a blur leaves, as a variance; NaN when no halo is told. */
-static uf_status try_blur(uf_work *work, halo_job *job, double pixel_size_um, double blur_um, double *scatter,
+/* What a blur leaves of scatter, as a variance, and the share it gives; NaN when no halo is told. */
+typedef struct trial {
+    double scatter, share;
+} trial;
+
+static uf_status try_blur(uf_work *work, halo_job *job, double pixel_size_um, double blur_um, trial *out,
                           uf_error *error)
 {
     uf_status status = blur_light(work, job, blur_um / pixel_size_um, error);
     int told = status == UF_OK && fit_rounds(job, PARAMETERS) && is_told(job);
-    *scatter = told ? job->fit.residual_sd * job->fit.residual_sd : (double)NAN;
+    out->scatter = told ? job->fit.residual_sd * job->fit.residual_sd : (double)NAN;
+    out->share = told ? job->fit.value[SHARE] : (double)NAN;
     return status;
 }
 
 enum { FINE = 3 };
 static const double fine_step = 1.0 / 12;
 
-/* The bottom of a parabola through the scatter at steps -FINE .. FINE, as a step; the middle when there is none. */
-static double bottom(const double *scatter)
+/* The bottom of a parabola through the scatter at steps -FINE .. FINE, as a step; the middle when there is none. Where the
+ * sum of squares has risen by one residual variance the blur is one sigma off, and the share with it. */
+static double bottom(halo_job *job, const trial *trials)
 {
     uf_linear sums = {.parameters = 3};
     uf_linear_fit fit;
     for (int k = -FINE; k <= FINE; k++) {
         const double x[] = {1, k, k * k};
-        if (!isnan(scatter[k + FINE]))
-            uf_linear_add(&sums, x, scatter[k + FINE] / scatter[FINE], 1);
+        if (!isnan(trials[k + FINE].scatter))
+            uf_linear_add(&sums, x, trials[k + FINE].scatter / trials[FINE].scatter, 1);
     }
-    if (isnan(scatter[FINE]) || !uf_linear_solve(&sums, &fit) || !(fit.value[2] > 0))
+    if (isnan(trials[FINE].scatter) || !uf_linear_solve(&sums, &fit) || !(fit.value[2] > 0))
         return 0;
+    double sd_steps = fmin(FINE, 1 / sqrt(job->rows * fit.value[2]));
+    double per_step = (trials[FINE + 1].share - trials[FINE - 1].share) / 2;
+    job->share_by_blur = isnan(per_step) ? 0 : fabs(per_step) * sd_steps;
     return fmin(fmax(-fit.value[1] / (2 * fit.value[2]), -FINE), FINE);
 }
 
@@ -198,14 +210,15 @@ static double bottom(const double *scatter)
  * tell. */
 static uf_status choose_blur(uf_work *work, halo_job *job, double pixel_size_um, double *blur_um, uf_error *error)
 {
-    double least = (double)INFINITY, scatter[2 * FINE + 1];
+    double least = (double)INFINITY;
+    trial trials[2 * FINE + 1];
     int best = 0;
     uf_status status = UF_OK;
     for (int k = 0; status == UF_OK && k < BLURS; k++) {
-        double here;
+        trial here;
         status = try_blur(work, job, pixel_size_um, blurs_um[k], &here, error);
-        if (here < least) {
-            least = here;
+        if (here.scatter < least) {
+            least = here.scatter;
             best = k;
         }
     }
@@ -213,8 +226,8 @@ static uf_status choose_blur(uf_work *work, halo_job *job, double pixel_size_um,
     if (status != UF_OK || best == 0)
         return status;
     for (int k = -FINE; status == UF_OK && k <= FINE; k++)
-        status = try_blur(work, job, pixel_size_um, blurs_um[best] * (1 + k * fine_step), &scatter[k + FINE], error);
-    *blur_um = uf_round_digits(blurs_um[best] * (1 + bottom(scatter) * fine_step), 9);
+        status = try_blur(work, job, pixel_size_um, blurs_um[best] * (1 + k * fine_step), &trials[k + FINE], error);
+    *blur_um = uf_round_digits(blurs_um[best] * (1 + bottom(job, trials) * fine_step), 9);
     return status;
 }
 
@@ -233,7 +246,7 @@ static uf_status find_halo(uf_work *work, halo_job *job, double pixel_size_um, i
     if (status != UF_OK || !(halo->blur_um > 0))
         return status;
     halo->share = uf_round_digits(job->fit.value[SHARE] / job->light_scale, 9);
-    halo->share_sd = uf_round_digits(job->fit.sd[SHARE] / job->light_scale, 9);
+    halo->share_sd = uf_round_digits(hypot(job->fit.sd[SHARE], job->share_by_blur) / job->light_scale, 9);
     return UF_OK;
 }
 
@@ -281,7 +294,8 @@ static void settle_background(const halo_job *job, const uf_halo *halo, uf_chann
 {
     double within = halo->share_sd * job->light_scale; /* what an error of the share leaves inside cells */
     channel->background_adu = uf_round_digits(job->fit.value[LEVEL], 12);
-    channel->background_sd_adu = hypot(job->fit.sd[LEVEL], within);
+    channel->background_sd_adu = job->fit.sd[LEVEL];
+    channel->halo_sd_adu = within;
     channel->noise_adu = sqrt(uf_noise_variance(&channel->noise, channel->background_adu));
 }
 

@@ -23,6 +23,7 @@ typedef struct uf_channel {
     uf_noise noise;
     double background_adu;
     double background_sd_adu; /* 1 sigma of background_adu */
+    double halo_sd_adu;       /* 1 sigma of what taking out a halo left inside cells */
     double noise_adu;         /* 1 sigma noise of a pixel at the background level */
     double saturated_fraction, clipped_fraction;
     int64_t replaced;   /* bad pixels replaced */

@@ -29,7 +29,7 @@ static double near_at(const uf_plan *plan, double gap_nm, double dye_adu)
     return dye_adu * plan->reference_ratio * exp(uf_decay_ln(&plan->decay, gap_nm));
 }
 
-/* 1 sigma that both backgrounds' uncertainties move a gap by. */
+/* 1 sigma that both backgrounds' uncertainties, halos included, move a gap by. */
 static double background_part(const uf_measure_input *in, const uf_cell *row, double gap_nm)
 {
     double dye = row->dye_mean_adu, near = near_at(in->plan, gap_nm, dye);
@@ -39,8 +39,9 @@ static double background_part(const uf_measure_input *in, const uf_cell *row, do
         uf_field_kind kind = {&in->plan->bench, in->plan->law.model, in->plan->law.stray};
         return uf_series_background_nm(&in->plan->series, &kind, in->near, near, gap_nm);
     }
-    double of_wide = in->plan->signal == UF_SIGNAL_NEAR ? 0 : in->wide->background_sd_adu / dye;
-    return uf_gap_per_ln(in->plan, gap_nm) * hypot(in->near->background_sd_adu / near, of_wide);
+    double of_near = hypot(in->near->background_sd_adu, in->near->halo_sd_adu) / near;
+    double of_wide = hypot(in->wide->background_sd_adu, in->wide->halo_sd_adu) / dye;
+    return uf_gap_per_ln(in->plan, gap_nm) * hypot(of_near, in->plan->signal == UF_SIGNAL_NEAR ? 0 : of_wide);
 }
 
 /* Area (1 sigma) by which the outline may be wrong. */

@@ -96,7 +96,7 @@ static void test_haze_is_found_and_taken_out(void **state)
     assert_int_equal(uf_halo_remove(&b.work, &b.wide, &b.cells, pixel_um, &b.wide, &halo, NULL), UF_OK);
     assert_near_abs(halo.share, 0.083, 0.008); /* a tenth: share and blur trade off in the tail that is seen */
     assert_near_rel(halo.blur_um, 2.3, 0.1);
-    assert_true(halo.share_sd > 0 && halo.share_sd < 0.008);
+    assert_true(halo.share_sd > 0 && halo.share_sd < 0.02);
     assert_near_abs(halo.slope, 0, 0.01);
     /* a pixel's noise of 12 is 0.3 in a mean of 1600; the light of the halo was 330 */
     assert_true(worst(&b.wide, light, b.wide.background_adu) < 33);
