@@ -167,7 +167,7 @@ def test_instrument_file_given_as_assay(demo, tmp_path):
 @pytest.mark.parametrize("arguments, words", [
     (["mesure"], ["unknown command", "measure"]),
     (["measure", "--treads", "2"], ["--treads", "--threads"]),
-    (["measure", "a.tif"], ["two images"]),
+    (["measure", "-i", "x.ini"], ["two images"]),
     (["measure", "a.tif", "b.tif", "c.tif"], ["one argument too many"]),
     (["measure", "a.tif", "b.tif", "-o", "x"], ["-i INSTRUMENT"]),
     (["measure", "a.tif", "b.tif", "-i", "x.ini"], ["-o OUT"]),
