@@ -369,39 +369,52 @@ static void fill_means(const cell_job *job, int label, uf_cell *row)
 static const double step_um = 0.8;     /* how far beside the outline is looked */
 static const double moved_share = 0.6; /* of the rim's light that lies beside it */
 
-/* Near light just outside the outline in direction (dx, dy), over that just inside: strips of the cell's pixels that
- * leave all cells when moved by the step. A still cell leaves only blur there. */
-static double light_beside(const cell_job *job, int label, int dx, int dy)
+enum { DIRECTIONS = 8 };
+
+/* Near light just inside and just outside the outline, by direction. */
+typedef struct strips {
+    double inside[DIRECTIONS], outside[DIRECTIONS];
+    int pixels[DIRECTIONS];
+} strips;
+
+/* One pixel of the cell: where a step leaves all cells, it and the place it leads to belong to that direction's strips. */
+static void add_to_strips(const uf_measure_input *in, int x, int y, const int *dx, const int *dy, strips *s)
 {
-    const uf_measure_input *in = job->in;
     uf_labels labels = in->cells->labels;
-    uf_box box = job->boxes[label];
-    double inside = 0, outside = 0;
-    int pixels = 0;
-    for (int y = box.y0; y < box.y1; y += 3)
-        for (int x = box.x0; x < box.x1; x += 3) {
-            int u = x + dx, v = y + dy;
-            if (uf_labels_row(labels, y)[x] != label || u < 0 || v < 0 || u >= labels.width || v >= labels.height ||
-                uf_labels_row(labels, v)[u])
-                continue;
-            inside += (double)uf_plane_row(in->gaps->near_adu, y)[x];
-            outside += (double)uf_plane_row(in->gaps->near_adu, v)[u];
-            pixels++;
-        }
-    double least = 3 * in->near->noise_adu * pixels; /* a dim rim tells nothing */
-    return outside > least ? outside / fmax(inside, least) : 0;
+    for (int k = 0; k < DIRECTIONS; k++) {
+        int u = x + dx[k], v = y + dy[k];
+        if (u < 0 || v < 0 || u >= labels.width || v >= labels.height || uf_labels_row(labels, v)[u])
+            continue;
+        s->inside[k] += (double)uf_plane_row(in->gaps->near_adu, y)[x];
+        s->outside[k] += (double)uf_plane_row(in->gaps->near_adu, v)[u];
+        s->pixels[k]++;
+    }
 }
 
+/* A still cell leaves only blur beside its outline; a dim rim tells nothing. */
 static int has_moved(const cell_job *job, int label)
 {
-    double step_px = step_um / job->in->plan->pixel_size_um;
-    for (int k = 0; k < 8; k++) {
-        double angle = k * UF_PI / 4;
-        if (light_beside(job, label, (int)lround(step_px * cos(angle)), (int)lround(step_px * sin(angle))) >
-            moved_share)
-            return 1;
+    const uf_measure_input *in = job->in;
+    double step_px = step_um / in->plan->pixel_size_um;
+    uf_box box = job->boxes[label];
+    int dx[DIRECTIONS], dy[DIRECTIONS], moved = 0;
+    strips s = {0};
+    for (int k = 0; k < DIRECTIONS; k++) {
+        dx[k] = (int)lround(step_px * cos(2 * UF_PI * k / DIRECTIONS));
+        dy[k] = (int)lround(step_px * sin(2 * UF_PI * k / DIRECTIONS));
     }
-    return 0;
+    for (int y = box.y0; y < box.y1; y += 2) {
+        const int32_t *labels = uf_labels_row(in->cells->labels, y);
+        const float *distance = uf_plane_row(in->cells->distance_px, y);
+        for (int x = box.x0; x < box.x1; x += 2)
+            if (labels[x] == label && (double)distance[x] <= step_px + 1)
+                add_to_strips(in, x, y, dx, dy, &s);
+    }
+    for (int k = 0; k < DIRECTIONS; k++) {
+        double least = 3 * in->near->noise_adu * s.pixels[k];
+        moved |= s.outside[k] > least && s.outside[k] > moved_share * fmax(s.inside[k], least);
+    }
+    return moved;
 }
 
 /* ---- one cell -------------------------------------------------------------------------------- */

@@ -100,6 +100,7 @@ static uf_status remove_halos(uf_work *work, const uf_plan *plan, uf_field_resul
             pedestal = of_page;
             r->near.background_adu = r->pages[k].background_adu;
             r->near.background_sd_adu = r->pages[k].background_sd_adu;
+            r->near.halo_sd_adu = r->pages[k].halo_sd_adu;
         }
     }
     if (status == UF_OK && !plan->series.count)

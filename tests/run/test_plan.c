@@ -220,11 +220,38 @@ static void test_cell_index_counts_where_it_acts(void **state)
     assert_true(uf_systematic_nm(&near_critical, 50) > 3 * uf_systematic_nm(&steep, 50));
 }
 
+/* Dye through the cytoplasm: the evanescent field reaches depth(cell_n) into it, stray light its own depth D, so that a
+ * share s at the interface weighs s D / ((1 - s) depth + s D) in what near sums up (closed form). */
+static void test_cytosol_weighs_stray_light_by_its_reach(void **state)
+{
+    (void)state;
+    static uf_plan plan;
+    uf_settings *settings;
+    uf_error error;
+    static const char more[] = "[interface]\nangle_deg = 70\n[decay]\nscattered_fraction = 0.1\nscattered_depth_nm = 1000\n";
+    assert_int_equal(uf_settings_new(&settings, NULL), UF_OK);
+    assert_int_equal(uf_settings_parse(settings, bench, sizeof bench - 1, "b.ini", UF_INSTRUMENT_FILE, NULL), UF_OK);
+    assert_int_equal(uf_settings_parse(settings, more, strlen(more), "m.ini", UF_INSTRUMENT_FILE, NULL), UF_OK);
+    assert_int_equal(uf_settings_set(settings, "cells", "label", "cytosol", NULL), UF_OK);
+    assert_int_equal(uf_plan_make(settings, 0.1, &plan, &error), UF_OK);
+    double in_cell = 97.737476, depth = plan.depth_nm, share = 0.1 * 1000 / (0.9 * in_cell + 0.1 * 1000);
+    assert_near_rel(plan.law.stray.fraction, share, 1e-6);
+    double at_60 = (1 - share) * exp(-60 / depth) + share * exp(-0.06);
+    assert_near_abs(uf_decay_gap(&plan.decay, log(at_60)), 60, 0.01);
+    assert_true(plan.is_relative && plan.signal == UF_SIGNAL_NEAR);
+    /* light that runs on into the cell has no depth there */
+    assert_int_equal(uf_settings_set(settings, "interface", "angle_deg", "64", NULL), UF_OK);
+    assert_int_equal(uf_plan_make(settings, 0.1, &plan, &error), UF_INPUT);
+    assert_non_null(strstr(error.text, "cell_n"));
+    uf_settings_free(&settings);
+}
+
 int main(void)
 {
     const struct CMUnitTest tests[] = {cmocka_unit_test(test_depth_three_ways), cmocka_unit_test(test_reference_at_a_gap),
                                        cmocka_unit_test(test_pixel_size), cmocka_unit_test(test_angle_in_another_index),
                                        cmocka_unit_test(test_indices_by_name), cmocka_unit_test(test_coating_in_the_plan),
+                                       cmocka_unit_test(test_cytosol_weighs_stray_light_by_its_reach),
                                        cmocka_unit_test(test_depth_error_scales_with_the_gap),
                                        cmocka_unit_test(test_reference_errors_move_all_gaps_alike),
                                        cmocka_unit_test(test_cell_index_counts_where_it_acts),
