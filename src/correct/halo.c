@@ -18,7 +18,7 @@ static const double least_share = 0.002; /* less is of no consequence: a quarter
 static const double least_sigmas = 4;
 static const double outlier_sigmas = 3.5;
 
-enum { LEVEL, ACROSS, DOWN, SHARE, PARAMETERS };
+enum { LEVEL, ACROSS, DOWN, BOW_ACROSS, BOW_DOWN, SHARE, PARAMETERS };
 
 typedef struct halo_job {
     const uf_cell_map *cells;
@@ -41,6 +41,8 @@ static void regressors(const halo_job *job, int x, int y, double *out)
     out[LEVEL] = 1;
     out[ACROSS] = (x + 0.5) / job->target.width - 0.5;
     out[DOWN] = (y + 0.5) / job->target.height - 0.5;
+    out[BOW_ACROSS] = out[ACROSS] * out[ACROSS];
+    out[BOW_DOWN] = out[DOWN] * out[DOWN];
     out[SHARE] = (double)uf_plane_row(job->blurred, y)[x] / job->light_scale;
 }
 
@@ -280,14 +282,22 @@ static uf_status subtract(uf_work *work, uf_plane coarse, int factor, uf_plane i
     return UF_OK;
 }
 
-/* The slope of the background that can be told, over the longer side, relative to its level. */
+/* Whether slopes or bows of the background can be told from noise. */
 static int slope_is_told(const halo_job *job)
 {
     const uf_linear_fit *fit = &job->fit;
-    for (int k = ACROSS; k <= DOWN; k++)
+    for (int k = ACROSS; k <= BOW_DOWN; k++)
         if (fabs(fit->value[k]) > least_sigmas * fit->sd[k] && fabs(fit->value[k]) > fit->residual_sd)
             return 1;
     return 0;
+}
+
+/* Highest minus lowest of slope t + bow t^2 over t = -1/2 .. 1/2. */
+static double change_along(double slope, double bow)
+{
+    double left = -slope / 2 + bow / 4, right = slope / 2 + bow / 4, turn = bow != 0 ? -slope / (2 * bow) : 1;
+    double inside = fabs(turn) < 0.5 ? slope * turn + bow * turn * turn : left;
+    return fmax(fmax(left, right), inside) - fmin(fmin(left, right), inside);
 }
 
 static void settle_background(const halo_job *job, const uf_halo *halo, uf_channel *channel)
@@ -323,7 +333,8 @@ static uf_status remove_halo(uf_work *work, halo_job *job, const uf_channel *sou
         return status;
     if (halo->share == 0 && !(fit_rounds(job, SHARE) && slope_is_told(job)))
         return UF_OK;
-    double steepest = fmax(fabs(job->fit.value[ACROSS]), fabs(job->fit.value[DOWN]));
+    double steepest = fmax(change_along(job->fit.value[ACROSS], job->fit.value[BOW_ACROSS]),
+                           change_along(job->fit.value[DOWN], job->fit.value[BOW_DOWN]));
     halo->slope = slope_is_told(job) && job->fit.value[LEVEL] > 0 ? steepest / job->fit.value[LEVEL] : 0;
     lay_out(job);
     settle_background(job, halo, channel);

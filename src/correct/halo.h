@@ -16,14 +16,14 @@ typedef struct uf_halo {
 /*
  * Finds and takes out, in `channel`, what lies outside cells:
  *
- *   image(x, y) = level + a x + b y + share * (light of the cells, blurred)
+ *   image(x, y) = level + a x + b y + c x^2 + d y^2 + share * (light of the cells, blurred)
  *
  * The light of the cells is `source` inside outlines, above its background: the wide image's own for its haze (out-of-
  * focus light, scatter), the wide image again for the pedestal under the near image (excitation that is not
- * evanescent and reaches the whole cell). Blur of 1.2 to 8 um is tried on the coarse grid of `cells`; level, slopes and
- * share are fitted by least squares over blocks beyond the reach of the point spread function, outliers (debris) left
- * out. What is found is subtracted everywhere, cells included, and the level becomes background_adu. Nothing happens
- * where the field has too little outside to tell.
+ * evanescent and reaches the whole cell). Blur of 1.2 to 8 um is tried on the coarse grid of `cells`; level, slopes, bows
+ * (what an uneven lamp leaves without a flat) and share are fitted by least squares over blocks beyond the reach of the
+ * point spread function, outliers (debris) left out. What is found is subtracted everywhere, cells included, and the level
+ * becomes background_adu. Nothing happens where the field has too little outside to tell.
  *
  * Limits: light less blurred than 1.2 um is that of the dorsal membrane and stays (gap/edge_fall.h sees to it); the
  * reference must have been measured with the same correction. A halo wider than 8 um counts as background. Light that stays within the cell it came from (stray

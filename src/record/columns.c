@@ -112,7 +112,7 @@ static const uf_column field_columns[] = {
     FIELD(wide_saturated_fraction, REAL, "Share of wide pixels at full scale."),
     FIELD(near_focus, REAL, "Sharpness of the near image inside cells, 0 (blurred) to 1; about 0.6 in focus."),
     FIELD(wide_focus, REAL, "The same of the wide image; about 0.45 in focus."),
-    FIELD(near_unevenness, REAL, "Slope of the near background: its change over the field, relative to its level; 0 when none can be told. Taken out."),
+    FIELD(near_unevenness, REAL, "Slope and bow of the near background: its change over the field, relative to its level; 0 when none can be told. Taken out."),
     FIELD(wide_unevenness, REAL, "The same of the wide background."),
     FIELD(reference_ratio, REAL, "near / wide ratio that stands for gap 0 in this field. Empty for a series, which needs none."),
     FIELD(depth_nm, REAL, "1/e depth of the evanescent intensity in the medium; of a series, at its smallest angle."),
