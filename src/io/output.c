@@ -26,18 +26,19 @@ static const char *mend_for(int number)
     switch (number) {
     case ENOSPC:
     case EDQUOT:
-        return "free space or choose another -o";
+        return "free space or choose another place";
     case EACCES:
     case EPERM:
     case EROFS:
-        return "choose another -o, or ask for the right to write there";
+        return "choose another place, or ask for the right to write there";
     case EEXIST:
     case EISDIR:
     case ENOTDIR:
     case ELOOP:
-        return "move what is in the way (a file, folder or symbolic link) or choose another -o";
+    case ENODEV:
+        return "move what is in the way (a file, folder, device or symbolic link) or choose another place";
     default:
-        return "choose another -o";
+        return "choose another place";
     }
 }
 
@@ -175,10 +176,21 @@ static int write_new(int folder, const char *name, const void *bytes, size_t cou
     return number;
 }
 
+/* A device or a pipe of that name is not ours to replace; a file, a link or nothing is. Folders tell by themselves. */
+static bool may_replace(int folder, const char *name)
+{
+    struct stat there;
+    if (fstatat(folder, name, &there, AT_SYMLINK_NOFOLLOW) != 0)
+        return true;
+    return S_ISREG(there.st_mode) || S_ISLNK(there.st_mode) || S_ISDIR(there.st_mode);
+}
+
 /* Returns 0 or an error number; after a failure the old file, if any, is untouched. */
 static int replace_file(int folder, const char *name, const void *bytes, size_t count)
 {
     char temporary[LONGEST_NAME + 1];
+    if (!may_replace(folder, name))
+        return ENODEV;
     (void)snprintf(temporary, sizeof temporary, ".%s.part", name);
     /* A stale one, from a run that was killed. */
     if (unlinkat(folder, temporary, 0) != 0 && errno != ENOENT)

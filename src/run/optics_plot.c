@@ -113,7 +113,8 @@ static uf_status write_file(const char *path, const uf_text *bytes, uf_error *er
     uf_text_bytes(&folder, path, (size_t)(name - path));
     uf_text_add(&folder, ".");
     uf_status status = uf_text_check(&folder, path, error);
-    if (status == UF_OK && !*name)
+    int is_folder = !*name || strcmp(name, ".") == 0 || strcmp(name, "..") == 0;
+    if (status == UF_OK && is_folder)
         status = uf_fail(error, UF_USAGE, "%s is a folder; --plot needs the name of a file, like depth.png", path);
     if (status == UF_OK)
         status = uf_output_open(&output, folder.bytes, error);

@@ -1,5 +1,7 @@
 """The optics command: its numbers against published formulas and figures."""
 import json
+import os
+import stat
 
 import pytest
 from PIL import Image
@@ -157,6 +159,16 @@ def test_plot_is_a_picture_and_faults_are_told(tmp_path):
     refused = Run(["optics", *BENCH, "--angle-deg", "70", "--plot", str(tmp_path) + "/"])
     assert refused.status == 2 and "name of a file" in refused.err
     assert Run(["optics", *BENCH, "--angle-deg", "70", "--plot", "/proc/nowhere/x.png"]).status == 3
+    assert Run(["optics", *BENCH, "--angle-deg", "70", "--plot", ".."]).status == 2
+
+
+def test_plot_replaces_no_pipe(tmp_path):
+    pipe = tmp_path / "pipe.png"
+    os.mkfifo(pipe)
+    run = Run(["optics", *BENCH, "--angle-deg", "70", "--plot", str(pipe)])
+    assert run.status == 3 and "in the way" in run.err
+    assert stat.S_ISFIFO(os.stat(pipe).st_mode)
+    assert os.listdir(tmp_path) == ["pipe.png"]
 
 
 def test_laser_caution_stands_where_an_angle_is_shown():
