@@ -110,8 +110,9 @@ static uf_status write_file(const char *path, const uf_text *bytes, uf_error *er
     const char *name = uf_base_name(path);
     uf_text folder = {0};
     uf_output output = {0};
-    uf_text_bytes(&folder, path, (size_t)(name - path));
-    uf_text_add(&folder, ".");
+    size_t before = (size_t)(name - path);
+    uf_text_bytes(&folder, path, before > 1 ? before - 1 : before); /* without the '/', but for the root's */
+    uf_text_add(&folder, before ? "" : ".");
     uf_status status = uf_text_check(&folder, path, error);
     int is_folder = !*name || strcmp(name, ".") == 0 || strcmp(name, "..") == 0;
     if (status == UF_OK && is_folder)
