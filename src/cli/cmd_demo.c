@@ -45,7 +45,7 @@ static int command_demo(int argc, char **argv)
 
 const uf_command uf_command_demo = {
     "demo",
-    "DIR",
+    "DIR [--scenario NAME]",
     "write a small experiment with known truth to try the program on",
     "Writes image pairs of simulated cells with flats, instrument and assay files, a sheet and the truth:\n"
     "two coatings on three days, a compound at eight doses on three plates, or part of a screening plate.\n"

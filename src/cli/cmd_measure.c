@@ -141,7 +141,7 @@ static int command_measure(int argc, char **argv)
 
 const uf_command uf_command_measure = {
     "measure",
-    "NEAR WIDE -i INSTRUMENT [-a ASSAY] [-m MASK] -o OUT",
+    "NEAR WIDE -i INSTRUMENT [-a ASSAY] [-m MASK] [-n NUCLEI] -o OUT",
     "measure one field from its near and wide image",
     "Segments the cells in the wide image, turns the near/wide ratio into the gap between membrane and\n"
     "substrate, and measures contact area, attachment and focal spots of every cell. Writes cells.csv,\n"
