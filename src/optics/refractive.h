@@ -23,7 +23,7 @@ double uf_air_n(double wavelength_nm);
 
 /* Catalogue index, relative to air, by Sellmeier's formula n^2 - 1 = sum B_i L^2 / (L^2 - C_i), L in um. 300 .. 2000
  * nm. Cover glass is a borosilicate of the cover-glass family with n_e 1.5256 (ISO 8255-1 asks for 1.5255 +/- 0.0015;
- * value from memory), BK7 a crown glass (maker's catalogue of 2017), fused silica Malitson 1965, J. Opt. Soc. Am.
+ * value from memory), BK7 a crown glass (published dispersion data, n_d 1.5168, V_d 64.17), fused silica Malitson 1965, J. Opt. Soc. Am.
  * 55:1205. */
 double uf_glass_n_in_air(uf_glass glass, double wavelength_nm);
 

@@ -58,7 +58,7 @@ static double abbe_number(uf_glass glass)
 }
 
 /* Catalogue figures: n_d and Abbe number of the borosilicate crown (1.5168, 64.17) and of the cover glass (1.523303,
- * 54.5172), makers' catalogues of 2017; fused silica 1.45846 and about 67.8 (from memory; Malitson's formula gives
+ * 54.5172): published dispersion data; fused silica 1.45846 and about 67.8 (from memory; Malitson's formula gives
  * 1.458464 and 67.8215). At laser lines: Sellmeier's formula evaluated outside this program. */
 static void test_glasses(void **state)
 {
