@@ -125,6 +125,7 @@ typedef struct uf_measure_summary {
     double seconds;
     char overlay[256];   /* path of the overlay below out_dir, empty when none was asked for */
     char warnings[1024]; /* one a line, empty when there are none */
+    char flags[2048];    /* flags of the field, one a line with what to do about it */
 } uf_measure_summary;
 
 /* Measures one field from its two image files and writes tables, images and run.json under out_dir

@@ -31,7 +31,7 @@ static int command_demo(int argc, char **argv)
     uf_status status = uf_options_parse(argc, argv, options, 3, dirs, &count, 1, &help, &error);
     if (status == UF_OK && help)
         return uf_help_print(&uf_command_demo, options, 3, NULL);
-    if (status == UF_OK && count != 1)
+    if (status == UF_OK && (count != 1 || !*dirs[0]))
         status = uf_fail(&error, UF_USAGE, "demo needs a folder to write into: underfoot demo DIR");
     if (status == UF_OK)
         status = uf_threads(threads_text, &request.threads, &error);

@@ -38,6 +38,10 @@ static int print_summary(const measure_arguments *a, const uf_measure_summary *s
         put_median(&out, "attachment fraction", s->attachment_fraction_median, "");
         put_median(&out, "median gap", s->gap_median_nm, " nm");
     }
+    if (*s->flags)
+        uf_text_add(&out, "Flagged:\n");
+    for (const char *line = s->flags; *line; line += strcspn(line, "\n") + 1)
+        uf_text_printf(&out, "  %.*s\n", (int)strcspn(line, "\n"), line);
     uf_text_printf(&out, "Results in %s: cells.csv, spots.csv, fields.csv, run.json\n", a->out);
     if (*s->overlay)
         uf_text_printf(&out, "Look at %s/%s before you use the numbers.\n", a->out, s->overlay);

@@ -42,13 +42,14 @@ static uf_status apply(uf_settings *settings, const char *const *values, uf_erro
     return status;
 }
 
-/* A positive length in nm, NaN when the option was not given. */
-static uf_status length_of(const char *option, const char *text, double *value, uf_error *error)
+/* A length in nm within what makes sense, NaN when the option was not given. */
+static uf_status length_of(const char *option, const char *text, const char *example, double *value, uf_error *error)
 {
     *value = (double)NAN;
-    if (!text || (uf_parse_number(text, value) && *value > 0))
+    if (!text || (uf_parse_number(text, value) && *value >= 0.01 && *value <= 5000))
         return UF_OK;
-    return uf_fail(error, UF_USAGE, "--%s %.40s: expected nanometres, like --%s 80", option, text, option);
+    return uf_fail(error, UF_USAGE, "--%s %.40s: expected nanometres (0.01 to 5000), like --%s %s", option, text,
+                   option, example);
 }
 
 enum { OWN_OPTIONS = 5, OPTIONS = OWN_OPTIONS + SETTING_OPTIONS };
@@ -93,9 +94,9 @@ static int command_optics(int argc, char **argv)
     if (status == UF_OK && help)
         return uf_help_print(&uf_command_optics, options, OPTIONS, NULL);
     if (status == UF_OK)
-        status = length_of("for-depth-nm", a.for_depth, &request.for_depth_nm, &error);
+        status = length_of("for-depth-nm", a.for_depth, "80", &request.for_depth_nm, &error);
     if (status == UF_OK)
-        status = length_of("for-agreement-nm", a.for_agreement, &request.for_agreement_nm, &error);
+        status = length_of("for-agreement-nm", a.for_agreement, "2", &request.for_agreement_nm, &error);
     if (status == UF_OK)
         status = uf_read_settings(a.instruments, a.instrument_count, NULL, 0, &settings, &error);
     if (status == UF_OK)

@@ -38,6 +38,16 @@ static int unknown_command(const char *typed)
     return uf_report_error(&error);
 }
 
+/* `underfoot help COMMAND`, as `underfoot COMMAND --help`. */
+static int help_for(const char *typed)
+{
+    char option[] = "--help", *arguments[] = {option};
+    for (int k = 0; k < COMMANDS; k++)
+        if (strcmp(typed, commands[k]->name) == 0)
+            return commands[k]->run(1, arguments);
+    return unknown_command(typed);
+}
+
 int main(int argc, char **argv)
 {
     /* A reader that closes the pipe early, or a limit on file sizes, is an error to report, not a reason to die
@@ -55,8 +65,12 @@ int main(int argc, char **argv)
         uf_text_free(&out);
         return status;
     }
+    if (strcmp(argv[1], "help") == 0 && argc == 2)
+        return print_overview();
     for (int k = 0; k < COMMANDS; k++)
         if (strcmp(argv[1], commands[k]->name) == 0)
             return commands[k]->run(argc - 2, argv + 2);
+    if (strcmp(argv[1], "help") == 0)
+        return help_for(argv[2]);
     return unknown_command(argv[1]);
 }

@@ -69,7 +69,7 @@ static uf_status point_cells(csv_job *job)
     uf_csv_table *table = job->table;
     size_t count = (size_t)table->rows * (size_t)table->columns;
     if (table->rows == 0)
-        return uf_fail(job->error, UF_INPUT, "%s: empty; expected a header row", job->path);
+        return uf_fail(job->error, UF_INPUT, "%s:1: empty; expected a header row", job->path);
     if (table->columns == 1 && strchr(table->bytes.bytes, ';'))
         return uf_fail(job->error, UF_INPUT, "%s:1: semicolons; expected commas between columns", job->path);
     table->cells = malloc(count * sizeof *table->cells);

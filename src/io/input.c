@@ -10,6 +10,8 @@
 
 static uf_status cannot_read(uf_error *error, const char *path, int number)
 {
+    if (!*path)
+        return uf_fail(error, UF_USAGE, "an empty name where a file to read is expected; name the file");
     return uf_fail(error, UF_INPUT, "%.400s: cannot be read (%s); check the path and who may read the file", path,
                    strerror(number));
 }

@@ -218,7 +218,8 @@ static void fill_shape(const cell_job *job, const uf_shape *shape, uf_cell *row)
     row->caliper_max_um = shape->caliper_max_px * px;
     row->caliper_min_um = shape->caliper_min_px * px;
     row->elongation = shape->caliper_max_px / shape->caliper_min_px;
-    row->convex_fill = shape->area_px / shape->hull_area_px;
+    /* The hull joins the middles of pixel edges, so a figure of a few pixels may exceed it. */
+    row->convex_fill = fmin(1, shape->area_px / shape->hull_area_px);
     row->orientation_deg = shape->orientation_deg;
 }
 
@@ -334,6 +335,8 @@ static void fill_flags(const cell_job *job, const tally *t, uf_cell *row)
                                         job->in->wide, t->dye / (double)t->pixels);
     if (job->in->plan->has_gap && row->gap_limit_nm < job->in->settings->contact.cutoff_nm)
         row->flags |= 1u << UF_FLAG_TOO_DIM;
+    if (row->gap_limit_nm < 0) /* not even a dye that touches would be seen: no gap says where the limit lies */
+        row->gap_limit_nm = (double)NAN;
 }
 
 /* Means first: the noise that tells "above the reference" from scatter is taken at them. */

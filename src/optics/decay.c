@@ -81,7 +81,7 @@ double uf_decay_gap(const uf_decay *decay, double ln_relative)
     const uf_gap_lookup *lookup = &decay->lookup;
     double at = ((double)lookup->first_ln - ln_relative) * (double)lookup->inverse_step;
     int last = UF_DECAY_NODES - 2;
-    int node = at < 0 ? 0 : at > last ? last : (int)at;
+    int node = !(at > 0) ? 0 : at > last ? last : (int)at; /* NaN stays NaN by the last line */
     double low = (double)lookup->gap_nm[node], high = (double)lookup->gap_nm[node + 1];
     return low + (at - node) * (high - low);
 }

@@ -158,7 +158,7 @@ uf_status uf_bench_check(const uf_bench *bench, uf_error *error)
                        "medium_n %.4f is not below substrate_n %.4f: no angle is totally reflected; check the two "
                        "indices",
                        bench->medium_n, bench->substrate_n);
-    if (na > bench->medium_n && na <= bench->substrate_n) {
+    if (na > bench->medium_n && na < bench->substrate_n) {
         if (na <= bench->objective_na || isnan(bench->objective_na))
             return UF_OK;
         return uf_fail(error, UF_INPUT,
@@ -166,8 +166,10 @@ uf_status uf_bench_check(const uf_bench *bench, uf_error *error)
                        "objective at this angle; check angle_deg, angle_n and objective_na",
                        na, bench->objective_na);
     }
-    if (na > bench->substrate_n)
-        return uf_fail(error, UF_INPUT, "n sin(angle) is %.4f, more than substrate_n %.4f: there is no such angle",
+    if (na >= bench->substrate_n)
+        return uf_fail(error, UF_INPUT,
+                       "n sin(angle) is %.4f, not below substrate_n %.4f: no light enters at 90 deg or beyond; check "
+                       "angle_deg, angle_n and na_effective",
                        na, bench->substrate_n);
     return uf_fail(error, UF_INPUT,
                    "n sin(angle) is %.4f (%.2f deg in the substrate): not totally reflected. Needed against the "

@@ -132,26 +132,29 @@ const uf_table uf_table_fields = {"fields", "One row a field, failed ones too.",
 /* Six significant digits: a tenth of the error of the best of these numbers, and the same everywhere. */
 enum { TABLE_DIGITS = 6 };
 
-static const char *const flag_words[UF_FLAG_COUNT] = {
-    [UF_FLAG_EDGE] = "edge",
-    [UF_FLAG_SATURATED] = "saturated",
-    [UF_FLAG_TOO_DIM] = "too_dim",
-    [UF_FLAG_TOUCHING] = "touching",
-    [UF_FLAG_UNRESOLVED] = "unresolved",
-    [UF_FLAG_EMPTY] = "empty",
-    [UF_FLAG_SHIFT_UNSURE] = "shift_unsure",
-    [UF_FLAG_SHIFT_DIFFERS] = "shift_differs",
-    [UF_FLAG_DISPLAY_SCALED] = "display_scaled",
-    [UF_FLAG_LAYERED_EFFECT] = "layered_effect",
-    [UF_FLAG_OUT_OF_FOCUS] = "out_of_focus",
-    [UF_FLAG_UNEVEN] = "uneven",
-    [UF_FLAG_CROWDED] = "crowded",
-    [UF_FLAG_LOW_SIGNAL] = "low_signal",
-    [UF_FLAG_NEAR_TOO_BRIGHT] = "near_too_bright",
-    [UF_FLAG_CHANNELS_SWAPPED] = "channels_swapped",
-    [UF_FLAG_MOVED] = "moved",
-    [UF_FLAG_CLIPPED] = "clipped",
-    [UF_FLAG_SERIES_MISFIT] = "series_misfit",
+/* What a flag says in a table, and what it asks for where there is room for a sentence. */
+static const struct {
+    const char *word, *advice;
+} flags[UF_FLAG_COUNT] = {
+    [UF_FLAG_EDGE] = {"edge", "cut by the image edge"},
+    [UF_FLAG_SATURATED] = {"saturated", "pixels at full scale, where gaps are bounds; expose less"},
+    [UF_FLAG_TOO_DIM] = {"too_dim", "the detection limit lies below the contact cutoff; expose longer"},
+    [UF_FLAG_TOUCHING] = {"touching", "shares an outline with another cell"},
+    [UF_FLAG_UNRESOLVED] = {"unresolved", "more than a quarter has no measurable gap"},
+    [UF_FLAG_EMPTY] = {"empty", "no cells found; look at the wide image, and at min_area_um2"},
+    [UF_FLAG_SHIFT_UNSURE] = {"shift_unsure", "the shift between the images cannot be told, and was not applied"},
+    [UF_FLAG_SHIFT_DIFFERS] = {"shift_differs", "this field's shift is not the bench's; calibrate it again"},
+    [UF_FLAG_DISPLAY_SCALED] = {"display_scaled", "looks contrast-stretched to 8 bits, and ratios mean nothing; save raw counts"},
+    [UF_FLAG_LAYERED_EFFECT] = {"layered_effect", "an exponential misreads the cutoff by over 3 nm; use model = layered or a steeper angle"},
+    [UF_FLAG_OUT_OF_FOCUS] = {"out_of_focus", "blurred; look before you use it"},
+    [UF_FLAG_UNEVEN] = {"uneven", "the background slopes; check light and flats"},
+    [UF_FLAG_CROWDED] = {"crowded", "hardly any free background"},
+    [UF_FLAG_LOW_SIGNAL] = {"low_signal", "cells are weaker than ten times their noise"},
+    [UF_FLAG_NEAR_TOO_BRIGHT] = {"near_too_bright", "near is brighter than the reference allows at gap 0; check [reference], exposures and flats"},
+    [UF_FLAG_CHANNELS_SWAPPED] = {"channels_swapped", "near looks like a wide image; were the two files swapped?"},
+    [UF_FLAG_MOVED] = {"moved", "the cell moved between the two images"},
+    [UF_FLAG_CLIPPED] = {"clipped", "counts cut off at 0; raise the camera's offset"},
+    [UF_FLAG_SERIES_MISFIT] = {"series_misfit", "the pages do not obey the field in force; check angles, indices and power"},
 };
 
 static const char *const gap_kind_words[] = {"none", "relative", "absolute"};
@@ -159,16 +162,21 @@ static const char *const state_words[] = {"ok", "flagged", "failed"};
 
 const char *uf_flag_word(uf_flag flag)
 {
-    return flag_words[flag];
+    return flags[flag].word;
 }
 
-static void put_flags(uf_text *out, uf_flags flags)
+const char *uf_flag_advice(uf_flag flag)
+{
+    return flags[flag].advice;
+}
+
+static void put_flags(uf_text *out, uf_flags set)
 {
     const char *before = "";
     for (int k = 0; k < UF_FLAG_COUNT; k++)
-        if (flags >> k & 1u) {
+        if (set >> k & 1u) {
             uf_text_add(out, before);
-            uf_text_add(out, flag_words[k]);
+            uf_text_add(out, flags[k].word);
             before = ";";
         }
 }

@@ -38,6 +38,9 @@ typedef uint32_t uf_flags; /* bit k is flag k */
 /* The word for one flag, "edge". */
 const char *uf_flag_word(uf_flag flag);
 
+/* What it asks for, in a few words. */
+const char *uf_flag_advice(uf_flag flag);
+
 /* 2 nm bins of gap: bin k holds UF_GAP_HISTOGRAM_FROM_NM + 2 k <= gap < ... + 2, ends collect the rest. */
 enum { UF_GAP_BINS = 280, UF_GAP_BIN_NM = 2, UF_GAP_HISTOGRAM_FROM_NM = -160 };
 

@@ -5,6 +5,9 @@
 
 #include "io/csv_read.h"
 
+/* What a measured decay must keep to, so that a ratio has one gap and the table's steps hold it: wide of any real one. */
+static const double farthest_nm = 20000, closest_nm = 0.1, steepest_per_nm = 0.2, least_fall = 0.1;
+
 static uf_status read_number(const uf_csv_table *table, const char *path, int row, int column, double *value,
                              uf_error *error)
 {
@@ -32,13 +35,23 @@ static uf_status take_point(const uf_csv_table *table, const char *path, int row
     if (relative <= 0)
         return uf_fail(error, UF_INPUT, "%s:%d: relative is %g; an excitation is above 0", path, table->lines[row],
                        relative);
+    if (gap < 0 || gap > farthest_nm)
+        return uf_fail(error, UF_INPUT, "%s:%d: gap_nm is %g; expected 0 to %g", path, table->lines[row], gap,
+                       farthest_nm);
     points->gap_nm[k] = gap;
     points->ln_relative[k] = k == 0 ? 0 : uf_round_digits(log(relative / first), 12);
-    if (k > 0 && gap <= points->gap_nm[k - 1])
-        return uf_fail(error, UF_INPUT, "%s:%d: gap_nm must rise from row to row", path, table->lines[row]);
+    if (k > 0 && gap < points->gap_nm[k - 1] + closest_nm)
+        return uf_fail(error, UF_INPUT, "%s:%d: gap_nm must rise from row to row, by at least %g nm", path,
+                       table->lines[row], closest_nm);
     if (k > 0 && points->ln_relative[k] >= points->ln_relative[k - 1])
         return uf_fail(error, UF_INPUT, "%s:%d: relative must fall from row to row; smooth what was measured", path,
                        table->lines[row]);
+    if (k > 0 &&
+        points->ln_relative[k - 1] - points->ln_relative[k] > steepest_per_nm * (gap - points->gap_nm[k - 1]))
+        return uf_fail(
+            error, UF_INPUT,
+            "%s:%d: relative falls as with a depth below %g nm; no evanescent field does: is gap_nm in nm?", path,
+            table->lines[row], 1 / steepest_per_nm);
     points->count = row;
     return UF_OK;
 }
@@ -50,10 +63,16 @@ static uf_status take_table(const uf_csv_table *table, const char *path, uf_deca
     if (columns[0] < 0 || columns[1] < 0)
         return uf_fail(error, UF_INPUT, "%s:1: expected the columns gap_nm,relative", path);
     if (table->rows < 3 || table->rows - 1 > UF_DECAY_POINTS)
-        return uf_fail(error, UF_INPUT, "%s: %d rows; expected 2 to %d", path, table->rows - 1, UF_DECAY_POINTS);
+        return uf_fail(error, UF_INPUT, "%s:1: %d row%s below the header; expected 2 to %d", path, table->rows - 1,
+                       table->rows == 2 ? "" : "s", UF_DECAY_POINTS);
     uf_status status = read_number(table, path, 1, columns[1], &first, error);
     for (int row = 1; status == UF_OK && row < table->rows; row++)
         status = take_point(table, path, row, columns, first, points, error);
+    if (status == UF_OK && points->ln_relative[points->count - 1] > -least_fall)
+        return uf_fail(
+            error, UF_INPUT,
+            "%s:%d: relative falls by less than a tenth over the whole table: it tells no gap from another", path,
+            table->lines[table->rows - 1]);
     return status;
 }
 

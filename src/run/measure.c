@@ -58,6 +58,10 @@ static uf_status read_companion(measure_job *job, const char *role, const char *
     if (!path)
         return UF_OK;
     uf_status status = read_image(job, role, path, plane, &info, error);
+    if (status == UF_OK && info.pages != 1)
+        status = uf_fail(error, UF_INPUT,
+                         "%s: the %s has %d pages, expected one; save the page to use as a file of its own", path,
+                         role, info.pages);
     if (status == UF_OK && (plane->width != like.width || plane->height != like.height))
         status = uf_fail(error, UF_INPUT,
                          "%s: the %s is %d x %d px, the images are %d x %d; take one with the same camera settings",
@@ -556,6 +560,15 @@ static double median_of(const measure_job *job, size_t member, double *scratch)
     return uf_median(scratch, count);
 }
 
+static void put_field_flags(uf_flags flags, char *lines, size_t size)
+{
+    size_t at = 0;
+    for (int k = 0; k < UF_FLAG_COUNT; k++)
+        if (flags >> k & 1u && at < size)
+            at += (size_t)snprintf(lines + at, size - at, "%s: %s\n", uf_flag_word((uf_flag)k),
+                                   uf_flag_advice((uf_flag)k));
+}
+
 static uf_status summarise(measure_job *job, uf_measure_summary *summary, uf_error *error)
 {
     double *scratch;
@@ -576,6 +589,7 @@ static uf_status summarise(measure_job *job, uf_measure_summary *summary, uf_err
     summary->attachment_fraction_median = median_of(job, offsetof(uf_cell, attachment_fraction), scratch);
     summary->gap_median_nm = median_of(job, offsetof(uf_cell, gap_median_nm), scratch);
     summary->depth_nm = job->plan.depth_nm;
+    put_field_flags(job->result.field.flags, summary->flags, sizeof summary->flags);
     (void)snprintf(summary->overlay, sizeof summary->overlay, "%s", job->overlay_name);
     (void)snprintf(summary->warnings, sizeof summary->warnings, "%s", job->warnings.bytes ? job->warnings.bytes : "");
     return UF_OK;

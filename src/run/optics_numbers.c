@@ -113,7 +113,12 @@ static double largest_na(const uf_bench *b)
 static uf_status wish_depth(const uf_bench *b, double wanted_nm, uf_optics_wish *wish, uf_error *error)
 {
     double na = uf_na_from_depth(wanted_nm, b->wavelength_nm, b->medium_n), most = largest_na(b);
-    if (na > most)
+    if (most <= b->medium_n)
+        return uf_fail(
+            error, UF_INPUT,
+            "the %s of %.4f is not above medium_n %.4f: no angle is totally reflected, so none gives a depth",
+            most < b->substrate_n ? "objective's aperture" : "substrate's index", most, b->medium_n);
+    if (na >= most)
         return uf_fail(
             error, UF_INPUT,
             "a depth of %.4g nm needs n sin(angle) %.4f, more than the %s allows (%.4f); the thinnest depth "
@@ -139,6 +144,11 @@ static uf_status wish_agreement(const uf_bench *b, double cutoff_nm, uf_optics_w
     static const double step = 0.0005;
     double first = fmax(b->medium_n, b->cell_n + 2 * b->cell_n_sd) + step, most = largest_na(b);
     double from = (double)NAN, widest = -1;
+    if (most < first)
+        return uf_fail(error, UF_INPUT,
+                       "the %s of %.4f is below %.4f, which the light must exceed to stay out of medium and cells "
+                       "(cell_n + 2 cell_n_sd): no angle will do",
+                       most < b->substrate_n ? "objective's aperture" : "substrate's index", most, first);
     for (int k = 0; first + k * step <= most; k++) {
         double na = first + k * step;
         if (!agrees(b, na, cutoff_nm, wish->within_nm)) {

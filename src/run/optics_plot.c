@@ -114,6 +114,8 @@ static uf_status write_file(const char *path, const uf_text *bytes, uf_error *er
     uf_text_bytes(&folder, path, before > 1 ? before - 1 : before); /* without the '/', but for the root's */
     uf_text_add(&folder, before ? "" : ".");
     uf_status status = uf_text_check(&folder, path, error);
+    if (status == UF_OK && !*path)
+        status = uf_fail(error, UF_USAGE, "--plot needs the name of a file, like depth.png");
     int is_folder = !*name || strcmp(name, ".") == 0 || strcmp(name, "..") == 0;
     if (status == UF_OK && is_folder)
         status = uf_fail(error, UF_USAGE, "%s is a folder; --plot needs the name of a file, like depth.png", path);

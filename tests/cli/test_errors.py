@@ -279,3 +279,10 @@ def test_every_command_in_the_docs_runs(page, tmp_path):
     done = subprocess.run(["bash", "-e", "-c", script], cwd=tmp_path, capture_output=True, text=True,
                           env=dict(os.environ, PATH=path))
     assert done.returncode == 0, done.stderr
+
+
+def test_a_mask_of_several_pages_is_refused(demo, tmp_path):
+    tifffile.imwrite(tmp_path / "mask.tif", numpy.zeros((2, 512, 512), numpy.uint16), photometric="minisblack")
+    run = Run(measure_arguments(demo, tmp_path / "out") + ["--mask", str(tmp_path / "mask.tif")])
+    refused(run, 2, "mask has 2 pages")
+    nothing_written(tmp_path / "out")

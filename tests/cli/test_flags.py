@@ -7,7 +7,7 @@ import pytest
 import tifffile
 from scipy import ndimage
 
-from conftest import Run
+from conftest import Run, measure_arguments
 
 OFFSET = 100
 
@@ -129,3 +129,13 @@ def test_empty_is_empty_and_nothing_else(flags, demo):
     blank = [dice.poisson(350 * 2.17 * tifffile.imread(f"{demo}/day1_flat_{k}.tif")) / 2.17 + OFFSET
              for k in ("near", "wide")]
     assert flags(*blank)[0] == {"empty"}
+
+
+def test_the_summary_says_what_flags_ask_for(demo, tmp_path):
+    wrong = tmp_path / "reference.ini"
+    wrong.write_text("[reference]\nratio = 1e-9\n")
+    arguments = measure_arguments(demo, str(tmp_path / "out"))
+    run = Run(arguments[:5] + ["-i", str(wrong)] + arguments[5:])
+    assert run.status == 0 and "near_too_bright: near is brighter" in run.out and "[reference]" in run.out
+    row = next(csv.DictReader(open(tmp_path / "out" / "cells.csv")))
+    assert row["gap_limit_nm"] == ""

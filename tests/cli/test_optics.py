@@ -131,8 +131,8 @@ def test_decay_table_from_a_file(tmp_path):
                               ("gap_nm;relative\n0;1\n", "decay.csv:1", "semicolons"),
                               ("gap_nm,relative\n0,1\n10\n", "decay.csv:3", "1 fields"),
                               ("z,relative\n0,1\n10,0.5\n", "decay.csv:1", "gap_nm,relative"),
-                              ("gap_nm,relative\n0,1\n", "decay.csv", "rows"),
-                              ("", "decay.csv", "header"),
+                              ("gap_nm,relative\n0,1\n", "decay.csv:1", "1 row below"),
+                              ("", "decay.csv:1", "header"),
                               ('gap_nm,relative\n0,"1\n', "decay.csv:2", "never closed")]:
         table.write_text(text)
         run = Run(["optics", "-i", str(bench)])
@@ -173,3 +173,30 @@ def test_plot_replaces_no_pipe(tmp_path):
 
 def test_laser_caution_stands_where_an_angle_is_shown():
     assert "laser safety officer" in Run(["optics", *BENCH, "--angle-deg", "70"]).out
+
+
+def test_angles_beyond_the_surface_are_refused():
+    for angle in (["--angle-deg", "90"], ["--na-effective", "1.518"]):
+        run = Run(["optics", *BENCH, *angle])
+        assert run.status == 2 and "no light enters" in run.err and "nan" not in run.out + run.err
+
+
+def test_wishes_no_set_up_can_grant_say_why():
+    for wish in (["--for-depth-nm", "80"], ["--for-agreement-nm", "2"]):
+        run = Run(["optics", *BENCH, "--objective-na", "1.3", *wish])
+        assert run.status == 2 and "1.3000" in run.err and "nan" not in run.err, run.err
+    for wrong in ("1e-300", "inf", "nan", "0"):
+        assert Run(["optics", *BENCH, "--for-depth-nm", wrong]).status == 2
+
+
+@pytest.mark.parametrize("rows, where, word", [
+    ("0,1e300\n50,1e299\n1e300,1e-300\n", "decay.csv:4", "expected 0 to"),
+    ("0,1\n1e-300,0.5\n2e-300,0.1\n", "decay.csv:3", "by at least"),
+    ("0,1\n1,0.1\n", "decay.csv:3", "no evanescent field"),
+    ("0,1\n100,0.999\n", "decay.csv:3", "tells no gap")])
+def test_decays_that_no_field_has_are_refused(tmp_path, rows, where, word):
+    (tmp_path / "decay.csv").write_text("gap_nm,relative\n" + rows)
+    bench = tmp_path / "bench.ini"
+    bench.write_text("[decay]\nmodel = table\nfile = decay.csv\n")
+    run = Run(["optics", *BENCH, "--angle-deg", "70", "-i", str(bench)])
+    assert run.status == 2 and where in run.err and word in run.err, run.err
