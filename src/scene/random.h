@@ -25,7 +25,8 @@ typedef enum uf_scene_stream {
     UF_STREAM_DYE,
     UF_STREAM_NEAR_CAMERA,
     UF_STREAM_WIDE_CAMERA,
-    UF_STREAM_DUST
+    UF_STREAM_DUST,
+    UF_STREAM_BEADS
 } uf_scene_stream;
 
 /* splitmix64: steps `state` and returns the next number (Steele, Lea and Flood 2014, OOPSLA, "Fast splittable
