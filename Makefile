@@ -21,7 +21,7 @@ ifeq ($(origin CC),default)
 CC := gcc
 endif
 
-LIBRARIES := libtiff-4 libpng fftw3f gsl jansson libxxhash
+LIBRARIES := libtiff-4 libpng fftw3f gsl jansson libxxhash expat
 HAVE_LIBRARIES := $(shell pkg-config --exists $(LIBRARIES) 2>/dev/null && echo yes)
 ifeq ($(HAVE_LIBRARIES),yes)
 LIB_CFLAGS := $(shell pkg-config --cflags $(LIBRARIES))
@@ -53,7 +53,7 @@ LINK_LIBS  = $(LIB_LINK) -lm -pthread
 
 # ---- sources ----------------------------------------------------------------------------------
 
-LAYERS  := base record settings image fit optics io correct segment gap measure calibrate report scene run
+LAYERS  := base record settings image fit optics io correct segment gap measure calibrate sheet report scene run
 SOURCES := $(sort $(wildcard $(LAYERS:%=src/%/*.c)))
 CLI     := $(sort $(wildcard src/cli/*.c))
 OBJECTS := $(SOURCES:src/%.c=$(BUILD)/obj/%.o)
@@ -112,7 +112,7 @@ $(BUILD)/flags: FORCE
 
 # ---- what a fresh machine needs ------------------------------------------------------------------
 
-BUILD_PACKAGES := gcc make pkg-config libc6-dev libtiff-dev libpng-dev libfftw3-dev libjansson-dev libxxhash-dev libcsv-dev libgsl-dev
+BUILD_PACKAGES := gcc make pkg-config libc6-dev libtiff-dev libpng-dev libfftw3-dev libjansson-dev libxxhash-dev libcsv-dev libgsl-dev libexpat1-dev
 TEST_PACKAGES  := clang libcmocka-dev python3 python3-numpy python3-scipy python3-skimage python3-tifffile python3-pytest python3-pil
 
 packages:

@@ -18,7 +18,7 @@ typedef struct uf_bead_setup {
     uf_bead_dye dye;
     int with_stray; /* fit stray light: its share, and its depth where the beads tell it */
     double radius_um, pixel_size_um, psf_sigma_um;
-    double expected_depth_nm; /* where the search begins */
+    double expected_depth_nm;  /* where the search begins */
     double scattered_depth_nm; /* where it begins, and what is taken where the beads cannot tell */
 } uf_bead_setup;
 
@@ -37,14 +37,14 @@ typedef struct uf_bead_pixel {
 } uf_bead_pixel;
 
 typedef struct uf_bead {
-    int image; /* 0 .. */
+    int image;                   /* 0 .. */
     double x_px, y_px, core_adu; /* core: height of the core over its surroundings */
     uf_bead_state state;
     uf_bead_pixel *pixels;
     int pixel_count;
     double amplitude_adu, background_adu; /* signal = amplitude * decay profile + background */
-    double depth_nm;    /* of this bead alone, the stray light as of all; NaN where it was not fitted */
-    double misfit; /* reduced chi-square of its profile, 1 for noise alone */
+    double depth_nm; /* of this bead alone, the stray light as of all; NaN where it was not fitted */
+    double misfit;   /* reduced chi-square of its profile, 1 for noise alone */
 } uf_bead;
 
 /* Zeroed it is empty and may be freed. */
@@ -55,8 +55,8 @@ typedef struct uf_bead_set {
 } uf_bead_set;
 
 /* Adds the beads of one image. The image may be given back afterwards. UF_MEMORY. */
-UF_MUST_USE uf_status uf_beads_find(uf_work *work, const uf_bead_setup *setup, const uf_channel *image, uf_bead_set *set,
-                                    uf_error *error);
+UF_MUST_USE uf_status uf_beads_find(uf_work *work, const uf_bead_setup *setup, const uf_channel *image,
+                                    uf_bead_set *set, uf_error *error);
 void uf_bead_set_free(uf_bead_set *set);
 
 int uf_beads_in_state(const uf_bead_set *set, uf_bead_state state);
@@ -72,11 +72,11 @@ enum { UF_BEAD_PLOT_BINS = 60, UF_BEADS_LEAST = 5 };
 typedef struct uf_bead_result {
     int used, images_used;
     uf_bead_figure depth_nm, scattered_fraction, scattered_depth_nm;
-    int scattered_depth_fitted;     /* 0: taken from the setup */
-    double bead_to_bead;            /* relative 1 sigma of single beads' depths */
-    double depth_per_psf_nm;        /* change of the depth when the blur's sigma is a tenth larger */
-    double misfit;                  /* reduced chi-square over all beads */
-    double core_share;              /* evanescent share of the light at the centre, over its standard error */
+    int scattered_depth_fitted; /* 0: taken from the setup */
+    double bead_to_bead;        /* relative 1 sigma of single beads' depths */
+    double depth_per_psf_nm;    /* change of the depth when the blur's sigma is a tenth larger */
+    double misfit;              /* reduced chi-square over all beads */
+    double core_share;          /* evanescent share of the light at the centre, over its standard error */
     /* Mean profile of the used beads, each scaled to amplitude 1 and background 0: for the plot. */
     int bins;
     double bin_um[UF_BEAD_PLOT_BINS], bin_height_nm[UF_BEAD_PLOT_BINS], bin_value[UF_BEAD_PLOT_BINS],
@@ -91,7 +91,7 @@ typedef struct uf_bead_result {
  * UF_INPUT says what to do when beads are too few (under UF_BEADS_LEAST), saturated, disagree, show no evanescent core, or
  * the fit does not settle.
  */
-UF_MUST_USE uf_status uf_beads_fit(uf_work *work, const uf_bead_setup *setup, uf_bead_set *set, uf_bead_result *result,
-                                   uf_error *error);
+UF_MUST_USE uf_status uf_beads_fit(uf_work *work, const uf_bead_setup *setup, uf_bead_set *set,
+                                   uf_bead_result *result, uf_error *error);
 
 #endif

@@ -120,9 +120,9 @@ static int find_peaks(uf_plane band, double least, core *cores, int limit)
                 continue;
             if (count == limit)
                 return count;
-            cores[count++] =
-                (core){x + top_of(row[x - 1], row[x], row[x + 1]),
-                       y + top_of(uf_plane_row(band, y - 1)[x], row[x], uf_plane_row(band, y + 1)[x]), (double)row[x]};
+            cores[count++] = (core){x + top_of(row[x - 1], row[x], row[x + 1]),
+                                    y + top_of(uf_plane_row(band, y - 1)[x], row[x], uf_plane_row(band, y + 1)[x]),
+                                    (double)row[x]};
         }
     }
     return count;

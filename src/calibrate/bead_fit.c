@@ -105,8 +105,7 @@ static void solve_bead(const fit_job *job, uf_bead *bead, int weighted)
     line_sums sums = {0};
     for (int k = 0; k < bead->pixel_count; k++) {
         double model = pixel_model(job, &bead->pixels[k], bead->x_px, bead->y_px);
-        line_add(&sums, model, (double)bead->pixels[k].value_adu,
-                 weighted ? 1 / variance_at(job, bead, model) : 1);
+        line_add(&sums, model, (double)bead->pixels[k].value_adu, weighted ? 1 / variance_at(job, bead, model) : 1);
     }
     line_solve(&sums, &bead->amplitude_adu, &bead->background_adu);
 }
@@ -131,8 +130,7 @@ static void centre_residuals(void *context, const double *p, double *r)
     }
     line_solve(&sums, &amplitude, &background);
     for (int k = 0; k < bead->pixel_count; k++)
-        r[k] = job->root_weight[k] *
-               (amplitude * job->model[k] + background - (double)bead->pixels[k].value_adu);
+        r[k] = job->root_weight[k] * (amplitude * job->model[k] + background - (double)bead->pixels[k].value_adu);
 }
 
 static uf_status find_centre(const fit_job *fit, uf_bead *bead, uf_error *error)
@@ -263,8 +261,7 @@ static uf_status fit_decay(fit_job *job, uf_nonlinear_fit *fit, uf_error *error)
 {
     int count = job->only >= 0 || !job->setup->with_stray ? 1 : job->fits_stray_depth ? 3 : 2;
     uf_nonlinear problem = {count, rows_of(job), decay_residuals, NULL, job};
-    *fit = (uf_nonlinear_fit){
-        .value = {log(job->law.depth_nm), job->law.share, log(job->law.stray_depth_nm)}};
+    *fit = (uf_nonlinear_fit){.value = {log(job->law.depth_nm), job->law.share, log(job->law.stray_depth_nm)}};
     return uf_nonlinear_solve(&problem, fit, error);
 }
 
@@ -344,16 +341,18 @@ static int mark_outliers(fit_job *job, double *scratch)
 static uf_status too_few(const uf_bead_set *set, uf_error *error)
 {
     int used = uf_beads_in_state(set, UF_BEAD_USED), saturated = uf_beads_in_state(set, UF_BEAD_SATURATED);
-    const char *mend = set->count == 0 ? "no bright cores of the size that --radius-nm gives: check radius, pixel size and "
-                                         "channel"
-                       : 2 * saturated > set->count ? "expose less"
-                                                    : "add images, with beads apart from each other and from the edge";
-    return uf_fail(error, UF_INPUT,
-                   "%d bead%s can be used of %d found, expected at least %d, better 12 (%d saturated, %d at the edge, %d "
-                   "overlapping, %d dim, %d unlike the rest): %s",
-                   used, used == 1 ? "" : "s", set->count, UF_BEADS_LEAST, saturated,
-                   uf_beads_in_state(set, UF_BEAD_AT_EDGE), uf_beads_in_state(set, UF_BEAD_OVERLAPPING),
-                   uf_beads_in_state(set, UF_BEAD_DIM), uf_beads_in_state(set, UF_BEAD_OUTLIER), mend);
+    const char *mend =
+        set->count == 0 ? "no bright cores of the size that --radius-nm gives: check radius, pixel size and "
+                          "channel"
+        : 2 * saturated > set->count ? "expose less"
+                                     : "add images, with beads apart from each other and from the edge";
+    return uf_fail(
+        error, UF_INPUT,
+        "%d bead%s can be used of %d found, expected at least %d, better 12 (%d saturated, %d at the edge, %d "
+        "overlapping, %d dim, %d unlike the rest): %s",
+        used, used == 1 ? "" : "s", set->count, UF_BEADS_LEAST, saturated, uf_beads_in_state(set, UF_BEAD_AT_EDGE),
+        uf_beads_in_state(set, UF_BEAD_OVERLAPPING), uf_beads_in_state(set, UF_BEAD_DIM),
+        uf_beads_in_state(set, UF_BEAD_OUTLIER), mend);
 }
 
 static int enough(const uf_bead_set *set)
@@ -400,10 +399,11 @@ static uf_status settle(fit_job *job, uf_nonlinear_fit *fit, uf_error *error)
             status = refine(job, fit, error);
     }
     if (status == UF_OK && !fit->converged)
-        return uf_fail(error, UF_INPUT,
-                       "no decay fits the %d beads: is --radius-nm their radius (not diameter), the pixel size right, the "
-                       "dye where --dye says?",
-                       job->curve_count);
+        return uf_fail(
+            error, UF_INPUT,
+            "no decay fits the %d beads: is --radius-nm their radius (not diameter), the pixel size right, the "
+            "dye where --dye says?",
+            job->curve_count);
     return status;
 }
 
@@ -416,10 +416,11 @@ static uf_status reject(fit_job *job, uf_nonlinear_fit *fit, double *scratch, uf
         if (status == UF_OK && !enough(job->set))
             return too_few(job->set, error);
         if (status == UF_OK && 3 * (used - uf_beads_in_state(job->set, UF_BEAD_USED)) > used)
-            return uf_fail(error, UF_INPUT,
-                           "%d of %d beads are unlike the rest: the beads do not tell one depth; look for clumps, and for an "
-                           "uneven near image (calibrate flat)",
-                           used - uf_beads_in_state(job->set, UF_BEAD_USED), used);
+            return uf_fail(
+                error, UF_INPUT,
+                "%d of %d beads are unlike the rest: the beads do not tell one depth; look for clumps, and for an "
+                "uneven near image (calibrate flat)",
+                used - uf_beads_in_state(job->set, UF_BEAD_USED), used);
         if (status == UF_OK && marked)
             status = make_curves(job, error);
         if (status == UF_OK && marked)
@@ -441,7 +442,8 @@ static uf_status try_stray_depth(fit_job *job, uf_nonlinear_fit *fit, uf_error *
     job->fits_stray_depth = 1;
     uf_status status = refine(job, &more, error);
     double relative = more.residual_sd * sqrt(more.covariance[2][2]), nm = exp(more.value[2]);
-    if (status == UF_OK && more.converged && relative < stray_depth_known && nm > 3 * exp(more.value[0]) && nm < 20000)
+    if (status == UF_OK && more.converged && relative < stray_depth_known && nm > 3 * exp(more.value[0]) &&
+        nm < 20000)
         *fit = more;
     else {
         job->fits_stray_depth = 0;
@@ -560,8 +562,7 @@ static void fill_bins(fit_job *job, uf_bead_result *result)
         result->bin_value[at] = result->bin_value[k] / weight[k];
         result->bin_sd[at] = 1 / sqrt(weight[k]);
         result->bin_model[at] = uf_bead_profile_at(&job->profile, job->mixed, r);
-        result->bin_evanescent[at] =
-            (1 - job->law.share) * uf_bead_profile_at(&job->profile, job->evanescent, r);
+        result->bin_evanescent[at] = (1 - job->law.share) * uf_bead_profile_at(&job->profile, job->evanescent, r);
     }
 }
 
@@ -588,10 +589,11 @@ static uf_status check_core(const uf_bead_result *r, uf_error *error)
 {
     if (r->core_share > 5 && r->scattered_fraction.value < 0.7)
         return UF_OK;
-    return uf_fail(error, UF_INPUT,
-                   "the beads show no evanescent core: %.0f %% of the light is stray; do they touch the substrate, and is "
-                   "the beam beyond the critical angle?",
-                   100 * fmin(1, r->scattered_fraction.value));
+    return uf_fail(
+        error, UF_INPUT,
+        "the beads show no evanescent core: %.0f %% of the light is stray; do they touch the substrate, and is "
+        "the beam beyond the critical angle?",
+        100 * fmin(1, r->scattered_fraction.value));
 }
 
 static uf_status fit_in(fit_job *job, double *scratch, uf_bead_result *result, uf_error *error)

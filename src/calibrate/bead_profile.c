@@ -66,13 +66,12 @@ static void fill_weights(uf_bead_profile *p, double blur)
     for (int row = 0; row < p->rows; row++)
         for (int k = 0; k < p->count[row]; k++) {
             int node = p->first[row] + k;
-            p->weight[p->place[row] + k] =
-                blur_weight(row * p->step_um, p->node_um[node], blur) * p->measure[node];
+            p->weight[p->place[row] + k] = blur_weight(row * p->step_um, p->node_um[node], blur) * p->measure[node];
         }
 }
 
-uf_status uf_bead_profile_init(uf_bead_profile *p, uf_bead_dye dye, double radius_um, double blur_um, double farthest_um,
-                               uf_error *error)
+uf_status uf_bead_profile_init(uf_bead_profile *p, uf_bead_dye dye, double radius_um, double blur_um,
+                               double farthest_um, uf_error *error)
 {
     *p = (uf_bead_profile){.dye = dye, .radius_um = radius_um, .step_um = blur_um / rows_a_blur};
     p->rows = (int)ceil(farthest_um / p->step_um) + 2;

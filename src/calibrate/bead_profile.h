@@ -40,8 +40,8 @@ typedef struct uf_bead_profile {
 double uf_bead_height_nm(double radius_um, double r_um);
 
 /* For distances up to farthest_um. blur_um above 0, at most a third of the radius. UF_MEMORY. */
-UF_MUST_USE uf_status uf_bead_profile_init(uf_bead_profile *profile, uf_bead_dye dye, double radius_um, double blur_um,
-                                           double farthest_um, uf_error *error);
+UF_MUST_USE uf_status uf_bead_profile_init(uf_bead_profile *profile, uf_bead_dye dye, double radius_um,
+                                           double blur_um, double farthest_um, uf_error *error);
 void uf_bead_profile_free(uf_bead_profile *profile);
 
 /* The profile of one exponential into table[0 .. rows - 1]. */

@@ -223,6 +223,27 @@ uf_status uf_output_write(const uf_output *output, const char *folder, const cha
     return UF_OK;
 }
 
+uf_status uf_output_file(const char *path, const void *bytes, size_t count, uf_error *error)
+{
+    const char *name = uf_base_name(path);
+    uf_text folder = {0};
+    uf_output output = {0};
+    size_t before = (size_t)(name - path);
+    uf_text_bytes(&folder, path, before > 1 ? before - 1 : before); /* without the '/', but for the root's */
+    uf_text_add(&folder, before ? "" : ".");
+    uf_status status = uf_text_check(&folder, path, error);
+    if (status == UF_OK && !is_component(name))
+        status = uf_fail(error, UF_USAGE, "'%.400s' is %s; expected the name of a file to write", path,
+                         *path ? "a folder" : "no name");
+    if (status == UF_OK)
+        status = uf_output_open(&output, folder.bytes, error);
+    if (status == UF_OK)
+        status = uf_output_write(&output, NULL, name, bytes, count, error);
+    uf_output_close(&output);
+    uf_text_free(&folder);
+    return status;
+}
+
 uf_status uf_output_remove(const uf_output *output, const char *folder, const char *name, uf_error *error)
 {
     const place at = {output, folder, name};

@@ -26,6 +26,9 @@ void uf_output_close(uf_output *output);
 UF_MUST_USE uf_status uf_output_write(const uf_output *output, const char *folder, const char *name,
                                       const void *bytes, size_t count, uf_error *error);
 
+/* Writes one file where `path` says, in the same way; its folder is made when missing. */
+UF_MUST_USE uf_status uf_output_file(const char *path, const void *bytes, size_t count, uf_error *error);
+
 /* Removes `folder/name` where it exists; a file that is not there is no error. */
 UF_MUST_USE uf_status uf_output_remove(const uf_output *output, const char *folder, const char *name,
                                        uf_error *error);

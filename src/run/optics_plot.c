@@ -3,7 +3,6 @@
 #include <math.h>
 #include <stdio.h>
 #include <stdlib.h>
-#include <string.h>
 
 #include "io/image_encode.h"
 #include "io/output.h"
@@ -104,30 +103,6 @@ static uf_status draw(const uf_optics_numbers *n, uf_work *work, curves *c, uf_i
     return uf_plot_draw(work, panels, 2, WIDTH, HEIGHT, picture, NULL, error);
 }
 
-/* One file in the folder its path names. */
-static uf_status write_file(const char *path, const uf_text *bytes, uf_error *error)
-{
-    const char *name = uf_base_name(path);
-    uf_text folder = {0};
-    uf_output output = {0};
-    size_t before = (size_t)(name - path);
-    uf_text_bytes(&folder, path, before > 1 ? before - 1 : before); /* without the '/', but for the root's */
-    uf_text_add(&folder, before ? "" : ".");
-    uf_status status = uf_text_check(&folder, path, error);
-    if (status == UF_OK && !*path)
-        status = uf_fail(error, UF_USAGE, "--plot needs the name of a file, like depth.png");
-    int is_folder = !*name || strcmp(name, ".") == 0 || strcmp(name, "..") == 0;
-    if (status == UF_OK && is_folder)
-        status = uf_fail(error, UF_USAGE, "%s is a folder; --plot needs the name of a file, like depth.png", path);
-    if (status == UF_OK)
-        status = uf_output_open(&output, folder.bytes, error);
-    if (status == UF_OK)
-        status = uf_output_write(&output, NULL, name, bytes->bytes, bytes->length, error);
-    uf_output_close(&output);
-    uf_text_free(&folder);
-    return status;
-}
-
 uf_status uf_optics_plot(const uf_optics_numbers *numbers, const char *path, uf_error *error)
 {
     uf_work work = {0};
@@ -143,7 +118,7 @@ uf_status uf_optics_plot(const uf_optics_numbers *numbers, const char *path, uf_
     if (status == UF_OK)
         status = uf_encode_indexed_png(&png, &picture, error);
     if (status == UF_OK)
-        status = write_file(path, &png, error);
+        status = uf_output_file(path, png.bytes, png.length, error);
     uf_text_free(&png);
     uf_arena_free(&work.arena);
     return status;

@@ -163,7 +163,8 @@ static double blur_left(double sigma)
     return sqrt(fmax(sigma * sigma - 1.0 / 3, 0));
 }
 
-uf_status uf_scene_beads(uf_work *work, const uf_bead_scene *s, uf_plane *counts, uf_bead_truth *truth, uf_error *error)
+uf_status uf_scene_beads(uf_work *work, const uf_bead_scene *s, uf_plane *counts, uf_bead_truth *truth,
+                         uf_error *error)
 {
     uf_random layout, traits, camera;
     uf_random_start(&layout, s->seed, UF_STREAM_BEADS);

@@ -15,12 +15,12 @@ typedef struct uf_bead_scene {
     uint64_t seed;
     int width, height;
     double pixel_size_um;
-    int beads; /* wanted; fewer when they do not fit */
+    int beads;                       /* wanted; fewer when they do not fit */
     double radius_um, radius_spread; /* the latter relative, 1 sigma, from bead to bead */
     int immersed;                    /* dye in the medium around clear beads, not on their surface */
     double depth_nm, scattered_fraction, scattered_depth_nm; /* of the excitation, share at height 0 */
     double psf_sigma_um;
-    double peak_adu; /* signal of a flat dyed membrane (or of deep dyed medium) at height 0 */
+    double peak_adu;     /* signal of a flat dyed membrane (or of deep dyed medium) at height 0 */
     double label_spread; /* of the dye's density, relative, 1 sigma, from bead to bead */
     double floating;     /* share of beads that lie higher */
     double floating_nm;  /* by this */
@@ -36,7 +36,7 @@ typedef struct uf_bead_truth {
 } uf_bead_truth;
 
 /* Camera counts into a plane of the arena. UF_MEMORY. */
-UF_MUST_USE uf_status uf_scene_beads(uf_work *work, const uf_bead_scene *scene, uf_plane *counts, uf_bead_truth *truth,
-                                     uf_error *error);
+UF_MUST_USE uf_status uf_scene_beads(uf_work *work, const uf_bead_scene *scene, uf_plane *counts,
+                                     uf_bead_truth *truth, uf_error *error);
 
 #endif

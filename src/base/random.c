@@ -1,5 +1,5 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
-#include "scene/random.h"
+#include "base/random.h"
 
 #include <math.h>
 
