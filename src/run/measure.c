@@ -17,12 +17,9 @@
 #include "run/decay_law.h"
 #include "run/field.h"
 #include "run/plan.h"
+#include "run/read_channel.h"
 #include "run/run_json.h"
 #include "run/series_plan.h"
-
-static const uf_image_limits limits = {.max_pixels = 1e9};
-
-enum { MOST_INPUTS = 12 };
 
 typedef struct measure_job {
     const uf_settings *settings;
@@ -30,8 +27,7 @@ typedef struct measure_job {
     uf_work work;
     uf_plan plan;
     uf_field_result result;
-    uf_run_input inputs[MOST_INPUTS];
-    int input_count;
+    uf_reader reader;
     uf_text warnings;
     uf_text name; /* of this field's pictures, without ending */
     uf_output output;
@@ -39,117 +35,6 @@ typedef struct measure_job {
 } measure_job;
 
 /* ---- reading --------------------------------------------------------------------------------- */
-
-static uf_status read_image(measure_job *job, const char *role, const char *path, uf_plane *plane,
-                            uf_image_info *info, uf_error *error)
-{
-    uf_status status = uf_image_read(&job->work, path, 0, &limits, plane, info, error);
-    if (status == UF_OK)
-        job->inputs[job->input_count++] = (uf_run_input){role, path, info->file_bytes, info->fingerprint};
-    return status;
-}
-
-/* A correction image must fit the image it corrects; a path of NULL leaves the plane empty. */
-static uf_status read_companion(measure_job *job, const char *role, const char *path, uf_plane like, uf_plane *plane,
-                                uf_error *error)
-{
-    uf_image_info info;
-    *plane = (uf_plane){0};
-    if (!path)
-        return UF_OK;
-    uf_status status = read_image(job, role, path, plane, &info, error);
-    if (status == UF_OK && info.pages != 1)
-        status = uf_fail(error, UF_INPUT,
-                         "%s: the %s has %d pages, expected one; save the page to use as a file of its own", path,
-                         role, info.pages);
-    if (status == UF_OK && (plane->width != like.width || plane->height != like.height))
-        status = uf_fail(error, UF_INPUT,
-                         "%s: the %s is %d x %d px, the images are %d x %d; take one with the same camera settings",
-                         path, role, plane->width, plane->height, like.width, like.height);
-    return status;
-}
-
-static double full_scale(const uf_camera_settings *camera, const uf_image_info *info)
-{
-    if (!isnan(camera->full_scale_adu))
-        return camera->full_scale_adu;
-    return info->is_float ? (double)INFINITY : info->bits == 8 ? 255.0 : 65535.0;
-}
-
-static const char *const channel_names[] = {"near", "wide"};
-
-static uf_status read_companions(measure_job *job, uf_channel_name which, uf_raw_channel *raw, uf_error *error)
-{
-    static const char *const flats[] = {"near flat", "wide flat"}, *const darks[] = {"near dark", "wide dark"};
-    static const char *const maps[] = {"near defect map", "wide defect map"};
-    const uf_settings *s = job->settings;
-    uf_status status = read_companion(job, darks[which], s->camera[which].dark, raw->counts, &raw->dark, error);
-    if (status == UF_OK)
-        status = read_companion(job, flats[which], s->flat[which].file, raw->counts, &raw->flat, error);
-    if (status == UF_OK)
-        status = read_companion(job, maps[which], s->camera[which].defects, raw->counts, &raw->defects, error);
-    return status;
-}
-
-static uf_status check_pages(const measure_job *job, const char *path, int found, int expected, uf_error *error)
-{
-    if (found == expected)
-        return UF_OK;
-    if (expected > 1)
-        return uf_fail(error, UF_INPUT,
-                       "%s: has %d page%s, but [series] angles_deg has %d angles; a series needs one page an angle, "
-                       "in their order",
-                       path, found, found == 1 ? "" : "s", expected);
-    return uf_fail(error, UF_INPUT, "%s: has %d pages, expected one; save the page to measure as a file of its own%s",
-                   path, found, path == job->request->near_path ? ", or give a series its [series] angles_deg" : "");
-}
-
-/* Raw counts of the pages of one file, all of one size, with room for their saturated pixels. */
-static uf_status read_pages(measure_job *job, const char *role, const char *path, int count, uf_raw_channel *raw,
-                            uf_image_info *info, uf_error *error)
-{
-    uf_status status = read_image(job, role, path, &raw[0].counts, info, error);
-    if (status == UF_OK)
-        status = check_pages(job, path, info->pages, count, error);
-    for (int k = 1; status == UF_OK && k < count; k++) {
-        status = uf_image_read(&job->work, path, k, &limits, &raw[k].counts, NULL, error);
-        if (status == UF_OK &&
-            (raw[k].counts.width != raw[0].counts.width || raw[k].counts.height != raw[0].counts.height))
-            status = uf_fail(
-                error, UF_INPUT,
-                "%s, page %d: is %d x %d px, page 1 is %d x %d; the pages of a series must have one size", path,
-                k + 1, raw[k].counts.width, raw[k].counts.height, raw[0].counts.width, raw[0].counts.height);
-    }
-    for (int k = 0; status == UF_OK && k < count; k++)
-        status = uf_mask_take(&job->work, raw[k].counts.width, raw[k].counts.height, &raw[k].saturated, error);
-    return status;
-}
-
-/* Reads the pages of one channel, one but for the near channel of a series, and corrects them; what corrects them is
- * given back to the arena. */
-static uf_status read_channel(measure_job *job, uf_channel_name which, uf_channel *pages, int count, double *pixel_um,
-                              uf_error *error)
-{
-    const char *path = which == UF_NEAR ? job->request->near_path : job->request->wide_path;
-    uf_raw_channel raw[UF_REALS_LIMIT] = {0}, page = {.name = channel_names[which]};
-    uf_image_info info;
-    uf_status status = read_pages(job, page.name, path, count, raw, &info, error);
-    if (status != UF_OK)
-        return status;
-    *pixel_um = info.pixel_size_x_um;
-    page.camera = &job->settings->camera[which];
-    page.full_scale_adu = full_scale(page.camera, &info);
-    page.counts = raw[0].counts;
-    uf_arena_mark mark = uf_arena_now(&job->work.arena);
-    status = read_companions(job, which, &page, error);
-    for (int k = 0; status == UF_OK && k < count; k++) {
-        page.counts = raw[k].counts;
-        page.saturated = raw[k].saturated;
-        status = uf_field_correct(&job->work, &page, &pages[k], error);
-    }
-    uf_arena_back(&job->work.arena, mark);
-    return status;
-}
 
 /* The plan has read the table of a measured decay; here it joins the list of inputs. */
 static uf_status note_decay_file(measure_job *job, uf_error *error)
@@ -160,8 +45,9 @@ static uf_status note_decay_file(measure_job *job, uf_error *error)
         return UF_OK;
     uf_status status = uf_input_read(&text, path, UF_DECAY_FILE_BYTES, error);
     if (status == UF_OK)
-        job->inputs[job->input_count++] =
-            (uf_run_input){"decay table", path, text.length, uf_fingerprint(text.bytes, text.length)};
+        status = uf_note_input(
+            &job->reader, (uf_run_input){"decay table", path, text.length, uf_fingerprint(text.bytes, text.length)},
+            error);
     uf_text_free(&text);
     return status;
 }
@@ -173,7 +59,8 @@ static uf_status read_series(measure_job *job, double *pixel_um, uf_error *error
     int count = job->settings->series.angles_deg.count, widest = uf_series_widest(job->settings);
     uf_status status = uf_take(&job->work, (size_t)count, sizeof(uf_channel), "a series", &job->result.pages, error);
     if (status == UF_OK)
-        status = read_channel(job, UF_NEAR, job->result.pages, count, pixel_um, error);
+        status = uf_read_channel(&job->reader, UF_NEAR, job->request->near_path, job->result.pages, count, pixel_um,
+                                 error);
     if (status != UF_OK)
         return status;
     job->result.near = job->result.pages[widest];
@@ -191,7 +78,8 @@ static uf_status read_series(measure_job *job, double *pixel_um, uf_error *error
 static uf_status read_near(measure_job *job, double *pixel_um, uf_error *error)
 {
     return job->settings->series.angles_deg.count ? read_series(job, pixel_um, error)
-                                                  : read_channel(job, UF_NEAR, &job->result.near, 1, pixel_um, error);
+                                                  : uf_read_channel(&job->reader, UF_NEAR, job->request->near_path,
+                                                                    &job->result.near, 1, pixel_um, error);
 }
 
 /* Without a wide image cells are outlined in the near one, which must then be kept beside what becomes of it. */
@@ -217,8 +105,8 @@ static uf_status read_nuclei(measure_job *job, uf_error *error)
 {
     uf_channel *nuclei = &job->result.nuclei;
     nuclei->noise.gain_e_per_adu = (double)NAN;
-    uf_status status =
-        read_companion(job, "nuclei image", job->request->nuclei_path, job->result.near.image, &nuclei->image, error);
+    uf_status status = uf_read_companion(&job->reader, "nuclei image", job->request->nuclei_path,
+                                         job->result.near.image, &nuclei->image, error);
     return status == UF_OK && nuclei->image.data ? uf_background_first(&job->work, nuclei, error) : status;
 }
 
@@ -232,13 +120,14 @@ static uf_status read_inputs(measure_job *job, uf_error *error)
     if (status == UF_OK)
         status = note_decay_file(job, error);
     if (status == UF_OK)
-        status = job->request->wide_path ? read_channel(job, UF_WIDE, &job->result.wide, 1, &wide_um, error)
+        status = job->request->wide_path ? uf_read_channel(&job->reader, UF_WIDE, job->request->wide_path,
+                                                           &job->result.wide, 1, &wide_um, error)
                                          : copy_near(job, error);
     if (status == UF_OK)
         status = read_nuclei(job, error);
     if (status == UF_OK)
-        status =
-            read_companion(job, "mask", job->request->mask_path, job->result.near.image, &job->result.mask, error);
+        status = uf_read_companion(&job->reader, "mask", job->request->mask_path, job->result.near.image,
+                                   &job->result.mask, error);
     if (status != UF_OK)
         return status;
     uf_plane near = job->result.near.image, wide = job->result.wide.image;
@@ -282,9 +171,9 @@ static void warn_settings(measure_job *job)
             uf_text_printf(
                 &job->warnings,
                 "no gain_e_per_adu in [%s.camera]: noise and detection limit are estimated from the image\n",
-                channel_names[k]);
+                uf_channel_names[k]);
         if (!job->settings->flat[k].file)
-            uf_text_printf(&job->warnings, "no [%s.flat]: uneven light goes into the gaps\n", channel_names[k]);
+            uf_text_printf(&job->warnings, "no [%s.flat]: uneven light goes into the gaps\n", uf_channel_names[k]);
     }
 }
 
@@ -520,8 +409,8 @@ static uf_status write_story(measure_job *job, double seconds, uf_error *error)
     uf_text json = {0};
     uf_run_story story = {job->settings,
                           &job->plan,
-                          job->inputs,
-                          job->input_count,
+                          job->reader.inputs,
+                          job->reader.count,
                           job->warnings.bytes ? job->warnings.bytes : "",
                           job->request->command,
                           seconds};
@@ -637,12 +526,14 @@ static uf_status measure_and_write(measure_job *job, double started, uf_measure_
 uf_status uf_measure(const uf_settings *settings, const uf_measure_request *request, uf_measure_summary *summary,
                      uf_error *error)
 {
-    measure_job job = {.settings = settings, .request = request};
+    measure_job job = {.settings = settings, .request = request, .reader.settings = settings};
+    job.reader.work = &job.work;
     double started = now_seconds();
     *summary = (uf_measure_summary){0};
     uf_status status = uf_pool_new(&job.work.pool, request->threads, error);
     if (status == UF_OK)
         status = measure_and_write(&job, started, summary, error);
+    uf_reader_free(&job.reader);
     uf_field_result_free(&job.result);
     uf_output_close(&job.output);
     uf_text_free(&job.warnings);
