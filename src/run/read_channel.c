@@ -130,13 +130,13 @@ uf_status uf_read_channel(uf_reader *reader, uf_channel_name which, const char *
     page.camera = &reader->settings->camera[which];
     page.full_scale_adu = full_scale(page.camera, &info);
     page.counts = raw[0].counts;
-    uf_arena_mark mark = uf_arena_now(reader->work->arena);
+    uf_arena_mark mark = uf_arena_now(&reader->work->arena);
     status = read_companions(reader, which, &page, error);
     for (int k = 0; status == UF_OK && k < count; k++) {
         page.counts = raw[k].counts;
         page.saturated = raw[k].saturated;
         status = uf_field_correct(reader->work, &page, &pages[k], error);
     }
-    uf_arena_back(reader->work->arena, mark);
+    uf_arena_back(&reader->work->arena, mark);
     return status;
 }
