@@ -10,7 +10,7 @@
 #include "image/smooth.h"
 
 /* A core counts from this many sigma of the filtered image's noise, and from this share of the usual core. */
-static const double least_sigmas = 8, least_of_usual = 0.1;
+static const double least_sigmas = 8, least_of_usual = 0.1, weak_of_usual = 0.4;
 
 /* Nearer to a brighter core than this many radii a core of less than half its height is that bead's own rim. */
 static const double rim_radii = 1.25, rim_height = 0.5;
@@ -22,15 +22,17 @@ enum { NOISE_SAMPLE = 1 << 15 };
 
 uf_bead_reach uf_bead_reach_of(const uf_bead_setup *s)
 {
-    static const double highest_nm = 1200, largest_share = 0.9, core_depths = 2, ring_um = 0.7, blurs_beyond = 3;
-    double px2 = s->pixel_size_um * s->pixel_size_um, radius = s->radius_um, high_um = highest_nm / 1000;
+    static const double highest_nm = 1200, highest_depths = 3.5, largest_share = 0.9, core_depths = 2, ring_um = 0.7,
+                        blurs_beyond = 3;
+    double px2 = s->pixel_size_um * s->pixel_size_um, radius = s->radius_um;
+    double high_um = (s->with_stray ? highest_nm : highest_depths * s->expected_depth_nm) / 1000;
     uf_bead_reach reach = {.blur_um = sqrt(s->psf_sigma_um * s->psf_sigma_um + px2 / 12)};
     double core_um = core_depths * s->expected_depth_nm / 1000;
     double at_highest = high_um < radius ? sqrt(2 * radius * high_um - high_um * high_um) : radius;
     reach.inner_um = fmin(largest_share * radius, at_highest);
     reach.core_um = core_um < radius ? sqrt(2 * radius * core_um - core_um * core_um) : radius;
     reach.ring_from_um = radius + blurs_beyond * reach.blur_um;
-    reach.ring_to_um = reach.ring_from_um + ring_um;
+    reach.ring_to_um = s->with_stray ? reach.ring_from_um + ring_um : reach.inner_um;
     reach.core_sigma_um = sqrt(radius * s->expected_depth_nm / 1000 + reach.blur_um * reach.blur_um);
     return reach;
 }
@@ -128,6 +130,31 @@ static int find_peaks(uf_plane band, double least, core *cores, int limit)
     return count;
 }
 
+/* Median of those at least a quarter as high as the highest but two, a speck or a pair: rims are lower. */
+static double usual_height(const core *cores, int count)
+{
+    double top = cores[count > 2 ? 2 : count - 1].height;
+    int strong = 0;
+    while (strong < count && cores[strong].height > top / 4)
+        strong++;
+    return cores[strong / 2].height;
+}
+
+/* A bead off the substrate shows its rim as much as its core: of weak peaks within about one bead's width the highest is kept. */
+static int merge_weak(core *cores, int count, double usual, double radius_px)
+{
+    int kept = 0;
+    for (int k = 0; k < count; k++) {
+        int is_same = 0;
+        for (int j = 0; j < kept && !is_same; j++)
+            is_same = cores[k].height < weak_of_usual * usual &&
+                      hypot(cores[j].x - cores[k].x, cores[j].y - cores[k].y) < 2.2 * radius_px;
+        if (!is_same)
+            cores[kept++] = cores[k];
+    }
+    return kept;
+}
+
 /* Highest first; what is another core's rim is dropped. */
 static int keep_cores(core *cores, int count, double radius_px)
 {
@@ -141,7 +168,8 @@ static int keep_cores(core *cores, int count, double radius_px)
         if (!is_rim)
             cores[kept++] = cores[k];
     }
-    double usual = kept ? cores[kept / 2].height : 0;
+    double usual = kept ? usual_height(cores, kept) : 0;
+    kept = merge_weak(cores, kept, usual, radius_px);
     while (kept && cores[kept - 1].height < least_of_usual * usual)
         kept--;
     return kept;

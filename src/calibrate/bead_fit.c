@@ -338,21 +338,29 @@ static int mark_outliers(fit_job *job, double *scratch)
     return marked;
 }
 
+static const char *mend_for(const uf_bead_set *set)
+{
+    if (set->count == 0)
+        return "no cores of the size that the radius gives: check radius, pixel size and channel";
+    if (2 * uf_beads_in_state(set, UF_BEAD_SATURATED) > set->count)
+        return "expose less";
+    if (2 * uf_beads_in_state(set, UF_BEAD_OVERLAPPING) > set->count)
+        return "cores lie closer than beads of this radius can: check the radius (not diameter), the pixel size, "
+               "where the "
+               "dye is, and that the beads touch the substrate";
+    return "add images, with beads apart from each other and from the edge";
+}
+
 static uf_status too_few(const uf_bead_set *set, uf_error *error)
 {
-    int used = uf_beads_in_state(set, UF_BEAD_USED), saturated = uf_beads_in_state(set, UF_BEAD_SATURATED);
-    const char *mend =
-        set->count == 0 ? "no bright cores of the size that --radius-nm gives: check radius, pixel size and "
-                          "channel"
-        : 2 * saturated > set->count ? "expose less"
-                                     : "add images, with beads apart from each other and from the edge";
+    int used = uf_beads_in_state(set, UF_BEAD_USED);
     return uf_fail(
         error, UF_INPUT,
         "%d bead%s can be used of %d found, expected at least %d, better 12 (%d saturated, %d at the edge, %d "
         "overlapping, %d dim, %d unlike the rest): %s",
-        used, used == 1 ? "" : "s", set->count, UF_BEADS_LEAST, saturated, uf_beads_in_state(set, UF_BEAD_AT_EDGE),
-        uf_beads_in_state(set, UF_BEAD_OVERLAPPING), uf_beads_in_state(set, UF_BEAD_DIM),
-        uf_beads_in_state(set, UF_BEAD_OUTLIER), mend);
+        used, used == 1 ? "" : "s", set->count, UF_BEADS_LEAST, uf_beads_in_state(set, UF_BEAD_SATURATED),
+        uf_beads_in_state(set, UF_BEAD_AT_EDGE), uf_beads_in_state(set, UF_BEAD_OVERLAPPING),
+        uf_beads_in_state(set, UF_BEAD_DIM), uf_beads_in_state(set, UF_BEAD_OUTLIER), mend_for(set));
 }
 
 static int enough(const uf_bead_set *set)
@@ -441,15 +449,16 @@ static uf_status try_stray_depth(fit_job *job, uf_nonlinear_fit *fit, uf_error *
         return UF_OK;
     job->fits_stray_depth = 1;
     uf_status status = refine(job, &more, error);
+    if (status != UF_OK)
+        return status;
     double relative = more.residual_sd * sqrt(more.covariance[2][2]), nm = exp(more.value[2]);
-    if (status == UF_OK && more.converged && relative < stray_depth_known && nm > 3 * exp(more.value[0]) &&
-        nm < 20000)
+    if (more.converged && relative < stray_depth_known && nm > 3 * exp(more.value[0]) && nm < 20000)
         *fit = more;
     else {
         job->fits_stray_depth = 0;
         job->law = before;
     }
-    return status;
+    return UF_OK;
 }
 
 /* ---- uncertainty ----------------------------------------------------------------------------------------- */
@@ -542,6 +551,17 @@ static void add_to_bins(const fit_job *job, const curve *c, double *weight, uf_b
     }
 }
 
+/* Amplitudes and backgrounds at the law in force: fits of other laws have left theirs. */
+static uf_status settle_amplitudes(fit_job *job, uf_error *error)
+{
+    double *residuals;
+    uf_status status = uf_take(job->work, rows_of(job), sizeof *residuals, "beads", &residuals, error);
+    make_table(job, &job->law);
+    for (int k = 0; status == UF_OK && k < job->curve_count; k++)
+        (void)curve_residuals(job, &job->curves[k], residuals);
+    return status;
+}
+
 static void fill_bins(fit_job *job, uf_bead_result *result)
 {
     double weight[UF_BEAD_PLOT_BINS] = {0};
@@ -619,8 +639,12 @@ static uf_status fit_in(fit_job *job, double *scratch, uf_bead_result *result, u
     result->bead_to_bead = bead_to_bead(job, scratch);
     if (status == UF_OK)
         status = try_wider_blur(job, result->depth_nm.value, result, error);
+    if (status == UF_OK)
+        status = settle_amplitudes(job, error);
+    if (status != UF_OK)
+        return status;
     fill_bins(job, result);
-    return status == UF_OK ? check_core(result, error) : status;
+    return check_core(result, error);
 }
 
 uf_status uf_beads_fit(uf_work *work, const uf_bead_setup *setup, uf_bead_set *set, uf_bead_result *result,

@@ -6,7 +6,8 @@
 #include "calibrate/bead.h"
 
 /* Distances from the centre. Inside `inner` the lower side is at most 1.2 um high and not yet steep; the ring beyond the
- * bead tells the background; between them the rim, blurred by its height, is left out. */
+ * bead tells the background; between them the rim, blurred by its height, is left out. A fit without stray light sees only
+ * heights of a few depths, where what stray light there is hardly changes and counts as background; no ring then. */
 typedef struct uf_bead_reach {
     double blur_um;       /* of point spread function and pixel */
     double core_um;       /* where the lower side is two depths high */

@@ -23,6 +23,9 @@ typedef struct uf_option {
     int *count, limit;
 } uf_option;
 
+/* A list that may hold at least so many takes every argument up to the next option: --dark a.tif b.tif. */
+enum { UF_OPTION_TAKES_ALL = 256 };
+
 typedef struct uf_command {
     const char *name, *arguments; /* "NEAR WIDE" */
     const char *summary;          /* one line for the list of commands */
@@ -53,6 +56,6 @@ UF_MUST_USE uf_status uf_read_settings(const char **instruments, int instrument_
 /* Threads from --threads, or the number of processors. UF_USAGE unless 1 .. 256. */
 UF_MUST_USE uf_status uf_threads(const char *text, int *threads, uf_error *error);
 
-extern const uf_command uf_command_measure, uf_command_optics, uf_command_demo, uf_command_docs;
+extern const uf_command uf_command_calibrate, uf_command_measure, uf_command_optics, uf_command_demo, uf_command_docs;
 
 #endif

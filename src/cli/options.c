@@ -82,7 +82,11 @@ static uf_status parse_option(int argc, char **argv, int *next, const uf_option 
         value = argv[++*next];
     if (!value)
         return uf_fail(error, UF_USAGE, "--%s needs a value: --%s %s", option->name, option->name, option->argument);
-    return take_value(option, value, error);
+    uf_status status = take_value(option, value, error);
+    while (status == UF_OK && option->list && option->limit >= UF_OPTION_TAKES_ALL && *next + 1 < argc &&
+           argv[*next + 1][0] != '-')
+        status = take_value(option, argv[++*next], error);
+    return status;
 }
 
 uf_status uf_options_parse(int argc, char **argv, const uf_option *options, int option_count, const char **operands,

@@ -13,6 +13,7 @@
 
 #include "io/image_encode.h"
 #include "io/output.h"
+#include "run/demo_bench.h"
 #include "run/demo_plan.h"
 
 static const double cutoff_nm = 50; /* of the assay file below */
@@ -356,9 +357,32 @@ static void free_job(demo_job *job, int threads)
     free(job);
 }
 
+/* The bench's calibration images are no fields of an experiment. */
+static uf_status write_calibration(const uf_demo_request *request, uf_demo_summary *summary, uf_error *error)
+{
+    uf_work work = {0};
+    uf_output output = {0};
+    struct timespec from, to;
+    clock_gettime(CLOCK_MONOTONIC, &from);
+    *summary = (uf_demo_summary){0};
+    uf_status status = uf_pool_new(&work.pool, request->threads, error);
+    if (status == UF_OK)
+        status = uf_output_open(&output, request->dir, error);
+    if (status == UF_OK)
+        status = uf_demo_bench_write(&work, &output, &summary->images, error);
+    clock_gettime(CLOCK_MONOTONIC, &to);
+    summary->seconds = (double)(to.tv_sec - from.tv_sec) + (double)(to.tv_nsec - from.tv_nsec) * 1e-9;
+    uf_output_close(&output);
+    uf_pool_free(&work.pool);
+    uf_arena_free(&work.arena);
+    return status;
+}
+
 uf_status uf_demo_write(const uf_demo_request *request, uf_demo_summary *summary, uf_error *error)
 {
     struct timespec from, to;
+    if (strcmp(request->scenario, "bench") == 0)
+        return write_calibration(request, summary, error);
     demo_job *job = calloc(1, sizeof *job);
     if (!job)
         return uf_fail_memory(error, "the demo");

@@ -7,12 +7,13 @@
 
 typedef struct uf_demo_request {
     const char *dir;
-    const char *scenario; /* coatings, doses or screen */
+    const char *scenario; /* coatings, doses, screen or bench */
     int threads;
 } uf_demo_request;
 
 typedef struct uf_demo_summary {
-    int fields;
+    int fields; /* 0: calibration images of a bench */
+    int images; /* of these */
     double seconds;
     char first[64], instrument[64]; /* names of the first field and of its instrument file, to measure it */
 } uf_demo_summary;

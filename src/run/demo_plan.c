@@ -242,5 +242,5 @@ uf_status demo_plan_make(const char *name, demo_plan *plan, uf_error *error)
             scenarios[k].make(plan);
             return UF_OK;
         }
-    return uf_fail(error, UF_USAGE, "--scenario %.60s: expected coatings, doses or screen", name);
+    return uf_fail(error, UF_USAGE, "--scenario %.60s: expected coatings, doses, screen or bench", name);
 }

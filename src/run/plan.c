@@ -92,6 +92,12 @@ uf_status uf_bench_make(const uf_settings *s, uf_bench *bench, uf_error *error)
     return uf_bench_check(bench, error);
 }
 
+double uf_psf_sigma_um(const uf_settings *s)
+{
+    double na = isnan(s->interface.objective_na) ? usual_na : s->interface.objective_na;
+    return uf_round_digits(psf_per_wavelength * stokes_shift * s->light.wavelength_nm * 1e-3 / na, 12);
+}
+
 static uf_status find_pixel_size(const uf_settings *s, double image_pixel_um, double *size, uf_error *error)
 {
     *size = isnan(s->pixel.size_um) ? image_pixel_um : s->pixel.size_um;
@@ -184,8 +190,7 @@ uf_status uf_plan_make(const uf_settings *s, double image_pixel_um, uf_plan *pla
     status = make_decay(s, plan, error);
     if (status != UF_OK)
         return status;
-    double na = isnan(s->interface.objective_na) ? usual_na : s->interface.objective_na;
-    plan->psf_sigma_um = uf_round_digits(psf_per_wavelength * stokes_shift * b->wavelength_nm * 1e-3 / na, 12);
+    plan->psf_sigma_um = uf_psf_sigma_um(s);
     plan->restore_gain = 1 + real_over_ideal * real_over_ideal;
     plan->restore_variance =
         uf_round_digits(uf_restore_variance(plan->psf_sigma_um / plan->pixel_size_um, plan->restore_gain), 12);

@@ -13,6 +13,9 @@ UF_MUST_USE uf_status uf_bench_make(const uf_settings *settings, uf_bench *bench
 /* The same without an angle: na_effective is NaN, total reflection not checked. */
 UF_MUST_USE uf_status uf_bench_without_angle(const uf_settings *settings, uf_bench *bench, uf_error *error);
 
+/* Sigma of the near image's point spread function, taken to be a Gaussian: 0.21 emission wavelength / NA. */
+double uf_psf_sigma_um(const uf_settings *settings);
+
 /* All of the plan. `image_pixel_um` is what the image file says (NaN: nothing); the instrument file wins. */
 UF_MUST_USE uf_status uf_plan_make(const uf_settings *settings, double image_pixel_um, uf_plan *plan,
                                    uf_error *error);
