@@ -28,22 +28,31 @@
 
 #include "image/plane.h"
 
+/* Bits of a pixel in a map of defects; 0 is good. */
+enum { UF_DEFECT_DARK = 1, UF_DEFECT_NOISE = 2, UF_DEFECT_RESPONSE = 4 };
+
 /* ---- dark frames ----------------------------------------------------------------------------- */
 
 enum { UF_DARK_FRAMES_MOST = 1000 };
 
+/* The step between neighbouring counts, found as the greatest common divisor of their differences. Zeroed it has seen
+ * nothing. */
+typedef struct uf_count_step {
+    int started, broken; /* broken: not whole numbers */
+    int64_t first, divisor;
+} uf_count_step;
+
 /* Frames seen so far. To the caller only `count`, `width` and `height` matter. */
 typedef struct uf_dark_frames {
     int width, height, count;
-    double *mean_adu; /* of each pixel, row by row without gaps, less level_adu */
-    double
-        *squares_adu2; /* sum of squared departures of each pixel from its mean (Welford 1962, Technometrics 4:419) */
-    double *shift_adu; /* level of each frame against the mean of those before it */
+    double *mean_adu;      /* of each pixel, row by row without gaps, less level_adu */
+    double *squares_adu2;  /* sum of squared departures from it (Welford 1962, Technometrics 4:419) */
+    double *shift_adu;     /* level of each frame against the mean of those before it */
+    double *scatter_adu;   /* sd of that difference inside tiles */
     uint64_t *fingerprint; /* of each frame, to see one that is given twice */
     double level_adu;      /* to be added to mean_adu: mean of the frames' shifts */
-    double step_adu;   /* greatest common divisor of all differences of counts; 0 where they are not whole numbers */
-    double lowest_adu; /* the lowest count of all frames, */
-    double at_lowest;  /* and how many counts lie there */
+    double at_zero;        /* counts that are 0, the darkest a camera can write */
+    uf_count_step step;
 } uf_dark_frames;
 
 /* Takes memory for frames of one size. UF_MEMORY. */
@@ -59,19 +68,21 @@ UF_MUST_USE uf_status uf_dark_add(uf_work *work, uf_dark_frames *frames, uf_plan
 /* What dark frames tell. Shares are of all pixels. */
 typedef struct uf_dark {
     const uf_dark_frames *frames;
-    double offset_adu;    /* median over pixels of their mean */
+    double step_adu;      /* between neighbouring counts: 16 for 12 bits shifted into 16; 0: not whole numbers */
+    double offset_adu;    /* median over tiles of their pixels' mean */
     double offset_sd_adu; /* of that figure: from the frames' drift and the pixels' noise */
     double drift_adu;     /* sd of the frames' levels: how far the offset of a single image wanders */
-    double pattern_adu;   /* robust sd over pixels of their mean, what is left of the noise taken out */
+    double pattern_adu;   /* robust sd over neighbouring pixels of their mean, what is left of the noise taken out */
     double variance_adu2; /* mean temporal variance of ordinary pixels, rounding still in */
-    double variance_sd_adu2;
-    double noise_adu; /* temporal sd of a typical pixel (median; see below), rounding taken out */
+    double variance_sd_adu2; /* of that mean */
+    double noise_adu;        /* temporal sd of a typical pixel (median; see below), rounding taken out */
     double noise_sd_adu;
     double noise_rms_adu; /* root of the ordinary pixels' mean variance, rounding taken out */
-    int noise_is_bound;   /* variance below 0.24 steps^2: noise_adu is an upper limit, 0.40 steps */
-    double noisy_share;   /* pixels with more than UF_NOISY_PIXEL times the typical noise, beyond chance */
-    double clipped_share; /* of counts, at the lowest count when they pile up there: offset and noise are wrong */
-    uf_mask ordinary;     /* 1: neither hot nor noisy; photon transfer uses these pixels only */
+    int noise_is_bound;   /* variance below 0.24 step^2: both noises are an upper limit, 0.40 steps */
+    double noisy_share;   /* pixels with more than 3 times the ordinary noise, beyond chance */
+    double hot_share;     /* pixels whose mean lies far from their neighbours' */
+    double clipped_share; /* of counts, at 0: above 0.001 offset and noise are wrong */
+    uf_mask defects;      /* UF_DEFECT_ bits of each pixel; photon transfer uses those without any */
     double ordinary_pixels;
 } uf_dark;
 
@@ -93,10 +104,13 @@ void uf_dark_image(const uf_dark_frames *frames, uf_plane out);
 
 /* ---- pairs of flats -------------------------------------------------------------------------- */
 
-/* Sum of the flats' signals per pixel, each pair at the same level: how pixels respond. */
+/* Two frames of one exposure and one lamp differ by less than this share of their light. */
+#define UF_FLICKER_MOST 0.3
+
+/* Sum of the flats' signals per pixel: how pixels respond. */
 typedef struct uf_response {
     int width, height, pairs;
-    double *signal; /* sum of signal / mean signal of the pair */
+    double *signal;
 } uf_response;
 
 UF_MUST_USE uf_status uf_response_start(uf_work *work, int width, int height, uf_response *response, uf_error *error);
@@ -124,7 +138,7 @@ typedef struct uf_photon_point {
  * Measures one pair. Both frames have the dark mean subtracted and are scaled to their common mean, so that a lamp
  * that flickers leaves no fixed pattern in the difference; what flickering adds to the variance is taken out.
  * Differences are looked at in tiles of 32 x 32 pixels: the tile's mean difference goes out, and differences beyond
- * 5 sigma, so that hot and blinking pixels do not count. Uneven light does no harm: each pixel lies on the same
+ * 6 sigma, so that hot and blinking pixels do not count. Uneven light does no harm: each pixel lies on the same
  * straight line, and the mean of points of a straight line lies on it (up to saturation).
  *
  * `full_scale_adu`: count of a saturated pixel, NaN where unknown. `response` may be NULL; pairs with saturated
@@ -243,9 +257,6 @@ UF_MUST_USE uf_status uf_excess_noise(const uf_photon_transfer *with, const uf_p
 void uf_photon_transfer_set_excess(uf_photon_transfer *transfer, const uf_dark *dark, double excess_noise, double sd);
 
 /* ---- defects --------------------------------------------------------------------------------- */
-
-/* Bits of a pixel in the map of defects; 0 is good. */
-enum { UF_DEFECT_DARK = 1, UF_DEFECT_NOISE = 2, UF_DEFECT_RESPONSE = 4 };
 
 typedef struct uf_defect_counts {
     int64_t dark, noise, response, any;
