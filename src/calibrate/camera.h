@@ -68,12 +68,12 @@ UF_MUST_USE uf_status uf_dark_add(uf_work *work, uf_dark_frames *frames, uf_plan
 /* What dark frames tell. Shares are of all pixels. */
 typedef struct uf_dark {
     const uf_dark_frames *frames;
-    double step_adu;      /* between neighbouring counts: 16 for 12 bits shifted into 16; 0: not whole numbers */
-    double offset_adu;    /* median over tiles of their pixels' mean */
-    double offset_sd_adu; /* of that figure: from the frames' drift and the pixels' noise */
-    double drift_adu;     /* sd of the frames' levels: how far the offset of a single image wanders */
-    double pattern_adu;   /* robust sd over neighbouring pixels of their mean, what is left of the noise taken out */
-    double variance_adu2; /* mean temporal variance of ordinary pixels, rounding still in */
+    double step_adu;         /* between neighbouring counts: 16 for 12 bits shifted into 16; 0: not whole numbers */
+    double offset_adu;       /* median over tiles of their pixels' mean */
+    double offset_sd_adu;    /* of that figure: from the frames' drift and the pixels' noise */
+    double drift_adu;        /* sd of the frames' levels: how far the offset of a single image wanders */
+    double pattern_adu;      /* sd over ordinary pixels of their mean, from their tile's; the noise taken out */
+    double variance_adu2;    /* mean temporal variance of ordinary pixels, rounding still in */
     double variance_sd_adu2; /* of that mean */
     double noise_adu;        /* temporal sd of a typical pixel (median; see below), rounding taken out */
     double noise_sd_adu;
@@ -177,7 +177,7 @@ typedef enum uf_full_scale_from {
     UF_FULL_SCALE_TOP       /* the mean where the variance is largest: pixels fill before the converter does */
 } uf_full_scale_from;
 
-typedef enum uf_linear_from { UF_LINEAR_BY_EXPOSURE, UF_LINEAR_BY_VARIANCE, UF_LINEAR_UNKNOWN } uf_linear_from;
+typedef enum uf_linear_from { UF_LINEAR_BY_EXPOSURE, UF_LINEAR_BY_VARIANCE } uf_linear_from;
 
 /* What a careful person would say beside the numbers; bits of uf_photon_transfer.notes. */
 enum {
@@ -223,9 +223,11 @@ typedef struct uf_photon_transfer {
  * expected, and the uncertainties of the dark frames. `points` in any order; `fits` has room for `count`, in the
  * same order, and may be NULL.
  *
- * linear_to_adu: with at least 4 different exposures, from the straight line of signal against exposure (relative
- * weights); a lamp that drifts during the series looks like a camera that is not linear. Else from the variance
- * line, with a point's own 2 sd granted.
+ * linear_to_adu: with at least 4 different exposures, the straight line of signal against exposure (relative
+ * weights; the intercept is what a shutter takes) through as many points from below as it misses none of by more
+ * than 1 %; a lamp that drifts during the series looks like a camera that is not linear. Else up to where the
+ * variance leaves its line by 1 % and 2 of its sd. NaN where not even 3 exposures, or the darkest point, lie on a
+ * line.
  *
  * `excess_noise`: factor by which multiplication raises the noise's sd: sqrt 2 for long electron-multiplying
  * registers (Robbins and Hadwen 2003, IEEE Trans. Electron Devices 50:1227), 1 for others. One set of points cannot

@@ -17,12 +17,16 @@ static const double noisy_chance = 1e-7;
  * would show as a wrong pixel where only the offset is subtracted. */
 static const double hot_sigma = 8, hot_noise = 3;
 
+/* And beyond what its own noise does to its mean, or noisy pixels would all be hot. */
+static const double hot_own_sigma = 5;
+
 /* A dark frame's level may wander by this many times the noise of a pixel; more is light. Ten robust sd of the
  * frames' own wander are granted too: some cameras drift as they warm up. */
 static const double level_noise = 5, level_sigma = 10;
 
-/* Rounding to whole steps is noise of step^2 / 12 only while the noise before it is not much smaller than a step. Below
- * a variance of 0.24 step^2 the noise before it is only known to be less than 0.40 steps (EMVA 1288, release 3.1). */
+/* Rounding to whole steps is noise of step^2 / 12 only while the noise before it is not much smaller than a step.
+ * Below a variance of 0.24 step^2 the noise before it is only known to be less than 0.40 steps (EMVA 1288,
+ * release 3.1). */
 static const double rounding_variance = 1.0 / 12, least_variance = 0.24, noise_bound = 0.40;
 
 /* ---- adding frames --------------------------------------------------------------------------- */
@@ -233,7 +237,8 @@ static void average_below(const float *variances, size_t n, noise_scale *scale)
     scale->pixels = count;
 }
 
-/* Mean variance of the pixels that are not noisy, what is noisy hanging on that mean: from the median, again and again. */
+/* Mean variance of the pixels that are not noisy, what is noisy hanging on that mean: from the median, again and
+ * again. */
 static noise_scale scale_of_noise(float *variances, size_t n, int frames)
 {
     double degrees = frames - 1, times = uf_chi_square_upper_quantile(noisy_chance, degrees) / degrees;
@@ -321,25 +326,29 @@ static double robust_sd(const float *away, float *scratch, size_t n)
     return UF_MAD_TO_SD * uf_median_float(scratch, n);
 }
 
+/* Marks bad pixels, and measures how the ordinary ones differ from their neighbours. */
 static void mark_pixels(uf_dark *dark, const noise_scale *scale, const float *away, double hot)
 {
     const uf_dark_frames *frames = dark->frames;
-    double noisy = 0, hots = 0, any = 0, degrees = frames->count - 1;
+    double noisy = 0, hots = 0, any = 0, squares = 0, degrees = frames->count - 1;
     for (int y = 0; y < frames->height; y++)
         for (int x = 0; x < frames->width; x++) {
             size_t at = (size_t)y * (size_t)frames->width + (size_t)x;
-            int is_noisy = (double)(float)(frames->squares_adu2[at] / degrees) > scale->limit;
-            int is_hot = (double)fabsf(away[at]) > hot;
+            double variance = (double)(float)(frames->squares_adu2[at] / degrees), off = fabs((double)away[at]);
+            int is_noisy = variance > scale->limit;
+            int is_hot = off > hot && off > hot_own_sigma * sqrt(variance / frames->count);
             uf_mask_row(dark->defects, y)[x] =
                 (uint8_t)((is_noisy ? UF_DEFECT_NOISE : 0) | (is_hot ? UF_DEFECT_DARK : 0));
             noisy += is_noisy;
             hots += is_hot;
             any += is_noisy || is_hot;
+            squares += is_noisy || is_hot ? 0 : off * off;
         }
     double pixels = (double)frames->width * frames->height;
     dark->noisy_share = noisy / pixels;
     dark->hot_share = hots / pixels;
     dark->ordinary_pixels = pixels - any;
+    dark->pattern_adu = sqrt(fmax(0, squares / fmax(1, pixels - any) - scale->mean / frames->count));
 }
 
 static void find_offset(uf_dark *dark, uf_tiles tiles, double *means)
@@ -388,7 +397,6 @@ static uf_status look(uf_work *work, uf_dark *dark, scratch_planes *s, uf_error 
     without_rounding(dark, &scale);
     uf_pool_run(work->pool, uf_tiles_count(l.tiles), away_from_tile, &l);
     double spread = robust_sd(l.away, s->b, pixels);
-    dark->pattern_adu = sqrt(fmax(0, spread * spread - scale.mean / frames->count));
     mark_pixels(dark, &scale, l.away, fmax(hot_sigma * spread, hot_noise * sqrt(scale.mean)));
     find_offset(dark, l.tiles, s->tiles);
     return UF_OK;

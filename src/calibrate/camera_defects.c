@@ -1,12 +1,13 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
-/* The map of pixels that lie. Those of the dark frames are found in camera_dark.c, where they are left out of all figures; this adds
- * those that answer light unlike their neighbours. */
+/* The map of pixels that lie. Those of the dark frames are found in camera_dark.c, where they are left out of all
+ * figures; this adds those that answer light unlike their neighbours. */
 #include <math.h>
 
 #include "calibrate/camera_parts.h"
 
-/* A flat corrects what differs by less: at four fifths of the light a pixel's noise is an eighth larger, no more. And six
- * robust sd of all pixels' departures, noise included, so that dim or few flats do not condemn good pixels. */
+/* A flat corrects what differs by less: at four fifths of the light a pixel's noise is an eighth larger, no more.
+ * And six robust sd of all pixels' departures, noise included, so that dim or few flats do not condemn good
+ * pixels. */
 static const double response_share = 0.2, response_sigma = 6;
 
 /* More is no map of defects but the wrong frames. */

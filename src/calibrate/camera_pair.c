@@ -5,9 +5,9 @@
 #include "calibrate/camera_parts.h"
 #include "fit/robust.h"
 
-/* Leaving out what lies beyond this lowers the variance of normal values by 1e-7, and that of one electron a pixel behind a
- * multiplying register, whose tails are exponential, by 1 %. Three steps are always granted: of counts that hardly
- * ever differ, those that do are no outliers. */
+/* Leaving out what lies beyond this lowers the variance of normal values by 1e-7, and that of one electron a
+ * pixel behind a multiplying register, whose tails are exponential, by 1 %. Three steps are always granted: of
+ * counts that hardly ever differ, those that do are no outliers. */
 static const double outlier_sigma = 6, outlier_steps = 3;
 
 /* Fewer pixels in a tile say nothing of a variance. */
@@ -213,8 +213,8 @@ static void measure_tile(void *context, int hand, int index)
 
 /* ---- tiles together -------------------------------------------------------------------------- */
 
-/* Scaled to the common mean m of signals m (1 + e) and m (1 - e), the light's variance is k m m^2 / (m_a m_b), and that of the dark
- * (scale_a^2 + scale_b^2) / 2 times its own. */
+/* Scaled to the common mean m of signals m (1 + e) and m (1 - e), the light's variance is k m m^2 / (m_a m_b),
+ * and that of the dark (scale_a^2 + scale_b^2) / 2 times its own. */
 static double without_flicker(const pair *p, double variance)
 {
     double light = p->scale_a * p->scale_b, dark = (p->scale_a * p->scale_a + p->scale_b * p->scale_b) / 2;
@@ -233,8 +233,8 @@ static void percentiles_of_tiles(const pair *p, double *scratch, uf_photon_point
     point->high_adu = uf_sorted_quantile(scratch, count, 0.95);
 }
 
-/* Half the variance of the difference, over all tiles. Where light is uneven the pixels' variances differ, and their mean is
- * less sure than that of equal ones: by the mean square over the squared mean. */
+/* Half the variance of the difference, over all tiles. Where light is uneven the pixels' variances differ, and
+ * their mean is less sure than that of equal ones: by the mean square over the squared mean. */
 static void join_tiles(const pair *p, double *scratch, uf_photon_point *point)
 {
     tile_sums all = {0};
@@ -299,8 +299,8 @@ static double pixels_between(const pair *p, double low, double high)
     return count;
 }
 
-/* Full scale as given, or the highest count where it holds more pixels than the next lower count: the upper tail of noise thins out,
- * only a ceiling gathers. One or two pixels are chance. */
+/* Full scale as given, or the highest count where it holds more pixels than the next lower count: the upper tail
+ * of noise thins out, only a ceiling gathers. One or two pixels are chance. */
 static void find_saturation(const pair *p, double full_scale, uf_photon_point *point)
 {
     double ordinary = p->dark->ordinary_pixels;

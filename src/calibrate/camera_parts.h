@@ -35,8 +35,8 @@ double uf_count_step_adu(const uf_count_step *step);
 
 /* ---- figures --------------------------------------------------------------------------------- */
 
-/* Signal (ADU) below which nobody can say that there was light: five times the wander of the dark level, a tenth of the
- * noise of a pixel (the mean is known far better than that, but so small a signal tells nothing). */
+/* Signal (ADU) below which nobody can say that there was light: five times the wander of the dark level, a tenth
+ * of the noise of a pixel (the mean is known far better than that, but so small a signal tells nothing). */
 double uf_least_light_adu(const uf_dark *dark);
 
 /* Median of n floats that may be reordered, the lower of the middle two. NaN for none. */

@@ -15,7 +15,7 @@
 #ifndef UF_CALIBRATE_FLAT_H
 #define UF_CALIBRATE_FLAT_H
 
-#include "image/plane.h"
+#include "calibrate/counts.h"
 
 typedef enum uf_flat_sample {
     UF_FLAT_FILM,
@@ -28,6 +28,7 @@ enum { UF_FLAT_IMAGES_LEAST = 3, UF_FLAT_IMAGES_MOST = 1000 };
 /* Images kept. Zeroed it is empty and may be freed. */
 typedef struct uf_flat_stack {
     int width, height, count;
+    uf_count_step step; /* between neighbouring counts */
     uf_arena arena;
     struct uf_flat_image *images; /* UF_FLAT_IMAGES_MOST, from the arena */
 } uf_flat_stack;

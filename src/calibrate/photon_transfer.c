@@ -15,13 +15,14 @@ static const double drop_sigma = 3, drop_share = 0.02;
 /* Part of a saturation seen up to which the line is fitted (EMVA 1288). */
 static const double share_of_saturation = 0.7;
 
-/* Levels closer together than this tell a slope by the dark frames alone; below three times, with little to check it. */
+/* Levels closer together than this tell a slope by the dark frames alone; below three times, with little to check
+ * it. */
 static const double levels_apart = 1.5, levels_well_apart = 3;
 
 /* Departure that ends the linear range; in this program 1 % of a ratio is about 1 nm of gap. */
 static const double linear_share = 0.01;
 
-enum { LEAST_EXPOSURES = 4, ROUNDS = 50 };
+enum { LEAST_EXPOSURES = 4, LEAST_ON_LINE = 3, ROUNDS = 50 };
 
 /* What the parts of the fit hand on. */
 typedef struct fitting {
@@ -267,87 +268,120 @@ static void fill_departures(fitting *f, const uf_photon_transfer *t)
 
 /* ---- light against exposure ------------------------------------------------------------------ */
 
-static int has_exposure(const fitting *f, int k, int only_used)
+/* A line of signal against exposure. */
+typedef struct exposure_line {
+    int exposures; /* different ones that it was fitted to; 0: there is no line */
+    double rate, rate_sd, intercept;
+} exposure_line;
+
+/* Whether the k-th point from below can lie on the line. */
+static int has_exposure(const fitting *f, int k)
 {
-    uf_point_use use = f->fits[k].use;
-    return !isnan(f->points[k].exposure_ms) && (only_used ? use == UF_POINT_USED : use != UF_POINT_NO_LIGHT);
+    uf_point_use use = f->fits[f->order[k]].use;
+    return !isnan(f->points[f->order[k]].exposure_ms) && (use == UF_POINT_USED || use == UF_POINT_NEAR_FULL);
 }
 
-/* Different exposures among the points in use, or among all that had light. */
-static int different_exposures(const fitting *f, int only_used)
+/* Different exposures among the lowest `most` points. */
+static int different_exposures(const fitting *f, int most)
 {
     int count = 0;
-    for (int k = 0; k < f->count; k++) {
-        int is_new = has_exposure(f, k, only_used);
+    for (int k = 0; k < most; k++) {
+        int is_new = has_exposure(f, k);
         for (int j = 0; is_new && j < k; j++)
-            is_new = !has_exposure(f, j, only_used) || f->points[j].exposure_ms != f->points[k].exposure_ms;
+            is_new = !has_exposure(f, j) || f->points[f->order[j]].exposure_ms != f->points[f->order[k]].exposure_ms;
         count += is_new;
     }
     return count;
 }
 
-/* Signal against exposure over the points in use, relative weights. The intercept is what a shutter takes to open; with
- * two exposures there is no telling it. */
-static int fit_exposures(const fitting *f, uf_linear_fit *fit, double *longest)
+/* Through the lowest `most` points, relative weights. The intercept is what a shutter takes to open; two exposures
+ * cannot tell it. */
+static exposure_line line_through(const fitting *f, int most)
 {
-    int exposures = different_exposures(f, 1);
+    exposure_line line = {0};
+    uf_linear_fit fit = {0};
+    double longest = 0;
+    int exposures = different_exposures(f, most);
     uf_linear sums = {.parameters = exposures > 2 ? 2 : 1};
-    *longest = 0;
-    for (int k = 0; k < f->count; k++)
-        if (f->fits[k].use == UF_POINT_USED)
-            *longest = fmax(*longest, f->points[k].exposure_ms); /* fmax passes over NaN */
-    for (int k = 0; k < f->count; k++) {
+    for (int k = 0; k < most; k++)
+        if (has_exposure(f, k))
+            longest = fmax(longest, f->points[f->order[k]].exposure_ms);
+    for (int k = 0; k < most; k++) {
         const uf_photon_point *p = f->points + f->order[k];
-        double x[2] = {p->exposure_ms / *longest, 1};
-        if (f->fits[f->order[k]].use == UF_POINT_USED && !isnan(p->exposure_ms))
+        double x[2] = {p->exposure_ms / longest, 1};
+        if (has_exposure(f, k))
             uf_linear_add(&sums, x, p->signal_adu, 1 / (p->signal_adu * p->signal_adu));
     }
-    fit->value[1] = 0;
-    return exposures > 1 && uf_linear_solve(&sums, fit);
+    if (exposures > 1 && uf_linear_solve(&sums, &fit) && fit.value[0] > 0)
+        line = (exposure_line){exposures, fit.value[0] / longest, fit.sd[0] / longest, fit.value[1]};
+    return line;
+}
+
+static double off_line(const uf_photon_point *p, const exposure_line *line)
+{
+    return p->signal_adu / (line->rate * p->exposure_ms + line->intercept) - 1;
+}
+
+/* The largest departure of the lowest `most` points from the line, that of the dark level granted. */
+static double worst_departure(const fitting *f, int most, const exposure_line *line)
+{
+    double worst = 0;
+    for (int k = 0; k < most; k++) {
+        const uf_photon_point *p = f->points + f->order[k];
+        if (has_exposure(f, k))
+            worst = fmax(worst, fabs(off_line(p, line)) - 2 * f->dark->offset_sd_adu / p->signal_adu);
+    }
+    return worst;
 }
 
 /* ---- the linear range ------------------------------------------------------------------------ */
 
-/* Goes up through the points as long as they depart by less than 1 %, uncertainty granted. */
-static void go_up(const fitting *f, const double *departure, const double *granted, uf_photon_transfer *t)
+/* The longest line from below that misses no point by 1 %. Where there is none, the line through all is kept to show
+ * how they depart. */
+static exposure_line longest_line(const fitting *f, uf_photon_transfer *t)
 {
-    t->linear_to_adu = (double)NAN;
-    t->linear_departure = 0;
-    for (int k = 0; k < f->count; k++) {
-        int at = f->order[k];
-        if (isnan(departure[at]))
+    t->linear_to_adu = t->linear_departure = (double)NAN;
+    for (int most = f->count; different_exposures(f, most) >= LEAST_ON_LINE; most--) {
+        exposure_line line = line_through(f, most);
+        double worst = line.exposures ? worst_departure(f, most, &line) : INFINITY;
+        if (worst > linear_share || !has_exposure(f, most - 1))
             continue;
-        if (fabs(departure[at]) > linear_share + granted[at])
+        t->linear_to_adu = f->points[f->order[most - 1]].mean_adu;
+        t->linear_departure = worst;
+        return line;
+    }
+    return line_through(f, f->count);
+}
+
+/* Up to where the variance leaves its line, two of its sd granted. */
+static void linear_by_variance(const fitting *f, uf_photon_transfer *t)
+{
+    t->linear_to_adu = t->linear_departure = (double)NAN;
+    for (int k = 0; k < f->count; k++) {
+        const uf_point_fit *fit = f->fits + f->order[k];
+        if (fit->use == UF_POINT_NO_LIGHT)
+            continue;
+        double off = fabs(fit->departure), sd = fabs(fit->departure / fit->departure_sigma);
+        int full = fit->use == UF_POINT_SATURATED || fit->use == UF_POINT_PAST_THE_TOP;
+        if (full || (off > 0 && off > linear_share + 2 * sd))
             return;
-        t->linear_to_adu = f->points[at].mean_adu;
-        t->linear_departure = fmax(t->linear_departure, fabs(departure[at]));
+        t->linear_to_adu = f->points[f->order[k]].mean_adu;
+        t->linear_departure = fmax(t->linear_departure, off); /* fmax passes over NaN */
     }
 }
 
 static void find_linear_range(fitting *f, uf_photon_transfer *t)
 {
-    double departure[UF_PHOTON_POINTS_MOST], granted[UF_PHOTON_POINTS_MOST], longest;
-    uf_linear_fit fit = {0};
-    int fitted = fit_exposures(f, &fit, &longest);
-    t->rate_adu_per_ms = fitted ? fit.value[0] / longest : (double)NAN;
-    t->rate_sd_adu_per_ms = fitted ? fit.sd[0] / longest : (double)NAN;
-    int by_exposure = fitted && different_exposures(f, 0) >= LEAST_EXPOSURES;
-    for (int k = 0; k < f->count; k++) {
-        const uf_photon_point *p = f->points + k;
-        double line = fit.value[0] * p->exposure_ms / longest + fit.value[1];
-        departure[k] = f->fits[k].departure;
-        granted[k] = departure[k] != 0 ? 2 * fabs(departure[k] / f->fits[k].departure_sigma) : 0;
-        if (by_exposure) {
-            f->fits[k].linearity = f->fits[k].use == UF_POINT_NO_LIGHT ? (double)NAN : p->signal_adu / line - 1;
-            departure[k] = f->fits[k].linearity;
-            granted[k] = 2 * f->dark->offset_sd_adu / line;
-        } else if (f->fits[k].use == UF_POINT_SATURATED) {
-            departure[k] = 1; /* the range ends here, whatever the variance says */
-            granted[k] = 0;
-        }
-    }
+    int by_exposure = different_exposures(f, f->count) >= LEAST_EXPOSURES;
+    exposure_line line = by_exposure ? longest_line(f, t) : line_through(f, f->count);
     t->linear_from = by_exposure ? UF_LINEAR_BY_EXPOSURE : UF_LINEAR_BY_VARIANCE;
-    go_up(f, departure, granted, t);
+    t->rate_adu_per_ms = line.exposures ? line.rate : (double)NAN;
+    t->rate_sd_adu_per_ms = line.exposures ? line.rate_sd : (double)NAN;
+    for (int k = 0; k < f->count && line.exposures; k++)
+        if (f->fits[k].use != UF_POINT_NO_LIGHT)
+            f->fits[k].linearity = off_line(f->points + k, &line);
+    if (!by_exposure)
+        linear_by_variance(f, t);
 }
 
 /* ---- full scale and notes -------------------------------------------------------------------- */
@@ -366,8 +400,8 @@ static void find_full_scale(const fitting *f, uf_photon_transfer *t)
     }
 }
 
-/* Neighbours of a raw frame know nothing of each other. A correlation of 0.03 on all four sides hides a tenth of the variance, which
- * would be a tenth of the gain. */
+/* Neighbours of a raw frame know nothing of each other. A correlation of 0.03 on all four sides hides a tenth of
+ * the variance, which would be a tenth of the gain. */
 static const double correlated = 0.03;
 
 static unsigned note_points(const fitting *f, uf_photon_transfer *t)
