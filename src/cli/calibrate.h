@@ -41,6 +41,8 @@ UF_MUST_USE uf_status uf_option_number(const char *option, const char *text, dou
 UF_MUST_USE uf_status uf_option_word(const char *option, const char *text, const char *const *words, int fallback,
                                      int *chosen, uf_error *error);
 
-extern const uf_command uf_calibrate_bead_command;
+extern const char *const uf_channel_words[]; /* near, wide, NULL */
+
+extern const uf_command uf_calibrate_bead_command, uf_calibrate_camera_command;
 
 #endif

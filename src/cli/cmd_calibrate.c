@@ -5,8 +5,10 @@
 
 #include "cli/calibrate.h"
 
-static const uf_command *const kinds[] = {&uf_calibrate_bead_command};
+static const uf_command *const kinds[] = {&uf_calibrate_bead_command, &uf_calibrate_camera_command};
 enum { KINDS = sizeof kinds / sizeof kinds[0], COMMON_OPTIONS = 6 };
+
+const char *const uf_channel_words[] = {"near", "wide", NULL};
 
 /* ---- values of options --------------------------------------------------------------------------- */
 

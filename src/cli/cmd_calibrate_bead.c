@@ -42,7 +42,7 @@ static int command_bead(int argc, char **argv)
         {"dye", 0, "WHERE", "surface: on the beads (default); medium: around clear beads", &o.dye, NULL, NULL, NULL,
          0},
         {"model", 0, "MODEL", "scattered: evanescent and stray light (default); exponential", &o.model, NULL, NULL,
-         NULL, 0, false},
+         NULL, 0},
         {"bead-n", 0, "N", "index of the beads: refuses those that frustrate reflection", &o.bead_n, NULL, NULL, NULL,
          0},
         {"medium-n", 0, "N", "index of the medium the beads lie in (the instrument file's)", &o.medium_n, NULL, NULL,

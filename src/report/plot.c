@@ -107,7 +107,7 @@ static void lay_out(sheet *s)
     plot_range(&p->y, least, most, pieces_y, &f->y_from, &f->y_to);
     s->y_count = plot_ticks(f->y_from, f->y_to, p->y.log10, pieces_y, s->y_ticks);
     f->box.x0 = s->cell.x0 + small + GAP + widest_label(s->y_ticks, s->y_count) + TICK + GAP;
-    f->box.x1 = s->cell.x1 - GAP;
+    f->box.x1 = s->cell.x1 - 2 * GAP; /* room for half of the last label */
     f->box.x1 = f->box.x1 > f->box.x0 + 20 ? f->box.x1 : f->box.x0 + 20;
     int pieces_x = (f->box.x1 - f->box.x0) / PX_A_PIECE_X;
     data_range(p, 0, &least, &most);

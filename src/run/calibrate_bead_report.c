@@ -1,14 +1,10 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
 /* The report of `calibrate bead`: in words, as JSON, as a plot. */
-#include <jansson.h>
 #include <math.h>
-#include <stdlib.h>
-#include <string.h>
+#include <stdio.h>
 
-#include "io/image_encode.h"
-#include "io/output.h"
-#include "report/plot.h"
 #include "run/calibrate_bead_parts.h"
+#include "run/report_parts.h"
 
 /* ---- words ------------------------------------------------------------------------------------- */
 
@@ -137,22 +133,17 @@ void uf_bead_words(uf_text *out, const uf_bead_findings *f)
 
 /* ---- JSON -------------------------------------------------------------------------------------- */
 
-static void put(json_t *o, const char *name, double value)
-{
-    json_object_set_new(o, name, isfinite(value) ? json_real(uf_round_digits(value, 10)) : json_null());
-}
-
 static void put_figure(json_t *o, const char *stem, const char *unit, const uf_bead_figure *f, double sd)
 {
     char name[64];
     (void)snprintf(name, sizeof name, "%s%s", stem, unit);
-    put(o, name, f->value);
+    uf_json_number(o, name, f->value);
     (void)snprintf(name, sizeof name, "%s_sd%s", stem, unit);
-    put(o, name, sd);
+    uf_json_number(o, name, sd);
     (void)snprintf(name, sizeof name, "%s_low%s", stem, unit);
-    put(o, name, f->low);
+    uf_json_number(o, name, f->low);
     (void)snprintf(name, sizeof name, "%s_high%s", stem, unit);
-    put(o, name, f->high);
+    uf_json_number(o, name, f->high);
 }
 
 uf_status uf_bead_json(uf_text *out, const uf_bead_findings *f, uf_error *error)
@@ -165,31 +156,22 @@ uf_status uf_bead_json(uf_text *out, const uf_bead_findings *f, uf_error *error)
         json_object_set_new(o, counts[k], json_integer(uf_beads_in_state(&f->set, (uf_bead_state)k)));
     json_object_set_new(o, "images", json_integer(f->set.images));
     put_figure(o, "depth", "_nm", &f->fit.depth_nm, f->depth_sd_nm);
-    put(o, "depth_sd_beads_nm", f->by_beads_nm);
-    put(o, "depth_sd_psf_nm", f->by_psf_nm);
-    put(o, "depth_sd_radius_nm", f->by_radius_nm);
-    put(o, "na_effective", f->na_effective);
-    put(o, "na_effective_sd", f->na_effective_sd);
+    uf_json_number(o, "depth_sd_beads_nm", f->by_beads_nm);
+    uf_json_number(o, "depth_sd_psf_nm", f->by_psf_nm);
+    uf_json_number(o, "depth_sd_radius_nm", f->by_radius_nm);
+    uf_json_number(o, "na_effective", f->na_effective);
+    uf_json_number(o, "na_effective_sd", f->na_effective_sd);
     put_figure(o, "scattered_fraction", "", &f->fit.scattered_fraction, f->fit.scattered_fraction.sd);
     put_figure(o, "scattered_depth", "_nm", &f->fit.scattered_depth_nm, f->fit.scattered_depth_nm.sd);
-    put(o, "bead_to_bead", f->fit.bead_to_bead);
-    put(o, "misfit", f->fit.misfit);
-    put(o, "computed_depth_nm", f->computed_depth_nm);
-    put(o, "computed_depth_sd_nm", f->computed_sd_nm);
+    uf_json_number(o, "bead_to_bead", f->fit.bead_to_bead);
+    uf_json_number(o, "misfit", f->fit.misfit);
+    uf_json_number(o, "computed_depth_nm", f->computed_depth_nm);
+    uf_json_number(o, "computed_depth_sd_nm", f->computed_sd_nm);
     json_object_set_new(o, "verdict", json_string(verdicts[f->verdict]));
-    char *text = json_dumps(o, JSON_INDENT(2) | JSON_PRESERVE_ORDER);
-    json_decref(o);
-    if (!text)
-        return uf_fail_memory(error, "the report");
-    uf_text_add(out, text);
-    uf_text_add(out, "\n");
-    free(text);
-    return UF_OK;
+    return uf_json_finish(out, o, error);
 }
 
 /* ---- plot -------------------------------------------------------------------------------------- */
-
-enum { WIDTH = 1300, HEIGHT = 560 };
 
 typedef struct plot_data {
     double low[UF_BEAD_PLOT_BINS], high[UF_BEAD_PLOT_BINS], away[UF_BEAD_PLOT_BINS], away_low[UF_BEAD_PLOT_BINS],
@@ -197,8 +179,9 @@ typedef struct plot_data {
 } plot_data;
 
 /* The same data twice: as imaged, against the distance from the centre, and what is left of them. */
-static uf_status draw(const uf_bead_findings *f, uf_work *work, plot_data *d, uf_indexed *picture, uf_error *error)
+uf_status uf_bead_plot(const uf_bead_findings *f, const char *path, uf_error *error)
 {
+    plot_data data, *d = &data;
     const uf_bead_result *r = &f->fit;
     double none = (double)NAN, zero_x[] = {0, r->bin_um[r->bins - 1]}, zero_y[] = {0, 0};
     char title[96];
@@ -241,21 +224,5 @@ static uf_status draw(const uf_bead_findings *f, uf_work *work, plot_data *d, uf
                                      0,
                                      NULL,
                                      0}};
-    return uf_plot_draw(work, panels, 2, WIDTH, HEIGHT, picture, NULL, error);
-}
-
-uf_status uf_bead_plot(const uf_bead_findings *f, const char *path, uf_error *error)
-{
-    uf_work work = {0};
-    uf_indexed picture;
-    uf_text png = {0};
-    plot_data data;
-    uf_status status = draw(f, &work, &data, &picture, error);
-    if (status == UF_OK)
-        status = uf_encode_indexed_png(&png, &picture, error);
-    if (status == UF_OK)
-        status = uf_output_file(path, png.bytes, png.length, error);
-    uf_text_free(&png);
-    uf_arena_free(&work.arena);
-    return status;
+    return uf_plot_file(panels, 2, 1300, 560, path, error);
 }

@@ -13,7 +13,7 @@
 
 /* ---- the bench's truth --------------------------------------------------------------------------- */
 
-enum { SIDE = 384, HOT_PIXELS = 24, DARKS = 12, FILMS = 24 };
+enum { SIDE = 384, HOT_PIXELS = 24, DARKS = 12, FILMS = 24, BEAD_IMAGES = 4 };
 
 static const double pixel_um = 0.11, psf_um = 0.075;
 static const double depth_nm = 80.3, stray_share = 0.08, stray_depth_nm = 1300;
@@ -72,13 +72,13 @@ static uf_status write_words(const bench_job *job, const char *name, const char 
 static uf_status write_beads(bench_job *job, uf_error *error)
 {
     uf_status status = UF_OK;
-    for (int k = 1; status == UF_OK && k <= 3; k++) {
+    for (int k = 1; status == UF_OK && k <= BEAD_IMAGES; k++) {
         uf_arena_mark mark = uf_arena_now(&job->work->arena);
         uf_bead_scene scene = {.seed = 500u + (unsigned)k,
-                               .width = 460,
-                               .height = 460,
+                               .width = SIDE,
+                               .height = SIDE,
                                .pixel_size_um = pixel_um,
-                               .beads = 9,
+                               .beads = 8,
                                .radius_um = 2.5,
                                .radius_spread = 0.01,
                                .depth_nm = depth_nm,
@@ -88,7 +88,7 @@ static uf_status write_beads(bench_job *job, uf_error *error)
                                .peak_adu = 3200,
                                .label_spread = 0.12,
                                .floating = 0.12,
-                               .floating_nm = 260,
+                               .floating_nm = 140,
                                .background_adu = 55,
                                .offset_adu = offset_adu,
                                .full_scale_adu = full_scale_adu,
