@@ -26,7 +26,7 @@
 #ifndef UF_CALIBRATE_CAMERA_H
 #define UF_CALIBRATE_CAMERA_H
 
-#include "image/plane.h"
+#include "calibrate/counts.h"
 
 /* Bits of a pixel in a map of defects; 0 is good. */
 enum { UF_DEFECT_DARK = 1, UF_DEFECT_NOISE = 2, UF_DEFECT_RESPONSE = 4 };
@@ -34,13 +34,6 @@ enum { UF_DEFECT_DARK = 1, UF_DEFECT_NOISE = 2, UF_DEFECT_RESPONSE = 4 };
 /* ---- dark frames ----------------------------------------------------------------------------- */
 
 enum { UF_DARK_FRAMES_MOST = 1000 };
-
-/* The step between neighbouring counts, found as the greatest common divisor of their differences. Zeroed it has seen
- * nothing. */
-typedef struct uf_count_step {
-    int started, broken; /* broken: not whole numbers */
-    int64_t first, divisor;
-} uf_count_step;
 
 /* Frames seen so far. To the caller only `count`, `width` and `height` matter. */
 typedef struct uf_dark_frames {

@@ -36,7 +36,7 @@ typedef struct uf_flat_stack {
 void uf_flat_stack_free(uf_flat_stack *stack);
 
 /* Keeps a copy of raw counts. UF_INPUT: another size than the first, the same image as an earlier one, too many. */
-UF_MUST_USE uf_status uf_flat_add(uf_work *work, uf_flat_stack *stack, uf_plane image, uf_error *error);
+UF_MUST_USE uf_status uf_flat_add(uf_flat_stack *stack, uf_plane image, uf_error *error);
 
 typedef struct uf_flat_request {
     uf_flat_sample sample;
@@ -55,40 +55,43 @@ typedef struct uf_flat_request {
 #define UF_FLAT_LOWEST 0.05
 
 typedef struct uf_flat {
-    uf_plane image;        /* mean 1, all above UF_FLAT_LOWEST */
-    uf_plane noise;        /* relative 1 sigma of each pixel before smoothing, from the scatter over images */
-    uf_plane count;        /* images that were kept at each pixel */
-    double noise_pixel;    /* median of `noise` */
-    double noise_halves;   /* of `image`, smoothed as it is: from the difference of odd and even images' flats */
-    double noise_expected; /* of `image`, if each pixel's noise were its own: noise_pixel narrowed by the smoothing */
-    int too_noisy;         /* noise_halves above UF_FLAT_NOISE_MOST */
-    int images_wanted;     /* how many images of this kind would do; 0 when it is good enough */
-    double
-        smooth_wanted_px;  /* or how much smoothing (NaN: more than UF_FLAT_SMOOTH_MOST); 0 when it is good enough */
-    double rejected_share; /* of all pixels of all images */
-    double never_kept_share; /* pixels without a value of their own: defects, and what was always covered */
+    uf_plane image;          /* mean 1, all above UF_FLAT_LOWEST */
+    uf_plane noise;          /* relative 1 sigma of each pixel before smoothing, from the scatter over images */
+    uf_plane count;          /* images that were kept at each pixel */
+    double noise_pixel;      /* a typical `noise` */
+    double noise_halves;     /* of `image`, smoothed as it is: from the difference of odd and even images' flats */
+    double noise_expected;   /* the same if each pixel's noise were its own: noise_pixel narrowed by the smoothing */
+    int too_noisy;           /* noise_halves above UF_FLAT_NOISE_MOST */
+    int images_wanted;       /* how many images of this kind would do; 0 when it is good enough */
+    double smooth_wanted_px; /* or how much smoothing; 0 when good enough, NaN when above UF_FLAT_SMOOTH_MOST */
+    double rejected_share;   /* of all values of good pixels */
+    double never_kept_share; /* pixels without a value of their own: defects */
     double unevenness;       /* 99th over 1st percentile of `image` */
     double lowest, highest;  /* of `image` */
     int lowest_x, lowest_y;
-    int count_images;
+    int images;
     double *level_adu;  /* of each image, above the dark */
-    double *unlikeness; /* of each image: rms of its departures from the flat over 8 x 8 tiles, relative */
+    double *unlikeness; /* of each image: 75th percentile of its relative departures from the flat over 8 x 8 tiles */
 } uf_flat;
 
 #define UF_FLAT_SMOOTH_MOST 100.0
 
 /*
- * Film and solution: the mean of the values within 3.5 robust sd of the median. Cells: values far above the median
- * are taken out again and again until only the background is left, then the median of that; the more of a field
- * cells cover (up to about half on average), the more fields it needs, and light that cells scatter around them
- * stays in. With 3 or 4 images nothing can be told to stand out: the median.
+ * Film and solution: the mean of the values within 3.5 robust sd of the median. Cells: from the lower half of the
+ * values upwards, those within 2.5 sd (of their lower quartile) of the median, until nothing changes, and the
+ * mean of these: the background. The more of a field cells cover (up to some two thirds), the more fields it
+ * needs; light that cells scatter around them stays in. With 3 or 4 images nothing can be told to stand out: the
+ * median.
  *
- * The noise of the flat is given twice. noise_expected assumes that what differs between images differs from pixel to
- * pixel; noise_halves does not, and is larger where smooth things moved (cells, haze, a lamp that wanders): trust it.
+ * The noise of the flat is given twice. noise_expected assumes that what differs between images differs from
+ * pixel to pixel; noise_halves does not, and is larger where smooth things moved (cells, haze, a lamp that
+ * wanders): trust it. images_wanted and smooth_wanted_px are what noise_halves would need to come down to
+ * UF_FLAT_NOISE_MOST: the square of the ratio times more images, or the ratio times more smoothing.
  *
- * UF_INPUT: fewer than 3 images; one that is saturated (more than 0.1 % of its pixels; cells: 5 %) or hardly
- * brighter than the dark or much unlike the rest, by its number; a flat with places at or below UF_FLAT_LOWEST,
- * with the worst; planes of another size; smooth_px out of 0 .. UF_FLAT_SMOOTH_MOST. UF_MEMORY.
+ * UF_INPUT: fewer than 3 images; one that is saturated (more than 0.1 % of its pixels; cells: 5 %), or hardly
+ * brighter than the dark, or much unlike the rest, by its number from 1; a flat with places at or below
+ * UF_FLAT_LOWEST, with the worst; planes of another size; smooth_px out of 0 .. UF_FLAT_SMOOTH_MOST; defects too
+ * large to be filled. UF_MEMORY. After a failure work's arena stands where it stood.
  */
 UF_MUST_USE uf_status uf_flat_make(uf_work *work, const uf_flat_stack *stack, const uf_flat_request *request,
                                    uf_flat *flat, uf_error *error);

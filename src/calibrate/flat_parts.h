@@ -1,0 +1,59 @@
+/* SPDX-License-Identifier: GPL-3.0-or-later */
+/* What the parts of the flat calibration share. */
+#ifndef UF_CALIBRATE_FLAT_PARTS_H
+#define UF_CALIBRATE_FLAT_PARTS_H
+
+#include "calibrate/flat.h"
+
+/* An image of the stack, in the smallest form that holds it; the other pointer is NULL. */
+struct uf_flat_image {
+    uint16_t *whole;
+    float *real;
+    uint64_t fingerprint;
+};
+
+/* Row y of image k as raw counts. */
+void uf_flat_row(const uf_flat_stack *stack, int k, int y, float *out);
+
+/* The same with the dark subtracted. */
+void uf_flat_signal_row(const uf_flat_stack *stack, const uf_flat_request *request, int k, int y, float *out);
+
+/* ---- the middle of values -------------------------------------------------------------------- */
+
+/* What is left of values when those that stand out are gone. */
+typedef struct uf_middle {
+    double median, sd; /* robust */
+    double low, high;  /* values kept lie between, ends included */
+} uf_middle;
+
+/* Of n > 0 values, which are reordered. The sd is at least that of shot noise, typical_sd x root of the median,
+ * so that a few values that happen to lie close do not throw the others out. */
+uf_middle uf_flat_middle(uf_flat_sample sample, float *values, size_t n, double typical_sd);
+
+/* ---- levels ---------------------------------------------------------------------------------- */
+
+/* Figures found on a lattice of pixels. */
+typedef struct uf_flat_levels {
+    double *level_adu;  /* of each image */
+    double *unlikeness; /* of each image */
+    double typical_sd;  /* of a value from the flat, relative, where the flat is 1 */
+} uf_flat_levels;
+
+/* Fills the arrays, which the caller has taken. UF_INPUT: an image hardly brighter than the dark, or unlike the
+ * rest. */
+UF_MUST_USE uf_status uf_flat_find_levels(uf_work *work, const uf_flat_stack *stack, const uf_flat_request *request,
+                                          uf_flat_levels *levels, uf_error *error);
+
+/* ---- pixels ---------------------------------------------------------------------------------- */
+
+/* Raw flat (any scale near 1, NaN where there is no value), noise, count, and half the difference of the flats of odd
+ * and even images (NaN where one has no value). */
+typedef struct uf_flat_pixels {
+    uf_plane image, noise, count, half_difference;
+    double kept; /* values kept, of all */
+} uf_flat_pixels;
+
+UF_MUST_USE uf_status uf_flat_find_pixels(uf_work *work, const uf_flat_stack *stack, const uf_flat_request *request,
+                                          const uf_flat_levels *levels, uf_flat_pixels *pixels, uf_error *error);
+
+#endif
