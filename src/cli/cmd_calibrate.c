@@ -5,7 +5,8 @@
 
 #include "cli/calibrate.h"
 
-static const uf_command *const kinds[] = {&uf_calibrate_bead_command, &uf_calibrate_camera_command};
+static const uf_command *const kinds[] = {&uf_calibrate_bead_command, &uf_calibrate_camera_command,
+                                          &uf_calibrate_flat_command};
 enum { KINDS = sizeof kinds / sizeof kinds[0], COMMON_OPTIONS = 6 };
 
 const char *const uf_channel_words[] = {"near", "wide", NULL};

@@ -223,10 +223,10 @@ uf_status uf_camera_plot(const uf_camera_findings *f, const char *path, uf_error
     fill_line(f, &d);
     double zero_x[] = {d.line_x[0], d.line_x[LINE_POINTS - 1]}, zero_y[] = {0, 0};
     (void)snprintf(title, sizeof title, "Photon transfer: %.4g e/ADU", f->transfer.gain_e_per_adu);
-    const uf_plot_series line[] = {{"pairs (bars: 2 sd)", d.used, d.x, d.y, d.low, d.high, UF_PLOT_DARK, UF_LINE_NONE,
-                                    UF_MARK_DISC, UF_SPREAD_BARS},
-                                   {"fit", LINE_POINTS, d.line_x, d.line_y, NULL, NULL, UF_PLOT_BLUE, UF_LINE_SOLID,
+    const uf_plot_series line[] = {{"fit", LINE_POINTS, d.line_x, d.line_y, NULL, NULL, UF_PLOT_BLUE, UF_LINE_SOLID,
                                     UF_MARK_NONE, UF_SPREAD_NONE},
+                                   {"pairs (bars: 2 sd)", d.used, d.x, d.y, d.low, d.high, UF_PLOT_DARK, UF_LINE_NONE,
+                                    UF_MARK_DISC, UF_SPREAD_BARS},
                                    {"pairs left out", d.left_out, d.out_x, d.out_y, NULL, NULL, UF_PLOT_AMBER,
                                     UF_LINE_NONE, UF_MARK_DIAMOND, UF_SPREAD_NONE}};
     const uf_plot_series away[] = {
