@@ -1,6 +1,7 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
 /* The job `measure`: two image files in, tables and pictures out. */
 #include <math.h>
+#include <stddef.h>
 #include <stdio.h>
 #include <stdlib.h>
 #include <string.h>
@@ -110,6 +111,30 @@ static uf_status read_nuclei(measure_job *job, uf_error *error)
     return status == UF_OK && nuclei->image.data ? uf_background_first(&job->work, nuclei, error) : status;
 }
 
+/* A ratio belongs to the flats it was measured with: another flat of the same bench may be scaled or shaped otherwise. */
+static uf_status check_reference_flats(const measure_job *job, uf_error *error)
+{
+    static const char *const roles[] = {"near flat", "wide flat"};
+    const uf_settings *s = job->settings;
+    if (s->reference.from != UF_SETTING_NOT_GIVEN || s->series.angles_deg.count || job->result.one_image)
+        return UF_OK;
+    for (int k = 0; k < UF_CHANNELS; k++) {
+        char used[24] = "none";
+        for (int j = 0; j < job->reader.count; j++)
+            if (strcmp(job->reader.inputs[j].role, roles[k]) == 0)
+                (void)snprintf(used, sizeof used, "%016llx", (unsigned long long)job->reader.inputs[j].fingerprint);
+        const char *wanted = s->reference.flat[k];
+        if (wanted && strcmp(wanted, used) != 0)
+            return uf_fail(
+                error, UF_INPUT,
+                "the reference (%s) was measured with the %s of fingerprint %s, this run uses %s (%s); use the "
+                "same flat, or calibrate the reference again with this one",
+                s->origin[uf_setting_at(offsetof(struct uf_settings, reference.ratio)) - uf_setting_table], roles[k],
+                wanted, s->flat[k].file ? s->flat[k].file : "no flat", used);
+    }
+    return UF_OK;
+}
+
 /* Everything that can be wrong with the settings is said before pixels are worked on. */
 static uf_status read_inputs(measure_job *job, uf_error *error)
 {
@@ -135,7 +160,7 @@ static uf_status read_inputs(measure_job *job, uf_error *error)
         return uf_fail(
             error, UF_INPUT, "%s is %d x %d px, but %s is %d x %d; the two images of a field must have the same size",
             job->request->near_path, near.width, near.height, job->request->wide_path, wide.width, wide.height);
-    return UF_OK;
+    return check_reference_flats(job, error);
 }
 
 /* ---- warnings -------------------------------------------------------------------------------- */
@@ -177,9 +202,29 @@ static void warn_settings(measure_job *job)
     }
 }
 
+static void warn_exposures(measure_job *job)
+{
+    const uf_settings *s = job->settings;
+    for (int k = 0; k < UF_CHANNELS; k++) {
+        double now = s->camera[k].exposure_ms, then = s->reference.exposure_ms[k];
+        if (!isnan(then) && isnan(now))
+            uf_text_printf(
+                &job->warnings,
+                "the reference's %s image was exposed for %.6g ms; this run's exposure is not told (exposure_ms in "
+                "[%s.camera]) and taken to be the same\n",
+                uf_channel_names[k], then, uf_channel_names[k]);
+        else if (now < then || now > then)
+            uf_text_printf(&job->warnings,
+                           "%s exposures differ: %.6g ms here, %.6g ms at the reference; its ratio is converted\n",
+                           uf_channel_names[k], now, then);
+    }
+}
+
 static void warn_reference(measure_job *job)
 {
     const uf_plan *plan = &job->plan;
+    if (plan->has_gap && !plan->reference_from_cell && !plan->series.count)
+        warn_exposures(job);
     if (!plan->has_gap)
         uf_text_printf(&job->warnings,
                        "an adhesion protein's light tells no gap: gap columns are empty, spots are told by "

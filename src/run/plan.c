@@ -152,6 +152,19 @@ static double film_to_cell(const uf_settings *s, const uf_plan *plan)
     return s->reference.ratio / at_film / 2 * cell_adds;
 }
 
+/* Exposures that are not told count as the reference's own. */
+static double exposure_change(const uf_settings *s, uf_channel_name channel)
+{
+    double now = s->camera[channel].exposure_ms, then = s->reference.exposure_ms[channel];
+    return isnan(now) || isnan(then) ? 1 : now / then;
+}
+
+double uf_exposure_factor(const uf_settings *s)
+{
+    int near_alone = s->cells.label != UF_LABEL_MEMBRANE;
+    return exposure_change(s, UF_NEAR) / (near_alone ? 1 : exposure_change(s, UF_WIDE));
+}
+
 /* An assumed reference is found in each field (gap/own_reference.h); until then its ratio is not known. */
 static void set_reference(const uf_settings *s, uf_plan *plan)
 {
@@ -169,7 +182,7 @@ static void set_reference(const uf_settings *s, uf_plan *plan)
     double at_zero = s->reference.kind == UF_REFERENCE_FILM
                          ? film_to_cell(s, plan)
                          : s->reference.ratio * exp(-uf_decay_ln(&plan->decay, s->reference.gap_nm));
-    plan->reference_ratio = uf_round_digits(at_zero, 12);
+    plan->reference_ratio = uf_round_digits(at_zero * uf_exposure_factor(s), 12);
     plan->reference_sd = s->reference.ratio_sd / s->reference.ratio;
 }
 

@@ -16,6 +16,10 @@ UF_MUST_USE uf_status uf_bench_without_angle(const uf_settings *settings, uf_ben
 /* Sigma of the near image's point spread function, taken to be a Gaussian: 0.21 emission wavelength / NA. */
 double uf_psf_sigma_um(const uf_settings *settings);
 
+/* What a reference ratio is multiplied by when this run's exposures differ from the reference's: counts go with exposure.
+ * 1 where either is not told. */
+double uf_exposure_factor(const uf_settings *settings);
+
 /* All of the plan. `image_pixel_um` is what the image file says (NaN: nothing); the instrument file wins. */
 UF_MUST_USE uf_status uf_plan_make(const uf_settings *settings, double image_pixel_um, uf_plan *plan,
                                    uf_error *error);

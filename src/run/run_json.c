@@ -52,6 +52,22 @@ static json_t *settings_json(const uf_settings *settings)
     return list;
 }
 
+/* What earlier files said and later ones overrode. */
+static json_t *overridden_json(const uf_settings *settings)
+{
+    json_t *list = json_array();
+    for (int k = 0; k < uf_setting_count; k++) {
+        if (!settings->overridden[k])
+            continue;
+        json_t *item = json_object();
+        json_object_set_new(item, "section", json_string(uf_setting_table[k].section));
+        json_object_set_new(item, "key", json_string(uf_setting_table[k].key));
+        json_object_set_new(item, "was", json_text(settings->overridden[k]));
+        json_array_append_new(list, item);
+    }
+    return list;
+}
+
 static json_t *inputs_json(const uf_run_story *story)
 {
     json_t *list = json_array();
@@ -206,6 +222,7 @@ static json_t *build(const uf_run_story *story)
     json_object_set_new(o, "program", json_string("underfoot"));
     json_object_set_new(o, "version", json_string(UF_VERSION));
     json_object_set_new(o, "settings", settings_json(story->settings));
+    json_object_set_new(o, "overridden", overridden_json(story->settings));
     json_object_set_new(o, "in_force", plan_json(story->plan));
     json_object_set_new(o, "inputs", inputs_json(story));
     json_object_set_new(o, "warnings", lines_json(story->warnings));

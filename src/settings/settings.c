@@ -12,6 +12,11 @@ static void *member_of(const uf_settings *settings, const uf_setting *entry)
     return (char *)(uintptr_t)settings + entry->offset;
 }
 
+static bool holds_text(const uf_setting *entry)
+{
+    return entry->kind == UF_SETTING_PATH || entry->kind == UF_SETTING_WORD;
+}
+
 uf_status uf_settings_new(uf_settings **out, uf_error *error)
 {
     uf_settings *settings = calloc(1, sizeof *settings);
@@ -35,7 +40,8 @@ void uf_settings_free(uf_settings **pointer)
         return;
     for (int k = 0; k < uf_setting_count; k++) {
         free(settings->origin[k]);
-        if (uf_setting_table[k].kind == UF_SETTING_PATH)
+        free(settings->overridden[k]);
+        if (holds_text(&uf_setting_table[k]))
             free(*(char **)member_of(settings, &uf_setting_table[k]));
     }
     free(settings);
@@ -98,7 +104,7 @@ void uf_setting_value(uf_text *out, const uf_settings *settings, int k)
         uf_text_number(out, *(const double *)member, 15);
     else if (entry->kind == UF_SETTING_REALS)
         put_list(out, member);
-    else if (entry->kind == UF_SETTING_PATH)
+    else if (holds_text(entry))
         uf_text_add(out, *(char *const *)member ? *(char *const *)member : "");
     else if (entry->kind == UF_SETTING_CHOICE)
         put_choice(out, entry, *(const int *)member);
@@ -195,12 +201,14 @@ static uf_status set_choice(uf_settings *settings, const uf_setting *entry, cons
     return UF_INPUT;
 }
 
-static uf_status set_path(uf_settings *settings, const uf_setting *entry, const char *value, const char *beside,
+/* A path is taken relative to the file that says it; a word as it stands. */
+static uf_status set_text(uf_settings *settings, const uf_setting *entry, const char *value, const char *beside,
                           uf_error *error)
 {
     if (!*value)
-        return uf_fail(error, UF_INPUT, "%s is empty: expected a file name", entry->key);
-    char *path = uf_path_beside(beside, value);
+        return uf_fail(error, UF_INPUT, "%s is empty: expected a %s", entry->key,
+                       entry->kind == UF_SETTING_WORD ? "word" : "file name");
+    char *path = entry->kind == UF_SETTING_WORD ? uf_copy_string(value) : uf_path_beside(beside, value);
     if (!path)
         return uf_fail_memory(error, "settings");
     char **member = member_of(settings, entry);
@@ -209,14 +217,33 @@ static uf_status set_path(uf_settings *settings, const uf_setting *entry, const 
     return UF_OK;
 }
 
-/* The entries of a group exclude each other: giving one takes back what an earlier file said of the rest. */
-static void clear_rest_of_group(uf_settings *settings, int chosen)
+/* Remembers what an earlier file said of an entry that a later one overrides. */
+static uf_status keep_overridden(uf_settings *settings, int k, uf_error *error)
 {
+    uf_text text = {0};
+    if (!settings->origin[k])
+        return UF_OK;
+    uf_setting_value(&text, settings, k);
+    uf_text_printf(&text, " (%s)", settings->origin[k]);
+    if (text.failed)
+        return uf_fail_memory(error, "settings");
+    free(settings->overridden[k]);
+    settings->overridden[k] = text.bytes;
+    if (uf_setting_table[k].kind == UF_SETTING_REAL)
+        settings->overridden_real[k] = *(const double *)member_of(settings, &uf_setting_table[k]);
+    return UF_OK;
+}
+
+/* The entries of a group exclude each other: giving one takes back what an earlier file said of the rest. */
+static uf_status clear_rest_of_group(uf_settings *settings, int chosen, uf_error *error)
+{
+    uf_status status = UF_OK;
     const char *group = uf_setting_table[chosen].group;
-    for (int k = 0; group && k < uf_setting_count; k++) {
+    for (int k = 0; status == UF_OK && group && k < uf_setting_count; k++) {
         const uf_setting *entry = &uf_setting_table[k];
         if (k == chosen || !entry->group || strcmp(entry->group, group) != 0)
             continue;
+        status = keep_overridden(settings, k, error);
         if (entry->kind == UF_SETTING_CHOICE)
             *(int *)member_of(settings, entry) = UF_SETTING_NOT_GIVEN;
         else
@@ -224,13 +251,16 @@ static void clear_rest_of_group(uf_settings *settings, int chosen)
         free(settings->origin[k]);
         settings->origin[k] = NULL;
     }
+    return status;
 }
 
 static uf_status set_entry(uf_settings *settings, int k, const char *value, const char *path, int line,
                            uf_error *error)
 {
     const uf_setting *entry = &uf_setting_table[k];
-    uf_status status = UF_INPUT;
+    uf_status status = keep_overridden(settings, k, error);
+    if (status != UF_OK)
+        return status;
     switch (entry->kind) {
     case UF_SETTING_LATER:
         return uf_fail(error, UF_INPUT, "[%s] %s is not in this version; take the line out to go on", entry->section,
@@ -245,12 +275,14 @@ static uf_status set_entry(uf_settings *settings, int k, const char *value, cons
         status = set_choice(settings, entry, value, error);
         break;
     case UF_SETTING_PATH:
-        status = set_path(settings, entry, value, path, error);
+    case UF_SETTING_WORD:
+        status = set_text(settings, entry, value, path, error);
         break;
     }
+    if (status == UF_OK)
+        status = clear_rest_of_group(settings, k, error);
     if (status != UF_OK)
         return status;
-    clear_rest_of_group(settings, k);
     uf_text origin = {0};
     uf_text_add(&origin, path);
     if (line)
@@ -538,8 +570,8 @@ static void put_range(uf_text *out, const uf_setting *entry)
 {
     if (entry->kind == UF_SETTING_CHOICE)
         list_choices(out, entry->choices, " | ");
-    else if (entry->kind == UF_SETTING_PATH)
-        uf_text_add(out, "file");
+    else if (holds_text(entry))
+        uf_text_add(out, entry->kind == UF_SETTING_WORD ? "word" : "file");
     else {
         if (entry->kind == UF_SETTING_REALS)
             uf_text_add(out, "numbers between commas, each ");

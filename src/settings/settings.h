@@ -36,11 +36,11 @@ typedef enum uf_overlay_choice {
 typedef enum uf_yes_no { UF_YES, UF_NO } uf_yes_no;
 
 typedef struct uf_camera_settings {
-    double offset_adu, gain_e_per_adu, read_noise_e, full_scale_adu, excess_noise;
+    double offset_adu, gain_e_per_adu, read_noise_e, full_scale_adu, excess_noise, exposure_ms;
     char *dark, *defects;
 } uf_camera_settings;
 
-enum { UF_SETTINGS_LIMIT = 96, UF_SETTING_NOT_GIVEN = -1, UF_REALS_LIMIT = 32 };
+enum { UF_SETTINGS_LIMIT = 112, UF_SETTING_NOT_GIVEN = -1, UF_REALS_LIMIT = 32 };
 
 /* A list of numbers as one setting holds it; count 0: not given. */
 typedef struct uf_reals {
@@ -79,7 +79,9 @@ struct uf_settings {
     } shift;
     struct {
         double ratio, ratio_sd, gap_nm, gap_sd_nm, normalisation_sd;
-        int kind, from; /* from: UF_SETTING_NOT_GIVEN when ratio is measured */
+        int kind, from;                  /* from: UF_SETTING_NOT_GIVEN when ratio is measured */
+        double exposure_ms[UF_CHANNELS]; /* of its images; NaN: not told */
+        char *flat[UF_CHANNELS]; /* fingerprint of the flat its images were corrected by, "none", NULL: not told */
     } reference;
     struct {
         uf_reals angles_deg, power;
@@ -100,6 +102,10 @@ struct uf_settings {
         int overlay, maps;
     } output;
     char *origin[UF_SETTINGS_LIMIT]; /* "FILE:LINE" of entry k of the table, NULL for a default */
+    /* What an earlier file said of entry k before a later one overrode it: "VALUE (FILE:LINE)", NULL: nothing; and the
+     * number of a real. */
+    char *overridden[UF_SETTINGS_LIMIT];
+    double overridden_real[UF_SETTINGS_LIMIT];
 };
 
 typedef enum uf_setting_kind {
@@ -107,6 +113,7 @@ typedef enum uf_setting_kind {
     UF_SETTING_REALS,
     UF_SETTING_CHOICE,
     UF_SETTING_PATH,
+    UF_SETTING_WORD, /* text as it stands */
     UF_SETTING_LATER
 } uf_setting_kind;
 

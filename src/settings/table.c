@@ -18,11 +18,12 @@
     KEY(INSTRUMENT, section, key, CHOICE, AT(member), 0, 0, initial, choices, NULL, help)
 #define I_PATH(section, key, member, help) \
     KEY(INSTRUMENT, section, key, PATH, AT(member), 0, 0, 0, NULL, NULL, help)
+#define I_WORD(section, key, member, help) \
+    KEY(INSTRUMENT, section, key, WORD, AT(member), 0, 0, 0, NULL, NULL, help)
 #define I_ONE_OF(group, section, key, member, least, most, help) \
     KEY(INSTRUMENT, section, key, REAL, AT(member), least, most, NONE, NULL, group, help)
 #define I_ONE_CHOICE_OF(group, section, key, member, choices, help) \
     KEY(INSTRUMENT, section, key, CHOICE, AT(member), 0, 0, UF_SETTING_NOT_GIVEN, choices, group, help)
-#define I_LATER(section, key, help) KEY(INSTRUMENT, section, key, LATER, 0, 0, 0, 0, NULL, NULL, help)
 #define A_REAL(section, key, member, least, most, initial, help) \
     KEY(ASSAY, section, key, REAL, AT(member), least, most, initial, NULL, NULL, help)
 #define A_CHOICE(section, key, member, choices, initial, help) \
@@ -40,6 +41,8 @@
              "Count at which the camera saturates. Default: the largest value the file's bits can hold.")      \
     , I_REAL(section, "excess_noise", camera[channel].excess_noise, 1, 4, 1,                                   \
              "Excess noise factor of an amplifying camera (about 1.41), 1 for others.")                        \
+    , I_REAL(section, "exposure_ms", camera[channel].exposure_ms, 1e-6, 1e9, NONE,                              \
+             "Exposure of the images; with the reference's own, a ratio taken at others is converted.")         \
     , I_PATH(section, "dark", camera[channel].dark, "Dark image subtracted instead of offset_adu.")            \
     , I_PATH(section, "defects", camera[channel].defects,                                                      \
              "Map of bad pixels: those not 0 are replaced from their neighbours.")
@@ -114,8 +117,13 @@ const uf_setting uf_setting_table[] = {
     I_ONE_CHOICE_OF("reference", "reference", "from", reference.from, "!wells|!pooled|cell",
                     "Where an assumed reference comes from, instead of ratio. cell: the closest hundredth of each cell lies at gap_nm; "
                     "gaps are then relative, and cells that lift as a whole do not show."),
-    I_LATER("reference", "exposure_near_ms", "Exposure of the reference's near image."),
-    I_LATER("reference", "exposure_wide_ms", "Exposure of the reference's wide image."),
+    I_REAL("reference", "exposure_near_ms", reference.exposure_ms[UF_NEAR], 1e-6, 1e9, NONE,
+           "Exposure of the reference's near image; see exposure_ms of the cameras."),
+    I_REAL("reference", "exposure_wide_ms", reference.exposure_ms[UF_WIDE], 1e-6, 1e9, NONE,
+           "Exposure of the reference's wide image."),
+    I_WORD("reference", "near_flat_checksum", reference.flat[UF_NEAR],
+           "Fingerprint of the near flat the reference was corrected by, or none; a run with another is refused."),
+    I_WORD("reference", "wide_flat_checksum", reference.flat[UF_WIDE], "The same of the wide flat."),
     I_REAL("reference", "normalisation_sd", reference.normalisation_sd, 0, 1, 0.05,
            "Cell-to-cell spread (relative) of what the wide image sees beside the ventral membrane."),
 
