@@ -6,7 +6,7 @@
 #include "cli/calibrate.h"
 
 static const uf_command *const kinds[] = {&uf_calibrate_bead_command, &uf_calibrate_camera_command,
-                                          &uf_calibrate_flat_command};
+                                          &uf_calibrate_flat_command, &uf_calibrate_shift_command};
 enum { KINDS = sizeof kinds / sizeof kinds[0], COMMON_OPTIONS = 6 };
 
 const char *const uf_channel_words[] = {"near", "wide", NULL};
@@ -95,7 +95,8 @@ int uf_calibrate_run(const uf_calibrate_kind *kind, int argc, char **argv)
     int count = kind->option_count + COMMON_OPTIONS;
     bool help;
     uf_error error;
-    memcpy(options, kind->options, (size_t)kind->option_count * sizeof *options);
+    if (kind->option_count)
+        memcpy(options, kind->options, (size_t)kind->option_count * sizeof *options);
     memcpy(options + kind->option_count, common, sizeof common);
     uf_status status =
         uf_options_parse(argc, argv, options, count, a.images, &a.image_count, UF_CALIBRATE_IMAGES, &help, &error);
