@@ -61,6 +61,7 @@ typedef struct uf_flat {
     double noise_pixel;      /* a typical `noise` */
     double noise_halves;     /* of `image`, smoothed as it is: from the difference of odd and even images' flats */
     double noise_expected;   /* the same if each pixel's noise were its own: noise_pixel narrowed by the smoothing */
+    double smooth_bias;      /* 99th percentile of what smoothing has changed, relative; 0 without smoothing */
     int too_noisy;           /* noise_halves above UF_FLAT_NOISE_MOST */
     int images_wanted;       /* how many images of this kind would do; 0 when it is good enough */
     double smooth_wanted_px; /* or how much smoothing; 0 when good enough, NaN when above UF_FLAT_SMOOTH_MOST */
