@@ -61,6 +61,7 @@ typedef struct uf_flat {
     double noise_pixel;      /* a typical `noise` */
     double noise_halves;     /* of `image`, smoothed as it is: from the difference of odd and even images' flats */
     double noise_expected;   /* the same if each pixel's noise were its own: noise_pixel narrowed by the smoothing */
+    double smooth_bias;      /* 99th percentile of what smoothing has changed, relative; 0 without smoothing */
     int too_noisy;           /* noise_halves above UF_FLAT_NOISE_MOST */
     int images_wanted;       /* how many images of this kind would do; 0 when it is good enough */
     double smooth_wanted_px; /* or how much smoothing; 0 when good enough, NaN when above UF_FLAT_SMOOTH_MOST */
@@ -70,18 +71,19 @@ typedef struct uf_flat {
     double lowest, highest;  /* of `image` */
     int lowest_x, lowest_y;
     int images;
-    double *level_adu;  /* of each image, above the dark */
-    double *unlikeness; /* of each image: 75th percentile of its relative departures from the flat over 8 x 8 tiles */
+    double *level_adu; /* of each image, above the dark */
+    double
+        *unlikeness; /* of each image: 75th percentile of its relative departures (cells: to the dark side only) from
+                           the flat over 8 x 8 tiles */
 } uf_flat;
 
 #define UF_FLAT_SMOOTH_MOST 100.0
 
 /*
- * Film and solution: the mean of the values within 3.5 robust sd of the median. Cells: from the lower half of the
- * values upwards, those within 2.5 sd (of their lower quartile) of the median, until nothing changes, and the
- * mean of these: the background. The more of a field cells cover (up to some two thirds), the more fields it
- * needs; light that cells scatter around them stays in. With 3 or 4 images nothing can be told to stand out: the
- * median.
+ * Film and solution: the mean of the values within 3.5 robust sd of the median. Cells: from the lowest quarter of
+ * the values upwards, those within 2.5 sd (of their lower quartile) of the median, until nothing changes, and the
+ * mean of these: the background. Light that cells scatter around them stays in, and a place that cells always
+ * cover is wrong. With 3 or 4 images nothing can be told to stand out: the median.
  *
  * The noise of the flat is given twice. noise_expected assumes that what differs between images differs from
  * pixel to pixel; noise_halves does not, and is larger where smooth things moved (cells, haze, a lamp that
@@ -89,9 +91,10 @@ typedef struct uf_flat {
  * UF_FLAT_NOISE_MOST: the square of the ratio times more images, or the ratio times more smoothing.
  *
  * UF_INPUT: fewer than 3 images; one that is saturated (more than 0.1 % of its pixels; cells: 5 %), or hardly
- * brighter than the dark, or much unlike the rest, by its number from 1; a flat with places at or below
- * UF_FLAT_LOWEST, with the worst; planes of another size; smooth_px out of 0 .. UF_FLAT_SMOOTH_MOST; defects too
- * large to be filled. UF_MEMORY. After a failure work's arena stands where it stood.
+ * brighter than the dark, or much unlike the rest, by its number from 1; more values that stand out than there
+ * may be (a fifth; cells: half, or fewer than 5 background values a pixel on average); a flat with places at or
+ * below UF_FLAT_LOWEST, with the worst; planes of another size; smooth_px out of 0 .. UF_FLAT_SMOOTH_MOST;
+ * defects too large to be filled. UF_MEMORY. After a failure work's arena stands where it stood.
  */
 UF_MUST_USE uf_status uf_flat_make(uf_work *work, const uf_flat_stack *stack, const uf_flat_request *request,
                                    uf_flat *flat, uf_error *error);

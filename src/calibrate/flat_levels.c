@@ -25,6 +25,7 @@ typedef struct lattice {
     float *value;   /* [image][point]: signal */
     float *shape;   /* [point]: the flat there, NaN where there is none */
     float *scratch; /* as many as images or points, whichever is more */
+    double *noise;  /* [image]: sd of its values from its level */
     uf_flat_levels *levels;
 } lattice;
 
@@ -56,69 +57,82 @@ static void mask_defects(lattice *l)
     }
 }
 
-/* The middle of an image's values over the shape; the level of the first round, when the shape is 1 everywhere. */
-static double level_of(const lattice *l, int image)
+/* The middle of an image's values over the shape: its level, and the noise about it (in the first round, when the
+ * shape is 1 everywhere, its unevenness too). */
+static uf_middle level_of(const lattice *l, int image)
 {
     const float *value = values_of(l, image);
     size_t n = 0;
     for (size_t p = 0; p < l->points; p++)
         if (l->shape[p] > 0.0f)
             l->scratch[n++] = value[p] / l->shape[p];
-    return n ? uf_flat_middle(l->request->sample, l->scratch, n, 0).median : (double)NAN;
+    if (!n)
+        return (uf_middle){.median = (double)NAN};
+    return uf_flat_middle(l->request->sample, l->scratch, n, 0);
 }
 
-/* The shape from all images at their levels; also the typical spread of values about it. */
-static double find_shape(lattice *l, double *spreads)
+static void find_levels(lattice *l)
 {
-    size_t known = 0;
+    for (int k = 0; k < l->images; k++) {
+        uf_middle middle = level_of(l, k);
+        l->levels->level_adu[k] = middle.median;
+        l->noise[k] = middle.sd;
+    }
+}
+
+/* The shape from all images at their levels. */
+static void find_shape(lattice *l)
+{
     for (size_t p = 0; p < l->points; p++) {
         size_t n = 0;
         if (isnan(l->shape[p]))
             continue;
         for (int k = 0; k < l->images; k++)
             l->scratch[n++] = (float)((double)values_of(l, k)[p] / l->levels->level_adu[k]);
-        uf_middle middle = uf_flat_middle(l->request->sample, l->scratch, n, 0);
-        l->shape[p] = (float)middle.median;
-        if (middle.median > 0)
-            spreads[known++] = middle.sd / sqrt(middle.median);
+        l->shape[p] = (float)uf_flat_middle(l->request->sample, l->scratch, n, l->levels->typical_sd).median;
     }
-    return uf_median(spreads, known);
 }
 
-/* Noise of an image's pixels: from its difference to another at the same level, where shape falls out. */
-static double noise_of(const lattice *l, int image)
+/* Noise of a value where the flat is 1, from each image's thousands of pixels and not from the few values of one;
+ * shot noise grows with the root of the light. The shape has been made of the same values and takes its share of
+ * them. */
+static double typical_noise(const lattice *l, double *scratch)
 {
-    int other = image ? image - 1 : 1;
-    double ratio = l->levels->level_adu[image] / l->levels->level_adu[other];
-    size_t n = 0;
-    for (size_t p = 0; p < l->points; p++)
-        if (!isnan(l->shape[p]))
-            l->scratch[n++] = (float)fabs((double)values_of(l, image)[p] - ratio * (double)values_of(l, other)[p]);
-    return UF_MAD_TO_SD * uf_median_float(l->scratch, n) / sqrt(1 + ratio * ratio);
+    for (int k = 0; k < l->images; k++) {
+        const float *value = values_of(l, k);
+        size_t n = 0;
+        for (size_t p = 0; p < l->points; p++)
+            if (l->shape[p] > 0.0f) {
+                double shape = (double)l->shape[p];
+                l->scratch[n++] = (float)(((double)value[p] / l->levels->level_adu[k] - shape) / sqrt(shape));
+            }
+        scratch[k] = n ? uf_flat_middle(l->request->sample, l->scratch, n, 0).sd : 0;
+    }
+    return uf_median(scratch, (size_t)l->images) * sqrt(l->images / (l->images - 1.0));
 }
 
 /* ---- images that do not belong --------------------------------------------------------------- */
 
-static uf_status check_light(const lattice *l, double *scratch, uf_error *error)
+static uf_status check_light(const lattice *l, double signal, double *scratch, uf_error *error)
 {
     const double *level = l->levels->level_adu;
     for (int k = 0; k < l->images; k++)
         scratch[k] = level[k];
     double middle = uf_median(scratch, (size_t)l->images);
     for (int k = 0; k < l->images; k++) {
-        double noise = noise_of(l, k);
-        if (level[k] > 0 && level[k] > least_of_median * middle && !(level[k] < least_signal * noise))
+        if (level[k] > fmax(0, fmax(least_of_median * middle, signal * l->noise[k])))
             continue;
         return uf_fail(
             error, UF_INPUT,
             "image %d is hardly brighter than the dark: %.4g ADU above it, with noise of %.3g and %.4g ADU in the "
             "middle one of the %d images; expose longer, or check the dark image or offset",
-            k + 1, level[k], noise, middle, l->images);
+            k + 1, level[k], l->noise[k], middle, l->images);
     }
     return UF_OK;
 }
 
-/* How an image departs from the flat over tiles; the tiles' middles leave single things out. */
+/* How an image departs from the flat over tiles; the tiles' middles leave single things out. Cells may fill tiles, so
+ * there only what is darker counts: cells never are. */
 static double unlikeness_of(const lattice *l, int image, double *departures)
 {
     const float *value = values_of(l, image);
@@ -133,8 +147,10 @@ static double unlikeness_of(const lattice *l, int image, double *departures)
                 if (l->shape[p] > 0.0f)
                     l->scratch[n++] = (float)((double)(value[p] / l->shape[p]) / l->levels->level_adu[image] - 1);
             }
-        if (n)
-            departures[count++] = fabs(uf_flat_middle(l->request->sample, l->scratch, n, 0).median);
+        if (!n)
+            continue;
+        double departure = uf_flat_middle(l->request->sample, l->scratch, n, 0).median;
+        departures[count++] = l->request->sample == UF_FLAT_CELLS ? fmax(0, -departure) : fabs(departure);
     }
     uf_sort(departures, count);
     return uf_sorted_quantile(departures, count, 0.75);
@@ -164,16 +180,15 @@ static uf_status find(lattice *l, double *scratch, uf_error *error)
 {
     uf_flat_levels *levels = l->levels;
     mask_defects(l);
-    for (int k = 0; k < l->images; k++)
-        levels->level_adu[k] = level_of(l, k);
-    uf_status status = check_light(l, scratch, error);
+    find_levels(l);
+    uf_status status = check_light(l, 0, scratch, error);
     for (int round = 0; status == UF_OK && round < ROUNDS; round++) {
-        levels->typical_sd = find_shape(l, scratch);
-        for (int k = 0; k < l->images; k++)
-            levels->level_adu[k] = level_of(l, k);
+        find_shape(l);
+        find_levels(l);
+        levels->typical_sd = typical_noise(l, scratch);
     }
     if (status == UF_OK)
-        status = check_light(l, scratch, error);
+        status = check_light(l, least_signal, scratch, error);
     return status == UF_OK ? check_likeness(l, scratch, error) : status;
 }
 
@@ -197,6 +212,8 @@ uf_status uf_flat_find_levels(uf_work *work, const uf_flat_stack *stack, const u
         status = uf_take(work, longest, sizeof(float), "a flat's levels", &l.scratch, error);
     if (status == UF_OK)
         status = uf_take(work, longest, sizeof(double), "a flat's levels", &scratch, error);
+    if (status == UF_OK)
+        status = uf_take(work, (size_t)l.images, sizeof(double), "a flat's levels", &l.noise, error);
     if (status == UF_OK)
         status = uf_take(work, (size_t)stack->width, sizeof(float), "a flat's levels", &row, error);
     if (status == UF_OK) {

@@ -66,12 +66,12 @@ static double sorted_quantile(const float *values, size_t n, double q)
     return a + (at - (double)low) * (b - a);
 }
 
-/* From the lower half upwards, the sd from the lower quartile, which cells do not reach. */
+/* From the lowest quarter upwards, the sd from the lower quartile, which cells do not reach. */
 static uf_middle middle_of_background(float *values, size_t n, double typical_sd)
 {
     uf_middle m = {.low = -INFINITY, .high = INFINITY};
     sort_floats(values, n);
-    size_t kept = n >= LEAST_TO_REJECT ? (n + 1) / 2 : n;
+    size_t kept = n >= LEAST_TO_REJECT ? (n + 3) / 4 : n;
     for (int round = 0; round < ROUNDS; round++) {
         size_t before = kept;
         m.median = sorted_quantile(values, kept, 0.5);

@@ -56,4 +56,24 @@ typedef struct uf_flat_pixels {
 UF_MUST_USE uf_status uf_flat_find_pixels(uf_work *work, const uf_flat_stack *stack, const uf_flat_request *request,
                                           const uf_flat_levels *levels, uf_flat_pixels *pixels, uf_error *error);
 
+/* ---- smoothing ------------------------------------------------------------------------------- */
+
+typedef struct uf_flat_smoother {
+    uf_plane values, weights; /* scratch of the flat's size */
+    double sigma_px;
+} uf_flat_smoother;
+
+/*
+ * Gaussian over the pixels that have a value (normalised convolution, Knutsson and Westin 1993, CVPR: smoothed
+ * values over smoothed presence), after a surface of second degree has been taken out, which comes back
+ * afterwards: smoothing would level a fall-off at its summit and, since the image is mirrored there, at the
+ * borders. Without smoothing (sigma 0) only the gaps take a value, that of the pixels near them. NaN stays where
+ * there is nothing near. `out` may be `in`. UF_MEMORY.
+ */
+UF_MUST_USE uf_status uf_flat_smooth(uf_work *work, const uf_flat_smoother *s, uf_plane in, uf_plane out,
+                                     uf_error *error);
+
+/* By how much a Gaussian narrows the sd of noise that each pixel has for itself; 1 for sigma 0. */
+double uf_flat_narrowing(double sigma_px);
+
 #endif
