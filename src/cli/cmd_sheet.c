@@ -25,8 +25,7 @@ uf_status uf_option_whole(const char *option, const char *text, int most, int *v
     return UF_OK;
 }
 
-/* Faults end in exit status 2, with one line that says how many. */
-static int close_with_faults(const char *what, const uf_faults *faults, const char *mend)
+int uf_close_with_faults(const char *what, const uf_faults *faults, const char *mend)
 {
     uf_error error;
     (void)uf_fail(&error, UF_INPUT, "%.300s: %d fault%s%s", what, faults->faults, faults->faults == 1 ? "" : "s",
@@ -109,7 +108,7 @@ static int run_build(const build_arguments *a)
         uf_findings_print(&summary.faults, a->quiet ? UF_FAULT : UF_NOTE);
     int exit_status = status == UF_OK ? print_build(a, &summary) : uf_report_error(&error);
     if (status == UF_OK && exit_status == EXIT_DONE && summary.faults.faults)
-        exit_status = close_with_faults(a->request.out, &summary.faults, "; no sheet was written");
+        exit_status = uf_close_with_faults(a->request.out, &summary.faults, "; no sheet was written");
     uf_sheet_build_free(&summary);
     return exit_status;
 }
@@ -184,6 +183,23 @@ typedef struct check_arguments {
     bool json, quiet, help;
 } check_arguments;
 
+static void put_counts(uf_text *out, const char *path, const uf_sheet_check_summary *s)
+{
+    const struct {
+        int count;
+        const char *what;
+    } counts[] = {{s->rows, "row"},         {s->images, "image"},        {s->plates, "plate"},
+                  {s->sessions, "session"}, {s->faults.faults, "fault"}, {s->faults.warnings, "warning"}};
+    uf_text_printf(out, "%s:", path);
+    for (int k = 0; k < COUNT_OF(counts); k++)
+        uf_text_printf(out, "%s %d %s%s",
+                       k == 0   ? ""
+                       : k == 4 ? ":"
+                                : ",",
+                       counts[k].count, counts[k].what, counts[k].count == 1 ? "" : "s");
+    uf_text_add(out, "\n");
+}
+
 static int print_check(const check_arguments *a, const uf_sheet_check_summary *s)
 {
     uf_text out = {0};
@@ -199,9 +215,7 @@ static int print_check(const check_arguments *a, const uf_sheet_check_summary *s
     } else {
         uf_findings_put(&out, &s->faults, a->quiet ? UF_FAULT : UF_NOTE);
         if (!a->quiet)
-            uf_text_printf(&out, "%s: %d rows, %d images, %d plates, %d sessions: %d fault%s, %d warning%s\n", path,
-                           s->rows, s->images, s->plates, s->sessions, s->faults.faults,
-                           s->faults.faults == 1 ? "" : "s", s->faults.warnings, s->faults.warnings == 1 ? "" : "s");
+            put_counts(&out, path, s);
     }
     int status = out.length ? uf_print_all(&out) : EXIT_DONE;
     uf_text_free(&out);
@@ -253,7 +267,7 @@ static int command_check(int argc, char **argv)
         status = run_check(&a, &summary, &error);
     int exit_status = status == UF_OK ? print_check(&a, &summary) : uf_report_error(&error);
     if (status == UF_OK && exit_status == EXIT_DONE && summary.faults.faults)
-        exit_status = close_with_faults(a.request.path, &summary.faults, "; mend them and check again");
+        exit_status = uf_close_with_faults(a.request.path, &summary.faults, "; mend them and check again");
     uf_sheet_check_free(&summary);
     return exit_status;
 }
@@ -271,7 +285,8 @@ const uf_command uf_command_sheet_check = {
 
 /* ---- the command ----------------------------------------------------------------------------- */
 
-static const uf_command *const commands[] = {&uf_command_sheet_build, &uf_command_sheet_check};
+static const uf_command *const commands[] = {&uf_command_sheet_layout, &uf_command_sheet_build,
+                                             &uf_command_sheet_check};
 
 static int print_overview(void)
 {

@@ -395,7 +395,7 @@ static void name_fields(uf_faults *faults, int from, const uf_sheet *sheet)
     for (int k = from; k < faults->count; k++) {
         uf_fault *f = &faults->list[k];
         const uf_sheet_row *row = NULL;
-        for (int r = 0; f->line > 1 && r < sheet->count && !row; r++)
+        for (int r = 0; f->severity == UF_FAULT && f->line > 1 && r < sheet->count && !row; r++)
             row = sheet->rows[r].line == f->line ? &sheet->rows[r] : NULL;
         uf_text text = {0};
         if (row)
@@ -461,7 +461,8 @@ static uf_status finish(build_job *job)
         status = uf_csv_parse(&table, text.bytes, text.length, job->request->out, job->error);
     if (status == UF_OK)
         status = uf_sheet_take(&sheet, &table, job->request->out, job->request->root, faults, job->error);
-    if (status == UF_OK)
+    /* What is missing because of a fault would only be said a second time. */
+    if (status == UF_OK && !faults->faults)
         status = uf_sheet_check_design(&sheet, false, faults, job->error);
     if (status == UF_OK) {
         name_fields(faults, before, &sheet);

@@ -301,11 +301,18 @@ static void say_left_out(search *s)
     uf_faults *faults = &s->job->summary->faults;
     const uf_place here = {s->job->request->dirs[0], 0, NULL};
     uf_text channels = {0};
-    if (s->dot_files || s->thumbnails || s->excluded)
-        uf_fault_add(faults, UF_NOTE, "left_out", here,
-                     "left out: %d names that begin with a dot, %d thumbnails, %d by "
-                     "--exclude",
-                     s->dot_files, s->thumbnails, s->excluded);
+    const struct {
+        int count;
+        const char *what;
+    } reasons[] = {
+        {s->dot_files, "names that begin with a dot"}, {s->thumbnails, "thumbnails"}, {s->excluded, "by --exclude"}};
+    uf_text left_out = {0};
+    for (size_t k = 0; k < sizeof reasons / sizeof reasons[0]; k++)
+        if (reasons[k].count)
+            uf_text_printf(&left_out, "%s%d %s", left_out.length ? ", " : "", reasons[k].count, reasons[k].what);
+    if (left_out.length)
+        uf_fault_add(faults, UF_NOTE, "left_out", here, "left out: %s", left_out.bytes);
+    uf_text_free(&left_out);
     if (s->unlike)
         uf_fault_add(faults, UF_NOTE, "left_out", here, "%d files have other names than --name says ('%.200s')",
                      s->unlike, s->unlike_example);

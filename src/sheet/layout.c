@@ -134,25 +134,6 @@ static void mark_read(layout_job *job, int row, int column, int columns)
         job->read[(size_t)row * (size_t)job->table->columns + (size_t)(column + k)] = true;
 }
 
-static void say_blank(layout_job *job, const uf_block *block)
-{
-    uf_text names = {0};
-    int shown = 0;
-    for (int r = 0; block->blank && r < UF_MOST_ROWS; r++)
-        for (int c = 0; block->rows[r] && c < block->columns; c++) {
-            char name[UF_WELL_NAME];
-            if (*block->rows[r][c] || shown++ >= 8)
-                continue;
-            uf_well_name(name, (uf_well){r, block->first_column + c});
-            uf_text_printf(&names, "%s%s", shown > 1 ? ", " : "", name);
-        }
-    if (block->blank)
-        uf_fault_add(job->faults, UF_NOTE, "blank", (uf_place){job->file, block->line, block->property},
-                     "blank: %d wells (%s%s); where cells were merged, write the value into each", block->blank,
-                     names.bytes ? names.bytes : "", block->blank > 8 ? ", ..." : "");
-    uf_text_free(&names);
-}
-
 static void take_block(layout_job *job, int row, int column, int columns)
 {
     uf_block block = {.file = job->file, .line = job->table->lines[row], .plate = job->plate, .title = job->title};
@@ -174,7 +155,6 @@ static void take_block(layout_job *job, int row, int column, int columns)
         take_block_row(job, &block, r, column, letter);
         mark_read(job, r, column, columns + 1);
     }
-    say_blank(job, &block);
     uf_block *kept = add_block(job);
     if (kept)
         *kept = block;

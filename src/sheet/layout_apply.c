@@ -128,6 +128,32 @@ static void say_not_imaged(apply_job *job, const uf_block *block, const char *pl
     uf_text_free(&names);
 }
 
+/* Blank wells are said, whether imaged or not; what a merged cell left blank is never filled in. */
+static void say_blank(apply_job *job, const uf_block *block, const imaged *seen)
+{
+    uf_text names = {0};
+    int imaged_count = 0;
+    for (int r = 0; block->blank && r < UF_MOST_ROWS; r++)
+        for (int c = 0; block->rows[r] && c < block->columns; c++) {
+            char name[UF_WELL_NAME];
+            if (*block->rows[r][c] || !seen->well[r][c + block->first_column] || imaged_count++ >= 8)
+                continue;
+            uf_well_name(name, (uf_well){r, block->first_column + c});
+            uf_text_printf(&names, "%s%s", imaged_count > 1 ? ", " : "", name);
+        }
+    if (imaged_count)
+        uf_fault_add(
+            job->faults, UF_WARNING, "blank", (uf_place){block->file, block->line, block->property},
+            "blank: %d wells, %d of them with images (%s%s), which stay without a %.40s; where cells were merged, "
+            "write the value into each",
+            block->blank, imaged_count, names.bytes ? names.bytes : "", imaged_count > 8 ? ", ..." : "",
+            block->property);
+    else if (block->blank)
+        uf_fault_add(job->faults, UF_NOTE, "blank", (uf_place){block->file, block->line, block->property},
+                     "blank: %d wells, none of them with images", block->blank);
+    uf_text_free(&names);
+}
+
 static void apply_block(apply_job *job, const uf_block *block, const char *plate)
 {
     imaged *seen = calloc(1, sizeof *seen);
@@ -160,8 +186,10 @@ static void apply_block(apply_job *job, const uf_block *block, const char *plate
         uf_fault_add(job->faults, UF_WARNING, "not_imaged", (uf_place){block->file, block->line, block->property},
                      "no image is of %s%.60s; compare the plates' names with those in the files' names",
                      plate ? "plate " : "a well", plate ? plate : "");
-    else if (seen && column >= 0)
+    else if (seen && column >= 0) {
+        say_blank(job, block, seen);
         say_not_imaged(job, block, plate, seen);
+    }
     free(seen);
 }
 
