@@ -56,6 +56,7 @@ UF_MUST_USE uf_status uf_read_settings(const char **instruments, int instrument_
 /* Threads from --threads, or the number of processors. UF_USAGE unless 1 .. 256. */
 UF_MUST_USE uf_status uf_threads(const char *text, int *threads, uf_error *error);
 
-extern const uf_command uf_command_calibrate, uf_command_measure, uf_command_optics, uf_command_demo, uf_command_docs;
+extern const uf_command uf_command_calibrate, uf_command_measure, uf_command_optics, uf_command_sheet,
+    uf_command_demo, uf_command_docs;
 
 #endif

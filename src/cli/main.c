@@ -5,8 +5,8 @@
 
 #include "cli/cli.h"
 
-static const uf_command *const commands[] = {&uf_command_optics, &uf_command_calibrate, &uf_command_measure,
-                                             &uf_command_demo, &uf_command_docs};
+static const uf_command *const commands[] = {&uf_command_optics,  &uf_command_calibrate, &uf_command_sheet,
+                                             &uf_command_measure, &uf_command_demo,      &uf_command_docs};
 enum { COMMANDS = sizeof commands / sizeof commands[0] };
 
 static int print_overview(void)

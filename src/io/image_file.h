@@ -12,6 +12,7 @@
 #ifndef UF_IO_IMAGE_FILE_H
 #define UF_IO_IMAGE_FILE_H
 
+#include "base/text.h"
 #include "image/plane.h"
 
 typedef struct uf_image_info {
@@ -19,8 +20,8 @@ typedef struct uf_image_info {
     int pages; /* pages in the file */
     int bits;  /* 8, 16 or 32 (float) */
     int is_float;
-    double pixel_size_x_um; /* from the resolution tags; NaN when they say nothing, or a placeholder: no
-                                unit, above 20 um (72 and 300 pixels an inch are), below 1e-4 um */
+    double pixel_size_x_um; /* from OME-XML, else from the resolution tags; NaN when they say nothing, or a
+                                placeholder: no unit, above 20 um (72 and 300 pixels an inch are), below 1e-4 um */
     double pixel_size_y_um;
     uint64_t file_bytes;
     uint64_t fingerprint; /* XXH3 64 of the file's bytes */
@@ -37,5 +38,11 @@ typedef struct uf_image_limits {
  * empty. */
 UF_MUST_USE uf_status uf_image_read(uf_work *work, const char *path, int page, const uf_image_limits *limits,
                                     uf_plane *plane, uf_image_info *info, uf_error *error);
+
+/* What the file says of itself, without reading pixels: `info` but for its fingerprint (0), and the first page's
+ * description into `description` (emptied first; may be NULL). The same refusals as uf_image_read but for what only
+ * pixels show. */
+UF_MUST_USE uf_status uf_image_probe(const char *path, int page, const uf_image_limits *limits, uf_image_info *info,
+                                     uf_text *description, uf_error *error);
 
 #endif

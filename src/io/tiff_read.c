@@ -16,6 +16,7 @@
 #include <unistd.h>
 
 #include "io/input.h"
+#include "io/ome_xml.h"
 #include "io/tiff_memory.h"
 
 static const double default_max_pixels = 1e9;
@@ -509,7 +510,32 @@ static uf_status fingerprint_of(const reader *r, uf_work *work, uint64_t *finger
     return status;
 }
 
-static uf_status fill_info(const reader *r, const layout *l, uf_work *work, uf_image_info *info, uf_error *error)
+/* The first page's description; NULL when it has none. It lives until another page is chosen. */
+static const char *description_of(const reader *r)
+{
+    char *text = NULL;
+    if (TIFFCurrentDirectory(r->tiff) != 0 && !TIFFSetDirectory(r->tiff, 0))
+        return NULL;
+    return TIFFGetField(r->tiff, TIFFTAG_IMAGEDESCRIPTION, &text) ? text : NULL;
+}
+
+/* Of the image whose plane the page holds. An XML that cannot be read says nothing: the sheet's check tells why. */
+static void take_ome_pixel_size(const reader *r, uf_image_info *info)
+{
+    uf_ome ome;
+    const char *text = description_of(r);
+    if (!uf_ome_is(text) || uf_ome_parse(&ome, text, strlen(text), r->path, NULL) != UF_OK)
+        return;
+    const uf_ome_image *image = uf_ome_image_of(&ome, r->page);
+    if (image && image->pixel_size_x_um > 0 && image->pixel_size_y_um > 0) {
+        info->pixel_size_x_um = image->pixel_size_x_um;
+        info->pixel_size_y_um = image->pixel_size_y_um;
+    }
+    uf_ome_free(&ome);
+}
+
+/* All but the fingerprint. Afterwards the first page is the one in hand. */
+static void describe(const reader *r, const layout *l, uf_image_info *info)
 {
     *info = (uf_image_info){.width = l->width,
                             .height = l->height,
@@ -519,7 +545,7 @@ static uf_status fill_info(const reader *r, const layout *l, uf_work *work, uf_i
                             .pixel_size_x_um = pixel_size_um(r, TIFFTAG_XRESOLUTION),
                             .pixel_size_y_um = pixel_size_um(r, TIFFTAG_YRESOLUTION),
                             .file_bytes = r->file_bytes};
-    return fingerprint_of(r, work, &info->fingerprint, error);
+    take_ome_pixel_size(r, info);
 }
 
 /* ---- all of it ------------------------------------------------------------------------------- */
@@ -550,8 +576,10 @@ static uf_status read_page(reader *r, uf_work *work, double max_pixels, uf_plane
         status = read_pixels(r, &l, work, *plane, error);
     if (!status && l.is_float)
         status = check_finite(r, *plane, error);
-    if (!status && info)
-        status = fill_info(r, &l, work, info, error);
+    if (!status && info) {
+        describe(r, &l, info);
+        status = fingerprint_of(r, work, &info->fingerprint, error);
+    }
     return status;
 }
 
@@ -579,5 +607,44 @@ uf_status uf_image_read(uf_work *work, const char *path, int page, const uf_imag
         uf_arena_back(&work->arena, mark);
         *plane = (uf_plane){0};
     }
+    return status;
+}
+
+/* ---- without pixels -------------------------------------------------------------------------- */
+
+static uf_status probe_page(reader *r, double max_pixels, uf_image_info *info, uf_text *description, uf_error *error)
+{
+    layout l = {0};
+    uf_status status = open_tiff(r, error);
+    if (!status)
+        status = find_page(r, error);
+    if (!status)
+        status = read_layout(r, &l, max_pixels, error);
+    if (!status)
+        describe(r, &l, info);
+    if (!status && description) {
+        const char *text = description_of(r);
+        uf_text_add(description, text ? text : "");
+        status = uf_text_check(description, r->path, error);
+    }
+    return status;
+}
+
+uf_status uf_image_probe(const char *path, int page, const uf_image_limits *limits, uf_image_info *info,
+                         uf_text *description, uf_error *error)
+{
+    reader r = {.path = path, .page = page};
+    *info = (uf_image_info){0};
+    if (description)
+        description->length = 0;
+    uf_status status = uf_input_open(path, &r.descriptor, &r.file_bytes, error);
+    if (status)
+        return status;
+    status = check_signature(&r, error);
+    if (!status)
+        status = probe_page(&r, limits ? limits->max_pixels : default_max_pixels, info, description, error);
+    if (r.tiff)
+        TIFFCleanup(r.tiff);
+    (void)close(r.descriptor);
     return status;
 }

@@ -311,6 +311,81 @@ static uf_status write_sheet(const demo_job *job, uf_error *error)
     return status;
 }
 
+/* ---- layouts --------------------------------------------------------------------------------- */
+
+/* The field in a well of a plate, NULL where nothing was done. */
+static const demo_field *field_in(const demo_plan *plan, const char *plate, int row, int column)
+{
+    char well[8];
+    (void)snprintf(well, sizeof well, "%c%02d", 'A' + row, column);
+    for (int k = 0; k < plan->field_count; k++)
+        if (strcmp(plan->fields[k].plate, plate) == 0 && strcmp(plan->fields[k].well, well) == 0)
+            return &plan->fields[k];
+    return NULL;
+}
+
+/* One property of a plate as people draw it: its name in the corner, columns to the right, rows below. */
+static void put_block(uf_text *out, const demo_plan *plan, const char *plate, const char *corner, const char *column)
+{
+    enum { ROWS = 8, COLUMNS = 12 };
+    uf_text_add(out, corner);
+    for (int c = 1; c <= COLUMNS; c++)
+        uf_text_printf(out, ",%d", c);
+    for (int r = 0; r < ROWS; r++) {
+        uf_text_printf(out, "\n%c", 'A' + r);
+        for (int c = 1; c <= COLUMNS; c++) {
+            const demo_field *field = field_in(plan, plate, r, c);
+            uf_text_add(out, ",");
+            if (field)
+                put_cell(out, plan, field, column, strlen(column));
+        }
+    }
+    uf_text_add(out, "\n\n");
+}
+
+static void put_plate_layout(uf_text *out, const demo_plan *plan, const char *plate)
+{
+    uf_text_printf(out, "plate,%s\n", plate);
+    put_block(out, plan, plate, "treatment", "treatment");
+    put_block(out, plan, plate, "role", "role");
+    if (strstr(plan->columns, "dose"))
+        put_block(out, plan, plate, "dose (uM)", "dose");
+}
+
+static void put_coverslip_layout(uf_text *out, const demo_plan *plan)
+{
+    uf_text_add(out, "session,field,vessel,coating,acquired\n");
+    for (int k = 0; k < plan->field_count; k++) {
+        const demo_field *f = &plan->fields[k];
+        uf_text_printf(out, "%s,%s,coverslip,%s,", plan->benches[f->bench].name, f->field, f->coating);
+        put_time(out, f->bench, f->minute);
+        uf_text_add(out, "\n");
+    }
+}
+
+/* The sheet can be made from the names of the images and these two: what was done where, and which session is which. */
+static uf_status write_layouts(const demo_job *job, uf_error *error)
+{
+    const demo_plan *plan = &job->plan;
+    bool plates = *plan->fields[0].plate != '\0';
+    uf_text layout = {0}, sessions = {0};
+    uf_text_printf(&sessions, "%s,replicate,instrument\n", plates ? "plate,session" : "session");
+    for (int k = 0; k < plan->bench_count; k++) {
+        const char *name = plan->benches[k].name;
+        uf_text_printf(&sessions, "%s%s%s,%d,%s.ini\n", name, plates ? "," : "", plates ? name : "", k + 1, name);
+        if (plates)
+            put_plate_layout(&layout, plan, name);
+    }
+    if (!plates)
+        put_coverslip_layout(&layout, plan);
+    uf_status status = write_text(job, "layout.csv", &layout, error);
+    if (status == UF_OK)
+        status = write_text(job, "sessions.csv", &sessions, error);
+    uf_text_free(&layout);
+    uf_text_free(&sessions);
+    return status;
+}
+
 /* ---- all of it ------------------------------------------------------------------------------- */
 
 static const char assay[] = "# Choices about the analysis. docs/settings.md explains every key.\n"
@@ -320,6 +395,7 @@ static const char assay[] = "# Choices about the analysis. docs/settings.md expl
 static const char what_is_what[] =
     "\nX_near.tif, X_wide.tif         the two images of field X, camera counts\n"
     "sheet.csv                      the fields and what was done to them\n"
+    "layout.csv, sessions.csv       the same as people write it down, for underfoot sheet build\n"
     "*.ini, *_flat_*.tif            facts about the bench of each session, and its flat fields\n"
     "assay.ini                      choices about the analysis\n"
     "truth_cells.csv, truth_spots.csv, X_truth_gap.tif, X_truth_labels.tif   what was put in\n";
@@ -339,6 +415,8 @@ static uf_status write_beside(demo_job *job, uf_error *error)
         status = write_bench(job, &job->plan.benches[k], error);
     if (status == UF_OK)
         status = write_sheet(job, error);
+    if (status == UF_OK)
+        status = write_layouts(job, error);
     return status == UF_OK ? write_truth(job, error) : status;
 }
 
