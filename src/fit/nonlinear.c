@@ -93,8 +93,9 @@ static void solve_in(fit_job *job, gsl_multifit_nlinear_workspace *space, uf_non
         return;
     int ended =
         gsl_multifit_nlinear_driver(MOST_STEPS, step_tolerance, slope_tolerance, 0.0, NULL, NULL, &why, space);
-    /* Without any step that still lowers the sum, the bottom is reached to the last digit. */
-    fit->converged = ended == GSL_SUCCESS || ended == GSL_ENOPROG;
+    /* Where no step lowers the sum any more the bottom is reached to the last digit; at the very first step the driver calls
+     * that too many steps. */
+    fit->converged = ended == GSL_SUCCESS || ended == GSL_ENOPROG || (ended == GSL_EMAXITER && why == GSL_ENOPROG);
     take_result(problem, space, fit);
 }
 

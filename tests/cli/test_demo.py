@@ -132,7 +132,7 @@ def test_one_well_is_out_of_focus(experiments):
     assert len(blur) == 2 and min(blur.values()) < 0.7 * max(blur.values())
 
 
-def test_unknown_scenario_names_the_three(tmp_path):
+def test_unknown_scenario_names_the_four(tmp_path):
     run = Run(["demo", str(tmp_path / "x"), "--scenario", "dosis"])
-    assert run.status == 2 and "coatings, doses or screen" in run.err
+    assert run.status == 2 and "coatings, doses, screen or bench" in run.err
     assert not os.path.exists(tmp_path / "x")
