@@ -49,6 +49,21 @@ static json_t *moves_json(const uf_optics_numbers *n)
     return list;
 }
 
+static json_t *earlier_json(const uf_optics_numbers *n)
+{
+    json_t *list = json_array();
+    for (int k = 0; k < UF_OPTICS_EARLIER; k++) {
+        if (!n->earlier[k].entry)
+            continue;
+        json_t *row = json_object();
+        json_object_set_new(row, "key", json_string(n->earlier[k].entry->key));
+        json_object_set_new(row, "was", json_string(n->earlier[k].said));
+        put(row, "depth_nm", n->earlier[k].depth_nm);
+        json_array_append_new(list, row);
+    }
+    return list;
+}
+
 static json_t *wish_json(const uf_optics_wish *wish)
 {
     json_t *o = json_object();
@@ -84,6 +99,7 @@ uf_status uf_optics_put_json(uf_text *out, const uf_optics_numbers *n, uf_error 
     json_t *o = json_object();
     put_setup(o, n);
     put(o, "depth_nm", n->depth_nm);
+    json_object_set_new(o, "overridden", earlier_json(n));
     put(o, "depth_sd_nm", n->depth_sd_nm);
     put(o, "depth_with_cell_n_nm", n->depth_with_cell_n_nm);
     put(o, "interface_s", n->interface_s);

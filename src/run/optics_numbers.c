@@ -2,6 +2,7 @@
 #include "run/optics_numbers.h"
 
 #include <math.h>
+#include <stddef.h>
 
 #include "base/constants.h"
 #include "run/decay_law.h"
@@ -232,6 +233,27 @@ static uf_status find_bench(const uf_optics_request *request, uf_optics_numbers 
     return uf_bench_check(&n->bench, error);
 }
 
+/* The same bench by what was overridden: a measured angle beside the computed one. */
+static void find_earlier(uf_optics_numbers *n)
+{
+    static const size_t members[UF_OPTICS_EARLIER] = {offsetof(struct uf_settings, interface.angle_deg),
+                                                      offsetof(struct uf_settings, interface.na_effective),
+                                                      offsetof(struct uf_settings, interface.depth_nm)};
+    for (int k = 0; k < UF_OPTICS_EARLIER; k++) {
+        const uf_setting *entry = uf_setting_at(members[k]);
+        size_t index = (size_t)(entry - uf_setting_table);
+        uf_settings before = *n->settings;
+        uf_bench bench;
+        if (!before.overridden[index])
+            continue;
+        before.interface.angle_deg = before.interface.na_effective = before.interface.depth_nm = (double)NAN;
+        *(double *)((char *)&before + members[k]) = before.overridden_real[index];
+        n->earlier[k] = (uf_optics_earlier){entry, before.overridden[index], (double)NAN};
+        if (uf_bench_make(&before, &bench, NULL) == UF_OK)
+            n->earlier[k].depth_nm = depth_of(&bench);
+    }
+}
+
 static void find_decays(uf_optics_numbers *n)
 {
     uf_decay_law exponential = {.model = UF_FIELD_EXPONENTIAL}, layered = {.model = UF_FIELD_LAYERED}, stray = n->law;
@@ -284,6 +306,7 @@ uf_status uf_optics_find(const uf_optics_request *request, uf_optics_numbers *nu
     if (status != UF_OK)
         return status;
     find_angles(n);
+    find_earlier(n);
     find_decays(n);
     find_moves(n);
     return UF_OK;

@@ -29,6 +29,15 @@ typedef struct uf_optics_wish {
     double within_nm, depth_nm;           /* what was asked */
 } uf_optics_wish;
 
+/* What an earlier file said of the angle, before a later one (a calibration, say) overrode it. */
+typedef struct uf_optics_earlier {
+    const uf_setting *entry; /* NULL: nothing */
+    const char *said;        /* "69.5 (bench.ini:11)" */
+    double depth_nm;         /* NaN where it is no total reflection */
+} uf_optics_earlier;
+
+enum { UF_OPTICS_EARLIER = 3 };
+
 typedef struct uf_optics_numbers {
     const uf_settings *settings;
     uf_bench bench;
@@ -39,6 +48,7 @@ typedef struct uf_optics_numbers {
     double critical_medium_deg, critical_cell_deg;
     double objective_limit_deg; /* NaN for a prism or without objective_na */
     double depth_nm, depth_sd_nm, depth_with_cell_n_nm;
+    uf_optics_earlier earlier[UF_OPTICS_EARLIER];
     double interface_s, interface_p, interface_mixed;
     double cutoff_nm, layered_effect_nm; /* reading minus truth at the cutoff */
     double reads_50_nm, reads_100_nm;    /* what an exponential reads for a layered 50 and 100 nm */

@@ -86,12 +86,28 @@ static void put_angles(uf_text *out, const uf_optics_numbers *n)
               fmin(b->objective_na, b->substrate_n));
 }
 
+/* Measured beside computed, where a later file overrode an earlier one. */
+static void put_earlier(uf_text *out, const uf_optics_numbers *n)
+{
+    for (int k = 0; k < UF_OPTICS_EARLIER; k++) {
+        const uf_optics_earlier *e = &n->earlier[k];
+        if (!e->entry)
+            continue;
+        if (isnan(e->depth_nm))
+            uf_text_printf(out, "  overridden: %s = %s\n", e->entry->key, e->said);
+        else
+            uf_text_printf(out, "%-38s%9.1f nm (%+.1f %%): %s = %s\n", "  by what was overridden it would be",
+                           e->depth_nm, 100 * (e->depth_nm / n->depth_nm - 1), e->entry->key, e->said);
+    }
+}
+
 static void put_field(uf_text *out, const uf_optics_numbers *n)
 {
     uf_text_printf(out, "\n%-38s%9.1f nm", "depth: 1/e of the intensity, in medium", n->depth_nm);
     if (n->depth_sd_nm > 0)
         uf_text_printf(out, " (1 sd %.1f nm)", n->depth_sd_nm);
     uf_text_add(out, "\n");
+    put_earlier(out, n);
     if (!isnan(n->depth_with_cell_n_nm))
         uf_text_printf(out, "%-38s%9.1f nm (a frequent slip: medium fills the gap)\n",
                        "  with the cell's index it would be", n->depth_with_cell_n_nm);
