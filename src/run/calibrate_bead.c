@@ -115,7 +115,7 @@ static uf_status find_in_images(uf_bead_findings *f, uf_reader *reader, uf_error
         uf_arena_mark mark = uf_arena_now(&reader->work->arena);
         uf_channel channel;
         double pixel_um;
-        status = uf_read_channel(reader, UF_NEAR, r->images[k], &channel, 1, &pixel_um, error);
+        status = uf_read_channel(reader, UF_NEAR, r->images[k], 0, &channel, 1, &pixel_um, error);
         if (status == UF_OK && k == 0) {
             fill_setup(f, pixel_um);
             status = check_setup(&f->setup, error);

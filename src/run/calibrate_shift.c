@@ -92,9 +92,9 @@ static uf_status read_pair(uf_reader *reader, const char *near_path, const char 
                            uf_channel *wide, uf_error *error)
 {
     double pixel_um;
-    uf_status status = uf_read_channel(reader, UF_NEAR, near_path, near, 1, &pixel_um, error);
+    uf_status status = uf_read_channel(reader, UF_NEAR, near_path, 0, near, 1, &pixel_um, error);
     if (status == UF_OK)
-        status = uf_read_channel(reader, UF_WIDE, wide_path, wide, 1, &pixel_um, error);
+        status = uf_read_channel(reader, UF_WIDE, wide_path, 0, wide, 1, &pixel_um, error);
     if (status == UF_OK && (near->image.width != wide->image.width || near->image.height != wide->image.height))
         status = uf_fail(error, UF_INPUT,
                          "%s is %d x %d px, but %s is %d x %d; the two images must have the same size", near_path,

@@ -35,13 +35,19 @@ void uf_reader_free(uf_reader *reader)
     reader->count = 0;
 }
 
-uf_status uf_read_image(uf_reader *reader, const char *role, const char *path, uf_plane *plane, uf_image_info *info,
-                        uf_error *error)
+static uf_status read_page(uf_reader *reader, const char *role, const char *path, int page, uf_plane *plane,
+                           uf_image_info *info, uf_error *error)
 {
-    uf_status status = uf_image_read(reader->work, path, 0, &limits, plane, info, error);
+    uf_status status = uf_image_read(reader->work, path, page, &limits, plane, info, error);
     if (status != UF_OK)
         return status;
     return uf_note_input(reader, (uf_run_input){role, path, info->file_bytes, info->fingerprint}, error);
+}
+
+uf_status uf_read_image(uf_reader *reader, const char *role, const char *path, uf_plane *plane, uf_image_info *info,
+                        uf_error *error)
+{
+    return read_page(reader, role, path, 0, plane, info, error);
 }
 
 uf_status uf_read_companion(uf_reader *reader, const char *role, const char *path, uf_plane like, uf_plane *plane,
@@ -98,11 +104,11 @@ static uf_status check_pages(const char *role, const char *path, int found, int 
 }
 
 /* Raw counts of the pages of one file, all of one size, with room for their saturated pixels. */
-static uf_status read_pages(uf_reader *reader, const char *role, const char *path, int count, uf_raw_channel *raw,
-                            uf_image_info *info, uf_error *error)
+static uf_status read_pages(uf_reader *reader, const char *role, const char *path, int page, int count,
+                            uf_raw_channel *raw, uf_image_info *info, uf_error *error)
 {
-    uf_status status = uf_read_image(reader, role, path, &raw[0].counts, info, error);
-    if (status == UF_OK)
+    uf_status status = read_page(reader, role, path, page ? page - 1 : 0, &raw[0].counts, info, error);
+    if (status == UF_OK && !page)
         status = check_pages(role, path, info->pages, count, error);
     for (int k = 1; status == UF_OK && k < count; k++) {
         status = uf_image_read(reader->work, path, k, &limits, &raw[k].counts, NULL, error);
@@ -118,12 +124,12 @@ static uf_status read_pages(uf_reader *reader, const char *role, const char *pat
     return status;
 }
 
-uf_status uf_read_channel(uf_reader *reader, uf_channel_name which, const char *path, uf_channel *pages, int count,
-                          double *pixel_um, uf_error *error)
+uf_status uf_read_channel(uf_reader *reader, uf_channel_name which, const char *path, int page_wanted,
+                          uf_channel *pages, int count, double *pixel_um, uf_error *error)
 {
     uf_raw_channel raw[UF_REALS_LIMIT] = {0}, page = {.name = uf_channel_names[which]};
     uf_image_info info;
-    uf_status status = read_pages(reader, page.name, path, count, raw, &info, error);
+    uf_status status = read_pages(reader, page.name, path, page_wanted, count, raw, &info, error);
     if (status != UF_OK)
         return status;
     *pixel_um = info.pixel_size_x_um;

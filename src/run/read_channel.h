@@ -30,9 +30,10 @@ UF_MUST_USE uf_status uf_read_image(uf_reader *reader, const char *role, const c
 UF_MUST_USE uf_status uf_read_companion(uf_reader *reader, const char *role, const char *path, uf_plane like,
                                         uf_plane *plane, uf_error *error);
 
-/* Reads the pages of one channel (more than one for the near channel of a series only) and corrects them by the settings'
- * dark, flat and defects, which are given back to the arena. *pixel_um is what the file says, NaN when nothing. */
-UF_MUST_USE uf_status uf_read_channel(uf_reader *reader, uf_channel_name which, const char *path, uf_channel *pages,
-                                      int count, double *pixel_um, uf_error *error);
+/* Reads the pages of one channel and corrects them by the settings' dark, flat and defects, which are given back to the
+ * arena. `page` from 1 is the one page wanted of a file of any number; 0: the file has `count` pages, more than one for the
+ * near channel of a series only. *pixel_um is what the file says, NaN when nothing. */
+UF_MUST_USE uf_status uf_read_channel(uf_reader *reader, uf_channel_name which, const char *path, int page,
+                                      uf_channel *pages, int count, double *pixel_um, uf_error *error);
 
 #endif
