@@ -44,6 +44,6 @@ UF_MUST_USE uf_status uf_option_word(const char *option, const char *text, const
 extern const char *const uf_channel_words[]; /* near, wide, NULL */
 
 extern const uf_command uf_calibrate_bead_command, uf_calibrate_camera_command, uf_calibrate_flat_command,
-    uf_calibrate_shift_command;
+    uf_calibrate_shift_command, uf_calibrate_reference_command;
 
 #endif

@@ -6,8 +6,9 @@
 #include "cli/calibrate.h"
 
 static const uf_command *const kinds[] = {&uf_calibrate_bead_command, &uf_calibrate_camera_command,
-                                          &uf_calibrate_flat_command, &uf_calibrate_shift_command};
-enum { KINDS = sizeof kinds / sizeof kinds[0], COMMON_OPTIONS = 6 };
+                                          &uf_calibrate_flat_command, &uf_calibrate_shift_command,
+                                          &uf_calibrate_reference_command};
+enum { KINDS = sizeof kinds / sizeof kinds[0], COMMON_OPTIONS = 7 };
 
 const char *const uf_channel_words[] = {"near", "wide", NULL};
 
@@ -59,7 +60,11 @@ static int run_kind(const uf_calibrate_kind *kind, const uf_calibrate_arguments 
     uf_error error;
     uf_settings *settings = NULL;
     uf_text out = {0};
-    uf_calibration_request common = {.images = a->images,
+    uf_calibration_request common = {.instruments = (const char *const *)a->instruments,
+                                     .assays = (const char *const *)a->assays,
+                                     .instrument_count = a->instrument_count,
+                                     .assay_count = a->assay_count,
+                                     .images = a->images,
                                      .image_count = a->image_count,
                                      .out_path = a->out,
                                      .plot_path = a->plot,
@@ -86,6 +91,8 @@ int uf_calibrate_run(const uf_calibrate_kind *kind, int argc, char **argv)
     const uf_option common[COMMON_OPTIONS] = {
         {"instrument", 'i', "FILE", "facts about the bench; may be repeated, later files override", NULL, NULL,
          a.instruments, &a.instrument_count, UF_CALIBRATE_FILES},
+        {"assay", 'a', "FILE", "choices about the analysis, where cells are looked for", NULL, NULL, a.assays,
+         &a.assay_count, UF_CALIBRATE_FILES},
         {"out", 'o', "FILE.ini", "where the result goes, to be given as -i from then on", &a.out, NULL, NULL, NULL,
          0},
         {"plot", 'p', "FILE.png", "a picture of data and fit", &a.plot, NULL, NULL, NULL, 0},

@@ -8,6 +8,8 @@
 
 typedef struct uf_calibration_request {
     const uf_settings *settings;
+    const char *const *instruments, *const *assays; /* the files they come from */
+    int instrument_count, assay_count;
     const char *const *images; /* what they are depends on the kind */
     int image_count;
     const char *out_path;  /* the fragment; other results lie beside it */

@@ -171,7 +171,7 @@ static void set_reference(const uf_settings *s, uf_plan *plan)
     int measured = s->reference.from == UF_SETTING_NOT_GIVEN;
     plan->has_gap = s->cells.label != UF_LABEL_ADHESION_PROTEIN;
     plan->signal = s->cells.label == UF_LABEL_MEMBRANE ? UF_SIGNAL_RATIO : UF_SIGNAL_NEAR;
-    plan->is_relative = !measured || s->cells.label == UF_LABEL_CYTOSOL;
+    plan->is_relative = !measured || s->reference.gap_is == UF_GAP_ASSUMED || s->cells.label == UF_LABEL_CYTOSOL;
     plan->reference_from_cell = !measured || !plan->has_gap;
     plan->reference_gap_nm = s->reference.gap_nm;
     plan->reference_gap_sd_nm = s->reference.gap_sd_nm;

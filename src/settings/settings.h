@@ -24,6 +24,7 @@ typedef enum uf_medium_name { UF_WATER, UF_CULTURE_MEDIUM, UF_PBS } uf_medium_na
 typedef enum uf_decay_model { UF_DECAY_EXPONENTIAL, UF_DECAY_LAYERED, UF_DECAY_TABLE } uf_decay_model;
 typedef enum uf_estimate { UF_ESTIMATE_CHECK, UF_ESTIMATE_YES, UF_ESTIMATE_NO } uf_estimate;
 typedef enum uf_reference_kind { UF_REFERENCE_CELL, UF_REFERENCE_FILM } uf_reference_kind;
+typedef enum uf_gap_is { UF_GAP_MEASURED, UF_GAP_ASSUMED } uf_gap_is;
 typedef enum uf_reference_from { UF_FROM_WELLS, UF_FROM_POOLED, UF_FROM_CELL } uf_reference_from;
 typedef enum uf_label { UF_LABEL_MEMBRANE, UF_LABEL_CYTOSOL, UF_LABEL_ADHESION_PROTEIN } uf_label;
 typedef enum uf_edge_cells { UF_EDGE_WEIGHT, UF_EDGE_KEEP, UF_EDGE_DROP } uf_edge_cells;
@@ -79,6 +80,7 @@ struct uf_settings {
     } shift;
     struct {
         double ratio, ratio_sd, gap_nm, gap_sd_nm, normalisation_sd;
+        int gap_is;                      /* measured or assumed */
         int kind, from;                  /* from: UF_SETTING_NOT_GIVEN when ratio is measured */
         double exposure_ms[UF_CHANNELS]; /* of its images; NaN: not told */
         char *flat[UF_CHANNELS]; /* fingerprint of the flat its images were corrected by, "none", NULL: not told */

@@ -114,6 +114,8 @@ const uf_setting uf_setting_table[] = {
     I_REAL("reference", "gap_sd_nm", reference.gap_sd_nm, 0, 1000, 0, "1 sigma of gap_nm."),
     I_CHOICE("reference", "kind", reference.kind, "cell|film", UF_REFERENCE_CELL,
                "What the reference was measured on: a cell, or a labelled film of one layer with medium above it."),
+    I_CHOICE("reference", "gap_is", reference.gap_is, "measured|assumed", UF_GAP_MEASURED,
+             "Whether gap_nm was measured by other means; with an assumed one gaps are relative."),
     I_ONE_CHOICE_OF("reference", "reference", "from", reference.from, "!wells|!pooled|cell",
                     "Where an assumed reference comes from, instead of ratio. cell: the closest hundredth of each cell lies at gap_nm; "
                     "gaps are then relative, and cells that lift as a whole do not show."),
