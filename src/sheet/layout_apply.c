@@ -3,6 +3,7 @@
 #include <stdio.h>
 #include <stdlib.h>
 #include <string.h>
+#include <strings.h>
 
 #include "sheet/amount.h"
 #include "sheet/layout.h"
@@ -141,9 +142,12 @@ static void say_blank(apply_job *job, const uf_block *block, const imaged *seen)
             uf_well_name(name, (uf_well){r, block->first_column + c});
             uf_text_printf(&names, "%s%s", imaged_count > 1 ? ", " : "", name);
         }
+    /* A control needs no dose, a sample no role; but each well has a treatment. */
+    bool wanted = strcasecmp(block->property, "treatment") == 0 || strcasecmp(block->property, "coating") == 0;
     if (imaged_count)
         uf_fault_add(
-            job->faults, UF_WARNING, "blank", (uf_place){block->file, block->line, block->property},
+            job->faults, wanted ? UF_WARNING : UF_NOTE, "blank",
+            (uf_place){block->file, block->line, block->property},
             "blank: %d wells, %d of them with images (%s%s), which stay without a %.40s; where cells were merged, "
             "write the value into each",
             block->blank, imaged_count, names.bytes ? names.bytes : "", imaged_count > 8 ? ", ..." : "",
