@@ -15,6 +15,7 @@
 #include "io/output.h"
 #include "run/demo_bench.h"
 #include "run/demo_plan.h"
+#include "sheet/well.h"
 
 static const double cutoff_nm = 50; /* of the assay file below */
 
@@ -316,8 +317,8 @@ static uf_status write_sheet(const demo_job *job, uf_error *error)
 /* The field in a well of a plate, NULL where nothing was done. */
 static const demo_field *field_in(const demo_plan *plan, const char *plate, int row, int column)
 {
-    char well[8];
-    (void)snprintf(well, sizeof well, "%c%02d", 'A' + row, column);
+    char well[UF_WELL_NAME];
+    uf_well_name(well, (uf_well){row, column - 1});
     for (int k = 0; k < plan->field_count; k++)
         if (strcmp(plan->fields[k].plate, plate) == 0 && strcmp(plan->fields[k].well, well) == 0)
             return &plan->fields[k];

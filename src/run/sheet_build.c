@@ -11,7 +11,6 @@
 #include "run/sheet_parts.h"
 #include "run/sheet_read.h"
 #include "sheet/checks.h"
-#include "sheet/order.h"
 
 static const size_t most_layout_bytes = (size_t)32 << 20;
 
@@ -58,10 +57,15 @@ static const char *set_value(const uf_sheet_build_request *r, const char *column
     return NULL;
 }
 
+const char *build_vessel(const build_job *job)
+{
+    return job->request->vessel ? job->request->vessel : set_value(job->request, "vessel");
+}
+
 static uf_status check_request(build_job *job)
 {
     const uf_sheet_build_request *r = job->request;
-    const char *vessel_text = r->vessel ? r->vessel : set_value(r, "vessel");
+    const char *vessel_text = build_vessel(job);
     uf_vessel vessel;
     if (!r->dir_count && !r->expect)
         return uf_fail(job->error, UF_USAGE,
@@ -229,54 +233,6 @@ static uf_status apply_sets(build_job *job)
         status = set_column(job, column, name, value);
     }
     return status;
-}
-
-/* ---- positions ------------------------------------------------------------------------------- */
-
-/* A list that says for each position its well and field is a layout like any other, but comes first. */
-static uf_status apply_positions(build_job *job)
-{
-    uf_csv_table table;
-    uf_layout positions = {0};
-    const char *path = job->request->positions;
-    uf_status status = uf_csv_read_loose(&table, path, most_layout_bytes, job->error);
-    if (status != UF_OK)
-        return status;
-    if (!job->draft.given[UF_SHEET_POSITION])
-        status = uf_fail(job->error, UF_USAGE,
-                         "--positions needs the number of the position in the files' names: {position} in --name");
-    if (status == UF_OK)
-        status = uf_layout_take(&positions, &table, path, NULL, &job->summary->faults, job->error);
-    if (status == UF_OK && (positions.list_count != 1 || positions.block_count))
-        status = uf_fail(job->error, UF_INPUT,
-                         "%.400s: no list of positions; expected the columns position, well and field", path);
-    if (status == UF_OK)
-        status = uf_layout_apply(&positions, &job->draft, &job->summary->faults, job->error);
-    /* The draft points into the list: its cells stay with the job's own layout. */
-    for (int r = 0; status == UF_OK && r < job->draft.count; r++)
-        for (int k = 0; k < UF_DRAFT_COLUMNS; k++) {
-            const char **cell = &job->draft.rows[r].cells[k];
-            *cell = *cell ? uf_draft_keep(&job->draft, *cell, strlen(*cell)) : NULL;
-            job->draft.given[k] |= *cell != NULL;
-        }
-    uf_layout_free(&positions);
-    uf_csv_free(&table);
-    return status;
-}
-
-static uf_status apply_order(build_job *job)
-{
-    const uf_sheet_build_request *r = job->request;
-    uf_order order = {.fields_per_well = r->fields_per_well, .wells = r->wells};
-    const char *vessel = r->vessel ? r->vessel : set_value(r, "vessel");
-    order.serpentine = strcmp(r->order, "serpentine") == 0;
-    if (!order.serpentine && strcmp(r->order, "row") != 0)
-        return uf_fail(job->error, UF_USAGE, "--order %.40s: expected row or serpentine", r->order);
-    if (r->fields_per_well < 1)
-        return uf_fail(job->error, UF_USAGE, "--order needs --fields-per-well N");
-    if (!vessel || !uf_vessel_parse(vessel, &order.vessel) || order.vessel.wells == 0)
-        return uf_fail(job->error, UF_USAGE, "--order needs the plate: --vessel 6, 12, 24, 48, 96, 384 or 1536");
-    return uf_order_apply(&order, &job->draft, job->error);
 }
 
 /* ---- images yet to be made ------------------------------------------------------------------- */
@@ -485,11 +441,11 @@ static uf_status build_rows(build_job *job)
     if (status == UF_OK)
         status = r->expect ? expect_rows(job) : build_from_files(job);
     if (status == UF_OK && r->positions)
-        status = apply_positions(job);
+        status = build_positions(job);
     if (status == UF_OK)
         status = apply_sets(job);
     if (status == UF_OK && r->order)
-        status = apply_order(job);
+        status = build_order(job);
     /* OME-TIFFs may know wells, fields and times that no name holds. */
     for (int k = 0; k < UF_SHEET_COLUMNS; k++)
         job->draft.given[k] |= !r->expect && any_cell(&job->draft, k) && k != UF_SHEET_NEAR && k != UF_SHEET_WIDE;
@@ -520,6 +476,7 @@ uf_status uf_sheet_build(const uf_sheet_build_request *request, uf_sheet_build_s
     uf_faults_sort(&summary->faults);
     uf_draft_free(&job->draft);
     uf_layout_free(&job->layout);
+    uf_layout_free(&job->positions);
     free(job->base);
     free(job->folder);
     free(job->plain);

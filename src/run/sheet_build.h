@@ -18,6 +18,7 @@ typedef struct uf_sheet_build_request {
     const char *const *layouts;
     int layout_count;
     const char *positions;   /* a list with a column position, or NULL */
+    const char *a1;          /* "X,Y": the stage's coordinates of A1's centre, um, or NULL */
     const char *order;       /* "row" or "serpentine", or NULL */
     const char *wells;       /* wells that `order` visits, or NULL: all */
     const char *vessel;      /* of all rows, or NULL */

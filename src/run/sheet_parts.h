@@ -20,7 +20,7 @@ typedef struct build_job {
     char *base;                      /* folder that the sheet's paths are relative to, plain; NULL: not there yet */
     char *folder, *plain;            /* the folder last made plain, and what it became */
     uf_draft draft;
-    uf_layout layout;
+    uf_layout layout, positions; /* the draft points into both */
 } build_job;
 
 /* Rows from the names of files; with a template without {channel} each file becomes one row, or as many as its OME-XML
@@ -29,6 +29,13 @@ uf_status build_from_files(build_job *job);
 
 /* Rows of one file that holds both channels: by pages, or by OME-XML. `like` is what its name says. */
 uf_status build_from_file(build_job *job, const char *path, const uf_draft_row *like);
+
+/* Wells and fields of numbered positions, by --positions or by --order. */
+uf_status build_positions(build_job *job);
+uf_status build_order(build_job *job);
+
+/* The vessel that options say for all rows, NULL for none. */
+const char *build_vessel(const build_job *job);
 
 /* How the sheet writes a path, kept in the draft; NULL without memory. */
 const char *build_path(build_job *job, const char *path);

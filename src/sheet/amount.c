@@ -169,5 +169,8 @@ uf_amount_kind uf_amount_parse(const char *text, uf_amount *amount)
     }
     if (!uf_parse_number(number, &amount->value) || !uf_unit_plain(amount->unit, text + length))
         return UF_AMOUNT_NONE;
+    /* "1 000" is no amount of 000, and "10-20" none of -20. */
+    if (strchr("0123456789+-.,", amount->unit[0]) && amount->unit[0])
+        return UF_AMOUNT_UNCLEAR;
     return UF_AMOUNT_GOOD;
 }

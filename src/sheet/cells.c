@@ -360,7 +360,9 @@ static void take_time(sheet_taking *t, const uf_sheet_row *row)
 
 static uf_status make_id(sheet_taking *t, uf_sheet_row *row, uf_error *error)
 {
-    static const uf_sheet_column parts[] = {UF_SHEET_PLATE, UF_SHEET_WELL, UF_SHEET_FIELD, UF_SHEET_TIME_MIN};
+    /* Coverslips have no plate; what keeps those of one name apart is their session. */
+    uf_sheet_column first = *row->text[UF_SHEET_PLATE] ? UF_SHEET_PLATE : UF_SHEET_SESSION;
+    const uf_sheet_column parts[] = {first, UF_SHEET_WELL, UF_SHEET_FIELD, UF_SHEET_TIME_MIN};
     uf_text id = {0};
     if (*row->text[UF_SHEET_WELL]) {
         for (size_t k = 0; k < sizeof parts / sizeof parts[0]; k++)

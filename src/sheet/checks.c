@@ -88,7 +88,10 @@ enum { NAMES_SHOWN = 6 };
 
 static void add_name(name_list *list, const char *first, const char *second, const char *third)
 {
-    if (list->count++ < NAMES_SHOWN)
+    bool none = !*first && !*second && !*third;
+    if (list->count++ < NAMES_SHOWN && none && list->text.length)
+        uf_text_add(&list->text, ", rows without a treatment");
+    else if (list->count <= NAMES_SHOWN && !none)
         uf_text_printf(&list->text, "%s%.60s%s%.60s%s%.40s", list->text.length ? ", " : "", first,
                        *second && *first ? " on " : "", second, *third ? " " : "", third);
 }
@@ -156,7 +159,10 @@ static uf_status check_replicates(const uf_sheet *sheet, uf_faults *faults, uf_e
         if (counts_as_arm(row) && distinct(&by, from, to, KEYS) < ENOUGH)
             add_name(&few, row->text[UF_SHEET_TREATMENT], row->text[UF_SHEET_COATING], row->text[UF_SHEET_DOSE]);
     }
-    if (few.count)
+    if (few.count == 1 && few.text.length == 0)
+        uf_fault_add(faults, UF_WARNING, "replicates", (uf_place){sheet->path, 0, "replicate"},
+                     "fewer than three replicates: intervals and p-values will be empty");
+    else if (few.count)
         uf_fault_add(faults, UF_WARNING, "replicates", (uf_place){sheet->path, 0, "replicate"},
                      "fewer than three replicates of %s: intervals and p-values will be empty", close_list(&few));
     uf_text_free(&few.text);

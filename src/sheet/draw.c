@@ -7,11 +7,12 @@
 
 #include "base/random.h"
 
-enum { MOST_WELLS = UF_MOST_ROWS * UF_MOST_COLUMNS, ROUNDS = 300, TRIES = 8 };
+enum { MOST_WELLS = UF_MOST_ROWS * UF_MOST_COLUMNS, ROUNDS = 100, TRIES = 8 };
 
 /* Wells that should lie apart: those of an arm, or of all doses of a treatment. */
 typedef struct group {
     int row[UF_MOST_ROWS], column[UF_MOST_COLUMNS], quarter[4], edge;
+    long pairs; /* in one row or one column */
     int wells, weight;
     bool is_control;
 } group;
@@ -136,6 +137,9 @@ static int quarter_of(uf_vessel v, uf_well well)
 
 static void count_in(const draw_job *job, group *g, uf_well well, int by)
 {
+    /* A well that comes makes a pair with each that is there; one that goes takes as many with it. */
+    int others = g->row[well.row] + g->column[well.column] - (by < 0 ? 2 : 0);
+    g->pairs += by * others;
     g->row[well.row] += by;
     g->column[well.column] += by;
     g->quarter[quarter_of(job->drawing->vessel, well)] += by;
@@ -146,19 +150,14 @@ static void count_in(const draw_job *job, group *g, uf_well well, int by)
  * so that every machine swaps the same wells. */
 static long cost_of(const draw_job *job, const group *g)
 {
-    long pairs = 0, uneven = 0;
-    uf_vessel v = job->drawing->vessel;
-    for (int r = 0; r < v.rows; r++)
-        pairs += (long)g->row[r] * (g->row[r] - 1) / 2;
-    for (int c = 0; c < v.columns; c++)
-        pairs += (long)g->column[c] * (g->column[c] - 1) / 2;
+    long uneven = 0;
     for (int q = 0; q < 4; q++) {
         int short_by = g->wells / 4 - g->quarter[q];
         uneven += short_by > 0 ? (g->is_control ? 40L : 4L) * short_by : 0;
         uneven += g->is_control && g->wells >= 4 && !g->quarter[q] ? 1000L : 0;
     }
     long over = ((long)g->edge * job->well_count - (long)g->wells * job->edge_count) * 4 / job->well_count;
-    return g->weight * (4 * pairs + uneven + (job->edge_count ? over * over / 2 : 0));
+    return g->weight * (4 * g->pairs + uneven + (job->edge_count ? over * over / 2 : 0));
 }
 
 static void group_ids(const draw_job *job, int content, int ids[2])

@@ -12,6 +12,7 @@ typedef struct layout_job {
     uf_layout *layout;
     const uf_csv_table *table;
     const char *file, *plate, *title; /* in the layout's arena; what was said above */
+    const char *given;                /* the plate that the command line names, or NULL */
     bool *read;                       /* cells that belong to a block */
     uf_faults *faults;
     bool failed; /* no memory */
@@ -177,10 +178,12 @@ static void take_title(layout_job *job, int row)
     if (strncasecmp(words[0], "plate", 5) != 0)
         return;
     const char *rest = words[0] + 5 + strspn(words[0] + 5, " :=");
-    if (count == 2 && !*rest)
-        job->plate = words[1];
-    else if (*rest && rest > words[0] + 5)
-        job->plate = rest;
+    const char *plate = count == 2 && !*rest ? words[1] : *rest && rest > words[0] + 5 ? rest : NULL;
+    if (plate && job->given && strcmp(plate, job->given) != 0)
+        uf_fault_add(job->faults, UF_FAULT, "layout", (uf_place){job->file, job->table->lines[row], NULL},
+                     "names plate '%.60s', but the file was given as that of plate '%.60s'; name it once", plate,
+                     job->given);
+    job->plate = plate ? plate : job->plate;
 }
 
 static void take_blocks(layout_job *job)
@@ -345,6 +348,7 @@ uf_status uf_layout_take(uf_layout *layout, const uf_csv_table *table, const cha
     layout_job job = {.layout = layout, .table = table, .faults = faults};
     job.file = keep(&job, path, strlen(path));
     job.plate = plate ? keep(&job, plate, strlen(plate)) : NULL;
+    job.given = job.plate;
     job.read = calloc((size_t)table->rows * (size_t)table->columns + 1, sizeof *job.read);
     job.failed = job.failed || !job.read;
     if (!job.failed)

@@ -3,6 +3,7 @@
 #include <stdio.h>
 #include <stdlib.h>
 #include <string.h>
+#include <strings.h>
 
 #include "sheet/amount.h"
 #include "sheet/layout.h"
@@ -13,7 +14,8 @@ typedef struct apply_job {
     const uf_layout *layout;
     uf_draft *draft;
     uf_faults *faults;
-    bool failed; /* no memory */
+    bool failed;         /* no memory */
+    uf_draft_row **rows; /* by plate, while blocks are applied */
 } apply_job;
 
 /* ---- one cell -------------------------------------------------------------------------------- */
@@ -64,12 +66,34 @@ static int column_of(apply_job *job, const char *name, uf_place at)
 
 /* ---- blocks ---------------------------------------------------------------------------------- */
 
-static bool is_plate(const uf_draft *draft, const char *name)
+static const char *plate_of(const uf_draft_row *row)
 {
-    for (int k = 0; k < draft->count; k++)
-        if (draft->rows[k].cells[UF_SHEET_PLATE] && strcmp(draft->rows[k].cells[UF_SHEET_PLATE], name) == 0)
-            return true;
-    return false;
+    return row->cells[UF_SHEET_PLATE] ? row->cells[UF_SHEET_PLATE] : "";
+}
+
+static int by_plate(const void *a, const void *b)
+{
+    return strcmp(plate_of(*(uf_draft_row *const *)a), plate_of(*(uf_draft_row *const *)b));
+}
+
+/* First row, in the order of plates, of a plate that is not before `name`. */
+static int first_of(const apply_job *job, const char *name)
+{
+    int low = 0, high = job->draft->count;
+    while (low < high) {
+        int middle = low + (high - low) / 2;
+        if (strcmp(plate_of(job->rows[middle]), name) < 0)
+            low = middle + 1;
+        else
+            high = middle;
+    }
+    return low;
+}
+
+static bool is_plate(const apply_job *job, const char *name)
+{
+    int first = first_of(job, name);
+    return first < job->draft->count && strcmp(plate_of(job->rows[first]), name) == 0;
 }
 
 /* The plate of each block: said, or the nearest title above it that is a plate's name. NULL: of all plates. */
@@ -84,16 +108,10 @@ static void find_plates(const apply_job *job, const char **plates)
         }
         if (block->plate != said)
             plate = said = block->plate;
-        if (block->title && is_plate(job->draft, block->title))
+        if (block->title && is_plate(job, block->title))
             plate = block->title;
         plates[k] = plate;
     }
-}
-
-static bool block_covers(const uf_block *block, const char *plate, const uf_draft_row *row)
-{
-    (void)block;
-    return !plate || (row->cells[UF_SHEET_PLATE] && strcmp(row->cells[UF_SHEET_PLATE], plate) == 0);
 }
 
 static const char *block_cell(const uf_block *block, uf_well well)
@@ -141,9 +159,12 @@ static void say_blank(apply_job *job, const uf_block *block, const imaged *seen)
             uf_well_name(name, (uf_well){r, block->first_column + c});
             uf_text_printf(&names, "%s%s", imaged_count > 1 ? ", " : "", name);
         }
+    /* A control needs no dose, a sample no role; but each well has a treatment. */
+    bool wanted = strcasecmp(block->property, "treatment") == 0 || strcasecmp(block->property, "coating") == 0;
     if (imaged_count)
         uf_fault_add(
-            job->faults, UF_WARNING, "blank", (uf_place){block->file, block->line, block->property},
+            job->faults, wanted ? UF_WARNING : UF_NOTE, "blank",
+            (uf_place){block->file, block->line, block->property},
             "blank: %d wells, %d of them with images (%s%s), which stay without a %.40s; where cells were merged, "
             "write the value into each",
             block->blank, imaged_count, names.bytes ? names.bytes : "", imaged_count > 8 ? ", ..." : "",
@@ -161,11 +182,12 @@ static void apply_block(apply_job *job, const uf_block *block, const char *plate
     int beyond = 0, covered = 0;
     const uf_draft_row *first = NULL;
     job->failed |= !seen;
-    for (int k = 0; seen && column >= 0 && k < job->draft->count; k++) {
-        uf_draft_row *row = &job->draft->rows[k];
+    for (int k = plate ? first_of(job, plate) : 0; seen && column >= 0 && k < job->draft->count; k++) {
+        uf_draft_row *row = job->rows[k];
         uf_well well;
-        if (!block_covers(block, plate, row) || !row->cells[UF_SHEET_WELL] ||
-            !uf_well_parse(row->cells[UF_SHEET_WELL], &well))
+        if (plate && strcmp(plate_of(row), plate) != 0)
+            break;
+        if (!row->cells[UF_SHEET_WELL] || !uf_well_parse(row->cells[UF_SHEET_WELL], &well))
             continue;
         covered++;
         const char *cell = block_cell(block, well);
@@ -197,12 +219,19 @@ static void apply_blocks(apply_job *job)
 {
     size_t count = (size_t)job->layout->block_count;
     const char **plates = calloc(count + 1, sizeof *plates);
-    job->failed |= !plates;
-    if (plates)
+    job->rows = malloc(((size_t)job->draft->count + 1) * sizeof *job->rows);
+    job->failed |= !plates || !job->rows;
+    for (int k = 0; job->rows && k < job->draft->count; k++)
+        job->rows[k] = &job->draft->rows[k];
+    if (job->rows && job->draft->count)
+        qsort(job->rows, (size_t)job->draft->count, sizeof *job->rows, by_plate);
+    if (!job->failed)
         find_plates(job, plates);
-    for (size_t k = 0; plates && k < count; k++)
+    for (size_t k = 0; !job->failed && k < count; k++)
         apply_block(job, &job->layout->blocks[k], plates[k]);
     free(plates);
+    free(job->rows);
+    job->rows = NULL;
 }
 
 /* ---- lists ----------------------------------------------------------------------------------- */
@@ -351,7 +380,7 @@ static void apply_list(apply_job *job, const uf_list *list)
 
 uf_status uf_layout_apply(const uf_layout *layout, uf_draft *draft, uf_faults *faults, uf_error *error)
 {
-    apply_job job = {layout, draft, faults, false};
+    apply_job job = {.layout = layout, .draft = draft, .faults = faults};
     /* Lists may name plates and wells (by position, say) that blocks are found by. */
     for (int k = 0; k < layout->list_count; k++)
         apply_list(&job, &layout->lists[k]);
@@ -379,19 +408,28 @@ static void add_fields(apply_job *job, const uf_draft_row *like, int fields)
     }
 }
 
-/* Wells of a plate that any block says something about. */
+/* Wells that any block of the plate says something about. */
+static void find_said(const apply_job *job, const char *plate, imaged *said)
+{
+    memset(said, 0, sizeof *said);
+    for (int k = 0; k < job->layout->block_count; k++) {
+        const uf_block *block = &job->layout->blocks[k];
+        if (plate && block->plate && strcmp(block->plate, plate) != 0)
+            continue;
+        for (int r = 0; r < UF_MOST_ROWS; r++)
+            for (int c = 0; block->rows[r] && c < block->columns; c++)
+                said->well[r][c + block->first_column] |= *block->rows[r][c] != '\0';
+    }
+}
+
 static void expect_plate(apply_job *job, const char *plate, int fields)
 {
-    for (int r = 0; r < UF_MOST_ROWS; r++)
-        for (int c = 0; c < UF_MOST_COLUMNS; c++) {
+    imaged said;
+    find_said(job, plate, &said);
+    for (int r = 0; r < UF_MOST_ROWS && !job->failed; r++)
+        for (int c = 0; c < UF_MOST_COLUMNS && !job->failed; c++) {
             char name[UF_WELL_NAME];
-            bool said = false;
-            for (int k = 0; k < job->layout->block_count && !said; k++) {
-                const uf_block *block = &job->layout->blocks[k];
-                const char *cell = block_cell(block, (uf_well){r, c});
-                said = cell && *cell && (!plate || !block->plate || strcmp(block->plate, plate) == 0);
-            }
-            if (!said)
+            if (!said.well[r][c])
                 continue;
             uf_well_name(name, (uf_well){r, c});
             uf_draft_row like = {{0}};
@@ -440,7 +478,7 @@ static void expect_list(apply_job *job, const uf_list *list, int fields)
 uf_status uf_layout_expect(const uf_layout *layout, int fields, uf_draft *draft, uf_faults *faults, uf_error *error)
 {
     static const int places[] = {UF_SHEET_WELL, UF_SHEET_PLATE, UF_SHEET_SESSION, UF_SHEET_FIELD, UF_SHEET_POSITION};
-    apply_job job = {layout, draft, faults, false};
+    apply_job job = {.layout = layout, .draft = draft, .faults = faults};
     /* The first list says which places there are; others (of sessions, say) tell more about them. */
     if (layout->block_count)
         expect_blocks(&job, fields);

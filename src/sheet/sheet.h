@@ -19,8 +19,9 @@
  */
 typedef struct uf_sheet_row {
     int line;                           /* of the sheet, from 1 */
-    const char *field_id;               /* plate/well/field/time of those there are where the row has a well, else
-                                           the near path, with "#page" where it is not the first */
+    const char *field_id;               /* plate/well/field/time of those there are where the row has a well (without
+                                           a plate the session stands for it), else the near path, with "#page" where
+                                           it is not the first */
     const char *text[UF_SHEET_COLUMNS]; /* by column */
     const char **extra;                 /* extra_count texts, by the order of uf_sheet.extra */
     const char *near_path, *wide_path, *nuclei_path, *mask_path, *instrument_path; /* to open; NULL: empty cell */
