@@ -269,19 +269,24 @@ static void join_tiles(const pair *p, double *scratch, uf_photon_point *point)
 
 /* ---- saturation ------------------------------------------------------------------------------ */
 
-static double highest_count(const pair *p)
+/* Width, in sd of a pixel, over which the upper tail of noise at its thinnest still gathers more pixels than lie
+ * at its very end: it thins out by e^(4.5 / 4) over a quarter of an sd at 4.5 sd. */
+static const double tail_sd = 0.25;
+
+/* The highest count of an ordinary pixel below `below`. */
+static double highest_count(const pair *p, double below)
 {
-    float highest = -INFINITY;
+    double highest = -INFINITY;
     for (int y = 0; y < p->a.height; y++) {
         const float *a = uf_plane_row(p->a, y), *b = uf_plane_row(p->b, y);
         const uint8_t *bad = uf_mask_row(p->dark->defects, y);
         for (int x = 0; x < p->a.width; x++) {
-            float larger = a[x] > b[x] ? a[x] : b[x];
-            if (!bad[x] && larger > highest)
-                highest = larger;
+            double one = (double)a[x], two = (double)b[x];
+            highest = !bad[x] && one < below && one > highest ? one : highest;
+            highest = !bad[x] && two < below && two > highest ? two : highest;
         }
     }
-    return (double)highest;
+    return highest;
 }
 
 /* Ordinary pixels of which either frame is within low <= count < high. */
@@ -299,13 +304,13 @@ static double pixels_between(const pair *p, double low, double high)
     return count;
 }
 
-/* Full scale as given, or the highest count where it holds more pixels than the next lower count: the upper tail
- * of noise thins out, only a ceiling gathers. One or two pixels are chance. */
+/* Full scale as given, or the highest count where it holds more pixels than the counts just below: noise thins
+ * out upwards, only a ceiling gathers. Just below is the next count that occurs, or a quarter of the noise's sd
+ * where that is more. One or two pixels are chance. */
 static void find_saturation(const pair *p, double full_scale, uf_photon_point *point)
 {
     double ordinary = p->dark->ordinary_pixels;
-    double step = p->dark->step_adu > 0 ? p->dark->step_adu : p->dark->noise_rms_adu;
-    point->highest_adu = highest_count(p);
+    point->highest_adu = highest_count(p, INFINITY);
     point->saturation_adu = (double)NAN;
     point->saturated_fraction = 0;
     if (point->highest_adu >= full_scale) {
@@ -313,9 +318,10 @@ static void find_saturation(const pair *p, double full_scale, uf_photon_point *p
         point->saturated_fraction = pixels_between(p, full_scale, INFINITY) / ordinary;
         return;
     }
-    double at = pixels_between(p, point->highest_adu, INFINITY);
-    double next = pixels_between(p, point->highest_adu - step, point->highest_adu);
-    if (at >= 3 && at > next) {
+    double next =
+        fmin(highest_count(p, point->highest_adu), point->highest_adu - tail_sd * sqrt(point->variance_adu2));
+    double at = pixels_between(p, point->highest_adu, INFINITY), below = pixels_between(p, next, point->highest_adu);
+    if (at >= 3 && at > below) {
         point->saturation_adu = point->highest_adu;
         point->saturated_fraction = at / ordinary;
     }
@@ -389,18 +395,17 @@ uf_status uf_photon_pair(uf_work *work, const uf_dark *dark, uf_plane a, uf_plan
     status = uf_take(work, tiles, sizeof *p.sums, "a pair of flats", &p.sums, error);
     if (status == UF_OK)
         status = uf_take(work, tiles, sizeof *scratch, "a pair of flats", &scratch, error);
-    if (status == UF_OK) {
-        find_saturation(&p, full_scale_adu, point);
-        status = check_unlike(&p, point, error);
-    }
     if (status == UF_OK)
         status = find_scales(work, &p, point, error);
     if (status == UF_OK) {
         uf_pool_run(work->pool, (int)tiles, measure_tile, &p);
         join_tiles(&p, scratch, point);
-        if (response && point->saturated_fraction <= 0.001 && point->signal_adu > uf_least_light_adu(dark))
-            add_response(&p, response);
+        find_saturation(&p, full_scale_adu, point);
+        status = check_unlike(&p, point, error);
     }
+    if (status == UF_OK && response && point->saturated_fraction <= 0.001 &&
+        point->signal_adu > uf_least_light_adu(dark))
+        add_response(&p, response);
     uf_arena_back(&work->arena, mark);
     return status;
 }

@@ -21,7 +21,7 @@ static const double rejected_cells_most = 0.5, background_least = 5, rejected_mo
 /* ---- saturation ------------------------------------------------------------------------------ */
 
 typedef struct top_counts {
-    double highest, at, next; /* highest count, pixels there, pixels a step lower */
+    double highest, at, next; /* highest count, pixels there, pixels at the next lower count that occurs */
 } top_counts;
 
 /* Row y of image k; bad pixels are given the lowest value there is. */
@@ -36,32 +36,34 @@ static void row_of_good(const uf_flat_stack *stack, uf_plane defects, int k, int
 static top_counts look_at_top(const uf_flat_stack *stack, const uf_flat_request *request, int k, float *row)
 {
     top_counts top = {.highest = -INFINITY};
-    double step = uf_count_step_adu(&stack->step), full_scale = request->full_scale_adu;
+    double second = -INFINITY, full_scale = request->full_scale_adu;
     for (int y = 0; y < stack->height; y++) {
         row_of_good(stack, request->defects, k, y, row);
-        for (int x = 0; x < stack->width; x++)
-            top.highest = fmax(top.highest, (double)row[x]);
+        for (int x = 0; x < stack->width; x++) {
+            double value = (double)row[x];
+            second = value > top.highest ? top.highest : value < top.highest ? fmax(second, value) : second;
+            top.highest = fmax(top.highest, value);
+        }
     }
     double level = top.highest >= full_scale ? full_scale : top.highest;
     for (int y = 0; y < stack->height; y++) {
         row_of_good(stack, request->defects, k, y, row);
         for (int x = 0; x < stack->width; x++) {
             top.at += (double)row[x] >= level;
-            top.next += (double)row[x] < level && (double)row[x] >= level - step;
+            top.next += (double)row[x] < level && (double)row[x] >= second;
         }
     }
     return top;
 }
 
-/* At full scale as given, or where counts pile up: more at the highest than a step lower. */
+/* At full scale as given, or where counts pile up: more at the highest than at the next lower one. */
 static uf_status check_saturation(const uf_flat_stack *stack, const uf_flat_request *request, float *row,
                                   uf_error *error)
 {
     double most = request->sample == UF_FLAT_CELLS ? saturated_cells_most : saturated_most;
-    int whole = uf_count_step_adu(&stack->step) > 0;
     for (int k = 0; k < stack->count; k++) {
         top_counts top = look_at_top(stack, request, k, row);
-        int full = top.highest >= request->full_scale_adu || (whole && top.at >= 3 && top.at > top.next);
+        int full = top.highest >= request->full_scale_adu || (top.at >= 3 && top.at > top.next);
         double share = top.at / ((double)stack->width * stack->height);
         if (full && share > most)
             return uf_fail(

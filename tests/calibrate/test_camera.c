@@ -216,6 +216,30 @@ static void test_a_lamp_that_flickers(void **state)
     end(&b);
 }
 
+/* A lamp a quarter brighter in one frame: without the correction of what scaling does to shot noise, the variance
+ * of 12 points would be 1.25 % too large ((1 + 1.25)^2 / (4 x 1.25)), six sds of their mean. */
+static void test_scaling_adds_no_variance(void **state)
+{
+    (void)state;
+    bench b;
+    simulated_camera camera = usual;
+    double ratio = 0, sd = 0;
+    camera.response_sd = camera.unevenness = 0;
+    camera.width = 257;
+    camera.height = 203;
+    start(&b, &camera, 4);
+    finish_dark(&b);
+    for (int k = 0; k < 12; k++) {
+        add_pair(&b, 800, 1000, (double)NAN);
+        double variance = 900 / pow(0.465, 2) + pow(1.62 / 0.465, 2) + 1.0 / 12;
+        ratio += b.points[k].variance_adu2 / variance / 12;
+        sd = b.points[k].variance_sd_adu2 / variance / sqrt(12);
+    }
+    assert_near_abs(ratio, 1, 3.5 * sd);
+    assert_true(sd < 0.0125 / 6);
+    end(&b);
+}
+
 static void spoil(uf_plane plane, int every, double add, double noise, uf_random *dice)
 {
     for (int k = 3; k < plane.width * plane.height; k += every)
@@ -545,6 +569,49 @@ static void test_offsets_that_disagree(void **state)
     end(&b);
 }
 
+/* Two close levels, both below the dark variance, are fitted with a remark on each weakness; the sd is honest. */
+static void test_weak_series(void **state)
+{
+    (void)state;
+    bench b;
+    simulated_camera camera = usual;
+    camera.read_e = 30;
+    camera.offset_adu = 800;
+    start(&b, &camera, 8);
+    finish_dark(&b);
+    for (int k = 0; k < 2; k++)
+        add_pair(&b, 400 * (k + 1), 400 * (k + 1), (double)NAN);
+    fit(&b);
+    assert_int_equal(b.transfer.notes, UF_CAMERA_NARROW_RANGE | UF_CAMERA_LOW_SIGNAL);
+    assert_near_abs(b.transfer.gain_e_per_adu, usual.gain_e_per_adu, 4 * b.transfer.gain_sd_e_per_adu);
+    assert_true(b.transfer.gain_sd_e_per_adu > 0.01 * b.transfer.gain_e_per_adu);
+    assert_true(isnan(b.transfer.line_offset_adu));
+    end(&b);
+}
+
+/* Counts stretched by 4.4 and rounded (steps of 4 and 5): the highest counts are no ceiling, though the count one
+ * lower never occurs. */
+static void test_stretched_counts(void **state)
+{
+    (void)state;
+    bench b;
+    start(&b, &usual, 4);
+    finish_dark(&b);
+    b.camera.unevenness = 0;
+    for (int k = 0; k < 8; k++) {
+        uf_plane flats[2];
+        for (int n = 0; n < 2; n++) {
+            flats[n] = expose(&b.work, &b.camera, 30 + 10 * k);
+            for (int i = 0; i < flats[n].width * flats[n].height; i++)
+                flats[n].data[i] = (float)floor(4.4 * (double)flats[n].data[i] + 0.5);
+        }
+        assert_int_equal(pair_of(&b, flats[0], flats[1], (double)NAN), UF_OK);
+        assert_true(isnan(b.points[k].saturation_adu));
+        b.count++;
+    }
+    end(&b);
+}
+
 /* ---- defects --------------------------------------------------------------------------------- */
 
 static void test_defects_are_found(void **state)
@@ -675,19 +742,27 @@ static void test_series_that_cannot_be_used(void **state)
     for (int k = 0; k < 3; k++)
         add_pair(&b, 700 + 30 * k, 700 + 30 * k, 20);
     expect(&b, uf_photon_transfer_fit(&b.dark, b.points, 3, 1, &t, NULL, &b.error), "add exposures, from");
+    uf_excess excess;
+    for (int k = 0; k < 3; k++)
+        add_pair(&b, 300 * (k + 1), 300 * (k + 1), (double)NAN);
+    assert_int_equal(uf_photon_transfer_fit(&b.dark, b.points, 6, 1, &t, NULL, &b.error), UF_OK);
+    b.transfer = t;
+    b.points[5].exposure_ms = 40;
+    assert_int_equal(uf_photon_transfer_fit(&b.dark, b.points, 6, 1, &t, NULL, &b.error), UF_OK);
+    expect(&b, uf_excess_noise(&t, &b.transfer, &excess, &b.error), "without multiplication has fewer than 2 exposures");
     expect(&b, uf_photon_transfer_fit(&b.dark, b.points, 0, 1, &t, NULL, &b.error), "0 pairs of flats");
     expect(&b, uf_photon_transfer_fit(&b.dark, b.points, 3, 0.9, &t, NULL, &b.error), "excess noise factor of 0.9");
     end(&b);
 }
 
-/* Memory that is not there is an error and no crash: frames of 2^62 bytes. */
+/* Memory that is not there is an error and no crash: more bytes than there are addresses. */
 static void test_no_memory(void **state)
 {
     (void)state;
     uf_work work = {0};
     uf_dark_frames frames;
     uf_error error;
-    assert_int_equal(uf_dark_start(&work, 1 << 30, 1 << 29, &frames, &error), UF_MEMORY);
+    assert_int_equal(uf_dark_start(&work, 1 << 30, 1 << 30, &frames, &error), UF_MEMORY);
     uf_arena_free(&work.arena);
 }
 
@@ -697,6 +772,7 @@ int main(void)
                                        cmocka_unit_test(test_sds_are_true),
                                        cmocka_unit_test(test_a_point),
                                        cmocka_unit_test(test_a_lamp_that_flickers),
+                                       cmocka_unit_test(test_scaling_adds_no_variance),
                                        cmocka_unit_test(test_bad_pixels_do_not_count),
                                        cmocka_unit_test(test_drift_of_the_offset),
                                        cmocka_unit_test(test_the_dark_image),
@@ -709,6 +785,8 @@ int main(void)
                                        cmocka_unit_test(test_darks_cut_off),
                                        cmocka_unit_test(test_smoothed_frames),
                                        cmocka_unit_test(test_offsets_that_disagree),
+                                       cmocka_unit_test(test_weak_series),
+                                       cmocka_unit_test(test_stretched_counts),
                                        cmocka_unit_test(test_defects_are_found),
                                        cmocka_unit_test(test_dark_frames_that_cannot_be_used),
                                        cmocka_unit_test(test_darks_without_noise),
