@@ -85,14 +85,18 @@ uf_status uf_reference_pool_units(uf_work *work, const uf_reference_unit *units,
 /* ---- film ---------------------------------------------------------------------------------------- */
 
 typedef struct film_images {
-    uf_plane near, wide;
+    uf_plane near, wide, near_blank, wide_blank;
     uf_mask near_saturated, wide_saturated;
-    double near_background, wide_background;
 } film_images;
 
 static int is_saturated(uf_mask mask, int x, int y)
 {
     return mask.data && uf_mask_row(mask, y)[x] == UF_PIXEL_SATURATED;
+}
+
+static double light_at(uf_plane image, uf_plane blank, int x, int y)
+{
+    return (double)uf_plane_row(image, y)[x] - (blank.data ? (double)uf_plane_row(blank, y)[x] : 0);
 }
 
 /* Medians of one block above the backgrounds; 0 when it cannot be used. */
@@ -104,8 +108,8 @@ static int look_at_block(const film_images *f, int x0, int y0, double *near, dou
     for (int y = y0; y < y0 + UF_FILM_BLOCK_PX && y < f->near.height; y++)
         for (int x = x0; x < x0 + UF_FILM_BLOCK_PX && x < f->near.width; x++) {
             bad += is_saturated(f->near_saturated, x, y) || is_saturated(f->wide_saturated, x, y);
-            near_values[n] = (double)uf_plane_row(f->near, y)[x] - f->near_background;
-            wide_values[n++] = (double)uf_plane_row(f->wide, y)[x] - f->wide_background;
+            near_values[n] = light_at(f->near, f->near_blank, x, y);
+            wide_values[n++] = light_at(f->wide, f->wide_blank, x, y);
         }
     *saturated += bad;
     *near = uf_median(near_values, n);
@@ -125,10 +129,10 @@ static void conclude(double *ratios, double *nears, double *wides, size_t blocks
 }
 
 uf_status uf_film_ratio_of(uf_work *work, uf_plane near, uf_plane wide, uf_mask near_saturated,
-                           uf_mask wide_saturated, double near_background_adu, double wide_background_adu,
-                           uf_film_ratio *film, uf_error *error)
+                           uf_mask wide_saturated, uf_plane near_blank, uf_plane wide_blank, uf_film_ratio *film,
+                           uf_error *error)
 {
-    film_images images = {near, wide, near_saturated, wide_saturated, near_background_adu, wide_background_adu};
+    film_images images = {near, wide, near_blank, wide_blank, near_saturated, wide_saturated};
     int across = (near.width + UF_FILM_BLOCK_PX - 1) / UF_FILM_BLOCK_PX;
     int down = (near.height + UF_FILM_BLOCK_PX - 1) / UF_FILM_BLOCK_PX;
     size_t blocks = 0, most = (size_t)across * (size_t)down;

@@ -40,12 +40,12 @@ typedef struct uf_film_ratio {
 enum { UF_FILM_BLOCK_PX = 32 };
 
 /*
- * Near over wide of an even film that fills the field, backgrounds taken off, in blocks of 32 x 32 px so that specks and
+ * Near over wide of an even film that fills the field, blank images of its background (data NULL: none) taken off, in blocks of 32 x 32 px so that specks and
  * bubbles drop out twice over; blocks with saturated pixels do not count. Blocks whose wide light is not above 0 neither.
  * blocks is 0 when none is left. UF_MEMORY.
  */
 UF_MUST_USE uf_status uf_film_ratio_of(uf_work *work, uf_plane near, uf_plane wide, uf_mask near_saturated,
-                                       uf_mask wide_saturated, double near_background_adu, double wide_background_adu,
+                                       uf_mask wide_saturated, uf_plane near_blank, uf_plane wide_blank,
                                        uf_film_ratio *film, uf_error *error);
 
 #endif

@@ -39,36 +39,20 @@ static void note_flats(const uf_reader *reader, uf_reference_group *group)
     }
 }
 
-static uf_status median_of_image(uf_work *work, uf_plane image, double *median, uf_error *error)
-{
-    size_t count = 0, step = 1, pixels = (size_t)image.width * (size_t)image.height;
-    double *values;
-    while (pixels / step > 1 << 16)
-        step++;
-    uf_arena_mark mark = uf_arena_now(&work->arena);
-    uf_status status = uf_take(work, pixels / step + 1, sizeof *values, "the background", &values, error);
-    for (size_t k = 0; status == UF_OK && k < pixels; k += step)
-        values[count++] = (double)uf_plane_row(image, (int)(k / (size_t)image.width))[k % (size_t)image.width];
-    if (status == UF_OK)
-        *median = uf_median(values, count);
-    uf_arena_back(&work->arena, mark);
-    return status;
-}
-
-/* What shines without a film, above offset or dark. */
-static uf_status blank_level(reference_job *job, uf_channel_name which, const char *path, double *level,
-                             uf_error *error)
+/* What shines without a film, above offset or dark; a plane without data where there is no blank image. */
+static uf_status read_blank(reference_job *job, uf_channel_name which, const char *path, uf_plane like,
+                            uf_plane *blank, uf_error *error)
 {
     uf_channel channel;
     double pixel_um;
-    *level = 0;
+    *blank = (uf_plane){0};
     if (!path)
         return UF_OK;
-    uf_arena_mark mark = uf_arena_now(&job->work.arena);
     uf_status status = uf_read_channel(&job->reader, which, path, 0, &channel, 1, &pixel_um, error);
-    if (status == UF_OK)
-        status = median_of_image(&job->work, channel.image, level, error);
-    uf_arena_back(&job->work.arena, mark);
+    if (status == UF_OK && (channel.image.width != like.width || channel.image.height != like.height))
+        status = uf_fail(error, UF_INPUT, "%s: the blank image is %d x %d px, the film's are %d x %d", path,
+                         channel.image.width, channel.image.height, like.width, like.height);
+    *blank = channel.image;
     return status;
 }
 
@@ -77,12 +61,9 @@ static uf_status measure_film(reference_job *job, const uf_field_files *files, u
 {
     uf_channel near, wide;
     uf_film_ratio film;
-    double pixel_um, near_blank = 0, wide_blank = 0;
-    uf_status status = blank_level(job, UF_NEAR, job->request->blank_near, &near_blank, error);
-    if (status == UF_OK)
-        status = blank_level(job, UF_WIDE, job->request->blank_wide, &wide_blank, error);
-    if (status == UF_OK)
-        status = uf_read_channel(&job->reader, UF_NEAR, files->near_path, 0, &near, 1, &pixel_um, error);
+    uf_plane near_blank, wide_blank;
+    double pixel_um;
+    uf_status status = uf_read_channel(&job->reader, UF_NEAR, files->near_path, 0, &near, 1, &pixel_um, error);
     if (status == UF_OK)
         status = uf_read_channel(&job->reader, UF_WIDE, files->wide_path, 0, &wide, 1, &pixel_um, error);
     if (status == UF_OK && (near.image.width != wide.image.width || near.image.height != wide.image.height))
@@ -90,6 +71,10 @@ static uf_status measure_film(reference_job *job, const uf_field_files *files, u
             uf_fail(error, UF_INPUT, "%s is %d x %d px, but %s is %d x %d; the two images must have the same size",
                     files->near_path, near.image.width, near.image.height, files->wide_path, wide.image.width,
                     wide.image.height);
+    if (status == UF_OK)
+        status = read_blank(job, UF_NEAR, job->request->blank_near, near.image, &near_blank, error);
+    if (status == UF_OK)
+        status = read_blank(job, UF_WIDE, job->request->blank_wide, near.image, &wide_blank, error);
     if (status == UF_OK)
         status = uf_film_ratio_of(&job->work, near.image, wide.image, near.saturated, wide.saturated, near_blank,
                                   wide_blank, &film, error);

@@ -6,6 +6,7 @@
 
 #include "base/constants.h"
 #include "calibrate/similarity.h"
+#include "calibrate/structure.h"
 #include "correct/shift.h"
 #include "run/report_parts.h"
 
@@ -49,10 +50,13 @@ static uf_status look_at_place(uf_work *work, const uf_channel *near, const uf_c
         return UF_OK;
     uf_channel near_view = view_of(near, box), wide_view = view_of(wide, moved);
     uf_shift_estimate found;
+    double x, y;
     uf_status status = uf_shift_find(work, &near_view, &wide_view, &found, error);
     if (status == UF_OK && found.trusted)
+        status = uf_structure_centre(work, near_view.image, &x, &y, error);
+    if (status == UF_OK && found.trusted)
         f->shifts[f->shift_count++] =
-            (uf_local_shift){(box.x0 + box.x1 - image.width) / 2.0, (box.y0 + box.y1 - image.height) / 2.0,
+            (uf_local_shift){box.x0 + x - (image.width - 1) / 2.0, box.y0 + y - (image.height - 1) / 2.0,
                              dx + found.dx_px, dy + found.dy_px, 0};
     return status;
 }
