@@ -183,6 +183,12 @@ docs-pictures: demo ## the pictures of README and docs
 	$(PROGRAM) optics --wavelength-nm 488 --substrate coverglass --medium culture-medium --objective-na 1.49 --angle-deg 70 \
 	    --angle-sd-deg 0.5 --plot docs/pictures/optics-good.png > /dev/null
 	cp $(DEMO)/results_a/overlay/day1_a_near.png docs/pictures/overlay.png
+	$(PROGRAM) demo build/demo_bench --scenario bench --quiet
+	$(PROGRAM) calibrate camera --channel near --dark build/demo_bench/dark_*.tif --flat build/demo_bench/light_*.tif --quiet \
+	    --exposures-ms 2,4,8,15,30,60,120,200,300 -o build/demo_bench/near_camera.ini --plot docs/pictures/near_camera.png
+	$(PROGRAM) calibrate bead build/demo_bench/beads_*.tif --radius-nm 2500 --radius-sd-nm 25 --quiet \
+	    -i build/demo_bench/bench.ini -i build/demo_bench/near_camera.ini -o build/demo_bench/near_bead.ini \
+	    --plot docs/pictures/near_bead.png
 
 # ---- install ---------------------------------------------------------------------------------------------
 
