@@ -169,12 +169,16 @@ cover: all ## how often the 95 % intervals hold the truth, into tests/bench/cove
 docs: all ## the pages that come from the tables in the code
 	$(PROGRAM) docs settings > docs/settings.md
 	$(PROGRAM) docs columns > docs/columns.md
+	$(PROGRAM) docs sheet-columns > docs/sheet-columns.md
 
 docs-pictures: demo ## the pictures of README and docs
 	@mkdir -p docs/pictures
 	$(PROGRAM) optics --wavelength-nm 488 --substrate coverglass --medium culture-medium --objective-na 1.49 --angle-deg 70 \
 	    --angle-sd-deg 0.5 --plot docs/pictures/optics-good.png > /dev/null
 	cp $(DEMO)/results_a/overlay/day1_a_near.png docs/pictures/overlay.png
+	$(PROGRAM) sheet layout -o $(DEMO)/plan.csv --treatment 'thrift: 0.1, 1, 10 uM' --treatment 'sedge: 0.1, 1, 10 uM' \
+	    --control vehicle --plates 3 --plate-name P --seed 7 --quiet
+	cp $(DEMO)/plan_map1.png docs/pictures/plate-map.png
 
 # ---- install ---------------------------------------------------------------------------------------------
 
