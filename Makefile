@@ -177,6 +177,7 @@ bead-truth: all ## how right calibrate bead is over 200 simulated experiments a 
 docs: all ## the pages that come from the tables in the code
 	$(PROGRAM) docs settings > docs/settings.md
 	$(PROGRAM) docs columns > docs/columns.md
+	$(PROGRAM) docs sheet-columns > docs/sheet-columns.md
 
 docs-pictures: demo ## the pictures of README and docs
 	@mkdir -p docs/pictures
@@ -189,6 +190,9 @@ docs-pictures: demo ## the pictures of README and docs
 	$(PROGRAM) calibrate bead build/demo_bench/beads_*.tif --radius-nm 2500 --radius-sd-nm 25 --quiet \
 	    -i build/demo_bench/bench.ini -i build/demo_bench/near_camera.ini -o build/demo_bench/near_bead.ini \
 	    --plot docs/pictures/near_bead.png
+	$(PROGRAM) sheet layout -o $(DEMO)/plan.csv --treatment 'thrift: 0.1, 1, 10 uM' --treatment 'sedge: 0.1, 1, 10 uM' \
+	    --control vehicle --plates 3 --plate-name P --seed 7 --quiet
+	cp $(DEMO)/plan_map1.png docs/pictures/plate-map.png
 
 # ---- install ---------------------------------------------------------------------------------------------
 
