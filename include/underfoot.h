@@ -123,7 +123,7 @@ typedef struct uf_measure_summary {
     double gap_median_nm;
     double depth_nm; /* 1/e depth of the evanescent intensity in force */
     double seconds;
-    char overlay[256];   /* path of the overlay below out_dir, empty when none was asked for */
+    char overlay[300];   /* path of the overlay below out_dir, empty when none was asked for */
     char warnings[1024]; /* one a line, empty when there are none */
     char flags[2048];    /* flags of the field, one a line with what to do about it */
 } uf_measure_summary;

@@ -223,6 +223,274 @@ uf_status uf_output_write(const uf_output *output, const char *folder, const cha
     return UF_OK;
 }
 
+/* ---- group commits --------------------------------------------------------------------------- */
+
+static void note_folder(uf_output_batch *batch, const char *folder)
+{
+    for (int k = 0; k < batch->folder_count; k++)
+        if (strcmp(batch->folders[k], folder) == 0)
+            return;
+    assert(batch->folder_count < UF_BATCH_FOLDERS);
+    batch->folders[batch->folder_count++] = folder;
+}
+
+/* Writes the temporary file and keeps it open for its fsync. */
+static int write_kept(int folder, const char *name, const void *bytes, size_t count, int *descriptor)
+{
+    char temporary[LONGEST_NAME + 1];
+    if (!may_replace(folder, name))
+        return ENODEV;
+    (void)snprintf(temporary, sizeof temporary, ".%s.part", name);
+    if (unlinkat(folder, temporary, 0) != 0 && errno != ENOENT)
+        return errno;
+    *descriptor = openat(folder, temporary, O_WRONLY | O_CREAT | O_EXCL | O_NOFOLLOW | O_CLOEXEC, 0666);
+    if (*descriptor < 0)
+        return errno;
+    int number = write_all(*descriptor, bytes, count);
+    if (number) {
+        (void)close(*descriptor);
+        (void)unlinkat(folder, temporary, 0);
+    }
+    return number;
+}
+
+static int rename_temporary(int folder, const char *name)
+{
+    char temporary[LONGEST_NAME + 1];
+    (void)snprintf(temporary, sizeof temporary, ".%s.part", name);
+    return renameat(folder, temporary, folder, name) == 0 ? 0 : errno;
+}
+
+static uf_status write_soon(const uf_output *output, uf_output_batch *batch, const char *folder, const char *name,
+                            const void *bytes, size_t count, bool is_record, uf_error *error)
+{
+    const place at = {output, folder, name};
+    assert(output->open && is_component(name) && is_component(folder));
+    if (strlen(name) + TEMPORARY_EXTRA > LONGEST_NAME)
+        return cannot_write(error, &at, ENAMETOOLONG);
+    if (batch->count == UF_BATCH_FILES) {
+        uf_status status = uf_output_batch_commit(output, batch, error);
+        if (status != UF_OK)
+            return status;
+    }
+    int below = open_folder(output, folder, true), descriptor = -1;
+    if (below < 0)
+        return cannot_write(error, &at, errno);
+    int number = write_kept(below, name, bytes, count, &descriptor);
+    if (!number && !is_record) {
+        number = rename_temporary(below, name);
+        if (number)
+            (void)close(descriptor);
+    }
+    (void)close(below);
+    if (number)
+        return cannot_write(error, &at, number);
+    batch->descriptors[batch->count++] = descriptor;
+    note_folder(batch, folder);
+    if (is_record) {
+        batch->records[batch->record_count].folder = folder;
+        (void)snprintf(batch->records[batch->record_count++].name, sizeof batch->records[0].name, "%s", name);
+    }
+    return UF_OK;
+}
+
+uf_status uf_output_write_soon(const uf_output *output, uf_output_batch *batch, const char *folder, const char *name,
+                               const void *bytes, size_t count, uf_error *error)
+{
+    return write_soon(output, batch, folder, name, bytes, count, false, error);
+}
+
+uf_status uf_output_record_soon(const uf_output *output, uf_output_batch *batch, const char *folder, const char *name,
+                                const void *bytes, size_t count, uf_error *error)
+{
+    return write_soon(output, batch, folder, name, bytes, count, true, error);
+}
+
+static int sync_named_folder(const uf_output *output, const char *folder)
+{
+    int below = open_folder(output, folder, false);
+    if (below < 0)
+        return errno;
+    int number = sync_folder(below);
+    (void)close(below);
+    return number;
+}
+
+static int name_records(const uf_output *output, uf_output_batch *batch)
+{
+    int number = 0;
+    for (int k = 0; !number && k < batch->record_count; k++) {
+        int below = open_folder(output, batch->records[k].folder, false);
+        number = below < 0 ? errno : rename_temporary(below, batch->records[k].name);
+        if (below >= 0)
+            (void)close(below);
+    }
+    return number;
+}
+
+/* First the bytes, then the names of the data, then the records, then their names: at no moment does a record stand without
+ * what it speaks of. */
+uf_status uf_output_batch_commit(const uf_output *output, uf_output_batch *batch, uf_error *error)
+{
+    const place at = {output, NULL, "its files"};
+    int number = 0;
+    for (int k = 0; k < batch->count; k++) {
+        if (!number && fsync(batch->descriptors[k]) != 0)
+            number = errno;
+        if (close(batch->descriptors[k]) != 0 && errno != EINTR && !number)
+            number = errno;
+    }
+    batch->count = 0;
+    for (int k = 0; !number && k < batch->folder_count; k++)
+        number = sync_named_folder(output, batch->folders[k]);
+    if (!number && batch->record_count)
+        number = name_records(output, batch);
+    for (int k = 0; !number && batch->record_count && k < batch->folder_count; k++)
+        number = sync_named_folder(output, batch->folders[k]);
+    batch->record_count = batch->folder_count = 0;
+    return number ? cannot_write(error, &at, number) : UF_OK;
+}
+
+void uf_output_batch_drop(uf_output_batch *batch)
+{
+    for (int k = 0; k < batch->count; k++)
+        (void)close(batch->descriptors[k]);
+    *batch = (uf_output_batch){0};
+}
+
+/* ---- long files ------------------------------------------------------------------------------- */
+
+enum { STREAM_BYTES = 1 << 20 };
+
+static uf_status stream_failed(uf_output_stream *stream, const uf_output *output, int number, uf_error *error)
+{
+    const place at = {output, NULL, stream->name};
+    uf_status status = cannot_write(error, &at, number);
+    uf_stream_drop(stream);
+    return status;
+}
+
+uf_status uf_stream_open(uf_output_stream *stream, const uf_output *output, const char *name, uf_error *error)
+{
+    *stream = (uf_output_stream){.open = 1, .descriptor = -1};
+    (void)snprintf(stream->name, sizeof stream->name, "%s", name);
+    stream->folder = open_folder(output, NULL, false);
+    int number = stream->folder < 0 ? errno : write_kept(stream->folder, name, "", 0, &stream->descriptor);
+    if (number)
+        stream->descriptor = -1;
+    return number ? stream_failed(stream, output, number, error) : UF_OK;
+}
+
+static int write_waiting(uf_output_stream *stream)
+{
+    int number = stream->waiting.failed
+                     ? ENOMEM
+                     : write_all(stream->descriptor, stream->waiting.bytes ? stream->waiting.bytes : "",
+                                 stream->waiting.length);
+    stream->waiting.length = 0;
+    return number;
+}
+
+uf_status uf_stream_flush(uf_output_stream *stream, const uf_output *output, uf_error *error)
+{
+    if (stream->waiting.length < STREAM_BYTES && !stream->waiting.failed)
+        return UF_OK;
+    int number = write_waiting(stream);
+    return number ? stream_failed(stream, output, number, error) : UF_OK;
+}
+
+uf_status uf_stream_finish(uf_output_stream *stream, const uf_output *output, uf_error *error)
+{
+    int number = write_waiting(stream);
+    if (!number && fsync(stream->descriptor) != 0)
+        number = errno;
+    if (!number)
+        number = rename_temporary(stream->folder, stream->name);
+    if (!number)
+        number = sync_folder(stream->folder);
+    if (number)
+        return stream_failed(stream, output, number, error);
+    stream->name[0] = '\0'; /* nothing to remove */
+    uf_stream_drop(stream);
+    return UF_OK;
+}
+
+void uf_stream_drop(uf_output_stream *stream)
+{
+    if (stream->open && stream->descriptor >= 0) {
+        char temporary[LONGEST_NAME + 8];
+        (void)close(stream->descriptor);
+        (void)snprintf(temporary, sizeof temporary, ".%s.part", stream->name);
+        if (*stream->name)
+            (void)unlinkat(stream->folder, temporary, 0);
+    }
+    if (stream->open && stream->folder >= 0)
+        (void)close(stream->folder);
+    uf_text_free(&stream->waiting);
+    *stream = (uf_output_stream){0};
+}
+
+/* ---- one run at a time ------------------------------------------------------------------------ */
+
+uf_status uf_output_lock(const uf_output *output, const char *name, const char *who, int *descriptor, uf_error *error)
+{
+    const place at = {output, NULL, name};
+    int file = openat(output->descriptor, name, O_RDWR | O_CREAT | O_NOFOLLOW | O_CLOEXEC, 0666);
+    *descriptor = -1;
+    if (file < 0)
+        return cannot_write(error, &at, errno);
+    struct flock lock = {.l_type = F_WRLCK, .l_whence = SEEK_SET};
+    if (fcntl(file, F_SETLK, &lock) != 0) {
+        char holder[200] = "";
+        ssize_t count = pread(file, holder, sizeof holder - 1, 0);
+        holder[count > 0 ? count : 0] = '\0';
+        holder[strcspn(holder, "\n")] = '\0';
+        (void)close(file);
+        return uf_fail(error, UF_OUTPUT,
+                       "%.400s: another run is at work here (%s); wait for it, or choose another folder",
+                       output->path, *holder ? holder : "it has not said who it is");
+    }
+    int number = ftruncate(file, 0) != 0 ? errno : write_all(file, who, strlen(who));
+    if (number) {
+        (void)close(file);
+        return cannot_write(error, &at, number);
+    }
+    *descriptor = file;
+    return UF_OK;
+}
+
+uf_status uf_output_read(const uf_output *output, const char *folder, const char *name, uf_text *bytes,
+                         uf_error *error)
+{
+    const place at = {output, folder, name};
+    char chunk[1 << 16];
+    *bytes = (uf_text){0};
+    int below = open_folder(output, folder, false);
+    if (below < 0)
+        return errno == ENOENT ? UF_OK : fail_at(error, &at, "cannot be read", errno, "");
+    int file = openat(below, name, O_RDONLY | O_NOFOLLOW | O_CLOEXEC | O_NONBLOCK);
+    int number = file < 0 ? errno : 0;
+    (void)close(below);
+    if (file < 0)
+        return number == ENOENT ? UF_OK : fail_at(error, &at, "cannot be read", number, "");
+    for (;;) {
+        ssize_t count = read(file, chunk, sizeof chunk);
+        if (count < 0 && errno == EINTR)
+            continue;
+        if (count < 0)
+            number = errno;
+        if (count <= 0)
+            break;
+        uf_text_bytes(bytes, chunk, (size_t)count);
+    }
+    (void)close(file);
+    if (number)
+        return fail_at(error, &at, "cannot be read", number, "");
+    return uf_text_check(bytes, name, error);
+}
+
+/* ---- one file -------------------------------------------------------------------------------- */
+
 uf_status uf_output_file(const char *path, const void *bytes, size_t count, uf_error *error)
 {
     const char *name = uf_base_name(path);

@@ -9,11 +9,8 @@
 
 #include "fit/robust.h"
 #include "io/csv.h"
-#include "io/image_encode.h"
-#include "io/image_file.h"
 #include "io/output.h"
-#include "report/outlines.h"
-#include "report/overlay.h"
+#include "run/field_pictures.h"
 #include "run/field_read.h"
 #include "run/plan.h"
 #include "run/run_json.h"
@@ -29,7 +26,7 @@ typedef struct measure_job {
     uf_text warnings;
     uf_text name; /* of this field's pictures, without ending */
     uf_output output;
-    char overlay_name[256];
+    char overlay_name[300];
 } measure_job;
 
 /* ---- warnings -------------------------------------------------------------------------------- */
@@ -166,156 +163,33 @@ static uf_status write_tables(measure_job *job, uf_error *error)
     return status;
 }
 
-/* Pictures that an earlier run left and this one does not make must not be taken for this one's. */
-static uf_status write_or_remove(measure_job *job, const char *folder, const char *ending, const uf_text *bytes,
-                                 uf_error *error)
+static uf_status put_picture(void *context, const char *folder, const char *name, const uf_text *bytes,
+                             uf_error *error)
 {
-    uf_text name = {0};
-    uf_text_add(&name, job->name.bytes);
-    uf_text_add(&name, ending);
-    uf_status status = uf_text_check(&name, "file names", error);
-    if (status == UF_OK)
-        status = bytes ? write_text(job, folder, name.bytes, bytes, error)
-                       : uf_output_remove(&job->output, folder, name.bytes, error);
-    if (status == UF_OK && bytes && strcmp(folder, "overlay") == 0)
-        (void)snprintf(job->overlay_name, sizeof job->overlay_name, "%s/%s", folder, name.bytes);
-    uf_text_free(&name);
+    measure_job *job = context;
+    return bytes ? uf_output_write(&job->output, folder, name, bytes->bytes, bytes->length, error)
+                 : uf_output_remove(&job->output, folder, name, error);
+}
+
+static uf_status write_pictures(measure_job *job, uf_error *error)
+{
+    uf_pictures pictures = {.work = &job->work,
+                            .settings = job->settings,
+                            .plan = &job->plan,
+                            .result = &job->result,
+                            .key = job->name.bytes,
+                            .title = uf_base_name(job->request->near_path),
+                            .put = put_picture,
+                            .context = job};
+    uf_status status = uf_pictures_write(&pictures, error);
+    (void)snprintf(job->overlay_name, sizeof job->overlay_name, "%s", pictures.overlay_name);
     return status;
 }
 
-static uf_status write_maps(measure_job *job, uf_error *error)
+static uf_status name_field(measure_job *job, uf_error *error)
 {
-    uf_text gap = {0}, labels = {0};
-    double px = job->plan.pixel_size_um;
-    int wanted = job->settings->output.maps == UF_YES;
-    uf_status status = UF_OK;
-    if (wanted)
-        status = uf_encode_float_tiff(&gap, job->result.gaps.gap_nm, px, "gap, nm", error);
-    if (status == UF_OK)
-        status = write_or_remove(job, "gap", ".tif", wanted ? &gap : NULL, error);
-    if (status == UF_OK && wanted)
-        status = uf_encode_label_tiff(&labels, job->result.cells.labels, px, "cell numbers", error);
-    if (status == UF_OK)
-        status = write_or_remove(job, "labels", ".tif", wanted ? &labels : NULL, error);
-    uf_text_free(&gap);
-    uf_text_free(&labels);
-    return status;
-}
-
-static void settings_line(const measure_job *job, uf_text *line)
-{
-    static const char *const models[] = {
-        [UF_FIELD_EXPONENTIAL] = "exponential", [UF_FIELD_LAYERED] = "layered", [UF_FIELD_TABLE] = "measured"};
-    const uf_settings *s = job->settings;
-    if (!job->plan.has_gap) {
-        uf_text_add(line, "adhesion-protein label: no gap; spots by the contrast of the near image");
-        return;
-    }
-    uf_text_printf(line, "%s decay%s, depth %.1f nm, contact at most %.4g nm, ", models[job->plan.law.model],
-                   job->plan.law.stray.fraction > 0 ? " with stray light" : "", job->plan.depth_nm,
-                   s->contact.cutoff_nm);
-    if (job->plan.series.count)
-        uf_text_printf(line, "series of %d angles", job->plan.series.count);
-    else if (job->plan.reference_from_cell)
-        uf_text_printf(line, "each cell's closest part taken to lie at %.4g nm", job->plan.reference_gap_nm);
-    else
-        uf_text_printf(line, "reference %.4g at gap 0", job->plan.reference_ratio);
-}
-
-static void flag_words(uf_flags flags, uf_text *words)
-{
-    for (int k = 0; k < UF_FLAG_COUNT; k++)
-        if (flags >> k & 1u)
-            uf_text_printf(words, "%s%s", words->length ? ", " : "", uf_flag_word((uf_flag)k));
-}
-
-static int overlay_wanted(const measure_job *job)
-{
-    switch (job->settings->output.overlay) {
-    case UF_OVERLAY_NO:
-        return 0;
-    case UF_OVERLAY_FLAGGED:
-        return job->result.field.flags != 0;
-    default:
-        return 1;
-    }
-}
-
-static int all_resolved(const measure_job *job)
-{
-    for (int k = 0; k < job->result.cells.labels.count; k++)
-        if (job->result.rows[k].unresolved_um2 > 0)
-            return 0;
-    return 1;
-}
-
-/* The gaps that the overlay shows. Where none is measured the map holds the detection limit, which must not be drawn
- * as if it were one: of a dim cell it may lie in the colours of contact. */
-static uf_status measured_gaps(measure_job *job, uf_plane *gap_nm, uf_error *error)
-{
-    const uf_gap_map *map = &job->result.gaps;
-    *gap_nm = map->gap_nm;
-    if (all_resolved(job))
-        return UF_OK;
-    uf_status status = uf_plane_take(&job->work, map->gap_nm.width, map->gap_nm.height, gap_nm, error);
-    for (int y = 0; status == UF_OK && y < gap_nm->height; y++) {
-        const float *from = uf_plane_row(map->gap_nm, y);
-        const uint8_t *state = uf_mask_row(map->state, y);
-        float *to = uf_plane_row(*gap_nm, y);
-        for (int x = 0; x < gap_nm->width; x++)
-            to[x] = state[x] == UF_GAP_RESOLVED ? from[x] : (float)NAN;
-    }
-    return status;
-}
-
-static uf_status draw_overlay(measure_job *job, uf_text *png, uf_overlay_layout *layout, uf_error *error)
-{
-    const uf_field_result *r = &job->result;
-    uf_text line = {0}, flags = {0};
-    settings_line(job, &line);
-    flag_words(r->field.flags, &flags);
-    uf_overlay_input input = {.near_adu = r->gaps.near_adu,
-                              .labels = r->cells.labels,
-                              .contact = r->contact,
-                              .cells = r->rows,
-                              .spots = r->spots,
-                              .spot_count = r->field.spots,
-                              .pixel_size_um = job->plan.pixel_size_um,
-                              .near_background_adu = 0,
-                              .cutoff_nm = job->settings->contact.cutoff_nm,
-                              .title = uf_base_name(job->request->near_path),
-                              .settings = line.bytes ? line.bytes : "",
-                              .flags = flags.bytes ? flags.bytes : "",
-                              .full = job->settings->output.overlay == UF_OVERLAY_FULL};
-    uf_arena_mark mark = uf_arena_now(&job->work.arena);
-    uf_indexed picture;
-    uf_status status = measured_gaps(job, &input.gap_nm, error);
-    if (status == UF_OK)
-        status = uf_overlay_draw(&job->work, &input, &picture, layout, error);
-    if (status == UF_OK)
-        status = uf_encode_indexed_png(png, &picture, error);
-    uf_arena_back(&job->work.arena, mark);
-    uf_text_free(&line);
-    uf_text_free(&flags);
-    return status;
-}
-
-static uf_status write_overlay(measure_job *job, uf_error *error)
-{
-    uf_text png = {0}, outlines = {0};
-    uf_outlines_input input = {.labels = job->result.cells.labels, .pixel_size_um = job->plan.pixel_size_um};
-    int wanted = overlay_wanted(job);
-    uf_status status = wanted ? draw_overlay(job, &png, &input.layout, error) : UF_OK;
-    if (status == UF_OK)
-        status = write_or_remove(job, "overlay", ".png", wanted ? &png : NULL, error);
-    input.overlay_name = job->overlay_name;
-    if (status == UF_OK && wanted)
-        status = uf_outlines_json(&job->work, &input, &outlines, error);
-    if (status == UF_OK)
-        status = write_or_remove(job, "outlines", ".json", wanted ? &outlines : NULL, error);
-    uf_text_free(&png);
-    uf_text_free(&outlines);
-    return status;
+    uf_picture_key(&job->name, job->request->near_path);
+    return uf_text_check(&job->name, "file names", error);
 }
 
 static uf_status write_story(measure_job *job, double seconds, uf_error *error)
@@ -333,20 +207,6 @@ static uf_status write_story(measure_job *job, double seconds, uf_error *error)
         status = write_text(job, NULL, "run.json", &json, error);
     uf_text_free(&json);
     return status;
-}
-
-/* Name of the field's pictures: the near file's name without its ending, as a safe key. */
-static uf_status name_field(measure_job *job, uf_error *error)
-{
-    const char *base = uf_base_name(job->request->near_path);
-    const char *dot = strrchr(base, '.');
-    uf_text stem = {0};
-    uf_text_bytes(&stem, base, dot && dot != base ? (size_t)(dot - base) : strlen(base));
-    if (!stem.failed)
-        uf_output_key(&job->name, stem.bytes);
-    job->name.failed |= stem.failed;
-    uf_text_free(&stem);
-    return uf_text_check(&job->name, "file names", error);
 }
 
 /* ---- summary --------------------------------------------------------------------------------- */
@@ -430,9 +290,7 @@ static uf_status measure_and_write(measure_job *job, double started, uf_measure_
     /* run.json goes last: where it stands, the rest stands too. An older one must not vouch for new tables. */
     status = uf_output_remove(&job->output, NULL, "run.json", error);
     if (status == UF_OK)
-        status = write_overlay(job, error);
-    if (status == UF_OK)
-        status = write_maps(job, error);
+        status = write_pictures(job, error);
     if (status == UF_OK)
         status = write_tables(job, error);
     if (status == UF_OK)
