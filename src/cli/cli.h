@@ -57,6 +57,6 @@ UF_MUST_USE uf_status uf_read_settings(const char **instruments, int instrument_
 UF_MUST_USE uf_status uf_threads(const char *text, int *threads, uf_error *error);
 
 extern const uf_command uf_command_calibrate, uf_command_measure, uf_command_optics, uf_command_sheet,
-    uf_command_demo, uf_command_docs;
+    uf_command_plate, uf_command_merge, uf_command_demo, uf_command_docs;
 
 #endif

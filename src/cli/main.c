@@ -6,7 +6,8 @@
 #include "cli/cli.h"
 
 static const uf_command *const commands[] = {&uf_command_optics,  &uf_command_calibrate, &uf_command_sheet,
-                                             &uf_command_measure, &uf_command_demo,      &uf_command_docs};
+                                             &uf_command_measure, &uf_command_plate,     &uf_command_merge,
+                                             &uf_command_demo,    &uf_command_docs};
 enum { COMMANDS = sizeof commands / sizeof commands[0] };
 
 static int print_overview(void)

@@ -119,3 +119,21 @@ uf_status uf_input_fingerprint(int descriptor, const char *path, void *buffer, s
     (void)XXH3_freeState(state);
     return count < 0 ? cannot_read(error, path, number) : UF_OK;
 }
+
+uf_input_facts uf_input_facts_of(const char *path)
+{
+    struct stat facts;
+    if (!path || stat(path, &facts) != 0 || !S_ISREG(facts.st_mode))
+        return (uf_input_facts){-1, 0};
+    return (uf_input_facts){(int64_t)facts.st_size,
+                            (int64_t)facts.st_mtim.tv_sec * 1000000000 + (int64_t)facts.st_mtim.tv_nsec};
+}
+
+void uf_input_expect(const char *path)
+{
+    int descriptor = path ? open(path, O_RDONLY | O_CLOEXEC | O_NONBLOCK | O_NOCTTY) : -1;
+    if (descriptor < 0)
+        return;
+    (void)posix_fadvise(descriptor, 0, 0, POSIX_FADV_WILLNEED);
+    (void)close(descriptor);
+}

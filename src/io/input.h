@@ -22,4 +22,14 @@ uint64_t uf_fingerprint(const void *bytes, size_t count);
 UF_MUST_USE uf_status uf_input_fingerprint(int descriptor, const char *path, void *buffer, size_t size,
                                            uint64_t *fingerprint, uf_error *error);
 
+/* What tells cheaply whether a file is still the one that was read: its size (-1: there is none) and when it was changed. */
+typedef struct uf_input_facts {
+    int64_t bytes, changed_ns;
+} uf_input_facts;
+
+uf_input_facts uf_input_facts_of(const char *path);
+
+/* Asks the system to fetch the file from the disk meanwhile. Nothing is wrong when it cannot. */
+void uf_input_expect(const char *path);
+
 #endif

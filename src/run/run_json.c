@@ -1,6 +1,8 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
 #include "run/run_json.h"
 
+#include "run/run_json_parts.h"
+
 #include <fftw3.h>
 #include <jansson.h>
 #include <math.h>
@@ -12,7 +14,7 @@
 #include <xxhash.h>
 
 /* Text that may not be UTF-8 (a file name): bytes above 127 that do not decode become '?'. */
-static json_t *json_text(const char *text)
+json_t *uf_json_text(const char *text)
 {
     json_t *value = json_string(text);
     if (value)
@@ -31,7 +33,7 @@ static json_t *json_number(double value)
     return isfinite(value) ? json_real(uf_round_digits(value, 12)) : json_null();
 }
 
-static json_t *settings_json(const uf_settings *settings)
+json_t *uf_settings_json(const uf_settings *settings)
 {
     json_t *list = json_array();
     for (int k = 0; k < uf_setting_count; k++) {
@@ -43,8 +45,8 @@ static json_t *settings_json(const uf_settings *settings)
             json_t *item = json_object();
             json_object_set_new(item, "section", json_string(entry->section));
             json_object_set_new(item, "key", json_string(entry->key));
-            json_object_set_new(item, "value", json_text(value.bytes));
-            json_object_set_new(item, "from", json_text(settings->origin[k] ? settings->origin[k] : "default"));
+            json_object_set_new(item, "value", uf_json_text(value.bytes));
+            json_object_set_new(item, "from", uf_json_text(settings->origin[k] ? settings->origin[k] : "default"));
             json_array_append_new(list, item);
         }
         uf_text_free(&value);
@@ -53,7 +55,7 @@ static json_t *settings_json(const uf_settings *settings)
 }
 
 /* What earlier files said and later ones overrode. */
-static json_t *overridden_json(const uf_settings *settings)
+json_t *uf_overridden_json(const uf_settings *settings)
 {
     json_t *list = json_array();
     for (int k = 0; k < uf_setting_count; k++) {
@@ -62,7 +64,7 @@ static json_t *overridden_json(const uf_settings *settings)
         json_t *item = json_object();
         json_object_set_new(item, "section", json_string(uf_setting_table[k].section));
         json_object_set_new(item, "key", json_string(uf_setting_table[k].key));
-        json_object_set_new(item, "was", json_text(settings->overridden[k]));
+        json_object_set_new(item, "was", uf_json_text(settings->overridden[k]));
         json_array_append_new(list, item);
     }
     return list;
@@ -76,7 +78,7 @@ static json_t *inputs_json(const uf_run_story *story)
         (void)snprintf(fingerprint, sizeof fingerprint, "%016llx", (unsigned long long)story->inputs[k].fingerprint);
         json_t *item = json_object();
         json_object_set_new(item, "role", json_string(story->inputs[k].role));
-        json_object_set_new(item, "path", json_text(story->inputs[k].path));
+        json_object_set_new(item, "path", uf_json_text(story->inputs[k].path));
         json_object_set_new(item, "bytes", json_integer((json_int_t)story->inputs[k].bytes));
         json_object_set_new(item, "xxh3_64", json_string(fingerprint));
         json_array_append_new(list, item);
@@ -117,7 +119,7 @@ static json_t *plan_json(const uf_plan *plan)
     return o;
 }
 
-static json_t *lines_json(const char *lines)
+json_t *uf_lines_json(const char *lines)
 {
     json_t *list = json_array();
     while (*lines) {
@@ -129,7 +131,7 @@ static json_t *lines_json(const char *lines)
     return list;
 }
 
-static json_t *libraries_json(void)
+json_t *uf_libraries_json(void)
 {
     char tiff[32], xxhash[32];
     (void)snprintf(tiff, sizeof tiff, "%.*s", (int)strcspn(TIFFGetVersion(), "\n"), TIFFGetVersion());
@@ -221,15 +223,15 @@ static json_t *build(const uf_run_story *story)
     json_t *o = json_object(), *varies = json_object();
     json_object_set_new(o, "program", json_string("underfoot"));
     json_object_set_new(o, "version", json_string(UF_VERSION));
-    json_object_set_new(o, "settings", settings_json(story->settings));
-    json_object_set_new(o, "overridden", overridden_json(story->settings));
+    json_object_set_new(o, "settings", uf_settings_json(story->settings));
+    json_object_set_new(o, "overridden", uf_overridden_json(story->settings));
     json_object_set_new(o, "in_force", plan_json(story->plan));
     json_object_set_new(o, "inputs", inputs_json(story));
-    json_object_set_new(o, "warnings", lines_json(story->warnings));
-    json_object_set_new(o, "methods", json_text(methods.bytes ? methods.bytes : ""));
-    json_object_set_new(varies, "command", story->command ? json_text(story->command) : json_null());
+    json_object_set_new(o, "warnings", uf_lines_json(story->warnings));
+    json_object_set_new(o, "methods", uf_json_text(methods.bytes ? methods.bytes : ""));
+    json_object_set_new(varies, "command", story->command ? uf_json_text(story->command) : json_null());
     json_object_set_new(varies, "seconds", json_number(story->seconds));
-    json_object_set_new(varies, "libraries", libraries_json());
+    json_object_set_new(varies, "libraries", uf_libraries_json());
     json_object_set_new(o, "varies_between_runs", varies);
     uf_text_free(&methods);
     return o;

@@ -550,6 +550,11 @@ uf_status uf_settings_check(const uf_settings *settings, uf_error *error)
         isnan(settings->interface.depth_nm))
         return uf_fail(error, UF_INPUT,
                        "the instrument file says no angle; add angle_deg, na_effective or depth_nm to [interface]");
+    if (settings->reference.from == UF_FROM_WELLS || settings->reference.from == UF_FROM_POOLED)
+        return uf_fail(error, UF_INPUT,
+                       "from = wells or pooled needs the fields of a sheet: underfoot plate SHEET; for one field "
+                       "give a ratio, or "
+                       "from = cell");
     if (settings->cells.label != UF_LABEL_MEMBRANE && by_series)
         return uf_fail(error, UF_INPUT, "a series of angles needs label = membrane; take [series] out, or the label");
     if (settings->cells.label != UF_LABEL_MEMBRANE && settings->reference.kind == UF_REFERENCE_FILM)

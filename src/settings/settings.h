@@ -101,6 +101,9 @@ struct uf_settings {
         double min_length_um, max_length_um, contrast_sigma;
     } spots;
     struct {
+        double min_cells_per_well;
+    } compare;
+    struct {
         int overlay, maps;
     } output;
     char *origin[UF_SETTINGS_LIMIT]; /* "FILE:LINE" of entry k of the table, NULL for a default */

@@ -116,8 +116,9 @@ const uf_setting uf_setting_table[] = {
                "What the reference was measured on: a cell, or a labelled film of one layer with medium above it."),
     I_CHOICE("reference", "gap_is", reference.gap_is, "measured|assumed", UF_GAP_MEASURED,
              "Whether gap_nm was measured by other means; with an assumed one gaps are relative."),
-    I_ONE_CHOICE_OF("reference", "reference", "from", reference.from, "!wells|!pooled|cell",
-                    "Where an assumed reference comes from, instead of ratio. cell: the closest hundredth of each cell lies at gap_nm; "
+    I_ONE_CHOICE_OF("reference", "reference", "from", reference.from, "wells|pooled|cell",
+                    "Where an assumed reference comes from, instead of ratio. wells: role reference of the sheet, else control, of each plate and session; pooled: all its fields; cell: each cell by itself; "
+                    "the closest hundredth of a cell lies at gap_nm; "
                     "gaps are then relative, and cells that lift as a whole do not show."),
     I_REAL("reference", "exposure_near_ms", reference.exposure_ms[UF_NEAR], 1e-6, 1e9, NONE,
            "Exposure of the reference's near image; see exposure_ms of the cameras."),
@@ -167,7 +168,8 @@ const uf_setting uf_setting_table[] = {
     A_LATER("compare", "primary", "Primary metrics."),
     A_LATER("compare", "control", "Treatment that the others are compared to."),
     A_LATER("compare", "block", "Column that pairs the arms."),
-    A_LATER("compare", "min_cells_per_well", "Wells with fewer cells leave per-cell metrics."),
+    A_REAL("compare", "min_cells_per_well", compare.min_cells_per_well, 1, 1e6, 10,
+           "Wells with fewer used cells leave per-cell metrics of replicates, never counts."),
     A_LATER("compare", "drop_flags", "Flags whose cells are left out."),
 
     A_CHOICE("output", "overlay", output.overlay, "yes|flagged|full|no", UF_OVERLAY_YES,

@@ -115,6 +115,8 @@ static void test_every_setting_can_be_set(void **state)
             check_choices(settings, k);
         else if (entry->kind == UF_SETTING_PATH)
             set_and_read(settings, k, "/flats/a.tif", "/flats/a.tif");
+        else if (entry->kind == UF_SETTING_WORD)
+            set_and_read(settings, k, "5a01", "5a01");
         else if (entry->kind == UF_SETTING_REALS)
             set_and_read(settings, k, "69 ,71.5,\t73", "69, 71.5, 73");
         else {
