@@ -61,12 +61,12 @@ UF_MUST_USE uf_status uf_dark_add(uf_work *work, uf_dark_frames *frames, uf_plan
 /* What dark frames tell. Shares are of all pixels. */
 typedef struct uf_dark {
     const uf_dark_frames *frames;
-    double step_adu;         /* between neighbouring counts: 16 for 12 bits shifted into 16; 0: not whole numbers */
-    double offset_adu;       /* median over tiles of their pixels' mean */
-    double offset_sd_adu;    /* of that figure: from the frames' drift and the pixels' noise */
-    double drift_adu;        /* sd of the frames' levels: how far the offset of a single image wanders */
-    double pattern_adu;      /* sd over ordinary pixels of their mean, from their tile's; the noise taken out */
-    double variance_adu2;    /* mean temporal variance of ordinary pixels, rounding still in */
+    double step_adu;      /* between neighbouring counts: 16 for 12 bits shifted into 16; 0: not whole numbers */
+    double offset_adu;    /* median over tiles of their pixels' mean */
+    double offset_sd_adu; /* of it: the frames' drift, the pixels' noise; step / root 12 where rounding hides both */
+    double drift_adu;     /* sd of the frames' levels: how far the offset of a single image wanders */
+    double pattern_adu;   /* sd over ordinary pixels of their mean, from their tile's; the noise taken out */
+    double variance_adu2; /* mean temporal variance of ordinary pixels, rounding still in */
     double variance_sd_adu2; /* of that mean */
     double noise_adu;        /* temporal sd of a typical pixel (median; see below), rounding taken out */
     double noise_sd_adu;
@@ -183,7 +183,8 @@ enum {
         16, /* the line does not point at the dark frames' offset: another exposure, stray light */
     UF_CAMERA_NARROW_RANGE = 32, /* the brightest used point has less than 3 times the signal of the darkest */
     UF_CAMERA_FLICKER = 64,      /* the two frames of some pair differ by more than 5 % in light */
-    UF_CAMERA_LOW_SIGNAL = 128   /* no used point has twice the dark variance: the read noise hides the light's */
+    UF_CAMERA_LOW_SIGNAL = 128,  /* no used point has twice the dark variance: the read noise hides the light's */
+    UF_CAMERA_FEW_DARKS = 256    /* fewer than 8 dark frames: noisy pixels are not all seen, and no median noise */
 };
 
 typedef struct uf_photon_transfer {
@@ -205,7 +206,7 @@ typedef struct uf_photon_transfer {
     double linear_to_adu;                       /* largest mean up to which every point departs by less than 1 % */
     double linear_departure;                    /* the largest departure up to there */
     double rate_adu_per_ms, rate_sd_adu_per_ms; /* signal against exposure; NaN without at least 2 exposures */
-    double correlation;                         /* largest of the used points' correlations */
+    double correlation; /* of neighbours, mean over the points used: along rows or down columns, the larger */
     unsigned notes;
 } uf_photon_transfer;
 

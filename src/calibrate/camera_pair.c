@@ -17,7 +17,8 @@ enum { LEAST_IN_TILE = 8, OUTLIER_ROUNDS = 20 };
 typedef struct tile_sums {
     double pixels, rejected;                       /* kept, and left out as outliers */
     double counts, signal;                         /* sums over the kept ones */
-    double variance;                               /* of the difference */
+    double variance;                               /* of the difference, */
+    double fourth;                                 /* and the sum of its fourth powers */
     double along, along_pixels, down, down_pixels; /* products of neighbours' differences */
 } tile_sums;
 
@@ -153,8 +154,10 @@ static void leave_out_outliers(differences *d, double step, tile_sums *sums)
     }
     sums->pixels = count;
     sums->variance = variance;
-    for (int k = 0; k < d->width * d->height; k++)
+    for (int k = 0; k < d->width * d->height; k++) {
         d->value[k] -= mean;
+        sums->fourth += isnan(d->value[k]) ? 0 : pow(d->value[k], 4);
+    }
 }
 
 static void correlate(const differences *d, tile_sums *sums)
@@ -233,12 +236,13 @@ static void percentiles_of_tiles(const pair *p, double *scratch, uf_photon_point
     point->high_adu = uf_sorted_quantile(scratch, count, 0.95);
 }
 
-/* Half the variance of the difference, over all tiles. Where light is uneven the pixels' variances differ, and
- * their mean is less sure than that of equal ones: by the mean square over the squared mean. */
+/* Half the variance of the difference, over all tiles. How sure it is, is taken from the fourth moments: uneven
+ * light and the long tails of few electrons make a variance less sure than the 2 / degrees of equal normal
+ * values. */
 static void join_tiles(const pair *p, double *scratch, uf_photon_point *point)
 {
     tile_sums all = {0};
-    double degrees = 0, squares = 0;
+    double degrees = 0;
     for (int k = 0; k < uf_tiles_count(p->tiles); k++) {
         const tile_sums *t = p->sums + k;
         if (!(t->pixels > 0))
@@ -253,15 +257,15 @@ static void join_tiles(const pair *p, double *scratch, uf_photon_point *point)
         all.down_pixels += t->down_pixels;
         degrees += t->pixels - 1;
         all.variance += (t->pixels - 1) * t->variance;
-        squares += (t->pixels - 1) * t->variance * t->variance;
+        all.fourth += t->fourth - t->pixels * t->variance * t->variance;
     }
-    double variance = all.variance / degrees, unequal = squares / degrees / (variance * variance);
+    double variance = all.variance / degrees;
     point->pixels = all.pixels;
     point->rejected_fraction = all.rejected / (all.pixels + all.rejected);
     point->mean_adu = all.counts / all.pixels;
     point->signal_adu = all.signal / all.pixels;
     point->variance_adu2 = without_flicker(p, variance / 2);
-    point->variance_sd_adu2 = variance > 0 ? point->variance_adu2 * sqrt(2 * unequal / degrees) : 0;
+    point->variance_sd_adu2 = sqrt(fmax(0, all.fourth)) / degrees / 2;
     point->correlation_x = variance > 0 ? all.along / all.along_pixels / variance : 0;
     point->correlation_y = variance > 0 ? all.down / all.down_pixels / variance : 0;
     percentiles_of_tiles(p, scratch, point);

@@ -154,6 +154,7 @@ static void test_sds_are_true(void **state)
         add_series(&b, 47.3, six_exposures, 6);
         fit(&b);
         const uf_photon_transfer *t = &b.transfer;
+        assert_int_equal(t->notes, UF_CAMERA_FEW_DARKS);
         gain += pow((t->gain_e_per_adu - camera.gain_e_per_adu) / t->gain_sd_e_per_adu, 2) / 40;
         read += pow((t->read_noise_e - camera.read_e) / t->read_noise_sd_e, 2) / 40;
         offset += pow((t->offset_adu - camera.offset_adu) / t->offset_sd_adu, 2) / 40;
@@ -204,7 +205,7 @@ static void test_a_lamp_that_flickers(void **state)
     bench b;
     simulated_camera camera = usual;
     camera.response_sd = 0.05;
-    start(&b, &camera, 6);
+    start(&b, &camera, 8);
     finish_dark(&b);
     for (int k = 0; k < 6; k++)
         add_pair(&b, 47.3 * six_exposures[k], 47.3 * six_exposures[k] / 1.18, six_exposures[k]);
@@ -485,15 +486,20 @@ static void test_rounding(void **state)
     (void)state;
     bench b;
     simulated_camera camera = usual;
+    camera.width = camera.height = 300;
+    camera.pattern_adu = 0; /* all pixels round alike, and the dark variance is not that of rounding */
+    camera.offset_adu = 101;
     camera.gain_e_per_adu = 4.31;
     camera.read_e = 0.25 * 4.31;
     start(&b, &camera, 10);
     finish_dark(&b);
-    add_series(&b, 170, six_exposures, 6);
+    add_series(&b, 5, six_exposures, 6);
     fit(&b);
     assert_true(b.dark.noise_is_bound && (b.transfer.notes & UF_CAMERA_ROUNDING));
     assert_near_abs(b.dark.noise_adu, 0.40, 1e-12);
-    assert_near_rel(b.transfer.gain_e_per_adu, 4.31, 0.02);
+    assert_near_rel(b.transfer.gain_e_per_adu, 4.31, 0.02); /* the foot of the line is the points' own then */
+    assert_near_abs(b.transfer.gain_e_per_adu, 4.31, 4 * b.transfer.gain_sd_e_per_adu);
+    assert_true(b.transfer.chi_square_p > 0.001 && !(b.transfer.notes & UF_CAMERA_OFFSETS_DISAGREE));
     end(&b);
     camera.read_e = 1.1 * 4.31;
     start(&b, &camera, 10);
