@@ -273,9 +273,10 @@ static void join_tiles(const pair *p, double *scratch, uf_photon_point *point)
 
 /* ---- saturation ------------------------------------------------------------------------------ */
 
-/* Width, in sd of a pixel, over which the upper tail of noise at its thinnest still gathers more pixels than lie
- * at its very end: it thins out by e^(4.5 / 4) over a quarter of an sd at 4.5 sd. */
-static const double tail_sd = 0.25;
+/* A ceiling gathers at least so many pixels, and so many times those at the next lower count that occurs: noise
+ * thins out upwards, and where it ends a handful of pixels are chance. */
+enum { LEAST_AT_CEILING = 10 };
+static const double more_than_below = 2;
 
 /* The highest count of an ordinary pixel below `below`. */
 static double highest_count(const pair *p, double below)
@@ -308,9 +309,7 @@ static double pixels_between(const pair *p, double low, double high)
     return count;
 }
 
-/* Full scale as given, or the highest count where it holds more pixels than the counts just below: noise thins
- * out upwards, only a ceiling gathers. Just below is the next count that occurs, or a quarter of the noise's sd
- * where that is more. One or two pixels are chance. */
+/* Full scale as given, or the highest count where it gathers pixels. */
 static void find_saturation(const pair *p, double full_scale, uf_photon_point *point)
 {
     double ordinary = p->dark->ordinary_pixels;
@@ -322,10 +321,9 @@ static void find_saturation(const pair *p, double full_scale, uf_photon_point *p
         point->saturated_fraction = pixels_between(p, full_scale, INFINITY) / ordinary;
         return;
     }
-    double next =
-        fmin(highest_count(p, point->highest_adu), point->highest_adu - tail_sd * sqrt(point->variance_adu2));
+    double next = highest_count(p, point->highest_adu);
     double at = pixels_between(p, point->highest_adu, INFINITY), below = pixels_between(p, next, point->highest_adu);
-    if (at >= 3 && at > below) {
+    if (at >= LEAST_AT_CEILING && at > more_than_below * below) {
         point->saturation_adu = point->highest_adu;
         point->saturated_fraction = at / ordinary;
     }

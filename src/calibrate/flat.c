@@ -56,14 +56,17 @@ static top_counts look_at_top(const uf_flat_stack *stack, const uf_flat_request 
     return top;
 }
 
-/* At full scale as given, or where counts pile up: more at the highest than at the next lower one. */
+/* Fewer pixels at the highest count are chance. */
+enum { LEAST_AT_CEILING = 10 };
+
+/* At full scale as given, or where counts pile up: twice as many at the highest as at the next lower one. */
 static uf_status check_saturation(const uf_flat_stack *stack, const uf_flat_request *request, float *row,
                                   uf_error *error)
 {
     double most = request->sample == UF_FLAT_CELLS ? saturated_cells_most : saturated_most;
     for (int k = 0; k < stack->count; k++) {
         top_counts top = look_at_top(stack, request, k, row);
-        int full = top.highest >= request->full_scale_adu || (top.at >= 3 && top.at > top.next);
+        int full = top.highest >= request->full_scale_adu || (top.at >= LEAST_AT_CEILING && top.at > 2 * top.next);
         double share = top.at / ((double)stack->width * stack->height);
         if (full && share > most)
             return uf_fail(

@@ -28,6 +28,7 @@ enum { UF_FLAT_IMAGES_LEAST = 3, UF_FLAT_IMAGES_MOST = 1000 };
 /* Images kept. Zeroed it is empty and may be freed. */
 typedef struct uf_flat_stack {
     int width, height, count;
+    uf_count_step step; /* between neighbouring counts */
     uf_arena arena;
     struct uf_flat_image *images; /* UF_FLAT_IMAGES_MOST, from the arena */
 } uf_flat_stack;
