@@ -13,10 +13,11 @@
  * saturated do not count anyway, as long as they are few. */
 static const double saturated_most = 0.001, saturated_cells_most = 0.05;
 
-/* The background is found as long as it is among the lowest values of every pixel: in simulated fields up to 55 %
- * of cells and down to five background values a pixel; at 63 % some places are cells, and nothing else says so. A
- * film of which a fifth does not agree is not even. */
-static const double rejected_cells_most = 0.5, background_least = 5, rejected_most = 0.2;
+/* The background is found as long as it is among the lowest values of every pixel. In simulated fields that holds
+ * up to half of them covered, with twelve background values a pixel on average; with nine, some pixels have too
+ * few by chance, and at 63 % whole places are cells while nothing else says so. A film of which a fifth does not
+ * agree is not even. */
+static const double rejected_cells_most = 0.5, background_least = 12, rejected_most = 0.2;
 
 /* ---- saturation ------------------------------------------------------------------------------ */
 

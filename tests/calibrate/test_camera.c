@@ -105,9 +105,10 @@ static void test_figures_come_back(void **state)
     (void)state;
     /* offset, gain, read noise, light a ms: a scientific, a slow-scan and a coarse camera, one 12 bits shifted
      * into 16 */
-    static const double cameras[][5] = {
-        {101.37, 0.465, 1.62, 47.3, 1}, {498.2, 2.17, 6.13, 230.9, 1}, {17.9, 11.3, 21.7, 380.1, 1},
-        {1616.3, 0.144, 5.9, 47.3, 16}};
+    static const double cameras[][5] = {{101.37, 0.465, 1.62, 47.3, 1},
+                                        {498.2, 2.17, 6.13, 230.9, 1},
+                                        {17.9, 11.3, 21.7, 380.1, 1},
+                                        {1616.3, 0.144, 5.9, 47.3, 16}};
     for (int k = 0; k < 4; k++) {
         bench b;
         simulated_camera camera = usual;
@@ -163,7 +164,8 @@ static void test_sds_are_true(void **state)
         chi_square += t->chi_square / 5 / 40;
         end(&b);
     }
-    printf("mean squares of errors in sds: gain %.2f, read noise %.2f (in the dark %.2f), offset %.2f, of the line %.2f; chi-square %.2f\n",
+    printf("mean squares of errors in sds: gain %.2f, read noise %.2f (in the dark %.2f), offset %.2f, of the line "
+           "%.2f; chi-square %.2f\n",
            gain, read, noise, offset, line_offset, chi_square);
     assert_near_abs(gain, 1.135, 0.695);
     assert_near_abs(read, 1.135, 0.695);
@@ -814,7 +816,8 @@ static void test_series_that_cannot_be_used(void **state)
     b.transfer = t;
     b.points[5].exposure_ms = 40;
     assert_int_equal(uf_photon_transfer_fit(&b.dark, b.points, 6, 1, &t, NULL, &b.error), UF_OK);
-    expect(&b, uf_excess_noise(&t, &b.transfer, &excess, &b.error), "without multiplication has fewer than 2 exposures");
+    expect(&b, uf_excess_noise(&t, &b.transfer, &excess, &b.error),
+           "without multiplication has fewer than 2 exposures");
     expect(&b, uf_photon_transfer_fit(&b.dark, b.points, 0, 1, &t, NULL, &b.error), "0 pairs of flats");
     expect(&b, uf_photon_transfer_fit(&b.dark, b.points, 3, 0.9, &t, NULL, &b.error), "excess noise factor of 0.9");
     end(&b);

@@ -65,7 +65,8 @@ static void shoot(const sample *s, uint64_t seed, uf_plane image)
     for (int y = 0; y < s->height; y++)
         for (int x = 0; x < s->width; x++) {
             double electrons = level * light(s, x, y) * (double)times[y * s->width + x] * s->gain_e_per_adu;
-            double counts = uf_random_poisson(&dice, electrons) / s->gain_e_per_adu + s->read_adu * uf_random_normal(&dice);
+            double counts =
+                uf_random_poisson(&dice, electrons) / s->gain_e_per_adu + s->read_adu * uf_random_normal(&dice);
             counts = fmax(0, floor(counts + s->offset_adu + 0.5));
             uf_plane_row(image, y)[x] = (float)fmin(counts, s->full_scale_adu);
         }
@@ -208,8 +209,8 @@ static void test_noise_is_the_error(void **state)
             expected += pow(b.flat.noise_expected, 2) / 12;
             end(&b);
         }
-        printf("%d images smoothed by %.1f: error %.5f, by halves %.5f, expected %.5f\n", images[k], smoothings[k], sqrt(made), sqrt(halves),
-               sqrt(expected));
+        printf("%d images smoothed by %.1f: error %.5f, by halves %.5f, expected %.5f\n", images[k], smoothings[k],
+               sqrt(made), sqrt(halves), sqrt(expected));
         assert_near_rel(sqrt(halves), sqrt(made), k == 2 ? 0.12 : 0.05);
         assert_near_rel(sqrt(expected), sqrt(made), k == 2 ? 0.12 : 0.05);
     }
@@ -393,7 +394,8 @@ static void test_a_lamp_that_wanders(void **state)
         for (int y = 0; y < film.height; y++)
             for (int x = 0; x < film.width; x++) {
                 double tilt = 0.04 * ((double)x / film.width - 0.5) * (k % 2 ? 1 : -1);
-                uf_plane_row(b.image, y)[x] += (float)floor(tilt * ((double)uf_plane_row(b.image, y)[x] - film.offset_adu));
+                uf_plane_row(b.image, y)[x] +=
+                    (float)floor(tilt * ((double)uf_plane_row(b.image, y)[x] - film.offset_adu));
             }
         assert_int_equal(uf_flat_add(&b.stack, b.image, NULL), UF_OK);
     }
