@@ -20,8 +20,8 @@
  * uf_dark_start, uf_dark_finish and uf_response_start take must live on while it is used; everything else is
  * scratch and is given back.
  *
- * Messages name frames and pairs by number from 1, or not at all where the caller knows better: it may put the file's
- * name before them (uf_fail_in).
+ * Messages name dark frames by number from 1, pairs and flats not at all: the caller puts their names before them
+ * (uf_fail_in).
  */
 #ifndef UF_CALIBRATE_CAMERA_H
 #define UF_CALIBRATE_CAMERA_H
@@ -61,12 +61,12 @@ UF_MUST_USE uf_status uf_dark_add(uf_work *work, uf_dark_frames *frames, uf_plan
 /* What dark frames tell. Shares are of all pixels. */
 typedef struct uf_dark {
     const uf_dark_frames *frames;
-    double step_adu;         /* between neighbouring counts: 16 for 12 bits shifted into 16; 0: not whole numbers */
-    double offset_adu;       /* median over tiles of their pixels' mean */
-    double offset_sd_adu;    /* of that figure: from the frames' drift and the pixels' noise */
-    double drift_adu;        /* sd of the frames' levels: how far the offset of a single image wanders */
-    double pattern_adu;      /* sd over ordinary pixels of their mean, from their tile's; the noise taken out */
-    double variance_adu2;    /* mean temporal variance of ordinary pixels, rounding still in */
+    double step_adu;      /* between neighbouring counts: 16 for 12 bits shifted into 16; 0: not whole numbers */
+    double offset_adu;    /* median over tiles of their pixels' mean */
+    double offset_sd_adu; /* of it: the frames' drift, the pixels' noise; step / root 12 where rounding hides both */
+    double drift_adu;     /* sd of the frames' levels: how far the offset of a single image wanders */
+    double pattern_adu;   /* sd over ordinary pixels of their mean, from their tile's; the noise taken out */
+    double variance_adu2; /* mean temporal variance of ordinary pixels, rounding still in */
     double variance_sd_adu2; /* of that mean */
     double noise_adu;        /* temporal sd of a typical pixel (median; see below), rounding taken out */
     double noise_sd_adu;
@@ -110,29 +110,29 @@ UF_MUST_USE uf_status uf_response_start(uf_work *work, int width, int height, uf
 
 /* One pair of flats. Figures are of ordinary pixels that are no outliers, the same for mean and variance. */
 typedef struct uf_photon_point {
-    double exposure_ms;   /* as the caller gave it; NaN: unknown */
-    double mean_adu;      /* mean of the counts of both frames */
-    double signal_adu;    /* the same above the dark mean of each pixel */
-    double variance_adu2; /* half the variance of the difference at their common level; rounding still in */
-    double variance_sd_adu2;
+    double exposure_ms;        /* as the caller gave it; NaN: unknown */
+    double mean_adu;           /* mean of the counts of both frames */
+    double signal_adu;         /* the same above the dark mean of each pixel */
+    double variance_adu2;      /* half the variance of the difference at their common level; rounding still in */
+    double variance_sd_adu2;   /* from fourth moments: for normal values sqrt(2 / pixels) of the variance */
     double pixels;             /* how many */
     double rejected_fraction;  /* outliers: blinking pixels, particle hits */
     double saturated_fraction; /* of ordinary pixels, at or above full scale in either frame */
-    double
-        saturation_adu; /* full scale as given, or the highest count where counts pile up there; NaN: not reached */
-    double highest_adu; /* highest count of an ordinary pixel */
-    double flicker;     /* signal of the first frame over the second's, less 1 */
-    double low_adu, high_adu; /* signal of the 5th and 95th percentile of tiles: how uneven the light was */
-    double correlation_x;     /* of the differences of neighbours along rows, */
-    double correlation_y;     /* and down columns: 0 for a camera whose pixels know nothing of each other */
+    double saturation_adu;     /* full scale as given, or the highest count where pixels pile up; NaN: not reached */
+    double highest_adu;        /* highest count of an ordinary pixel */
+    double flicker;            /* signal of the first frame over the second's, less 1; NaN without light */
+    double low_adu, high_adu;  /* signal of the 5th and 95th percentile of tiles: how uneven the light was */
+    double correlation_x;      /* of the differences of neighbours along rows, */
+    double correlation_y;      /* and down columns: 0 for a camera whose pixels know nothing of each other */
 } uf_photon_point;
 
 /*
- * Measures one pair. Both frames have the dark mean subtracted and are scaled to their common mean, so that a lamp
- * that flickers leaves no fixed pattern in the difference; what flickering adds to the variance is taken out.
- * Differences are looked at in tiles of 32 x 32 pixels: the tile's mean difference goes out, and differences beyond
- * 6 sigma, so that hot and blinking pixels do not count. Uneven light does no harm: each pixel lies on the same
- * straight line, and the mean of points of a straight line lies on it (up to saturation).
+ * Measures one pair. Both frames have the dark mean subtracted and are scaled to their common mean, so that a
+ * lamp that flickers leaves no fixed pattern in the difference; what flickering adds to the variance is taken
+ * out. Differences are looked at in tiles of 32 x 32 pixels: the tile's mean difference goes out, and differences
+ * beyond 6 sigma, so that hot and blinking pixels do not count. Uneven light does no harm: each pixel lies on the
+ * same straight line, and the mean of points of a straight line lies on it (up to saturation). Limit: behind a
+ * multiplying register the long tails of less than 2 electrons a pixel lose some per cent to the 6 sigma.
  *
  * `full_scale_adu`: count of a saturated pixel, NaN where unknown. `response` may be NULL; pairs with saturated
  * pixels, or without light, are not added to it. exposure_ms NaN or above 0. UF_INPUT: another size than the dark
@@ -175,46 +175,45 @@ typedef enum uf_linear_from { UF_LINEAR_BY_EXPOSURE, UF_LINEAR_BY_VARIANCE } uf_
 /* What a careful person would say beside the numbers; bits of uf_photon_transfer.notes. */
 enum {
     UF_CAMERA_ROUNDING = 1,     /* the dark noise drowns in rounding: read_noise_e is an upper limit */
-    UF_CAMERA_DARK_CLIPPED = 2, /* dark counts pile up at the lowest count: offset and read noise are wrong */
-    UF_CAMERA_CORRELATED =
-        4, /* neighbours are correlated (smoothed, compressed or resized images): gain is too high */
-    UF_CAMERA_LINE_BENDS = 8, /* chi-square improbable (p < 0.001) and some used point more than 2 % off the line */
-    UF_CAMERA_OFFSETS_DISAGREE =
-        16, /* the line does not point at the dark frames' offset: another exposure, stray light */
-    UF_CAMERA_NARROW_RANGE = 32, /* the brightest used point has less than 3 times the signal of the darkest */
-    UF_CAMERA_FLICKER = 64,      /* the two frames of some pair differ by more than 5 % in light */
-    UF_CAMERA_LOW_SIGNAL = 128   /* no used point has twice the dark variance: the read noise hides the light's */
+    UF_CAMERA_DARK_CLIPPED = 2, /* dark counts are cut off at 0: offset and read noise are wrong */
+    UF_CAMERA_CORRELATED = 4,   /* neighbours are correlated (smoothed, compressed, resized): the gain is too high */
+    UF_CAMERA_LINE_BENDS = 8,   /* chi-square improbable (p < 0.001) and some used point more than 2 % off the line */
+    UF_CAMERA_OFFSETS_DISAGREE = 16, /* the line does not point at the dark offset: other exposure, stray light */
+    UF_CAMERA_NARROW_RANGE = 32,     /* the brightest used point has less than 3 times the signal of the darkest */
+    UF_CAMERA_FLICKER = 64,          /* the two frames of some pair differ by more than 5 % in light */
+    UF_CAMERA_LOW_SIGNAL = 128,      /* no used point has twice the dark variance: the read noise hides the light's */
+    UF_CAMERA_FEW_DARKS = 256 /* fewer than 8 dark frames: noisy pixels are not all seen, and no median noise */
 };
 
 typedef struct uf_photon_transfer {
     double offset_adu, offset_sd_adu;
-    double slope_adu, slope_sd_adu;           /* variance over signal, ADU^2 / ADU */
-    double excess_noise, excess_noise_sd;     /* as given, or 1 */
-    double gain_e_per_adu, gain_sd_e_per_adu; /* excess^2 / slope */
-    double read_noise_e, read_noise_sd_e;     /* uf_dark.noise_adu x gain */
-    double read_noise_rms_e;                  /* uf_dark.noise_rms_adu x gain */
-    double line_offset_adu,
-        line_offset_sd_adu; /* where a line of free intercept meets the dark variance; NaN below 3 points */
+    double slope_adu, slope_sd_adu;             /* variance over signal, ADU^2 / ADU */
+    double excess_noise, excess_noise_sd;       /* as given, or 1 */
+    double gain_e_per_adu, gain_sd_e_per_adu;   /* excess^2 / slope */
+    double read_noise_e, read_noise_sd_e;       /* uf_dark.noise_adu x gain */
+    double read_noise_rms_e;                    /* uf_dark.noise_rms_adu x gain */
+    double line_offset_adu, line_offset_sd_adu; /* where a line of free intercept meets the dark variance; NaN below
+                                                   3 points */
     int points_used;
     double chi_square;   /* of points_used - 1 degrees of freedom */
-    double chi_square_p; /* chance of a larger one; NaN for a single degree less than 1 */
+    double chi_square_p; /* chance of a larger one; NaN for one point */
     uf_full_scale_from full_scale_from;
     double full_scale_adu; /* for the instrument file; NaN: not seen */
-    double full_scale_e;   /* (full_scale_adu - offset_adu) x gain / excess-free */
+    double full_scale_e;   /* (full_scale_adu - offset_adu) x gain: electrons, before multiplication */
     uf_linear_from linear_from;
     double linear_to_adu;                       /* largest mean up to which every point departs by less than 1 % */
     double linear_departure;                    /* the largest departure up to there */
     double rate_adu_per_ms, rate_sd_adu_per_ms; /* signal against exposure; NaN without at least 2 exposures */
-    double correlation;                         /* largest of the used points' correlations */
+    double correlation; /* of neighbours, mean over the points used: along rows or down columns, the larger */
     unsigned notes;
 } uf_photon_transfer;
 
 /*
- * Fits the line through the dark frames' foot by weighted least squares. A point's weight is one over its
- * variance's own variance, 2 / (pixels - 1) of its square, taken at the fitted line and iterated (at the measured
- * variances, low ones would weigh more). slope_sd_adu contains the scatter about the line where that is larger than
- * expected, and the uncertainties of the dark frames. `points` in any order; `fits` has room for `count`, in the
- * same order, and may be NULL.
+ * Fits the line through the dark frames' foot (where rounding hides their noise: through a foot of its own) by
+ * weighted least squares. A point's weight is one over its variance's own variance, taken at the fitted line and
+ * iterated (at the measured variances, low ones would weigh more). slope_sd_adu contains the scatter about the
+ * line where that is larger than expected, and the uncertainties of the dark frames. `points` in any order;
+ * `fits` has room for `count`, in the same order, and may be NULL.
  *
  * linear_to_adu: with at least 4 different exposures, the straight line of signal against exposure (relative
  * weights; the intercept is what a shutter takes) through as many points from below as it misses none of by more

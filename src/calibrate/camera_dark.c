@@ -360,7 +360,8 @@ static void find_offset(uf_dark *dark, uf_tiles tiles, double *means)
     dark->offset_adu = uf_median(means, count) + frames->level_adu;
     dark->drift_adu = sd_of_levels(frames);
     double pixel_part = dark->variance_adu2 / (frames->count * fmax(1, dark->ordinary_pixels));
-    dark->offset_sd_adu = sqrt(dark->drift_adu * dark->drift_adu / frames->count + pixel_part);
+    double hidden = dark->noise_is_bound ? dark->step_adu * dark->step_adu * rounding_variance : 0;
+    dark->offset_sd_adu = sqrt(dark->drift_adu * dark->drift_adu / frames->count + pixel_part + hidden);
 }
 
 /* ---- all of it ------------------------------------------------------------------------------- */

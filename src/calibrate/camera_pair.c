@@ -17,7 +17,8 @@ enum { LEAST_IN_TILE = 8, OUTLIER_ROUNDS = 20 };
 typedef struct tile_sums {
     double pixels, rejected;                       /* kept, and left out as outliers */
     double counts, signal;                         /* sums over the kept ones */
-    double variance;                               /* of the difference */
+    double variance;                               /* of the difference, */
+    double fourth;                                 /* and the sum of its fourth powers */
     double along, along_pixels, down, down_pixels; /* products of neighbours' differences */
 } tile_sums;
 
@@ -153,8 +154,10 @@ static void leave_out_outliers(differences *d, double step, tile_sums *sums)
     }
     sums->pixels = count;
     sums->variance = variance;
-    for (int k = 0; k < d->width * d->height; k++)
+    for (int k = 0; k < d->width * d->height; k++) {
         d->value[k] -= mean;
+        sums->fourth += isnan(d->value[k]) ? 0 : pow(d->value[k], 4);
+    }
 }
 
 static void correlate(const differences *d, tile_sums *sums)
@@ -233,12 +236,13 @@ static void percentiles_of_tiles(const pair *p, double *scratch, uf_photon_point
     point->high_adu = uf_sorted_quantile(scratch, count, 0.95);
 }
 
-/* Half the variance of the difference, over all tiles. Where light is uneven the pixels' variances differ, and
- * their mean is less sure than that of equal ones: by the mean square over the squared mean. */
+/* Half the variance of the difference, over all tiles. How sure it is, is taken from the fourth moments: uneven
+ * light and the long tails of few electrons make a variance less sure than the 2 / degrees of equal normal
+ * values. */
 static void join_tiles(const pair *p, double *scratch, uf_photon_point *point)
 {
     tile_sums all = {0};
-    double degrees = 0, squares = 0;
+    double degrees = 0;
     for (int k = 0; k < uf_tiles_count(p->tiles); k++) {
         const tile_sums *t = p->sums + k;
         if (!(t->pixels > 0))
@@ -253,15 +257,15 @@ static void join_tiles(const pair *p, double *scratch, uf_photon_point *point)
         all.down_pixels += t->down_pixels;
         degrees += t->pixels - 1;
         all.variance += (t->pixels - 1) * t->variance;
-        squares += (t->pixels - 1) * t->variance * t->variance;
+        all.fourth += t->fourth - t->pixels * t->variance * t->variance;
     }
-    double variance = all.variance / degrees, unequal = squares / degrees / (variance * variance);
+    double variance = all.variance / degrees;
     point->pixels = all.pixels;
     point->rejected_fraction = all.rejected / (all.pixels + all.rejected);
     point->mean_adu = all.counts / all.pixels;
     point->signal_adu = all.signal / all.pixels;
     point->variance_adu2 = without_flicker(p, variance / 2);
-    point->variance_sd_adu2 = variance > 0 ? point->variance_adu2 * sqrt(2 * unequal / degrees) : 0;
+    point->variance_sd_adu2 = sqrt(fmax(0, all.fourth)) / degrees / 2;
     point->correlation_x = variance > 0 ? all.along / all.along_pixels / variance : 0;
     point->correlation_y = variance > 0 ? all.down / all.down_pixels / variance : 0;
     percentiles_of_tiles(p, scratch, point);
@@ -269,9 +273,10 @@ static void join_tiles(const pair *p, double *scratch, uf_photon_point *point)
 
 /* ---- saturation ------------------------------------------------------------------------------ */
 
-/* Width, in sd of a pixel, over which the upper tail of noise at its thinnest still gathers more pixels than lie
- * at its very end: it thins out by e^(4.5 / 4) over a quarter of an sd at 4.5 sd. */
-static const double tail_sd = 0.25;
+/* A ceiling gathers at least so many pixels, and so many times those at the next lower count that occurs: noise
+ * thins out upwards, and where it ends a handful of pixels are chance. */
+enum { LEAST_AT_CEILING = 10 };
+static const double more_than_below = 2;
 
 /* The highest count of an ordinary pixel below `below`. */
 static double highest_count(const pair *p, double below)
@@ -304,9 +309,7 @@ static double pixels_between(const pair *p, double low, double high)
     return count;
 }
 
-/* Full scale as given, or the highest count where it holds more pixels than the counts just below: noise thins
- * out upwards, only a ceiling gathers. Just below is the next count that occurs, or a quarter of the noise's sd
- * where that is more. One or two pixels are chance. */
+/* Full scale as given, or the highest count where it gathers pixels. */
 static void find_saturation(const pair *p, double full_scale, uf_photon_point *point)
 {
     double ordinary = p->dark->ordinary_pixels;
@@ -318,10 +321,9 @@ static void find_saturation(const pair *p, double full_scale, uf_photon_point *p
         point->saturated_fraction = pixels_between(p, full_scale, INFINITY) / ordinary;
         return;
     }
-    double next =
-        fmin(highest_count(p, point->highest_adu), point->highest_adu - tail_sd * sqrt(point->variance_adu2));
+    double next = highest_count(p, point->highest_adu);
     double at = pixels_between(p, point->highest_adu, INFINITY), below = pixels_between(p, next, point->highest_adu);
-    if (at >= 3 && at > below) {
+    if (at >= LEAST_AT_CEILING && at > more_than_below * below) {
         point->saturation_adu = point->highest_adu;
         point->saturated_fraction = at / ordinary;
     }

@@ -13,10 +13,11 @@
  * saturated do not count anyway, as long as they are few. */
 static const double saturated_most = 0.001, saturated_cells_most = 0.05;
 
-/* The background is found as long as it is among the lowest values of every pixel: in simulated fields up to 55 %
- * of cells and down to five background values a pixel; at 63 % some places are cells, and nothing else says so. A
- * film of which a fifth does not agree is not even. */
-static const double rejected_cells_most = 0.5, background_least = 5, rejected_most = 0.2;
+/* The background is found as long as it is among the lowest values of every pixel. In simulated fields that holds
+ * up to half of them covered, with twelve background values a pixel on average; with nine, some pixels have too
+ * few by chance, and at 63 % whole places are cells while nothing else says so. A film of which a fifth does not
+ * agree is not even. */
+static const double rejected_cells_most = 0.5, background_least = 12, rejected_most = 0.2;
 
 /* ---- saturation ------------------------------------------------------------------------------ */
 
@@ -56,14 +57,17 @@ static top_counts look_at_top(const uf_flat_stack *stack, const uf_flat_request 
     return top;
 }
 
-/* At full scale as given, or where counts pile up: more at the highest than at the next lower one. */
+/* Fewer pixels at the highest count are chance. */
+enum { LEAST_AT_CEILING = 10 };
+
+/* At full scale as given, or where counts pile up: twice as many at the highest as at the next lower one. */
 static uf_status check_saturation(const uf_flat_stack *stack, const uf_flat_request *request, float *row,
                                   uf_error *error)
 {
     double most = request->sample == UF_FLAT_CELLS ? saturated_cells_most : saturated_most;
     for (int k = 0; k < stack->count; k++) {
         top_counts top = look_at_top(stack, request, k, row);
-        int full = top.highest >= request->full_scale_adu || (top.at >= 3 && top.at > top.next);
+        int full = top.highest >= request->full_scale_adu || (top.at >= LEAST_AT_CEILING && top.at > 2 * top.next);
         double share = top.at / ((double)stack->width * stack->height);
         if (full && share > most)
             return uf_fail(

@@ -28,6 +28,7 @@ enum { UF_FLAT_IMAGES_LEAST = 3, UF_FLAT_IMAGES_MOST = 1000 };
 /* Images kept. Zeroed it is empty and may be freed. */
 typedef struct uf_flat_stack {
     int width, height, count;
+    uf_count_step step; /* between neighbouring counts */
     uf_arena arena;
     struct uf_flat_image *images; /* UF_FLAT_IMAGES_MOST, from the arena */
 } uf_flat_stack;
@@ -70,10 +71,9 @@ typedef struct uf_flat {
     double lowest, highest;  /* of `image` */
     int lowest_x, lowest_y;
     int images;
-    double *level_adu; /* of each image, above the dark */
-    double
-        *unlikeness; /* of each image: 75th percentile of its relative departures (cells: to the dark side only) from
-                           the flat over 8 x 8 tiles */
+    double *level_adu;  /* of each image, above the dark */
+    double *unlikeness; /* of each image: 75th percentile, over 8 x 8 tiles, of its relative departures from the flat
+                           (cells: to the dark side only) */
 } uf_flat;
 
 #define UF_FLAT_SMOOTH_MOST 100.0
@@ -91,7 +91,7 @@ typedef struct uf_flat {
  *
  * UF_INPUT: fewer than 3 images; one that is saturated (more than 0.1 % of its pixels; cells: 5 %), or hardly
  * brighter than the dark, or much unlike the rest, by its number from 1; more values that stand out than there
- * may be (a fifth; cells: half, or fewer than 5 background values a pixel on average); a flat with places at or
+ * may be (a fifth; cells: half, or fewer than 12 background values a pixel on average); a flat with places at or
  * below UF_FLAT_LOWEST, with the worst; planes of another size; smooth_px out of 0 .. UF_FLAT_SMOOTH_MOST;
  * defects too large to be filled. UF_MEMORY. After a failure work's arena stands where it stood.
  */

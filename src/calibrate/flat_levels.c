@@ -7,7 +7,7 @@
 #include "fit/robust.h"
 
 /* Levels and shape hold each other after a few rounds: medians move less each time. */
-enum { LATTICE = 1 << 14, ROUNDS = 8, TILES = 8 };
+enum { LATTICE = 1 << 14, ROUNDS = 4, TILES = 8 };
 
 /* A pixel with less signal than half its noise says nothing about a flat, and an image with a tenth of the light
  * of the others was taken by accident. */
@@ -94,10 +94,10 @@ static void find_shape(lattice *l)
 }
 
 /* Noise of a value where the flat is 1, from each image's thousands of pixels and not from the few values of one;
- * shot noise grows with the root of the light. The shape has been made of the same values and takes its share of
- * them. */
+ * shot noise grows with the root of the light. */
 static double typical_noise(const lattice *l, double *scratch)
 {
+    double rounding = uf_count_step_adu(&l->stack->step) / sqrt(12);
     for (int k = 0; k < l->images; k++) {
         const float *value = values_of(l, k);
         size_t n = 0;
@@ -106,9 +106,9 @@ static double typical_noise(const lattice *l, double *scratch)
                 double shape = (double)l->shape[p];
                 l->scratch[n++] = (float)(((double)value[p] / l->levels->level_adu[k] - shape) / sqrt(shape));
             }
-        scratch[k] = n ? uf_flat_middle(l->request->sample, l->scratch, n, 0).sd : 0;
+        scratch[k] = n ? uf_flat_spread(l->request->sample, l->scratch, n, rounding / l->levels->level_adu[k]) : 0;
     }
-    return uf_median(scratch, (size_t)l->images) * sqrt(l->images / (l->images - 1.0));
+    return uf_median(scratch, (size_t)l->images);
 }
 
 /* ---- images that do not belong --------------------------------------------------------------- */

@@ -15,12 +15,10 @@ static const double cells_sigma = 2.5;
 enum { LEAST_TO_REJECT = 5, ROUNDS = 50 };
 
 /* From a median absolute departure, or the distance of the lower quartile from the median, which is as large for
- * normal values. That of n values is small on average by some 1 - 0.8 / n (Croux and Rousseeuw 1992, COMPSTAT
- * 1:411). */
-static double robust_sd(double departure, size_t n, double median, double typical_sd)
+ * normal values. */
+static double robust_sd(double departure, double median, double typical_sd)
 {
-    double count = (double)n, sd = UF_MAD_TO_SD * departure * count / (count - 0.8);
-    return fmax(sd, typical_sd * sqrt(fmax(0.01, median)));
+    return fmax(UF_MAD_TO_SD * departure, typical_sd * sqrt(fmax(0.01, median)));
 }
 
 static double median_of(float *values, size_t n)
@@ -35,7 +33,7 @@ static uf_middle middle_of_film(float *values, size_t n, double typical_sd)
     m.median = median_of(values, n);
     for (size_t k = 0; k < n; k++)
         values[k] = fabsf(values[k] - (float)m.median);
-    m.sd = robust_sd(median_of(values, n), n, m.median, typical_sd);
+    m.sd = robust_sd(median_of(values, n), m.median, typical_sd);
     if (n >= LEAST_TO_REJECT) {
         m.low = m.median - film_sigma * m.sd;
         m.high = m.median + film_sigma * m.sd;
@@ -75,7 +73,7 @@ static uf_middle middle_of_background(float *values, size_t n, double typical_sd
     for (int round = 0; round < ROUNDS; round++) {
         size_t before = kept;
         m.median = sorted_quantile(values, kept, 0.5);
-        m.sd = robust_sd(m.median - sorted_quantile(values, kept, 0.25), kept, m.median, typical_sd);
+        m.sd = robust_sd(m.median - sorted_quantile(values, kept, 0.25), m.median, typical_sd);
         if (n < LEAST_TO_REJECT)
             return m;
         m.high = m.median + cells_sigma * m.sd;
@@ -92,4 +90,30 @@ uf_middle uf_flat_middle(uf_flat_sample sample, float *values, size_t n, double 
 {
     return sample == UF_FLAT_CELLS ? middle_of_background(values, n, typical_sd)
                                    : middle_of_film(values, n, typical_sd);
+}
+
+double uf_flat_spread(uf_flat_sample sample, float *values, size_t n, double least_sd)
+{
+    float median = (float)uf_flat_middle(sample, values, n, 0).median;
+    double sd = fmax(least_sd, 0);
+    size_t counted = 0;
+    /* the film's middle has left the values' absolute departures, that of cells their order */
+    for (size_t k = 0; k < n; k++)
+        if (sample != UF_FLAT_CELLS)
+            values[counted++] = values[k];
+        else if (values[k] <= median)
+            values[counted++] = median - values[k];
+    sd = fmax(sd, UF_MAD_TO_SD * median_of(values, counted));
+    for (int round = 0; round < ROUNDS && sd > 0; round++) {
+        double squares = 0, within = 0, before = sd;
+        for (size_t k = 0; k < counted; k++)
+            if ((double)values[k] <= film_sigma * sd) {
+                squares += (double)values[k] * (double)values[k];
+                within += sample == UF_FLAT_CELLS && values[k] == 0.0f ? 0.5 : 1; /* half of those lie above */
+            }
+        sd = fmax(least_sd, sqrt(squares / within));
+        if (fabs(sd - before) < 1e-6 * before)
+            break;
+    }
+    return sd;
 }

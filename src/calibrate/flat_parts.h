@@ -30,6 +30,11 @@ typedef struct uf_middle {
  * so that a few values that happen to lie close do not throw the others out. */
 uf_middle uf_flat_middle(uf_flat_sample sample, float *values, size_t n, double typical_sd);
 
+/* The sd of thousands of values about their middle, which are reordered: of those within 3.5 sd of the median
+ * (cells: below it), again and again from the robust sd or `least_sd`. A quantile of whole counts that differ
+ * little is 0 or a step; this is in between. */
+double uf_flat_spread(uf_flat_sample sample, float *values, size_t n, double least_sd);
+
 /* ---- levels ---------------------------------------------------------------------------------- */
 
 /* Figures found on a lattice of pixels. */

@@ -64,12 +64,12 @@ static void write_pixel(const finding *f, int x, int y, const kept_values *kept,
     int n = f->stack->count;
     double value = n < LEAST_FOR_MEAN ? middle->median : kept->mean;
     double sd = kept->count > 1 ? sqrt(kept->squares / (kept->count - 1) / kept->count) : (double)NAN;
-    sd *= n == 3 ? median_of_three : n == 4 ? median_of_four : 1;
+    double as_median = n == 3 ? median_of_three : n == 4 ? median_of_four : 1;
     double a = kept->half_count[0], b = kept->half_count[1];
     /* Half the difference has the variance (1/a + 1/b) / 4 of one value, the mean 1 / (a + b). */
-    double half = (kept->half_mean[0] - kept->half_mean[1]) / 2 * sqrt(4 * a * b) / (a + b);
+    double half = (kept->half_mean[0] - kept->half_mean[1]) / 2 * sqrt(4 * a * b) / (a + b) * as_median;
     uf_plane_row(out->image, y)[x] = (float)value;
-    uf_plane_row(out->noise, y)[x] = value > 0 ? (float)(sd / value) : NAN;
+    uf_plane_row(out->noise, y)[x] = value > 0 ? (float)(sd * as_median / value) : NAN;
     uf_plane_row(out->count, y)[x] = (float)kept->count;
     uf_plane_row(out->half_difference, y)[x] = a > 0 && b > 0 ? (float)half : NAN;
 }

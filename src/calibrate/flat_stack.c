@@ -76,6 +76,7 @@ uf_status uf_flat_add(uf_flat_stack *stack, uf_plane image, uf_error *error)
         status = keep(stack, image, &stack->images[stack->count], error);
     if (status != UF_OK)
         return status;
+    uf_count_step_add(&stack->step, image);
     stack->width = image.width;
     stack->height = image.height;
     stack->count++;

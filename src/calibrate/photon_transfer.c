@@ -33,6 +33,7 @@ typedef struct fitting {
     uf_point_fit *fits;
     double top_signal, top_mean; /* of the point of the largest variance, when others lie past it; else NaN */
     double scale;                /* largest signal used: regressors are of order one */
+    double foot_adu2;            /* variance where there is no light */
 } fitting;
 
 /* ---- which points ---------------------------------------------------------------------------- */
@@ -170,13 +171,13 @@ static uf_status choose_points(fitting *f, uf_error *error)
  * distance from the line the covariance takes away (kappa_3 = kappa_2 for Poisson counts). */
 static double sd_at_line(const fitting *f, const uf_photon_point *p, double slope)
 {
-    double line = f->dark->variance_adu2 + slope * p->signal_adu;
+    double line = f->foot_adu2 + slope * p->signal_adu;
     return p->variance_adu2 > 0 ? line * p->variance_sd_adu2 / p->variance_adu2 : 0;
 }
 
-static double above_dark(const fitting *f, const uf_photon_point *p)
+static double above_foot(const fitting *f, const uf_photon_point *p)
 {
-    return p->variance_adu2 - f->dark->variance_adu2;
+    return p->variance_adu2 - f->foot_adu2;
 }
 
 /* Sums of the normal equations at the weights of `slope`; the line goes through the foot with one parameter. */
@@ -187,7 +188,7 @@ static uf_linear sums_at(const fitting *f, double slope, int parameters)
         const uf_photon_point *p = f->points + f->order[k];
         double sd = sd_at_line(f, p, slope), x[2] = {p->signal_adu / f->scale, 1};
         if (f->fits[f->order[k]].use == UF_POINT_USED && sd > 0)
-            uf_linear_add(&sums, x, above_dark(f, p), 1 / (sd * sd));
+            uf_linear_add(&sums, x, above_foot(f, p), 1 / (sd * sd));
     }
     return sums;
 }
@@ -198,7 +199,7 @@ static double start_slope(const fitting *f)
     for (int k = 0; k < f->count; k++)
         if (f->fits[k].use == UF_POINT_USED) {
             x += f->points[k].signal_adu;
-            y += above_dark(f, f->points + k);
+            y += above_foot(f, f->points + k);
         }
     return y / x;
 }
@@ -254,6 +255,20 @@ static void fit_free_line(const fitting *f, uf_photon_transfer *t)
     t->line_offset_sd_adu = hypot(fit.sd[1] * stretch / slope, f->dark->variance_sd_adu2 / slope);
 }
 
+/* Where rounding hides the dark noise, it does not add the same in the dark as in the light: the points
+ * themselves have to tell where the line begins. */
+static uf_status fit_without_dark(fitting *f, uf_photon_transfer *t, uf_error *error)
+{
+    double intercept = (f->dark->offset_adu - t->line_offset_adu) * t->slope_adu;
+    if (!f->dark->noise_is_bound || isnan(intercept))
+        return UF_OK;
+    double own_share = t->line_offset_sd_adu / f->scale; /* the slope of a line whose foot errs by that much */
+    f->foot_adu2 += intercept;
+    uf_status status = fit_line(f, t, error);
+    t->slope_sd_adu = hypot(t->slope_sd_adu, t->slope_adu * own_share);
+    return status;
+}
+
 static void fill_departures(fitting *f, const uf_photon_transfer *t)
 {
     for (int k = 0; k < f->count; k++) {
@@ -261,8 +276,8 @@ static void fill_departures(fitting *f, const uf_photon_transfer *t)
         double line = t->slope_adu * p->signal_adu, sd = sd_at_line(f, p, t->slope_adu);
         if (f->fits[k].use == UF_POINT_NO_LIGHT)
             continue;
-        f->fits[k].departure = above_dark(f, p) / line - 1;
-        f->fits[k].departure_sigma = sd > 0 ? (above_dark(f, p) - line) / sd : (double)NAN;
+        f->fits[k].departure = above_foot(f, p) / line - 1;
+        f->fits[k].departure_sigma = sd > 0 ? (above_foot(f, p) - line) / sd : (double)NAN;
     }
 }
 
@@ -407,19 +422,21 @@ static const double correlated = 0.03;
 static unsigned note_points(const fitting *f, uf_photon_transfer *t)
 {
     unsigned notes = 0;
-    double least = 0, most = 0, worst = 0, brightest = 0;
-    t->correlation = 0;
+    double least = 0, most = 0, worst = 0, brightest = 0, along = 0, down = 0, pixels = 0;
     for (int k = 0; k < f->count; k++) {
         const uf_photon_point *p = f->points + k;
         if (f->fits[k].use != UF_POINT_USED)
             continue;
-        t->correlation = fmax(t->correlation, fmax(fabs(p->correlation_x), fabs(p->correlation_y)));
+        along += p->pixels * p->correlation_x;
+        down += p->pixels * p->correlation_y;
+        pixels += p->pixels;
         worst = fmax(worst, fabs(f->fits[k].departure));
         brightest = fmax(brightest, p->variance_adu2);
         notes |= fabs(p->flicker) > 0.05 ? UF_CAMERA_FLICKER : 0u;
     }
     (void)range_used(f, &least, &most);
-    notes |= t->correlation > correlated ? UF_CAMERA_CORRELATED : 0u;
+    t->correlation = fmax(fabs(along), fabs(down)) / pixels;
+    notes |= t->correlation > correlated + 3 / sqrt(pixels) ? UF_CAMERA_CORRELATED : 0u;
     notes |= t->chi_square_p < 0.001 && worst > 0.02 ? UF_CAMERA_LINE_BENDS : 0u;
     notes |= most < levels_well_apart * least ? UF_CAMERA_NARROW_RANGE : 0u;
     notes |= brightest < 2 * f->dark->variance_adu2 ? UF_CAMERA_LOW_SIGNAL : 0u;
@@ -433,7 +450,10 @@ static unsigned take_notes(const fitting *f, uf_photon_transfer *t)
     double away = fabs(t->line_offset_adu - dark->offset_adu);
     notes |= dark->noise_is_bound ? UF_CAMERA_ROUNDING : 0u;
     notes |= dark->clipped_share > 0.001 ? UF_CAMERA_DARK_CLIPPED : 0u;
-    notes |= away > 4 * t->line_offset_sd_adu && away > dark->noise_rms_adu ? UF_CAMERA_OFFSETS_DISAGREE : 0u;
+    notes |= dark->frames->count < UF_MEDIAN_NOISE_FRAMES ? UF_CAMERA_FEW_DARKS : 0u;
+    notes |= !dark->noise_is_bound && away > 4 * t->line_offset_sd_adu && away > dark->noise_rms_adu
+                 ? UF_CAMERA_OFFSETS_DISAGREE
+                 : 0u;
     return notes;
 }
 
@@ -461,6 +481,9 @@ static uf_status fit_all(fitting *f, double excess_noise, uf_photon_transfer *t,
     if (status != UF_OK)
         return status;
     fit_free_line(f, t);
+    status = fit_without_dark(f, t, error);
+    if (status != UF_OK)
+        return status;
     fill_departures(f, t);
     find_linear_range(f, t);
     find_full_scale(f, t);
@@ -474,6 +497,7 @@ uf_status uf_photon_transfer_fit(const uf_dark *dark, const uf_photon_point *poi
 {
     uf_point_fit own[UF_PHOTON_POINTS_MOST];
     fitting f = {.dark = dark,
+                 .foot_adu2 = dark->variance_adu2,
                  .points = points,
                  .count = count,
                  .fits = fits ? fits : own,

@@ -105,9 +105,10 @@ static void test_figures_come_back(void **state)
     (void)state;
     /* offset, gain, read noise, light a ms: a scientific, a slow-scan and a coarse camera, one 12 bits shifted
      * into 16 */
-    static const double cameras[][5] = {
-        {101.37, 0.465, 1.62, 47.3, 1}, {498.2, 2.17, 6.13, 230.9, 1}, {17.9, 11.3, 21.7, 380.1, 1},
-        {1616.3, 0.144, 5.9, 47.3, 16}};
+    static const double cameras[][5] = {{101.37, 0.465, 1.62, 47.3, 1},
+                                        {498.2, 2.17, 6.13, 230.9, 1},
+                                        {17.9, 11.3, 21.7, 380.1, 1},
+                                        {1616.3, 0.144, 5.9, 47.3, 16}};
     for (int k = 0; k < 4; k++) {
         bench b;
         simulated_camera camera = usual;
@@ -143,7 +144,7 @@ static void test_figures_come_back(void **state)
 static void test_sds_are_true(void **state)
 {
     (void)state;
-    double gain = 0, read = 0, offset = 0, line_offset = 0, chi_square = 0;
+    double gain = 0, read = 0, noise = 0, offset = 0, line_offset = 0, chi_square = 0;
     for (int k = 0; k < 40; k++) {
         bench b;
         simulated_camera camera = usual;
@@ -154,17 +155,21 @@ static void test_sds_are_true(void **state)
         add_series(&b, 47.3, six_exposures, 6);
         fit(&b);
         const uf_photon_transfer *t = &b.transfer;
+        assert_int_equal(t->notes, UF_CAMERA_FEW_DARKS);
         gain += pow((t->gain_e_per_adu - camera.gain_e_per_adu) / t->gain_sd_e_per_adu, 2) / 40;
         read += pow((t->read_noise_e - camera.read_e) / t->read_noise_sd_e, 2) / 40;
+        noise += pow((b.dark.noise_adu - camera.read_e / camera.gain_e_per_adu) / b.dark.noise_sd_adu, 2) / 40;
         offset += pow((t->offset_adu - camera.offset_adu) / t->offset_sd_adu, 2) / 40;
         line_offset += pow((t->line_offset_adu - camera.offset_adu) / t->line_offset_sd_adu, 2) / 40;
         chi_square += t->chi_square / 5 / 40;
         end(&b);
     }
-    printf("mean squares of errors in sds: gain %.2f, read noise %.2f, offset %.2f, of the line %.2f; chi-square %.2f\n",
-           gain, read, offset, line_offset, chi_square);
+    printf("mean squares of errors in sds: gain %.2f, read noise %.2f (in the dark %.2f), offset %.2f, of the line "
+           "%.2f; chi-square %.2f\n",
+           gain, read, noise, offset, line_offset, chi_square);
     assert_near_abs(gain, 1.135, 0.695);
     assert_near_abs(read, 1.135, 0.695);
+    assert_near_abs(noise, 1.135, 0.695);
     assert_near_abs(line_offset, 1.135, 0.695);
     assert_near_abs(chi_square, 1.035, 0.325);
     assert_near_abs(offset, 1.135, 0.695);
@@ -204,7 +209,7 @@ static void test_a_lamp_that_flickers(void **state)
     bench b;
     simulated_camera camera = usual;
     camera.response_sd = 0.05;
-    start(&b, &camera, 6);
+    start(&b, &camera, 8);
     finish_dark(&b);
     for (int k = 0; k < 6; k++)
         add_pair(&b, 47.3 * six_exposures[k], 47.3 * six_exposures[k] / 1.18, six_exposures[k]);
@@ -436,6 +441,22 @@ static void test_a_bent_response(void **state)
     end(&b);
 }
 
+/* A shutter that takes 0.9 ms to open: the line of signal against exposure does not begin at 0, and is straight. */
+static void test_a_slow_shutter(void **state)
+{
+    (void)state;
+    bench b;
+    start(&b, &usual, 8);
+    finish_dark(&b);
+    for (int k = 0; k < 6; k++)
+        add_pair(&b, 47.3 * (six_exposures[k] - 0.9), 47.3 * (six_exposures[k] - 0.9), six_exposures[k]);
+    fit(&b);
+    assert_near_abs(b.transfer.linear_to_adu, b.points[5].mean_adu, 0);
+    assert_near_rel(b.transfer.rate_adu_per_ms, 47.3 / usual.gain_e_per_adu, 0.003);
+    assert_int_equal(b.transfer.notes, 0);
+    end(&b);
+}
+
 /* ---- multiplication -------------------------------------------------------------------------- */
 
 /* An excess noise of sqrt 2 and a hundredfold multiplication: with the factor given, and from a set without it. */
@@ -470,6 +491,9 @@ static void test_excess_noise(void **state)
     uf_photon_transfer_set_excess(&with.transfer, &with.dark, sqrt(2), 0);
     assert_near_rel(with.transfer.gain_e_per_adu, 0.0617, 0.02);
     assert_near_rel(with.transfer.read_noise_e, 0.31, 0.03);
+    double share = with.transfer.slope_sd_adu / with.transfer.slope_adu;
+    uf_photon_transfer_set_excess(&with.transfer, &with.dark, 1.4, 0.035); /* squared: twice the share, 0.05 */
+    assert_near_rel(with.transfer.gain_sd_e_per_adu / with.transfer.gain_e_per_adu, hypot(share, 0.05), 1e-12);
     assert_int_equal(uf_excess_noise(&without.transfer, &with.transfer, &excess, &without.error), UF_INPUT);
     assert_non_null(strstr(without.error.text, "below 1"));
     end(&with);
@@ -485,15 +509,22 @@ static void test_rounding(void **state)
     (void)state;
     bench b;
     simulated_camera camera = usual;
+    camera.width = camera.height = 300;
+    camera.pattern_adu = 0; /* all pixels round alike, and the dark variance is not that of rounding */
+    camera.offset_adu = 101;
     camera.gain_e_per_adu = 4.31;
     camera.read_e = 0.25 * 4.31;
     start(&b, &camera, 10);
     finish_dark(&b);
-    add_series(&b, 170, six_exposures, 6);
+    add_series(&b, 5, six_exposures, 6);
     fit(&b);
     assert_true(b.dark.noise_is_bound && (b.transfer.notes & UF_CAMERA_ROUNDING));
     assert_near_abs(b.dark.noise_adu, 0.40, 1e-12);
-    assert_near_rel(b.transfer.gain_e_per_adu, 4.31, 0.02);
+    assert_near_rel(b.transfer.gain_e_per_adu, 4.31, 0.02); /* the foot of the line is the points' own then */
+    assert_near_abs(b.transfer.gain_e_per_adu, 4.31, 4 * b.transfer.gain_sd_e_per_adu);
+    assert_true(b.transfer.chi_square_p > 0.001 && !(b.transfer.notes & UF_CAMERA_OFFSETS_DISAGREE));
+    for (int k = 0; k < 6; k++) /* dozens of pixels at the highest count, hundreds one below: no ceiling */
+        assert_true(isnan(b.points[k].saturation_adu));
     end(&b);
     camera.read_e = 1.1 * 4.31;
     start(&b, &camera, 10);
@@ -595,13 +626,15 @@ static void test_stretched_counts(void **state)
 {
     (void)state;
     bench b;
-    start(&b, &usual, 4);
+    simulated_camera camera = usual;
+    camera.gain_e_per_adu = 8; /* little noise: the highest counts are taken by several pixels */
+    camera.unevenness = 0;
+    start(&b, &camera, 4);
     finish_dark(&b);
-    b.camera.unevenness = 0;
-    for (int k = 0; k < 8; k++) {
+    for (int k = 0; k < 12; k++) {
         uf_plane flats[2];
         for (int n = 0; n < 2; n++) {
-            flats[n] = expose(&b.work, &b.camera, 30 + 10 * k);
+            flats[n] = expose(&b.work, &b.camera, 300 + 100 * k);
             for (int i = 0; i < flats[n].width * flats[n].height; i++)
                 flats[n].data[i] = (float)floor(4.4 * (double)flats[n].data[i] + 0.5);
         }
@@ -650,6 +683,40 @@ static void test_defects_are_found(void **state)
     assert_int_equal(counts.any, 3); /* and none of the 12704 good ones */
     assert_int_equal(counts.noise, 1);
     assert_int_equal(counts.response, 1);
+    end(&b);
+}
+
+/* A good pixel among defects is not held to them. */
+static void test_a_good_pixel_among_defects(void **state)
+{
+    (void)state;
+    bench b;
+    uf_plane map;
+    uf_defect_counts counts;
+    start(&b, &usual, 0);
+    for (int k = 0; k < 6; k++) {
+        uf_plane frame = expose(&b.work, &b.camera, 0);
+        for (int i = 0; i < 25; i++)
+            uf_plane_row(frame, 50 + i / 5)[60 + i % 5] += i == 12 ? 0 : 200;
+        add_dark(&b, frame);
+    }
+    finish_dark(&b);
+    uf_plane flats[2];
+    for (int n = 0; n < 2; n++) {
+        flats[n] = expose(&b.work, &b.camera, 3000);
+        for (int i = 0; i < 25; i++)
+            if (i != 12)
+                uf_plane_row(flats[n], 50 + i / 5)[60 + i % 5] = (float)(2000 + i + n); /* a third of the light */
+    }
+    assert_int_equal(pair_of(&b, flats[0], flats[1], (double)NAN), UF_OK);
+    assert_int_equal(uf_plane_take(&b.work, usual.width, usual.height, &map, NULL), UF_OK);
+    assert_int_equal(uf_camera_defects(&b.work, &b.dark, &b.response, map, &counts, NULL), UF_OK);
+    assert_int_equal(uf_plane_row(map, 52)[62], 0);
+    assert_true((int)uf_plane_row(map, 50)[60] & UF_DEFECT_RESPONSE);
+    assert_int_equal(counts.any, 24);
+    map.width--;
+    assert_int_equal(uf_camera_defects(&b.work, &b.dark, NULL, map, &counts, &b.error), UF_INPUT);
+    assert_non_null(strstr(b.error.text, "130 x 97 pixels, the dark frames 131 x 97"));
     end(&b);
 }
 
@@ -749,7 +816,8 @@ static void test_series_that_cannot_be_used(void **state)
     b.transfer = t;
     b.points[5].exposure_ms = 40;
     assert_int_equal(uf_photon_transfer_fit(&b.dark, b.points, 6, 1, &t, NULL, &b.error), UF_OK);
-    expect(&b, uf_excess_noise(&t, &b.transfer, &excess, &b.error), "without multiplication has fewer than 2 exposures");
+    expect(&b, uf_excess_noise(&t, &b.transfer, &excess, &b.error),
+           "without multiplication has fewer than 2 exposures");
     expect(&b, uf_photon_transfer_fit(&b.dark, b.points, 0, 1, &t, NULL, &b.error), "0 pairs of flats");
     expect(&b, uf_photon_transfer_fit(&b.dark, b.points, 3, 0.9, &t, NULL, &b.error), "excess noise factor of 0.9");
     end(&b);
@@ -780,6 +848,7 @@ int main(void)
                                        cmocka_unit_test(test_a_ceiling),
                                        cmocka_unit_test(test_a_full_well),
                                        cmocka_unit_test(test_a_bent_response),
+                                       cmocka_unit_test(test_a_slow_shutter),
                                        cmocka_unit_test(test_excess_noise),
                                        cmocka_unit_test(test_rounding),
                                        cmocka_unit_test(test_darks_cut_off),
@@ -788,6 +857,7 @@ int main(void)
                                        cmocka_unit_test(test_weak_series),
                                        cmocka_unit_test(test_stretched_counts),
                                        cmocka_unit_test(test_defects_are_found),
+                                       cmocka_unit_test(test_a_good_pixel_among_defects),
                                        cmocka_unit_test(test_dark_frames_that_cannot_be_used),
                                        cmocka_unit_test(test_darks_without_noise),
                                        cmocka_unit_test(test_pairs_that_cannot_be_used),

@@ -32,6 +32,7 @@ static void test_no_degrees(void **state)
 
 int main(void)
 {
-    const struct CMUnitTest tests[] = {cmocka_unit_test(test_two_and_four_degrees), cmocka_unit_test(test_no_degrees)};
+    const struct CMUnitTest tests[] = {cmocka_unit_test(test_two_and_four_degrees),
+                                       cmocka_unit_test(test_no_degrees)};
     return cmocka_run_group_tests_name("chi-square", tests, NULL, NULL);
 }

@@ -34,7 +34,7 @@ class Point(ctypes.Structure):
 
 
 class Stack(ctypes.Structure):
-    _fields_ = [("width", I), ("height", I), ("count", I), ("first", P), ("current", P), ("images", P)]
+    _fields_ = [("width", I), ("height", I), ("count", I), ("step", Step), ("first", P), ("current", P), ("images", P)]
 
 
 class Request(ctypes.Structure):
