@@ -367,12 +367,17 @@ static uf_status nothing_found(search *s)
                     "%.300s: no name there fits '%.200s', but %d in the folders below do; name the folder, too, like "
                     "'{plate}/%.200s', or '{*}/...' where it does not matter",
                     dir, request->name, below, request->name);
-    else if (s->unlike && fits_in_lower_case(s, s->unlike_example))
+    else if (s->unlike && uf_template_match(&s->job->name, s->unlike_example, NULL, NULL, spans, NULL) > 0)
         status = uf_fail(
             s->job->error, UF_INPUT,
-            "%.300s: no name fits '%.200s', but '%.200s' would in other letters or with another kind of well; "
-            "write --name as the files are written",
-            dir, request->name, s->unlike_example);
+            "%.300s: '%.200s' would fit '%.200s' if its {well} were a well, like B07 (or its {time_min} a number); "
+            "with --vessel coverslip or dish any name will do",
+            dir, s->unlike_example, request->name);
+    else if (s->unlike && fits_in_lower_case(s, s->unlike_example))
+        status = uf_fail(s->job->error, UF_INPUT,
+                         "%.300s: no name fits '%.200s', but '%.200s' would in other letters; "
+                         "write --name as the files are written",
+                         dir, request->name, s->unlike_example);
     else
         status = uf_fail(
             s->job->error, UF_INPUT,

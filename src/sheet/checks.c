@@ -9,6 +9,8 @@
 #include <string.h>
 #include <strings.h>
 
+#include "sheet/amount.h"
+
 /* ---- groups ---------------------------------------------------------------------------------- */
 
 enum { MOST_KEYS = 6 };
@@ -310,6 +312,39 @@ static void check_words(const uf_sheet *sheet, uf_sheet_column column, uf_faults
             first->text[column], uf_spreadsheet_damage(first->text[column]), count);
 }
 
+/* "thrift 10 uM": a word of its own that is an amount in a unit we know. */
+static bool holds_amount(const char *word)
+{
+    for (const char *p = word; *p; p++) {
+        uf_amount amount;
+        bool starts = p == word || p[-1] == ' ' || p[-1] == '_' || p[-1] == '(';
+        size_t length = strcspn(p, ")");
+        char rest[80];
+        if (!starts || length >= sizeof rest)
+            continue;
+        memcpy(rest, p, length);
+        rest[length] = '\0';
+        if (uf_amount_parse(rest, &amount) == UF_AMOUNT_GOOD && *amount.unit && uf_unit_known(amount.unit))
+            return true;
+    }
+    return false;
+}
+
+static void check_amounts(const uf_sheet *sheet, uf_faults *faults)
+{
+    int count = 0;
+    const uf_sheet_row *first = NULL;
+    for (int k = 0; k < sheet->count; k++)
+        if (holds_amount(sheet->rows[k].text[UF_SHEET_TREATMENT]) && !count++)
+            first = &sheet->rows[k];
+    if (count)
+        uf_fault_add(
+            faults, UF_WARNING, "dose_in_name", (uf_place){sheet->path, first->line, "treatment"},
+            "'%.60s' holds a dose (%d rows); written so, each dose is a treatment of its own and no curve can be "
+            "fitted: give it in the column dose",
+            first->text[UF_SHEET_TREATMENT], count);
+}
+
 /* Names that differ in capitals or blanks only are most likely one. */
 static uf_status check_twin_names(const uf_sheet *sheet, uf_sheet_column column, uf_faults *faults, uf_error *error)
 {
@@ -358,6 +393,7 @@ uf_status uf_sheet_check_design(const uf_sheet *sheet, bool pooled, uf_faults *f
         check_blanks(sheet, names[k], faults);
         status = check_twin_names(sheet, names[k], faults, error);
     }
+    check_amounts(sheet, faults);
     check_words(sheet, UF_SHEET_PLATE, faults);
     check_blanks(sheet, UF_SHEET_INSTRUMENT, faults);
     check_blanks(sheet, UF_SHEET_REPLICATE, faults);

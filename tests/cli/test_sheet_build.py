@@ -449,6 +449,30 @@ def test_three_days_become_one_experiment(tmp_path):
     assert {(row["well"], row["coating"]) for row in rows} == {("slip1", "marram"), ("slip2", "glass")}
 
 
+def test_days_one_after_the_other(tmp_path):
+    pairs(tmp_path, ["mon/A01", "mon/A02", "other names/x-A01-y"])
+    base = ["--append", "-o", str(tmp_path / "s.csv"), *CHANNELS]
+    first = ["sheet", "build", str(tmp_path / "mon"), "--name", "{well}_{channel}.tif", "--set", "plate=mon", "--set", "passage=11", *base]
+    assert Run(first).status == 0
+    second = ["sheet", "build", str(tmp_path / "other names"), "--name", "x-{well}-y_{channel}.tif", "--set", "plate=tue", "--set", "dish=2", *base]
+    assert Run(second).status == 0
+    assert [(row["near"], row["plate"], row["passage"], row["dish"]) for row in table(tmp_path / "s.csv")] == [
+        ("mon/A01_near.tif", "mon", "11", ""), ("mon/A02_near.tif", "mon", "11", ""), ("other names/x-A01-y_near.tif", "tue", "", "2")]
+    # the same day twice is one field in two rows, and the sheet stays as it was
+    before = open(tmp_path / "s.csv").read()
+    run = Run(first)
+    assert run.status == 2 and "mon/A01" in run.err and open(tmp_path / "s.csv").read() == before
+
+
+def test_any_name_of_a_coverslip_needs_the_vessel(tmp_path):
+    pairs(tmp_path, ["left_1"])
+    run, _ = build(tmp_path, "{well}_{field}_{channel}.tif")
+    assert run.status == 2 and "--vessel coverslip" in run.err
+    assert built(tmp_path, "{well}_{field}_{channel}.tif", "--vessel", "coverslip")[0]["well"] == "left"
+    run, _ = build(tmp_path, "LEFT_{field}_{channel}.tif")
+    assert run.status == 2 and "in other letters" in run.err
+
+
 # ---- images yet to be made ----------------------------------------------------------------------------
 
 

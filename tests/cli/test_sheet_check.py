@@ -244,6 +244,13 @@ def test_names_that_differ_in_capitals(folder):
     assert "twin_names" in warnings(check(write(folder / "s.csv", GOOD.replace("d_wide.tif,p2,A02,thrift", "d_wide.tif,p2,A02,Thrift")))[1])
 
 
+@pytest.mark.parametrize("name, seen", [("thrift 10 uM", True), ("10 nM thrift", False), ("thrift_3uM", True), ("thrift (5 %)", True),
+                                        ("thrift 2", False), ("CD 44", False), ("thrift 5 days", False)])
+def test_doses_in_the_name_of_a_treatment(folder, name, seen):
+    found = check(write(folder / "s.csv", GOOD.replace("thrift", name)))[1]
+    assert ("dose_in_name" in warnings(found)) == seen
+
+
 def test_pooling(folder):
     sheet = write(folder / "s.csv", "near,wide,plate,well,coating\na_near.tif,a_wide.tif,p1,A1,marram\n"
                                     "b_near.tif,b_wide.tif,p1,A2,marram\n")
