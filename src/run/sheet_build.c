@@ -95,7 +95,7 @@ static void find_base(build_job *job)
     if (job->request->root)
         uf_text_add(&folder, job->request->root);
     else
-        uf_text_bytes(&folder, name == out ? "." : out, name == out ? 1 : (size_t)(name - out));
+        uf_text_bytes(&folder, name == out ? "." : out, name - out < 2 ? 1 : (size_t)(name - out) - 1);
     job->base = folder.failed ? NULL : uf_path_plain(folder.bytes);
     uf_text_free(&folder);
 }

@@ -163,6 +163,9 @@ def test_paths_are_relative_to_the_sheet_or_the_root(tmp_path):
                             ("sheets/s.csv", ["--root", str(tmp_path / "images")], "A01_near.tif")):
         assert Run([*base, "-o", str(tmp_path / out), *more]).status == 0
         assert table(tmp_path / out)[0]["near"] == near
+    # a folder that is yet to be made
+    assert Run([*base, "-o", str(tmp_path / "new/s.csv")]).status == 0
+    assert table(tmp_path / "new/s.csv")[0]["near"] == "../images/A01_near.tif"
     run = Run([*base, "-o", "s.csv"], cwd=str(tmp_path / "images"))
     assert run.status == 0 and table(tmp_path / "images/s.csv")[0]["near"] == "A01_near.tif"
 
@@ -518,7 +521,8 @@ def test_demo_scenarios_from_folder_and_layouts(tmp_path, scenario, name, more, 
 
 def test_the_sheet_is_whole_or_not_there(tmp_path):
     pairs(tmp_path, ["A01"])
-    run = Run(["sheet", "build", str(tmp_path), "-o", str(tmp_path / "A01_near.tif/s.csv"), "--name", "{well}_{channel}.tif", *CHANNELS])
+    touch(tmp_path, "notes")
+    run = Run(["sheet", "build", str(tmp_path), "-o", str(tmp_path / "notes/s.csv"), "--name", "{well}_{channel}.tif", *CHANNELS])
     assert run.status == 3
 
 
