@@ -77,13 +77,13 @@ static uf_status take_arms(layout_job *job)
     int usual = usual_controls(job->vessel);
     uf_status status = r->list ? read_list(job) : UF_OK;
     if (status == UF_OK)
-        status = add_all(job, r->treatments, r->treatment_count, UF_ROLE_SAMPLE, r->wells);
-    if (status == UF_OK)
         status =
             add_all(job, r->controls, r->control_count, UF_ROLE_CONTROL, r->control_wells ? r->control_wells : usual);
     if (status == UF_OK)
         status = add_all(job, r->positives, r->positive_count, UF_ROLE_POSITIVE,
                          r->positive_wells ? r->positive_wells : usual);
+    if (status == UF_OK)
+        status = add_all(job, r->treatments, r->treatment_count, UF_ROLE_SAMPLE, r->wells);
     if (status == UF_OK && !job->arms.count && !job->summary->faults.faults)
         status = uf_fail(
             job->error, UF_USAGE,
