@@ -198,6 +198,11 @@ def test_root(folder):
     assert check(sheet, "--root", str(folder))[0] == 0
 
 
+def test_a_file_of_commas_is_no_sheet(folder):
+    status, found = check(write(folder / "s.csv", "near,wide\n" + "," * 200000 + "\n"))
+    assert status == 2 and "200001 columns" in json.dumps(found)
+
+
 # ---- what to look at ---------------------------------------------------------------------------
 
 
