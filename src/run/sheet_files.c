@@ -264,9 +264,13 @@ static uf_status add_row(search *s, const found_file *files, int count)
     for (int k = 0; status == UF_OK && k < count; k++) {
         const found_file *file = &files[k];
         if (k && files[k - 1].role == file->role) {
+            bool folders = strcmp(files[k - 1].dir, file->dir) != 0;
             uf_fault_add(&job->summary->faults, UF_FAULT, "two_files", (uf_place){file->dir, 0, NULL},
-                         "'%.200s' and '%.200s' are both the %s image of one field; move one of them away",
-                         files[k - 1].name, file->name, uf_sheet_columns[columns[file->role]].name);
+                         "'%.200s'%s%.100s and '%.200s' are both the %s image of one field; %s", files[k - 1].name,
+                         folders ? " in " : "", folders ? files[k - 1].dir : "", file->name,
+                         uf_sheet_columns[columns[file->role]].name,
+                         folders ? "build from the folder above both, and name theirs in --name, like '{session}/...'"
+                                 : "move one of them away, or name in --name what tells them apart");
             continue;
         }
         has[file->role] = true;

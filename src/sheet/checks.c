@@ -210,6 +210,50 @@ static uf_status check_numbered_wells(const uf_sheet *sheet, uf_faults *faults, 
     return status;
 }
 
+/* ---- one well, one treatment ----------------------------------------------------------------- */
+
+/* Fields of one well got the same, unless they are of different times. */
+static uf_status check_wells(const uf_sheet *sheet, uf_faults *faults, uf_error *error)
+{
+    enum { WELL = 4 };
+    static const uf_sheet_column same[] = {UF_SHEET_TREATMENT, UF_SHEET_DOSE, UF_SHEET_COATING, UF_SHEET_ROLE,
+                                           UF_SHEET_REPLICATE};
+    grouping by = {.keys = {UF_SHEET_SESSION, UF_SHEET_PLATE, UF_SHEET_WELL, UF_SHEET_TIME_MIN}, .key_count = WELL};
+    uf_status status = sort_rows(sheet, &by, error);
+    for (int from = 0, to; status == UF_OK && from < by.count; from = to) {
+        const uf_sheet_row *first = by.rows[from];
+        to = group_end(&by, from, WELL);
+        for (int k = from + 1; *first->text[UF_SHEET_WELL] && k < to; k++)
+            for (size_t i = 0; i < sizeof same / sizeof same[0]; i++)
+                if (strcmp(first->text[same[i]], by.rows[k]->text[same[i]]) != 0)
+                    uf_fault_add(
+                        faults, UF_FAULT, "two_in_one_well",
+                        (uf_place){sheet->path, by.rows[k]->line, uf_sheet_columns[same[i]].name},
+                        "'%.60s', but line %d, of the same well, says '%.60s'; fields of one well share what was "
+                        "done to it",
+                        by.rows[k]->text[same[i]], first->line, first->text[same[i]]);
+    }
+    free(by.rows);
+    return status;
+}
+
+static uf_status check_vessels(const uf_sheet *sheet, uf_faults *faults, uf_error *error)
+{
+    grouping by = {.keys = {UF_SHEET_SESSION, UF_SHEET_PLATE, UF_SHEET_VESSEL}, .key_count = 3};
+    uf_status status = sort_rows(sheet, &by, error);
+    for (int from = 0, to; status == UF_OK && from < by.count; from = to) {
+        const uf_sheet_row *row = by.rows[from];
+        to = group_end(&by, from, 2);
+        int other = group_end(&by, from, 3);
+        if (*row->text[UF_SHEET_PLATE] && other < to)
+            uf_fault_add(faults, UF_FAULT, "vessel", (uf_place){sheet->path, by.rows[other]->line, "vessel"},
+                         "'%.60s', but line %d, of the same plate, says '%.60s'",
+                         by.rows[other]->text[UF_SHEET_VESSEL], row->line, row->text[UF_SHEET_VESSEL]);
+    }
+    free(by.rows);
+    return status;
+}
+
 /* ---- pooled references ----------------------------------------------------------------------- */
 
 static uf_status check_pooling(const uf_sheet *sheet, uf_faults *faults, uf_error *error)
@@ -386,6 +430,10 @@ uf_status uf_sheet_check_design(const uf_sheet *sheet, bool pooled, uf_faults *f
         status = check_replicates(sheet, faults, error);
     if (status == UF_OK)
         status = check_numbered_wells(sheet, faults, error);
+    if (status == UF_OK)
+        status = check_wells(sheet, faults, error);
+    if (status == UF_OK)
+        status = check_vessels(sheet, faults, error);
     if (status == UF_OK && pooled)
         status = check_pooling(sheet, faults, error);
     for (size_t k = 0; status == UF_OK && k < sizeof names / sizeof names[0]; k++) {

@@ -91,6 +91,17 @@ def test_two_files_of_one_field_are_both_named(tmp_path):
     assert run.status == 2 and "'A01_near.tif' and 'A1_near.tif'" in run.err and "'A01_wide.tif' and 'A1_wide.tif'" in run.err
 
 
+def test_the_same_field_in_two_folders(tmp_path):
+    pairs(tmp_path, ["mon/A01", "wed/A01"])
+    run = Run(["sheet", "build", "mon", "wed", "-o", "s.csv", "--name", "{well}_{channel}.tif", *CHANNELS], cwd=str(tmp_path))
+    assert run.status == 2 and "in mon" in run.err and "{session}/" in run.err
+    pairs(tmp_path, ["wed/A02"])
+    os.remove(tmp_path / "wed/A01_near.tif")
+    os.remove(tmp_path / "wed/A01_wide.tif")
+    run = Run(["sheet", "build", "mon", "wed", "-o", "s.csv", "--name", "{well}_{channel}.tif", *CHANNELS], cwd=str(tmp_path))
+    assert run.status == 0 and [row["near"] for row in table(tmp_path / "s.csv")] == ["mon/A01_near.tif", "wed/A02_near.tif"]
+
+
 def test_a_missing_partner_is_named(tmp_path):
     pairs(tmp_path, ["p1_A01", "p1_A02"])
     os.remove(tmp_path / "p1_A02_wide.tif")
