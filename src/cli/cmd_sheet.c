@@ -150,6 +150,8 @@ static int command_build(int argc, char **argv)
         {"root", 0, "DIR", "write paths relative to this folder, not to the sheet's", &r->root, NULL, NULL, NULL, 0},
         {"expect", 0, NULL, "the images are yet to be made: rows come from the layout", NULL, &r->expect, NULL, NULL,
          0},
+        {"append", 0, NULL, "keep the rows that the sheet has, of other days, and add these", NULL, &r->append, NULL,
+         NULL, 0},
         {"skip-incomplete", 0, NULL, "leave out fields without their near or wide image", NULL, &r->skip_incomplete,
          NULL, NULL, 0},
         {"json", 0, NULL, "one JSON object instead of words", NULL, &a.json, NULL, NULL, 0},

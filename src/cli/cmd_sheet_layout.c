@@ -190,7 +190,8 @@ const uf_command uf_command_sheet_layout = {
     "that\n"
     "hold each of them, controls in every quarter, rows, columns and the plate's edge shared out. LIST is a CSV with "
     "the\n"
-    "columns treatment, dose, dose_unit, role and wells. Writes the layout that sheet build reads, a map to print, "
+    "columns treatment (or coating), dose, dose_unit, role, wells. Writes the layout that sheet build reads, a map "
+    "to print, "
     "and the\n"
     "order of pipetting. The same seed draws the same plate.",
     "  underfoot sheet layout -o try-plate.csv --treatment 'samphire: 0.03, 0.1, 0.3, 1, 3, 10, 30, 100 uM' \\\n"

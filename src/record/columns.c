@@ -127,6 +127,9 @@ const uf_table uf_table_spots = {"spots", "One row a focal spot.", spot_columns,
 const uf_table uf_table_fields = {"fields", "One row a field, failed ones too.", field_columns,
                                   COUNT_OF(field_columns)};
 
+const uf_table *const uf_tables[] = {&uf_table_cells, &uf_table_spots, &uf_table_fields};
+const int uf_table_count = COUNT_OF(uf_tables);
+
 /* ---- values ---------------------------------------------------------------------------------- */
 
 /* Six significant digits: a tenth of the error of the best of these numbers, and the same everywhere. */
@@ -232,7 +235,6 @@ void uf_columns_page(uf_text *out)
                      "Every table is CSV by RFC 4180 with a header row and a `.` decimal point whatever the "
                      "locale. A value that does not exist is an empty cell, never 0. Pixel (0,0) is the centre "
                      "of the top left pixel.\n\n");
-    put_table(out, &uf_table_cells);
-    put_table(out, &uf_table_spots);
-    put_table(out, &uf_table_fields);
+    for (int k = 0; k < uf_table_count; k++)
+        put_table(out, uf_tables[k]);
 }

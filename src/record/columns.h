@@ -36,6 +36,10 @@ typedef struct uf_table {
 
 extern const uf_table uf_table_cells, uf_table_spots, uf_table_fields;
 
+/* All of them: what the docs list, and what no column of a sheet may be called. */
+extern const uf_table *const uf_tables[];
+extern const int uf_table_count;
+
 /* Appends the value of one column of `row` (a struct of the table's kind), unquoted; nothing when it
  * does not exist. */
 void uf_column_value(uf_text *out, const uf_column *column, const void *row);

@@ -12,7 +12,7 @@ enum {
     WIDEST = 1180,
     MARGIN = 24,
     ROW_NAMES = 30,
-    SMALLEST = 20,
+    SMALLEST = 34,
     LARGEST = 92,
     BAR = 6,
     GAP = 4,
@@ -79,7 +79,7 @@ static void measure(map_sheet *s, int *width, int *height)
     const uf_plate_map *map = s->map;
     s->line = uf_font_line_height(UF_FONT_SMALL);
     s->cell_width = clamp((WIDEST - 2 * MARGIN - ROW_NAMES) / map->columns, SMALLEST, LARGEST);
-    s->cell_height = clamp(s->cell_width * 3 / 4, SMALLEST, 2 * s->line + BAR + 3 * GAP);
+    s->cell_height = clamp(s->cell_width * 3 / 4, s->line + BAR + GAP, 2 * s->line + BAR + 3 * GAP);
     s->left = MARGIN + ROW_NAMES;
     s->top = MARGIN + uf_font_line_height(UF_FONT_LARGE) + s->line + 2 * GAP;
     *width = s->left + map->columns * s->cell_width + MARGIN;

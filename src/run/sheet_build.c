@@ -95,7 +95,7 @@ static void find_base(build_job *job)
     if (job->request->root)
         uf_text_add(&folder, job->request->root);
     else
-        uf_text_bytes(&folder, name == out ? "." : out, name == out ? 1 : (size_t)(name - out));
+        uf_text_bytes(&folder, name == out ? "." : out, name - out < 2 ? 1 : (size_t)(name - out) - 1);
     job->base = folder.failed ? NULL : uf_path_plain(folder.bytes);
     uf_text_free(&folder);
 }
@@ -402,6 +402,37 @@ static uf_status write_sheet(build_job *job, const uf_sheet *sheet)
     return status;
 }
 
+/* Rows that the sheet has already, from another folder or day. They are taken as they stand: their paths are relative to the
+ * same place, and what they say was said by other layouts. */
+static uf_status add_old_rows(build_job *job)
+{
+    uf_sheet old;
+    uf_faults ignored = {0}; /* all of it is read again with the new rows */
+    int extra[UF_DRAFT_COLUMNS] = {0};
+    uf_status status = uf_sheet_read(&old, job->request->out, job->request->root, &ignored, job->error);
+    for (int k = 0; status == UF_OK && k < old.extra_count && k < UF_DRAFT_COLUMNS; k++) {
+        extra[k] = uf_draft_column(&job->draft, old.extra[k], job->error);
+        status = extra[k] < 0 ? UF_INPUT : UF_OK;
+    }
+    for (int r = 0; status == UF_OK && r < old.count; r++) {
+        uf_draft_row *row = uf_draft_add(&job->draft);
+        bool whole = row != NULL;
+        for (int k = 0; whole && k < UF_SHEET_COLUMNS; k++) {
+            const char *text = old.rows[r].text[k];
+            row->cells[k] = *text ? uf_draft_keep(&job->draft, text, strlen(text)) : NULL;
+            whole = !*text || row->cells[k];
+        }
+        for (int k = 0; whole && k < old.extra_count; k++) {
+            row->cells[extra[k]] = uf_draft_keep(&job->draft, old.rows[r].extra[k], strlen(old.rows[r].extra[k]));
+            whole = row->cells[extra[k]] != NULL;
+        }
+        status = whole ? UF_OK : uf_fail_memory(job->error, "a sheet");
+    }
+    uf_faults_free(&ignored);
+    uf_sheet_free(&old);
+    return status;
+}
+
 /* The draft becomes a sheet by the reader that all commands use, so that what is written is what they will read. */
 static uf_status finish(build_job *job)
 {
@@ -451,7 +482,10 @@ static uf_status build_rows(build_job *job)
         job->draft.given[k] |= !r->expect && any_cell(&job->draft, k) && k != UF_SHEET_NEAR && k != UF_SHEET_WIDE;
     if (status == UF_OK)
         status = uf_layout_apply(&job->layout, &job->draft, &job->summary->faults, job->error);
-    return status == UF_OK && r->expect ? name_images(job) : status;
+    if (status == UF_OK && r->expect)
+        status = name_images(job);
+    /* A sheet that is not there yet has no rows to keep. */
+    return status == UF_OK && r->append && uf_path_exists(r->out) ? add_old_rows(job) : status;
 }
 
 uf_status uf_sheet_build(const uf_sheet_build_request *request, uf_sheet_build_summary *summary, uf_error *error)

@@ -29,6 +29,7 @@ typedef struct uf_sheet_build_request {
     int exclude_count;
     const char *root;     /* what the sheet's paths are relative to; NULL: the sheet's folder */
     bool expect;          /* images are yet to be made: rows come from the layouts */
+    bool append;          /* the sheet's rows of before are kept, and these added */
     bool skip_incomplete; /* fields without their near or wide image are left out, and said */
 } uf_sheet_build_request;
 

@@ -264,9 +264,13 @@ static uf_status add_row(search *s, const found_file *files, int count)
     for (int k = 0; status == UF_OK && k < count; k++) {
         const found_file *file = &files[k];
         if (k && files[k - 1].role == file->role) {
+            bool folders = strcmp(files[k - 1].dir, file->dir) != 0;
             uf_fault_add(&job->summary->faults, UF_FAULT, "two_files", (uf_place){file->dir, 0, NULL},
-                         "'%.200s' and '%.200s' are both the %s image of one field; move one of them away",
-                         files[k - 1].name, file->name, uf_sheet_columns[columns[file->role]].name);
+                         "'%.200s'%s%.100s and '%.200s' are both the %s image of one field; %s", files[k - 1].name,
+                         folders ? " in " : "", folders ? files[k - 1].dir : "", file->name,
+                         uf_sheet_columns[columns[file->role]].name,
+                         folders ? "build from the folder above both, and name theirs in --name, like '{session}/...'"
+                                 : "move one of them away, or name in --name what tells them apart");
             continue;
         }
         has[file->role] = true;
@@ -367,12 +371,17 @@ static uf_status nothing_found(search *s)
                     "%.300s: no name there fits '%.200s', but %d in the folders below do; name the folder, too, like "
                     "'{plate}/%.200s', or '{*}/...' where it does not matter",
                     dir, request->name, below, request->name);
-    else if (s->unlike && fits_in_lower_case(s, s->unlike_example))
+    else if (s->unlike && uf_template_match(&s->job->name, s->unlike_example, NULL, NULL, spans, NULL) > 0)
         status = uf_fail(
             s->job->error, UF_INPUT,
-            "%.300s: no name fits '%.200s', but '%.200s' would in other letters or with another kind of well; "
-            "write --name as the files are written",
-            dir, request->name, s->unlike_example);
+            "%.300s: '%.200s' would fit '%.200s' if its {well} were a well, like B07 (or its {time_min} a number); "
+            "with --vessel coverslip or dish any name will do",
+            dir, s->unlike_example, request->name);
+    else if (s->unlike && fits_in_lower_case(s, s->unlike_example))
+        status = uf_fail(s->job->error, UF_INPUT,
+                         "%.300s: no name fits '%.200s', but '%.200s' would in other letters; "
+                         "write --name as the files are written",
+                         dir, request->name, s->unlike_example);
     else
         status = uf_fail(
             s->job->error, UF_INPUT,

@@ -19,15 +19,21 @@ static json_t *text_or_null(const char *text)
     return value;
 }
 
-static json_t *finding(const uf_fault *f)
+/* Without memory a member would be missing in silence: *lost tells. */
+static void put(json_t *o, const char *name, json_t *value, bool *lost)
+{
+    *lost |= json_object_set_new(o, name, value) != 0;
+}
+
+static json_t *finding(const uf_fault *f, bool *lost)
 {
     json_t *o = json_object();
-    json_object_set_new(o, "severity", json_string(uf_severity_word(f->severity)));
-    json_object_set_new(o, "kind", json_string(f->kind));
-    json_object_set_new(o, "file", text_or_null(f->file));
-    json_object_set_new(o, "line", f->line ? json_integer(f->line) : json_null());
-    json_object_set_new(o, "column", text_or_null(f->column));
-    json_object_set_new(o, "text", text_or_null(f->text));
+    put(o, "severity", json_string(uf_severity_word(f->severity)), lost);
+    put(o, "kind", json_string(f->kind), lost);
+    put(o, "file", text_or_null(f->file), lost);
+    put(o, "line", f->line ? json_integer(f->line) : json_null(), lost);
+    put(o, "column", text_or_null(f->column), lost);
+    put(o, "text", text_or_null(f->text), lost);
     return o;
 }
 
@@ -35,15 +41,16 @@ uf_status uf_sheet_json(uf_text *out, const char *sheet, const uf_named_number *
                         const uf_faults *faults, uf_error *error)
 {
     json_t *o = json_object(), *list = json_array();
-    json_object_set_new(o, "sheet", text_or_null(sheet));
+    bool lost = false;
+    put(o, "sheet", text_or_null(sheet), &lost);
     for (int k = 0; k < number_count; k++)
-        json_object_set_new(o, numbers[k].name, json_integer((json_int_t)numbers[k].value));
-    json_object_set_new(o, "faults", json_integer(faults->faults));
-    json_object_set_new(o, "warnings", json_integer(faults->warnings));
+        put(o, numbers[k].name, json_integer((json_int_t)numbers[k].value), &lost);
+    put(o, "faults", json_integer(faults->faults), &lost);
+    put(o, "warnings", json_integer(faults->warnings), &lost);
     for (int k = 0; k < faults->count; k++)
-        json_array_append_new(list, finding(&faults->list[k]));
-    json_object_set_new(o, "findings", list);
-    char *text = json_dumps(o, JSON_INDENT(2));
+        lost |= json_array_append_new(list, finding(&faults->list[k], &lost)) != 0;
+    put(o, "findings", list, &lost);
+    char *text = lost ? NULL : json_dumps(o, JSON_INDENT(2));
     json_decref(o);
     if (!text)
         return uf_fail_memory(error, "JSON");

@@ -24,7 +24,7 @@ typedef struct layout_job {
     uf_vessel vessel;
     uf_arms arms;
     uf_drawing *plates;
-    bool any_dose, any_role, one_unit; /* what the drawing has to say */
+    bool any_treatment, any_coating, any_dose, any_role, one_unit; /* what the drawing has to say */
 } layout_job;
 
 /* ---- what is asked --------------------------------------------------------------------------- */
@@ -60,6 +60,8 @@ static void note_what_differs(layout_job *job)
     job->one_unit = true;
     for (int k = 0; k < job->arms.count; k++) {
         const uf_arm *arm = &job->arms.list[k];
+        job->any_treatment |= *arm->treatment != '\0';
+        job->any_coating |= *arm->coating != '\0';
         job->any_role |= arm->role != UF_ROLE_SAMPLE;
         if (isnan(arm->dose))
             continue;
@@ -75,13 +77,13 @@ static uf_status take_arms(layout_job *job)
     int usual = usual_controls(job->vessel);
     uf_status status = r->list ? read_list(job) : UF_OK;
     if (status == UF_OK)
-        status = add_all(job, r->treatments, r->treatment_count, UF_ROLE_SAMPLE, r->wells);
-    if (status == UF_OK)
         status =
             add_all(job, r->controls, r->control_count, UF_ROLE_CONTROL, r->control_wells ? r->control_wells : usual);
     if (status == UF_OK)
         status = add_all(job, r->positives, r->positive_count, UF_ROLE_POSITIVE,
                          r->positive_wells ? r->positive_wells : usual);
+    if (status == UF_OK)
+        status = add_all(job, r->treatments, r->treatment_count, UF_ROLE_SAMPLE, r->wells);
     if (status == UF_OK && !job->arms.count && !job->summary->faults.faults)
         status = uf_fail(
             job->error, UF_USAGE,
@@ -144,7 +146,7 @@ static uf_status write_file(layout_job *job, const char *ending, const uf_text *
 
 /* ---- the layout file ------------------------------------------------------------------------- */
 
-enum property { TREATMENT, DOSE, ROLE, BLOCK };
+enum property { TREATMENT, COATING, DOSE, ROLE, BLOCK };
 
 static void put_value(const layout_job *job, const uf_drawing *d, int row, int column, enum property what,
                       uf_text *out)
@@ -156,6 +158,8 @@ static void put_value(const layout_job *job, const uf_drawing *d, int row, int c
     const uf_arm *arm = &job->arms.list[index];
     if (what == TREATMENT)
         uf_text_add(&value, arm->treatment);
+    else if (what == COATING)
+        uf_text_add(&value, arm->coating);
     else if (what == DOSE)
         uf_arm_dose(arm, !job->one_unit, &value);
     else if (what == ROLE)
@@ -178,7 +182,7 @@ static const char *unit_of(const layout_job *job)
 
 static void put_corner(const layout_job *job, enum property what, uf_text *out)
 {
-    static const char *const names[] = {"treatment", "dose", "role", "block"};
+    static const char *const names[] = {"treatment", "coating", "dose", "role", "block"};
     uf_text corner = {0};
     uf_text_add(&corner, names[what]);
     if (what == DOSE && job->one_unit && *unit_of(job))
@@ -214,7 +218,10 @@ static uf_status write_layout(layout_job *job)
         uf_text_add(&out, "plate,");
         uf_csv_field(&out, name.bytes ? name.bytes : "");
         uf_text_add(&out, "\n");
-        put_block(job, d, TREATMENT, &out);
+        if (job->any_treatment)
+            put_block(job, d, TREATMENT, &out);
+        if (job->any_coating)
+            put_block(job, d, COATING, &out);
         if (job->any_dose)
             put_block(job, d, DOSE, &out);
         if (job->any_role)
@@ -272,6 +279,8 @@ static void put_steps(const layout_job *job, int index, int *step, uf_text *out)
                 uf_well_name(well, (uf_well){r, c});
                 uf_text_printf(out, "%d,", ++*step);
                 uf_csv_field(out, arm->treatment);
+                uf_text_add(out, ",");
+                uf_csv_field(out, arm->coating);
                 uf_text_printf(out, ",%s,%s,%s,", dose.bytes ? dose.bytes : "", isnan(arm->dose) ? "" : arm->unit,
                                uf_role_words[arm->role]);
                 uf_csv_field(out, name.bytes ? name.bytes : "");
@@ -293,7 +302,7 @@ static uf_status write_pipetting(layout_job *job)
     for (int k = 0; k < job->arms.count; k++)
         order[k] = &job->arms.list[k];
     qsort(order, (size_t)job->arms.count, sizeof *order, by_use);
-    uf_text_add(&out, "step,treatment,dose,dose_unit,role,plate,well\n");
+    uf_text_add(&out, "step,treatment,coating,dose,dose_unit,role,plate,well\n");
     for (int k = 0; k < job->arms.count; k++)
         put_steps(job, (int)(order[k] - job->arms.list), &step, &out);
     free(order);
@@ -310,7 +319,7 @@ typedef struct map_words {
     uf_map_key *keys;
     char rows[UF_MOST_ROWS][UF_WELL_NAME];
     const char *row_names[UF_MOST_ROWS];
-    uf_text *doses; /* of the arms */
+    uf_text *doses, *names; /* of the arms; of the treatments */
     uf_text title, note;
 } map_words;
 
@@ -318,14 +327,18 @@ static bool start_words(const layout_job *job, map_words *w)
 {
     w->keys = calloc((size_t)job->arms.treatments + 1, sizeof *w->keys);
     w->doses = calloc((size_t)job->arms.count + 1, sizeof *w->doses);
-    if (!w->keys || !w->doses)
+    w->names = calloc((size_t)job->arms.treatments + 1, sizeof *w->names);
+    if (!w->keys || !w->doses || !w->names)
         return false;
     for (int k = 0; k < job->arms.count; k++) {
         const uf_arm *arm = &job->arms.list[k];
         uf_map_frame frame = arm->role == UF_ROLE_CONTROL    ? UF_MAP_HEAVY
                              : arm->role == UF_ROLE_POSITIVE ? UF_MAP_DOUBLE
                                                              : UF_MAP_THIN;
-        w->keys[arm->treatment_index] = (uf_map_key){arm->treatment, frame};
+        uf_text *name = &w->names[arm->treatment_index];
+        name->length = 0;
+        uf_text_printf(name, "%s%s%s", arm->treatment, *arm->treatment && *arm->coating ? " on " : "", arm->coating);
+        w->keys[arm->treatment_index] = (uf_map_key){name->bytes ? name->bytes : "", frame};
         uf_arm_dose(arm, true, &w->doses[k]);
     }
     for (int r = 0; r < UF_MOST_ROWS; r++) {
@@ -340,6 +353,9 @@ static void free_words(const layout_job *job, map_words *w)
 {
     for (int k = 0; w->doses && k < job->arms.count; k++)
         uf_text_free(&w->doses[k]);
+    for (int k = 0; w->names && k < job->arms.treatments; k++)
+        uf_text_free(&w->names[k]);
+    free(w->names);
     free(w->doses);
     free(w->keys);
     uf_text_free(&w->title);

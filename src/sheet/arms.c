@@ -35,7 +35,7 @@ static uf_status fit_in(const uf_arms *arms, uf_arm *arm, uf_error *error)
     arm->treatment_index = arms->treatments;
     for (int k = 0; k < arms->count; k++) {
         const uf_arm *other = &arms->list[k];
-        if (strcmp(other->treatment, arm->treatment) != 0)
+        if (strcmp(other->treatment, arm->treatment) != 0 || strcmp(other->coating, arm->coating) != 0)
             continue;
         arm->treatment_index = other->treatment_index;
         if (!isnan(arm->dose) && !isnan(other->dose) && !uf_unit_convert(&arm->dose, arm->unit, other->unit))
@@ -53,9 +53,9 @@ static uf_status fit_in(const uf_arms *arms, uf_arm *arm, uf_error *error)
 
 static uf_status add_arm(uf_arms *arms, uf_arm arm, uf_error *error)
 {
-    if (!arm.treatment || !arm.unit)
+    if (!arm.treatment || !arm.unit || !arm.coating)
         return uf_fail_memory(error, "treatments");
-    if (!*arm.treatment)
+    if (!*arm.treatment && !*arm.coating)
         return uf_fail(error, UF_INPUT, "a treatment without a name");
     if (arm.wells < 1 || arm.wells > MOST_ARMS || arms->count == MOST_ARMS)
         return uf_fail(error, UF_INPUT, "%.60s: %d wells; expected 1 to %d", arm.treatment, arm.wells, MOST_ARMS);
@@ -105,8 +105,12 @@ static uf_status take_doses(uf_arms *arms, uf_arm arm, const char *doses, uf_err
 uf_status uf_arms_add(uf_arms *arms, const char *text, uf_role role, int wells, uf_error *error)
 {
     size_t length = strcspn(text, ":");
-    uf_arm arm = {
-        .treatment = keep(arms, text, length), .dose = (double)NAN, .unit = "", .role = role, .wells = wells};
+    uf_arm arm = {.treatment = keep(arms, text, length),
+                  .coating = "",
+                  .dose = (double)NAN,
+                  .unit = "",
+                  .role = role,
+                  .wells = wells};
     if (text[length] == ':')
         return take_doses(arms, arm, text + length + 1, error);
     return add_arm(arms, arm, error);
@@ -114,11 +118,11 @@ uf_status uf_arms_add(uf_arms *arms, const char *text, uf_role role, int wells, 
 
 /* ---- a list ---------------------------------------------------------------------------------- */
 
-enum { TREATMENT, DOSE, DOSE_UNIT, ROLE, WELLS, COLUMNS };
+enum { TREATMENT, COATING, DOSE, DOSE_UNIT, ROLE, WELLS, COLUMNS };
 
 static bool find_columns(const uf_csv_table *table, const char *path, int *columns, uf_faults *faults)
 {
-    static const char *const names[COLUMNS] = {"treatment", "dose", "dose_unit", "role", "wells"};
+    static const char *const names[COLUMNS] = {"treatment", "coating", "dose", "dose_unit", "role", "wells"};
     for (int k = 0; k < COLUMNS; k++)
         columns[k] = -1;
     for (int c = 0; c < table->columns; c++) {
@@ -131,11 +135,14 @@ static bool find_columns(const uf_csv_table *table, const char *path, int *colum
             }
         if (!known)
             uf_fault_add(faults, UF_FAULT, "header", (uf_place){path, table->lines[0], cell},
-                         "column '%.60s' is not known; expected treatment, dose, dose_unit, role and wells", cell);
+                         "column '%.60s' is not known; expected treatment, coating, dose, dose_unit, role and wells",
+                         cell);
     }
-    if (columns[TREATMENT] < 0)
-        uf_fault_add(faults, UF_FAULT, "header", (uf_place){path, table->lines[0], NULL}, "no column treatment");
-    return columns[TREATMENT] >= 0;
+    bool named = columns[TREATMENT] >= 0 || columns[COATING] >= 0;
+    if (!named)
+        uf_fault_add(faults, UF_FAULT, "header", (uf_place){path, table->lines[0], NULL},
+                     "no column treatment, and no coating");
+    return named;
 }
 
 static const char *cell_of(const uf_csv_table *table, int row, int column)
@@ -167,6 +174,8 @@ static uf_status take_line(uf_arms *arms, const uf_csv_table *table, int row, co
                   .dose = amount.value,
                   .role = (uf_role)role,
                   .wells = (int)number};
+    const char *coating = cell_of(table, row, columns[COATING]);
+    arm.coating = keep(arms, coating, strlen(coating));
     arm.unit = isnan(arm.dose) ? "" : keep(arms, unit, strlen(unit));
     return add_arm(arms, arm, error);
 }

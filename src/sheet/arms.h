@@ -18,7 +18,7 @@ typedef struct uf_arms {
 /* Adds what is written as "NAME", or "NAME: 0.1, 1, 10 uM", with `wells` wells of each. UF_USAGE. */
 UF_MUST_USE uf_status uf_arms_add(uf_arms *arms, const char *text, uf_role role, int wells, uf_error *error);
 
-/* Adds a list: a column treatment; dose, dose_unit, role and wells where there are such (empty wells: `wells`). What is
+/* Adds a list: a column treatment or coating; dose, dose_unit, role and wells where there are such (empty wells: `wells`). What is
  * wrong goes to `faults`. UF_MEMORY only. */
 UF_MUST_USE uf_status uf_arms_take(uf_arms *arms, const uf_csv_table *table, const char *path, int wells,
                                    uf_faults *faults, uf_error *error);

@@ -338,6 +338,9 @@ static bool is_time(const char *text)
         if (!good)
             return false;
     }
+    if (atoi(text + 5) < 1 || atoi(text + 5) > 12 || atoi(text + 8) < 1 || atoi(text + 8) > 31 ||
+        atoi(text + 11) > 23 || atoi(text + 14) > 59)
+        return false;
     text += sizeof form - 1;
     if (*text == ':') {
         size_t digits = strspn(text + 1, "0123456789.");
@@ -353,7 +356,8 @@ static void take_time(sheet_taking *t, const uf_sheet_row *row)
     const char *text = row->text[UF_SHEET_ACQUIRED];
     if (*text && !is_time(text))
         uf_fault_add(t->faults, UF_FAULT, "time", place_of(t, row, UF_SHEET_ACQUIRED),
-                     "'%.60s' is not the form of a time that everybody reads alike; write 2030-05-06T14:30:00", text);
+                     "'%.60s' is no time in the form that everybody reads alike; write it like 2030-05-06T14:30:00",
+                     text);
 }
 
 /* ---- identity -------------------------------------------------------------------------------- */

@@ -9,6 +9,8 @@
 #include <string.h>
 #include <strings.h>
 
+#include "sheet/amount.h"
+
 /* ---- groups ---------------------------------------------------------------------------------- */
 
 enum { MOST_KEYS = 6 };
@@ -208,6 +210,50 @@ static uf_status check_numbered_wells(const uf_sheet *sheet, uf_faults *faults, 
     return status;
 }
 
+/* ---- one well, one treatment ----------------------------------------------------------------- */
+
+/* Fields of one well got the same, unless they are of different times. */
+static uf_status check_wells(const uf_sheet *sheet, uf_faults *faults, uf_error *error)
+{
+    enum { WELL = 4 };
+    static const uf_sheet_column same[] = {UF_SHEET_TREATMENT, UF_SHEET_DOSE, UF_SHEET_COATING, UF_SHEET_ROLE,
+                                           UF_SHEET_REPLICATE};
+    grouping by = {.keys = {UF_SHEET_SESSION, UF_SHEET_PLATE, UF_SHEET_WELL, UF_SHEET_TIME_MIN}, .key_count = WELL};
+    uf_status status = sort_rows(sheet, &by, error);
+    for (int from = 0, to; status == UF_OK && from < by.count; from = to) {
+        const uf_sheet_row *first = by.rows[from];
+        to = group_end(&by, from, WELL);
+        for (int k = from + 1; *first->text[UF_SHEET_WELL] && k < to; k++)
+            for (size_t i = 0; i < sizeof same / sizeof same[0]; i++)
+                if (strcmp(first->text[same[i]], by.rows[k]->text[same[i]]) != 0)
+                    uf_fault_add(
+                        faults, UF_FAULT, "two_in_one_well",
+                        (uf_place){sheet->path, by.rows[k]->line, uf_sheet_columns[same[i]].name},
+                        "'%.60s', but line %d, of the same well, says '%.60s'; fields of one well share what was "
+                        "done to it",
+                        by.rows[k]->text[same[i]], first->line, first->text[same[i]]);
+    }
+    free(by.rows);
+    return status;
+}
+
+static uf_status check_vessels(const uf_sheet *sheet, uf_faults *faults, uf_error *error)
+{
+    grouping by = {.keys = {UF_SHEET_SESSION, UF_SHEET_PLATE, UF_SHEET_VESSEL}, .key_count = 3};
+    uf_status status = sort_rows(sheet, &by, error);
+    for (int from = 0, to; status == UF_OK && from < by.count; from = to) {
+        const uf_sheet_row *row = by.rows[from];
+        to = group_end(&by, from, 2);
+        int other = group_end(&by, from, 3);
+        if (*row->text[UF_SHEET_PLATE] && other < to)
+            uf_fault_add(faults, UF_FAULT, "vessel", (uf_place){sheet->path, by.rows[other]->line, "vessel"},
+                         "'%.60s', but line %d, of the same plate, says '%.60s'",
+                         by.rows[other]->text[UF_SHEET_VESSEL], row->line, row->text[UF_SHEET_VESSEL]);
+    }
+    free(by.rows);
+    return status;
+}
+
 /* ---- pooled references ----------------------------------------------------------------------- */
 
 static uf_status check_pooling(const uf_sheet *sheet, uf_faults *faults, uf_error *error)
@@ -310,6 +356,39 @@ static void check_words(const uf_sheet *sheet, uf_sheet_column column, uf_faults
             first->text[column], uf_spreadsheet_damage(first->text[column]), count);
 }
 
+/* "thrift 10 uM": a word of its own that is an amount in a unit we know. */
+static bool holds_amount(const char *word)
+{
+    for (const char *p = word; *p; p++) {
+        uf_amount amount;
+        bool starts = p == word || p[-1] == ' ' || p[-1] == '_' || p[-1] == '(';
+        size_t length = strcspn(p, ")");
+        char rest[80];
+        if (!starts || length >= sizeof rest)
+            continue;
+        memcpy(rest, p, length);
+        rest[length] = '\0';
+        if (uf_amount_parse(rest, &amount) == UF_AMOUNT_GOOD && *amount.unit && uf_unit_known(amount.unit))
+            return true;
+    }
+    return false;
+}
+
+static void check_amounts(const uf_sheet *sheet, uf_faults *faults)
+{
+    int count = 0;
+    const uf_sheet_row *first = NULL;
+    for (int k = 0; k < sheet->count; k++)
+        if (holds_amount(sheet->rows[k].text[UF_SHEET_TREATMENT]) && !count++)
+            first = &sheet->rows[k];
+    if (count)
+        uf_fault_add(
+            faults, UF_WARNING, "dose_in_name", (uf_place){sheet->path, first->line, "treatment"},
+            "'%.60s' holds a dose (%d rows); written so, each dose is a treatment of its own and no curve can be "
+            "fitted: give it in the column dose",
+            first->text[UF_SHEET_TREATMENT], count);
+}
+
 /* Names that differ in capitals or blanks only are most likely one. */
 static uf_status check_twin_names(const uf_sheet *sheet, uf_sheet_column column, uf_faults *faults, uf_error *error)
 {
@@ -351,6 +430,10 @@ uf_status uf_sheet_check_design(const uf_sheet *sheet, bool pooled, uf_faults *f
         status = check_replicates(sheet, faults, error);
     if (status == UF_OK)
         status = check_numbered_wells(sheet, faults, error);
+    if (status == UF_OK)
+        status = check_wells(sheet, faults, error);
+    if (status == UF_OK)
+        status = check_vessels(sheet, faults, error);
     if (status == UF_OK && pooled)
         status = check_pooling(sheet, faults, error);
     for (size_t k = 0; status == UF_OK && k < sizeof names / sizeof names[0]; k++) {
@@ -358,6 +441,7 @@ uf_status uf_sheet_check_design(const uf_sheet *sheet, bool pooled, uf_faults *f
         check_blanks(sheet, names[k], faults);
         status = check_twin_names(sheet, names[k], faults, error);
     }
+    check_amounts(sheet, faults);
     check_words(sheet, UF_SHEET_PLATE, faults);
     check_blanks(sheet, UF_SHEET_INSTRUMENT, faults);
     check_blanks(sheet, UF_SHEET_REPLICATE, faults);

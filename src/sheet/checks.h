@@ -5,7 +5,7 @@
 
 #include "sheet/sheet.h"
 
-/* Adds warnings: no control on a plate, fewer than three replicates, replicates that look like numbered wells, names
+/* Adds faults: fields of one well that say different things, two vessels of one plate. Adds warnings: no control on a plate, fewer than three replicates, replicates that look like numbered wells, names
  * that a spreadsheet made into dates, wells without a treatment. `pooled`: a reference pooled over all wells is asked for, which
  * must not hold a single treatment and coating. UF_MEMORY only. */
 UF_MUST_USE uf_status uf_sheet_check_design(const uf_sheet *sheet, bool pooled, uf_faults *faults, uf_error *error);

@@ -81,14 +81,14 @@ int uf_sheet_column_nearest(const char *name)
 
 const char *uf_result_table_of(const char *name)
 {
-    static const uf_table *const tables[] = {&uf_table_cells, &uf_table_spots, &uf_table_fields};
-    if (strcmp(name, "field_id") == 0)
-        return "cells";
-    for (size_t k = 0; k < sizeof tables / sizeof tables[0]; k++)
-        for (int i = 0; i < tables[k]->count; i++)
-            if (strcmp(name, tables[k]->columns[i].name) == 0)
-                return tables[k]->name;
-    return NULL;
+    /* Result tables repeat the sheet's columns; those are no results. */
+    if (uf_sheet_column_find(name) >= 0)
+        return NULL;
+    for (int k = 0; k < uf_table_count; k++)
+        for (int i = 0; i < uf_tables[k]->count; i++)
+            if (strcmp(name, uf_tables[k]->columns[i].name) == 0)
+                return uf_tables[k]->name;
+    return strcmp(name, "field_id") == 0 ? "cells" : NULL;
 }
 
 void uf_sheet_columns_page(uf_text *out)

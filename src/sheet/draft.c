@@ -104,6 +104,9 @@ static int compare_cells(const uf_draft_row *a, const uf_draft_row *b, int colum
     uf_well p, q;
     if (column == UF_SHEET_WELL && uf_well_parse(one, &p) && uf_well_parse(other, &q))
         return uf_well_compare(p, q);
+    double m, n;
+    if (column == UF_SHEET_TIME_MIN && uf_parse_number(one, &m) && uf_parse_number(other, &n) && m != n)
+        return m < n ? -1 : 1;
     return uf_natural_compare(one, other);
 }
 

@@ -13,11 +13,11 @@
 #include "sheet/columns.h"
 #include "sheet/well.h"
 
-/* One thing to be put into wells: a treatment at one dose. */
+/* One thing to be put into wells: a treatment at one dose, on one coating. */
 typedef struct uf_arm {
-    const char *treatment;
-    double dose;      /* NaN: none */
-    const char *unit; /* "" without a dose */
+    const char *treatment, *coating; /* "" where there is none */
+    double dose;                     /* NaN: none */
+    const char *unit;                /* "" without a dose */
     uf_role role;
     int wells;           /* on each plate, at least 1 */
     int treatment_index; /* the same for all doses of one treatment, from 0; filled in by uf_draw_plate's caller */

@@ -87,8 +87,15 @@ static bool seen_before(sheet_taking *t, const char *name, int column)
 
 static uf_status take_header(sheet_taking *t, uf_error *error)
 {
+    enum { MOST_COLUMNS = 1000 };
     uf_sheet *sheet = t->sheet;
     int columns = t->table->columns;
+    if (columns > MOST_COLUMNS) {
+        uf_fault_add(t->faults, UF_FAULT, "header", (uf_place){sheet->path, t->table->lines[0], NULL},
+                     "a row has %d columns, of which the first %d are read; is it the right file?", columns,
+                     MOST_COLUMNS);
+        columns = MOST_COLUMNS;
+    }
     sheet->extra = uf_arena_take(&sheet->arena, (size_t)columns * sizeof *sheet->extra);
     t->extra_from = uf_arena_take(&sheet->arena, (size_t)columns * sizeof *t->extra_from);
     if (!sheet->extra || !t->extra_from)

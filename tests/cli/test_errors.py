@@ -235,7 +235,7 @@ def test_full_disk_keeps_whole_files_or_none(demo, tmp_path):
     assert not [name for name in left if name.endswith(".part")]
 
 
-@pytest.mark.parametrize("arguments", [["--help"], ["--version"], ["measure", "--help"], ["docs", "columns"],
+@pytest.mark.parametrize("arguments", [["--help"], ["--version"], ["measure", "--help"], ["docs", "columns"], ["sheet", "--help"],
                                        ["optics", "--wavelength-nm", "488", "--substrate-n", "1.518", "--medium-n",
                                         "1.337", "--angle-deg", "70"]])
 def test_standard_output_that_is_full(arguments):
@@ -248,9 +248,9 @@ def test_standard_output_that_is_full(arguments):
 # ---- help --------------------------------------------------------------------------------------------------------------
 
 
-@pytest.mark.parametrize("command", ["measure", "optics", "demo", "docs"])
+@pytest.mark.parametrize("command", ["measure", "optics", "demo", "docs", "sheet", "sheet build", "sheet check", "sheet layout"])
 def test_help_has_an_example_that_runs(command, tmp_path):
-    run = Run([command, "--help"])
+    run = Run([*command.split(), "--help"])
     assert run.status == 0 and run.err == ""
     example = run.out.split("Example:\n")[1].split("\n\n")[0]
     script = example.replace("underfoot", PROGRAM)

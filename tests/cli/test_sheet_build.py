@@ -91,6 +91,17 @@ def test_two_files_of_one_field_are_both_named(tmp_path):
     assert run.status == 2 and "'A01_near.tif' and 'A1_near.tif'" in run.err and "'A01_wide.tif' and 'A1_wide.tif'" in run.err
 
 
+def test_the_same_field_in_two_folders(tmp_path):
+    pairs(tmp_path, ["mon/A01", "wed/A01"])
+    run = Run(["sheet", "build", "mon", "wed", "-o", "s.csv", "--name", "{well}_{channel}.tif", *CHANNELS], cwd=str(tmp_path))
+    assert run.status == 2 and "in mon" in run.err and "{session}/" in run.err
+    pairs(tmp_path, ["wed/A02"])
+    os.remove(tmp_path / "wed/A01_near.tif")
+    os.remove(tmp_path / "wed/A01_wide.tif")
+    run = Run(["sheet", "build", "mon", "wed", "-o", "s.csv", "--name", "{well}_{channel}.tif", *CHANNELS], cwd=str(tmp_path))
+    assert run.status == 0 and [row["near"] for row in table(tmp_path / "s.csv")] == ["mon/A01_near.tif", "wed/A02_near.tif"]
+
+
 def test_a_missing_partner_is_named(tmp_path):
     pairs(tmp_path, ["p1_A01", "p1_A02"])
     os.remove(tmp_path / "p1_A02_wide.tif")
@@ -163,6 +174,9 @@ def test_paths_are_relative_to_the_sheet_or_the_root(tmp_path):
                             ("sheets/s.csv", ["--root", str(tmp_path / "images")], "A01_near.tif")):
         assert Run([*base, "-o", str(tmp_path / out), *more]).status == 0
         assert table(tmp_path / out)[0]["near"] == near
+    # a folder that is yet to be made
+    assert Run([*base, "-o", str(tmp_path / "new/s.csv")]).status == 0
+    assert table(tmp_path / "new/s.csv")[0]["near"] == "../images/A01_near.tif"
     run = Run([*base, "-o", "s.csv"], cwd=str(tmp_path / "images"))
     assert run.status == 0 and table(tmp_path / "images/s.csv")[0]["near"] == "A01_near.tif"
 
@@ -449,6 +463,30 @@ def test_three_days_become_one_experiment(tmp_path):
     assert {(row["well"], row["coating"]) for row in rows} == {("slip1", "marram"), ("slip2", "glass")}
 
 
+def test_days_one_after_the_other(tmp_path):
+    pairs(tmp_path, ["mon/A01", "mon/A02", "other names/x-A01-y"])
+    base = ["--append", "-o", str(tmp_path / "s.csv"), *CHANNELS]
+    first = ["sheet", "build", str(tmp_path / "mon"), "--name", "{well}_{channel}.tif", "--set", "plate=mon", "--set", "passage=11", *base]
+    assert Run(first).status == 0
+    second = ["sheet", "build", str(tmp_path / "other names"), "--name", "x-{well}-y_{channel}.tif", "--set", "plate=tue", "--set", "dish=2", *base]
+    assert Run(second).status == 0
+    assert [(row["near"], row["plate"], row["passage"], row["dish"]) for row in table(tmp_path / "s.csv")] == [
+        ("mon/A01_near.tif", "mon", "11", ""), ("mon/A02_near.tif", "mon", "11", ""), ("other names/x-A01-y_near.tif", "tue", "", "2")]
+    # the same day twice is one field in two rows, and the sheet stays as it was
+    before = open(tmp_path / "s.csv").read()
+    run = Run(first)
+    assert run.status == 2 and "mon/A01" in run.err and open(tmp_path / "s.csv").read() == before
+
+
+def test_any_name_of_a_coverslip_needs_the_vessel(tmp_path):
+    pairs(tmp_path, ["left_1"])
+    run, _ = build(tmp_path, "{well}_{field}_{channel}.tif")
+    assert run.status == 2 and "--vessel coverslip" in run.err
+    assert built(tmp_path, "{well}_{field}_{channel}.tif", "--vessel", "coverslip")[0]["well"] == "left"
+    run, _ = build(tmp_path, "LEFT_{field}_{channel}.tif")
+    assert run.status == 2 and "in other letters" in run.err
+
+
 # ---- images yet to be made ----------------------------------------------------------------------------
 
 
@@ -494,7 +532,8 @@ def test_demo_scenarios_from_folder_and_layouts(tmp_path, scenario, name, more, 
 
 def test_the_sheet_is_whole_or_not_there(tmp_path):
     pairs(tmp_path, ["A01"])
-    run = Run(["sheet", "build", str(tmp_path), "-o", str(tmp_path / "A01_near.tif/s.csv"), "--name", "{well}_{channel}.tif", *CHANNELS])
+    touch(tmp_path, "notes")
+    run = Run(["sheet", "build", str(tmp_path), "-o", str(tmp_path / "notes/s.csv"), "--name", "{well}_{channel}.tif", *CHANNELS])
     assert run.status == 3
 
 

@@ -198,6 +198,11 @@ def test_root(folder):
     assert check(sheet, "--root", str(folder))[0] == 0
 
 
+def test_a_file_of_commas_is_no_sheet(folder):
+    status, found = check(write(folder / "s.csv", "near,wide\n" + "," * 200000 + "\n"))
+    assert status == 2 and "200001 columns" in json.dumps(found)
+
+
 # ---- what to look at ---------------------------------------------------------------------------
 
 
@@ -217,6 +222,34 @@ def rows(*lines):
     """A sheet whose images are not there: warnings do not need them."""
     return "near,wide,plate,well,treatment,role,replicate,session\n" + "".join(
         f"n{k}.tif,w{k}.tif,{line}\n" for k, line in enumerate(lines))
+
+
+@pytest.mark.parametrize("column, value", [("treatment", "sedge"), ("role", "positive"), ("replicate", "2")])
+def test_fields_of_one_well_share_what_was_done(folder, column, value):
+    columns = ["plate", "well", "treatment", "role", "replicate", "field"]
+    first = dict(zip(columns, ["p1", "A01", "thrift", "sample", "1", "1"]))
+    second = dict(first, field="2")
+    header = "near,wide," + ",".join(columns) + "\n"
+    text = lambda a, b: header + "".join(f"n{k}.tif,w{k}.tif," + ",".join(r[c] for c in columns) + "\n" for k, r in enumerate((a, b)))
+    kinds = lambda text: [(f["line"], f["column"]) for f in faults(check(write(folder / "s.csv", text))[1]) if f["kind"] == "two_in_one_well"]
+    assert kinds(text(first, second)) == []
+    assert kinds(text(first, dict(second, **{column: value}))) == [(3, column)]
+    assert kinds(text(first, dict(second, well="A02", **{column: value}))) == []
+
+
+def test_one_plate_has_one_vessel(folder):
+    text = GOOD.replace("replicate\n", "replicate,vessel\n").replace(",1\n", ",1,96\n").replace(",2\n", ",2,24\n")
+    assert check(write(folder / "s.csv", text))[0] == 0  # two plates
+    assert [f["kind"] for f in faults(check(write(folder / "s.csv", text.replace("p2", "p1").replace("A01,vehicle,control,2", "A03,x,control,2")
+                                            .replace("A02,thrift,sample,2", "A04,thrift,sample,2")))[1])] == ["vessel"]
+
+
+@pytest.mark.parametrize("time, good", [("2030-05-06T09:00:00", True), ("2030-05-06 09:00", True), ("2030-05-06T09:00:00.25Z", True),
+                                        ("2030-05-06T09:00:00+02:00", True), ("2030-13-06T09:00", False), ("2030-05-06T29:00", False),
+                                        ("06.05.2030 09:00", False), ("2030-05-06", False), ("9:00", False)])
+def test_times(folder, time, good):
+    text = GOOD.replace("replicate\n", "replicate,acquired\n").replace(",1\n", f",1,{time}\n").replace(",2\n", ",2,\n")
+    assert (check(write(folder / "s.csv", text))[0] == 0) == good
 
 
 def test_wells_numbered_as_replicates(folder):
@@ -242,6 +275,13 @@ def test_names_that_are_names(folder, name):
 
 def test_names_that_differ_in_capitals(folder):
     assert "twin_names" in warnings(check(write(folder / "s.csv", GOOD.replace("d_wide.tif,p2,A02,thrift", "d_wide.tif,p2,A02,Thrift")))[1])
+
+
+@pytest.mark.parametrize("name, seen", [("thrift 10 uM", True), ("10 nM thrift", False), ("thrift_3uM", True), ("thrift (5 %)", True),
+                                        ("thrift 2", False), ("CD 44", False), ("thrift 5 days", False)])
+def test_doses_in_the_name_of_a_treatment(folder, name, seen):
+    found = check(write(folder / "s.csv", GOOD.replace("thrift", name)))[1]
+    assert ("dose_in_name" in warnings(found)) == seen
 
 
 def test_pooling(folder):

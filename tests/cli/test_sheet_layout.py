@@ -83,6 +83,17 @@ def test_a_list(tmp_path):
                       ("releaser", "", "positive"): 2}
 
 
+def test_coatings(tmp_path):
+    (tmp_path / "list.csv").write_text("coating,treatment,role\nmarram,vehicle,control\nmarram,thrift,\nglass,vehicle,control\nglass,thrift,\n")
+    draw(tmp_path, str(tmp_path / "list.csv"), "--wells", "4", "--vessel", "24", "--seed", "1")
+    drawn, rows = table(tmp_path / "l_pipetting.csv"), read_back(tmp_path, "l.csv", vessel="24")
+    key = lambda row: (row["well"], row["treatment"], row["coating"], row["role"])
+    assert sorted(map(key, drawn)) == sorted(map(key, rows)) and len(rows) == 16
+    (tmp_path / "list.csv").write_text("coating\nmarram\nglass\n")
+    draw(tmp_path, str(tmp_path / "list.csv"), "--seed", "1")
+    assert {row["coating"] for row in read_back(tmp_path, "l.csv")} == {"marram", "glass"}
+
+
 @pytest.mark.parametrize("text, line, word", [
     ("treatment,dose\nthrift,ten\n", 2, "no dose"), ("treatment,role\nthrift,contrl\n", 2, "no role"),
     ("treatment,wells\nthrift,0\n", 2, "number of wells"), ("treatment,dosage\nthrift,1\n", 1, "dosage"),

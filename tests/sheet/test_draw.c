@@ -23,7 +23,7 @@ typedef struct design {
 
 static void add(design *d, int treatment, double dose, uf_role role, int wells)
 {
-    d->arms[d->count++] = (uf_arm){"t", dose, "", role, wells, treatment};
+    d->arms[d->count++] = (uf_arm){"t", "", dose, "", role, wells, treatment};
     d->wells += wells;
 }
 
