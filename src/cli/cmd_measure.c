@@ -29,6 +29,10 @@ static int print_summary(const measure_arguments *a, const uf_measure_summary *s
     uf_text out = {0};
     uf_text_printf(&out, "%d cells (%d used), %d focal spots; depth %.1f nm\n", s->cells, s->cells_used, s->spots,
                    s->depth_nm);
+    if (*s->flags)
+        uf_text_add(&out, "Flagged:\n");
+    for (const char *line = s->flags; *line; line += strcspn(line, "\n") + 1)
+        uf_text_printf(&out, "  %.*s\n", (int)strcspn(line, "\n"), line);
     if (s->cells_used) {
         if (!isnan(s->attachment_fraction_median))
             uf_text_printf(&out, "%d of %d used cells are attached\n", s->cells_attached, s->cells_used);
@@ -38,10 +42,6 @@ static int print_summary(const measure_arguments *a, const uf_measure_summary *s
         put_median(&out, "attachment fraction", s->attachment_fraction_median, "");
         put_median(&out, "median gap", s->gap_median_nm, " nm");
     }
-    if (*s->flags)
-        uf_text_add(&out, "Flagged:\n");
-    for (const char *line = s->flags; *line; line += strcspn(line, "\n") + 1)
-        uf_text_printf(&out, "  %.*s\n", (int)strcspn(line, "\n"), line);
     uf_text_printf(&out, "Results in %s: cells.csv, spots.csv, fields.csv, run.json\n", a->out);
     if (*s->overlay)
         uf_text_printf(&out, "Look at %s/%s before you use the numbers.\n", a->out, s->overlay);

@@ -31,6 +31,9 @@ static uf_status unknown_option(const uf_option *options, int count, const char 
     int least = 1000;
     for (int k = 0; k < count; k++) {
         int distance = uf_edit_distance(typed, options[k].name);
+        /* A beginning is nearer than any slip: --angle means --angle-deg. */
+        if (strlen(typed) > 1 && strncmp(typed, options[k].name, strlen(typed)) == 0)
+            distance = 0;
         if (distance < least) {
             least = distance;
             nearest = options[k].name;

@@ -69,6 +69,7 @@ static uf_flags channel_flags(const uf_measure_input *input, const uf_field *fie
            flag_if(near->clipped_fraction > 0.01 || wide->clipped_fraction > 0.01, UF_FLAG_CLIPPED) |
            flag_if(near->display_scaled || wide->display_scaled, UF_FLAG_DISPLAY_SCALED) |
            flag_if(fabs(input->plan->layered_effect_nm) > 3, UF_FLAG_LAYERED_EFFECT) |
+           flag_if(input->plan->bench.na_effective <= input->plan->bench.cell_n, UF_FLAG_NOT_REFLECTED) |
            flag_if(field->near_unevenness > most_unevenness || field->wide_unevenness > most_unevenness,
                    UF_FLAG_UNEVEN);
 }

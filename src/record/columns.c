@@ -157,6 +157,8 @@ static const struct {
     [UF_FLAG_CHANNELS_SWAPPED] = {"channels_swapped", "near looks like a wide image; were the two files swapped?"},
     [UF_FLAG_MOVED] = {"moved", "the cell moved between the two images"},
     [UF_FLAG_CLIPPED] = {"clipped", "counts cut off at 0; raise the camera's offset"},
+    [UF_FLAG_NOT_REFLECTED] = {"not_reflected",
+                               "n sin(angle) is not above cell_n: light runs on into cells and gaps mean nothing; a steeper angle"},
     [UF_FLAG_SERIES_MISFIT] = {"series_misfit", "the pages do not obey the field in force; check angles, indices and power"},
 };
 

@@ -30,6 +30,7 @@ typedef enum uf_flag {
     UF_FLAG_MOVED,            /* cell: light of the near image lies beside its outline */
     UF_FLAG_CLIPPED,          /* cell, field: pixels at the lowest count, cut off by the camera's offset */
     UF_FLAG_SERIES_MISFIT,    /* field: the pages of a series do not obey the field in force */
+    UF_FLAG_NOT_REFLECTED,    /* field: light runs on into cells at this angle */
     UF_FLAG_COUNT
 } uf_flag;
 

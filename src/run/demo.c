@@ -241,12 +241,28 @@ static uf_status write_flats(demo_job *job, const demo_bench *bench, uf_error *e
     return status;
 }
 
+/* An instrument file is what people begin to edit: one that was changed is not written over. */
+static uf_status keep_edited(const demo_job *job, const char *name, const uf_text *ini, uf_error *error)
+{
+    uf_text there = {0};
+    uf_status status = uf_output_read(&job->output, NULL, name, &there, error);
+    int edited = there.length && (there.length != ini->length || memcmp(there.bytes, ini->bytes, ini->length) != 0);
+    uf_text_free(&there);
+    if (status == UF_OK && edited)
+        return uf_fail(error, UF_OUTPUT,
+                       "%s/%s is not the demo's (was it edited?) and is kept; choose another folder",
+                       job->output.path, name);
+    return status;
+}
+
 static uf_status write_bench(demo_job *job, const demo_bench *bench, uf_error *error)
 {
     uf_text ini = {0}, name = {0};
     put_instrument(&ini, bench);
     uf_text_printf(&name, "%s.ini", bench->name);
     uf_status status = uf_text_check(&name, "file names", error);
+    if (status == UF_OK)
+        status = keep_edited(job, name.bytes, &ini, error);
     if (status == UF_OK)
         status = write_text(job, name.bytes, &ini, error);
     uf_text_free(&ini);

@@ -118,6 +118,22 @@ static uf_status check_reference_flats(const field_job *job, uf_error *error)
     return UF_OK;
 }
 
+/* One image twice has the ratio 1 everywhere and would look like a result. */
+static uf_status check_two_images(const field_job *job, uf_error *error)
+{
+    const uf_run_input *near = NULL, *wide = NULL;
+    for (int k = 0; k < job->reader->count; k++) {
+        const uf_run_input *in = &job->reader->inputs[k];
+        near = strcmp(in->role, "near") == 0 ? in : near;
+        wide = strcmp(in->role, "wide") == 0 ? in : wide;
+    }
+    if (!near || !wide || near->fingerprint != wide->fingerprint || near->bytes != wide->bytes ||
+        job->files->near_page != job->files->wide_page || job->reader->settings->series.angles_deg.count)
+        return UF_OK;
+    return uf_fail(error, UF_INPUT, "%s and %s are the same image; give the near and the wide image of the field",
+                   job->files->near_path, job->files->wide_path);
+}
+
 /* Everything that can be wrong with the settings is said before pixels are worked on. */
 uf_status uf_field_read(uf_reader *reader, const uf_field_files *files, uf_plan *plan, uf_field_result *result,
                         uf_error *error)
@@ -146,5 +162,6 @@ uf_status uf_field_read(uf_reader *reader, const uf_field_files *files, uf_plan 
         return uf_fail(
             error, UF_INPUT, "%s is %d x %d px, but %s is %d x %d; the two images of a field must have the same size",
             job->files->near_path, near.width, near.height, job->files->wide_path, wide.width, wide.height);
-    return check_reference_flats(job, error);
+    status = check_two_images(job, error);
+    return status == UF_OK ? check_reference_flats(job, error) : status;
 }

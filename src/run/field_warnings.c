@@ -96,7 +96,7 @@ static void warn_field(warning_job *job)
                               "camera's own counts\n");
     if (field->flags >> UF_FLAG_SHIFT_UNSURE & 1u)
         uf_text_add(job->out, "the shift between near and wide could not be found with confidence; the bench's "
-                              "value was used\n");
+                              "value was used. Do the two files show one field, the same way round, in focus?\n");
     if (field->flags >> UF_FLAG_SHIFT_DIFFERS & 1u)
         uf_text_add(job->out, "this field's own shift differs from the bench's by more than a pixel; check [shift] "
                               "or set estimate = yes\n");

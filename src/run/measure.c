@@ -84,6 +84,29 @@ static uf_status write_pictures(measure_job *job, uf_error *error)
     return status;
 }
 
+/* A folder holds one field: another one's tables would be replaced and its pictures left, which looks like one result. */
+static uf_status check_folder(measure_job *job, uf_error *error)
+{
+    uf_text fields = {0}, plan = {0}, line = {0};
+    uf_text_add(&line, "\n");
+    uf_csv_field(&line, job->request->near_path);
+    uf_text_add(&line, ",");
+    uf_status status = uf_output_read(&job->output, NULL, "fields.csv", &fields, error);
+    if (status == UF_OK)
+        status = uf_output_read(&job->output, NULL, "plan.json", &plan, error);
+    if (status == UF_OK)
+        status = uf_text_check(&line, "a name", error);
+    if (status == UF_OK && (plan.length || (fields.length && !strstr(fields.bytes, line.bytes))))
+        status = uf_fail(error, UF_USAGE,
+                         "%s: holds the results of %s; give each field a folder of its own, or measure many by "
+                         "underfoot plate",
+                         job->request->out_dir, plan.length ? "a plate" : "another field");
+    uf_text_free(&fields);
+    uf_text_free(&plan);
+    uf_text_free(&line);
+    return status;
+}
+
 static uf_status name_field(measure_job *job, uf_error *error)
 {
     uf_picture_key(&job->name, job->request->near_path);
@@ -176,6 +199,8 @@ static uf_status measure_and_write(measure_job *job, double started, uf_measure_
         status = name_field(job, error);
     if (status == UF_OK)
         status = uf_output_open(&job->output, job->request->out_dir, error);
+    if (status == UF_OK)
+        status = check_folder(job, error);
     if (status == UF_OK)
         status = uf_field_run(&job->work, &job->plan, job->settings, &job->result, error);
     if (status != UF_OK)

@@ -59,6 +59,8 @@ static void put_wishes(uf_text *out, const uf_optics_numbers *n)
                        n->series_angles);
     if (n->angle_from_wish)
         uf_text_printf(out, "The numbers below are those of %.2f deg.\n", n->angle_deg);
+    else if (depth->asked || agreement->asked)
+        uf_text_printf(out, "The numbers below are those of the bench as it stands, %.2f deg.\n", n->angle_deg);
     if (depth->asked || agreement->asked)
         uf_text_add(out, "\n");
 }

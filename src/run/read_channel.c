@@ -69,11 +69,34 @@ uf_status uf_read_companion(uf_reader *reader, const char *role, const char *pat
     return status;
 }
 
-static double full_scale(const uf_camera_settings *camera, const uf_image_info *info)
+/* The highest count where counts pile up there: 12 bits in a file of 16 end at 4095, whatever the file could hold. A tail of
+ * light thins out towards its end; a ceiling collects what lies above it. +infinity without a ceiling. */
+static double piled_up_at(uf_plane counts)
+{
+    enum { LEAST_PIXELS = 20, TIMES_BELOW = 4, STEPS_BELOW = 16 };
+    float top = uf_plane_row(counts, 0)[0], bottom = top;
+    int64_t at_top = 0, below = 0;
+    for (int y = 0; y < counts.height; y++)
+        for (int x = 0; x < counts.width; x++) {
+            top = fmaxf(top, uf_plane_row(counts, y)[x]);
+            bottom = fminf(bottom, uf_plane_row(counts, y)[x]);
+        }
+    for (int y = 0; y < counts.height; y++)
+        for (int x = 0; x < counts.width; x++) {
+            at_top += uf_plane_row(counts, y)[x] == top;
+            below += uf_plane_row(counts, y)[x] < top && uf_plane_row(counts, y)[x] >= top - STEPS_BELOW;
+        }
+    int is_ceiling = bottom < top - STEPS_BELOW && at_top >= LEAST_PIXELS && at_top > TIMES_BELOW * below;
+    return is_ceiling ? (double)top : (double)INFINITY;
+}
+
+static double full_scale(const uf_camera_settings *camera, const uf_image_info *info, uf_plane counts)
 {
     if (!isnan(camera->full_scale_adu))
         return camera->full_scale_adu;
-    return info->is_float ? (double)INFINITY : info->bits == 8 ? 255.0 : 65535.0;
+    if (info->is_float)
+        return (double)INFINITY;
+    return fmin(info->bits == 8 ? 255.0 : 65535.0, piled_up_at(counts));
 }
 
 static uf_status read_companions(uf_reader *reader, uf_channel_name which, uf_raw_channel *raw, uf_error *error)
@@ -134,7 +157,7 @@ uf_status uf_read_channel(uf_reader *reader, uf_channel_name which, const char *
         return status;
     *pixel_um = info.pixel_size_x_um;
     page.camera = &reader->settings->camera[which];
-    page.full_scale_adu = full_scale(page.camera, &info);
+    page.full_scale_adu = full_scale(page.camera, &info, raw[0].counts);
     page.counts = raw[0].counts;
     uf_arena_mark mark = uf_arena_now(&reader->work->arena);
     status = read_companions(reader, which, &page, error);

@@ -158,10 +158,24 @@ static uf_status largest_label(uf_plane given, int *largest, uf_error *error)
     return UF_OK;
 }
 
+/* Thousands of labels of a few pixels each are no cells. */
+static uf_status check_labels(int64_t covered, int count, uf_error *error)
+{
+    enum { MANY = 1000, LEAST_PIXELS = 50 };
+    if (count < MANY || covered >= (int64_t)LEAST_PIXELS * count)
+        return UF_OK;
+    return uf_fail(error, UF_INPUT,
+                   "the mask holds %d labels of %.1f pixels on average: is it an ordinary image? Expected a label "
+                   "image, 0 outside "
+                   "cells and one number a cell",
+                   count, (double)covered / count);
+}
+
 /* Numbers the values that occur in the order of their first pixel. */
 static uf_status take_given(uf_work *work, uf_plane given, uf_cell_map *map, uf_error *error)
 {
     int largest, count = 0;
+    int64_t covered = 0;
     int32_t *number;
     uf_arena_mark mark = uf_arena_now(&work->arena);
     uf_status status = largest_label(given, &largest, error);
@@ -174,9 +188,13 @@ static uf_status take_given(uf_work *work, uf_plane given, uf_cell_map *map, uf_
                 int label = (int)uf_plane_row(given, y)[x];
                 if (label && !number[label])
                     number[label] = ++count;
+                covered += label != 0;
                 uf_labels_row(map->labels, y)[x] = number[label];
             }
         map->labels.count = count;
+        status = check_labels(covered, count, error);
+    }
+    if (status == UF_OK) {
         status = uf_distance_inside(work, map->labels, map->to_background_px, error);
     }
     uf_arena_back(&work->arena, mark);

@@ -38,7 +38,7 @@
     , I_REAL(section, "read_noise_e", camera[channel].read_noise_e, 0, 1e4, 0,                                 \
              "Read noise, electrons (1 sigma).")                                                               \
     , I_REAL(section, "full_scale_adu", camera[channel].full_scale_adu, 1, 1e9, NONE,                          \
-             "Count at which the camera saturates. Default: the largest value the file's bits can hold.")      \
+             "Count at which the camera saturates. Default: where counts pile up, else what the file's bits can hold.")      \
     , I_REAL(section, "excess_noise", camera[channel].excess_noise, 1, 4, 1,                                   \
              "Excess noise factor of an amplifying camera (about 1.41), 1 for others.")                        \
     , I_REAL(section, "exposure_ms", camera[channel].exposure_ms, 1e-6, 1e9, NONE,                              \

@@ -286,3 +286,33 @@ def test_a_mask_of_several_pages_is_refused(demo, tmp_path):
     run = Run(measure_arguments(demo, tmp_path / "out") + ["--mask", str(tmp_path / "mask.tif")])
     refused(run, 2, "mask has 2 pages")
     nothing_written(tmp_path / "out")
+
+
+def test_a_folder_holds_one_field(demo, tmp_path):
+    out = str(tmp_path / "out")
+    assert Run(measure_arguments(demo, out)).status == 0
+    assert Run(measure_arguments(demo, out)).status == 0
+    refused(Run(measure_arguments(demo, out, "b")), 2, "another field", "underfoot plate")
+
+
+def test_the_same_image_twice_is_refused(demo, tmp_path):
+    run = Run(measure_arguments(demo, tmp_path / "out", wide=f"{demo}/day1_a_near.tif"))
+    refused(run, 2, "are the same image")
+
+
+def test_an_ordinary_image_is_no_mask(demo, tmp_path):
+    run = Run(measure_arguments(demo, tmp_path / "out") + ["--mask", f"{demo}/day1_a_wide.tif"])
+    refused(run, 2, "ordinary image")
+
+
+def test_an_edited_instrument_file_is_kept(tmp_path):
+    assert Run(["demo", str(tmp_path)]).status == 0
+    assert Run(["demo", str(tmp_path)]).status == 0
+    ini = tmp_path / "day1.ini"
+    ini.write_text(ini.read_text().replace("angle_deg = 70", "angle_deg = 71"))
+    refused(Run(["demo", str(tmp_path)]), 3, "day1.ini", "edited")
+    assert "angle_deg = 71" in ini.read_text()
+
+
+def test_a_beginning_is_the_nearest_option():
+    refused(Run(["optics", "--angle", "70"]), 2, "the nearest is --angle-deg")

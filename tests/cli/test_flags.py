@@ -139,3 +139,27 @@ def test_the_summary_says_what_flags_ask_for(demo, tmp_path):
     assert run.status == 0 and "near_too_bright: near is brighter" in run.out and "[reference]" in run.out
     row = next(csv.DictReader(open(tmp_path / "out" / "cells.csv")))
     assert row["gap_limit_nm"] == ""
+
+
+def test_twelve_bits_in_sixteen_saturate_without_being_told(demo, tmp_path):
+    """Counts cut at 4095 pile up there; the same images with full_scale_adu given say the same."""
+    pair = []
+    for channel in ("near", "wide"):
+        image = tifffile.imread(f"{demo}/day1_a_{channel}.tif")
+        pair.append(str(tmp_path / f"{channel}.tif"))
+        tifffile.imwrite(pair[-1], numpy.minimum(image, 4095))
+    text = open(f"{demo}/day1.ini").read().replace("file = day1", f"file = {demo}/day1")
+    tables = []
+    for name, change in (("told", "full_scale_adu = 4095"), ("untold", "")):
+        (tmp_path / f"{name}.ini").write_text(text.replace("full_scale_adu = 65535", change))
+        run = Run(["measure", *pair, "-i", str(tmp_path / f"{name}.ini"), "-a", f"{demo}/assay.ini", "-o", str(tmp_path / name)])
+        assert run.status == 0 and "saturated" in run.out
+        tables.append((tmp_path / name / "cells.csv").read_text())
+    assert tables[0] == tables[1]
+
+
+def test_an_angle_that_lights_cells_is_flagged(demo, tmp_path):
+    text = open(f"{demo}/day1.ini").read().replace("file = day1", f"file = {demo}/day1")
+    (tmp_path / "low.ini").write_text(text.replace("angle_deg = 70", "angle_deg = 63"))
+    run = Run(measure_arguments(demo, str(tmp_path / "out"), instrument=str(tmp_path / "low.ini")))
+    assert run.status == 0 and "not_reflected" in run.out
