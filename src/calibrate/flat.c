@@ -36,22 +36,23 @@ static void row_of_good(const uf_flat_stack *stack, uf_plane defects, int k, int
 
 static top_counts look_at_top(const uf_flat_stack *stack, const uf_flat_request *request, int k, float *row)
 {
-    top_counts top = {.highest = -INFINITY};
-    double second = -INFINITY, full_scale = request->full_scale_adu;
+    float highest = -INFINITY, second = -INFINITY;
     for (int y = 0; y < stack->height; y++) {
         row_of_good(stack, request->defects, k, y, row);
         for (int x = 0; x < stack->width; x++) {
-            double value = (double)row[x];
-            second = value > top.highest ? top.highest : value < top.highest ? fmax(second, value) : second;
-            top.highest = fmax(top.highest, value);
+            if (row[x] <= second || row[x] == highest)
+                continue;
+            second = row[x] > highest ? highest : row[x];
+            highest = row[x] > highest ? row[x] : highest;
         }
     }
-    double level = top.highest >= full_scale ? full_scale : top.highest;
+    top_counts top = {.highest = (double)highest};
+    double level = top.highest >= request->full_scale_adu ? request->full_scale_adu : top.highest;
     for (int y = 0; y < stack->height; y++) {
         row_of_good(stack, request->defects, k, y, row);
         for (int x = 0; x < stack->width; x++) {
             top.at += (double)row[x] >= level;
-            top.next += (double)row[x] < level && (double)row[x] >= second;
+            top.next += row[x] == second;
         }
     }
     return top;

@@ -23,8 +23,11 @@ static double robust_sd(double departure, double median, double typical_sd)
 
 static double median_of(float *values, size_t n)
 {
-    double low = (double)uf_select(values, n, (n - 1) / 2);
-    return n % 2 ? low : (low + (double)uf_select(values, n, n / 2)) / 2;
+    size_t middle = (n - 1) / 2;
+    float low = uf_select(values, n, middle), next = n > 1 ? values[middle + 1] : low;
+    for (size_t k = middle + 2; k < n; k++) /* the rest are no smaller than `low` */
+        next = values[k] < next ? values[k] : next;
+    return n % 2 ? (double)low : ((double)low + (double)next) / 2;
 }
 
 static uf_middle middle_of_film(float *values, size_t n, double typical_sd)
