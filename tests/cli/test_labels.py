@@ -72,7 +72,7 @@ def test_ratio_and_from_exclude_each_other_and_plates_are_for_plates(bench):
     run, _, _ = bench("from = cell\nratio = 1.5\ngap_nm = 15\n")
     assert run.status == 2 and "contradicts from" in run.err
     run, _, _ = bench("from = wells\ngap_nm = 15\n")
-    assert run.status == 2 and "not in this version" in run.err
+    assert run.status == 2 and "underfoot plate" in run.err
     run, _, _ = bench("gap_nm = 15\n")
     assert run.status == 2 and "from = cell" in run.err
 
