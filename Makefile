@@ -53,7 +53,7 @@ LINK_LIBS  = $(LIB_LINK) -lm -pthread
 
 # ---- sources ----------------------------------------------------------------------------------
 
-LAYERS  := base record settings image fit optics io correct segment gap measure calibrate sheet report scene run
+LAYERS  := base record settings image fit optics io correct segment gap measure calibrate sheet stats report scene run
 SOURCES := $(sort $(wildcard $(LAYERS:%=src/%/*.c)))
 CLI     := $(sort $(wildcard src/cli/*.c))
 OBJECTS := $(SOURCES:src/%.c=$(BUILD)/obj/%.o)
