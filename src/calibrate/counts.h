@@ -3,6 +3,7 @@
 #ifndef UF_CALIBRATE_COUNTS_H
 #define UF_CALIBRATE_COUNTS_H
 
+#include "base/constants.h"
 #include "image/plane.h"
 
 /* The step between neighbouring counts, found as the greatest common divisor of their differences: 16 for 12 bits
@@ -26,8 +27,5 @@ int uf_plane_is_constant(uf_plane plane);
 
 /* Median of n floats that may be reordered, the lower of the middle two. NaN for none. */
 double uf_median_float(float *values, size_t n);
-
-/* From the median of absolute departures to the sd of a normal distribution: 1 / 0.6745. */
-#define UF_MAD_TO_SD 1.4826022185056018
 
 #endif

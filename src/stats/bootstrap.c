@@ -104,8 +104,7 @@ static void draw_interval(const bootstrap_job *job, double level, int draws, uin
     result->high = uf_from_scale(job->scale, uf_sorted_quantile(effects, (size_t)result->draws, 1 - tail));
 }
 
-static void run_job(bootstrap_job *job, double level, int draws, uint64_t seed, double *effects,
-                    uf_bootstrap *result)
+static void run_job(bootstrap_job *job, double level, int draws, uint64_t seed, double *effects, uf_bootstrap *result)
 {
     job->count[0] = usable(&job->arms[0], job->paired ? &job->arms[1] : NULL, job->which[0]);
     job->count[1] = usable(&job->arms[1], job->paired ? &job->arms[0] : NULL, job->which[1]);

@@ -112,7 +112,8 @@ static uf_status test_effect(const dose_job *job, const uf_curve *curve, int par
                              uf_error *error)
 {
     uf_one_way between;
-    uf_status status = uf_one_way_fit(job->data.response, job->group, job->data.count, job->groups, 0.95, &between, error);
+    uf_status status =
+        uf_one_way_fit(job->data.response, job->group, job->data.count, job->groups, 0.95, &between, error);
     if (status != UF_OK)
         return status;
     if (between.df_within >= PURE_DEGREES_LEAST) {
@@ -137,8 +138,8 @@ static uf_status over_limit(const dose_job *job, const uf_curve *best, double pl
 
 /* Where the profile passes the limit between an EC50 inside and one outside, by regula falsi with the staying end's weight
  * halved (Dowell and Jarratt 1971, BIT 11:168). */
-static uf_status find_crossing(const dose_job *job, const uf_curve *best, double inside, double outside, double over_in,
-                               double over_out, double limit, double *end, uf_error *error)
+static uf_status find_crossing(const dose_job *job, const uf_curve *best, double inside, double outside,
+                               double over_in, double over_out, double limit, double *end, uf_error *error)
 {
     int kept = 0;
     double over = over_out;
@@ -268,7 +269,8 @@ uf_status uf_dose_fit_one(const uf_dose_point *points, size_t count, double alph
 {
     double nan = (double)NAN;
     dose_job job = {.level = level};
-    *fit = (uf_dose_fit){.status = UF_DOSE_NO_FIT, .dose_min = nan, .dose_max = nan, .effect_f = nan, .effect_p = nan};
+    *fit =
+        (uf_dose_fit){.status = UF_DOSE_NO_FIT, .dose_min = nan, .dose_max = nan, .effect_f = nan, .effect_p = nan};
     fit->zero = fit->full = fit->log10_ec50 = fit->hill_slope = fit->bottom = fit->top = nan;
     fit->zero_se = fit->full_se = fit->log10_ec50_se = fit->hill_slope_se = nan;
     fit->ec50 = fit->ec50_low = fit->ec50_high = fit->rss = fit->df = fit->residual_sd = nan;
@@ -376,7 +378,6 @@ uf_dose_combined uf_dose_combine(const uf_dose_fit *fits, size_t count, double l
         set_bounds(&c, t, mean, level);
         return c;
     }
-    return (uf_dose_combined){fits->status,    fits->notes,     1,   1,
-                              fits->ec50,      fits->ec50_low,  fits->ec50_high, nan,
-                              fits->hill_slope};
+    return (uf_dose_combined){fits->status, fits->notes,     1, 1, fits->ec50, fits->ec50_low, fits->ec50_high,
+                              nan,          fits->hill_slope};
 }

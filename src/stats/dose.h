@@ -36,16 +36,17 @@ enum { UF_DOSES_FOR_SLOPE = 5 };
 typedef struct uf_dose_fit {
     uf_dose_status status;
     unsigned notes;
-    size_t points;             /* wells that took part */
-    int doses;                 /* different ones above 0 */
-    double dose_min, dose_max; /* above 0 */
-    double effect_f, effect_p; /* F test for any effect of dose */
+    size_t points;                             /* wells that took part */
+    int doses;                                 /* different ones above 0 */
+    double dose_min, dose_max;                 /* above 0 */
+    double effect_f, effect_p;                 /* F test for any effect of dose */
     double zero, full, log10_ec50, hill_slope; /* log10_ec50 as fitted, wherever it lies */
     double zero_se, full_se, log10_ec50_se, hill_slope_se;
     double bottom, top; /* the lower and the higher plateau */
     int direction;      /* 1 rises with dose, -1 falls, 0 no curve */
     double ec50;        /* NaN unless ok or not-bracketed */
-    double ec50_low, ec50_high; /* profile likelihood; for other states than ok the one that exists is a one-sided bound
+    double ec50_low,
+        ec50_high; /* profile likelihood; for other states than ok the one that exists is a one-sided bound
                                    of the same level */
     double rss, df, residual_sd;
 } uf_dose_fit;

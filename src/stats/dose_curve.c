@@ -143,8 +143,13 @@ static void find_starts(const uf_dose_data *d, start *best)
 static void take_fit(const curve_job *job, const uf_nonlinear_fit *fit, uf_curve *curve)
 {
     int slope_at = job->place_held ? 2 : 3;
-    *curve = (uf_curve){fit->value[0], fit->value[1], place_of(job, fit->value), slope_of(job, fit->value),
-                        {(double)NAN, (double)NAN, (double)NAN, (double)NAN}, fit->sum_of_squares, 1};
+    *curve = (uf_curve){fit->value[0],
+                        fit->value[1],
+                        place_of(job, fit->value),
+                        slope_of(job, fit->value),
+                        {(double)NAN, (double)NAN, (double)NAN, (double)NAN},
+                        fit->sum_of_squares,
+                        1};
     for (int k = 0; k < 2; k++)
         curve->se[k] = fit->residual_sd * sqrt(fit->covariance[k][k]);
     if (!job->place_held)
@@ -191,8 +196,12 @@ uf_status uf_curve_at(const uf_dose_data *data, double log10_ec50, double near, 
     start best = plateaus_at(data, log10_ec50, data->slope_fixed ? 1 : near);
     curve->found = 0;
     if (data->slope_fixed) { /* linear: nothing left to search */
-        *curve = (uf_curve){.zero = best.zero, .full = best.full, .log10_ec50 = log10_ec50, .hill_slope = 1,
-                            .rss = best.rss, .found = 1};
+        *curve = (uf_curve){.zero = best.zero,
+                            .full = best.full,
+                            .log10_ec50 = log10_ec50,
+                            .hill_slope = 1,
+                            .rss = best.rss,
+                            .found = 1};
         return UF_OK;
     }
     for (int j = 0; j < SLOPES; j++) {

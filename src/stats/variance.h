@@ -13,10 +13,10 @@
 typedef struct uf_one_way {
     size_t count, groups; /* values, and groups that have any */
     double ms_between, ms_within, df_between, df_within;
-    double f, p;        /* does any group differ? */
+    double f, p; /* does any group differ? */
     double r_squared, residual_sd;
-    double group_size;  /* what stands for the size where sizes differ: (N - sum n^2 / N) / (groups - 1) */
-    double icc;         /* shown as 0 where it came out below (UF_NOTE_NEGATIVE_AS_ZERO) */
+    double group_size; /* what stands for the size where sizes differ: (N - sum n^2 / N) / (groups - 1) */
+    double icc;        /* shown as 0 where it came out below (UF_NOTE_NEGATIVE_AS_ZERO) */
     double icc_signed, icc_low, icc_high; /* as it came out, and its interval, which may reach below 0 */
     unsigned notes;
 } uf_one_way;
@@ -47,17 +47,18 @@ enum { UF_STRATUM_REPLICATE, UF_STRATUM_WELL, UF_STRATUM_CELL, UF_STRATA };
  */
 typedef struct uf_components {
     size_t cells, wells, replicates, treatments;
-    double mean;                             /* of all cells */
+    double mean;                                  /* of all cells */
     double mean_square[UF_STRATA], df[UF_STRATA]; /* NaN without a degree of freedom */
-    double well_size;                        /* E MS(wells) = cell + well_size * well */
-    double replicate_well_size, replicate_size; /* E MS(replicates) = cell + replicate_well_size * well + replicate_size *
+    double well_size;                             /* E MS(wells) = cell + well_size * well */
+    double replicate_well_size,
+        replicate_size;         /* E MS(replicates) = cell + replicate_well_size * well + replicate_size *
                                                  * replicate */
     double variance[UF_STRATA]; /* in squared units of the values; below 0 shown as 0 (UF_NOTE_NEGATIVE_AS_ZERO) */
     double variance_signed[UF_STRATA]; /* as they came out */
-    double icc_replicate;       /* correlation of two cells of a replicate in different wells */
-    double icc_well;            /* and in one well */
-    double design_effect;       /* variance of the mean of all cells over that of as many independent ones */
-    double effective_n;         /* cells / design_effect: for planning, no degrees of freedom */
+    double icc_replicate;              /* correlation of two cells of a replicate in different wells */
+    double icc_well;                   /* and in one well */
+    double design_effect;              /* variance of the mean of all cells over that of as many independent ones */
+    double effective_n;                /* cells / design_effect: for planning, no degrees of freedom */
     unsigned notes;
 } uf_components;
 
