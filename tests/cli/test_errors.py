@@ -175,7 +175,7 @@ def test_instrument_file_given_as_assay(demo, tmp_path):
     (["measure", "a.tif", "b.tif", "-i", "x.ini", "-o", "x", "-t", "0"], ["1 to 256"]),
     (["measure", "--quiet=yes"], ["takes no value"]),
     (["demo"], ["underfoot demo DIR"]),
-    (["docs", "novel"], ["settings or columns"]),
+    (["docs", "novel"], ["settings, columns or sheet-columns"]),
     (["optics", "--wavelength-nm", "488"], ["substrate_n"]),
     (["optics", "--wavelength-nm", "blue"], ["not a number"]),
 ])
