@@ -568,3 +568,16 @@ def test_many_time_points(tmp_path):
     rows = built(tmp_path, "{well}.ome.tif", channels=OME_CHANNELS)
     assert len(rows) == 300 and rows[-1]["time_min"] == "299"
     assert Run(["sheet", "check", str(tmp_path / "sheet.csv")]).status == 0
+
+
+def test_instrument_files_are_found_beside_who_names_them(tmp_path):
+    pairs(tmp_path, ["images/p1_A01", "images/p2_A01"])
+    os.makedirs(tmp_path / "bench")
+    for name in ("bench/mon.ini", "here.ini"):
+        (tmp_path / name).write_text("[pixel]\nsize_um = 0.16\n")
+    (tmp_path / "bench/days.csv").write_text("plate,instrument\np1,mon.ini\np2,/elsewhere/none.ini\n")
+    base = ["sheet", "build", "images", "-o", "sheets/s.csv", "--name", "{plate}_{well}_{channel}.tif", *CHANNELS]
+    assert Run([*base, "--layout", "bench/days.csv"], cwd=str(tmp_path)).status == 0
+    assert [row["instrument"] for row in table(tmp_path / "sheets/s.csv")] == ["../bench/mon.ini", "/elsewhere/none.ini"]
+    assert Run([*base, "--set", "instrument=here.ini"], cwd=str(tmp_path)).status == 0
+    assert {row["instrument"] for row in table(tmp_path / "sheets/s.csv")} == {"../here.ini"}
