@@ -39,10 +39,17 @@ typedef struct uf_image_limits {
 UF_MUST_USE uf_status uf_image_read(uf_work *work, const char *path, int page, const uf_image_limits *limits,
                                     uf_plane *plane, uf_image_info *info, uf_error *error);
 
-/* What the file says of itself, without reading pixels: `info` but for its fingerprint (0), and the first page's
- * description into `description` (emptied first; may be NULL). The same refusals as uf_image_read but for what only
- * pixels show. */
-UF_MUST_USE uf_status uf_image_probe(const char *path, int page, const uf_image_limits *limits, uf_image_info *info,
-                                     uf_text *description, uf_error *error);
+/* A page to look at, and what was found. */
+typedef struct uf_page_probe {
+    int page; /* from 0; to be filled in */
+    uf_status status;
+    uf_error error;     /* where the status is not UF_OK */
+    uf_image_info info; /* without a fingerprint (0) */
+} uf_page_probe;
+
+/* What the pages of a file (in ascending order) say of themselves, without their pixels: the file is opened once. The same
+ * refusals as uf_image_read but for what only pixels show. `description` (may be NULL) gets the first page's. */
+void uf_image_probe_pages(const char *path, const uf_image_limits *limits, uf_page_probe *probes, int count,
+                          uf_text *description);
 
 #endif

@@ -114,6 +114,13 @@ static uf_status open_tiff(reader *r, uf_error *error)
     return r->tiff ? UF_OK : damaged(r, error, "cannot be read");
 }
 
+static uf_status no_such_page(const reader *r, uf_error *error)
+{
+    return uf_fail(error, UF_INPUT,
+                   "%.400s: has %d page%s, page %.0f was asked for (counted from 1); ask for one that is there",
+                   r->path, r->pages, r->pages == 1 ? "" : "s", r->page + 1.0);
+}
+
 /* libtiff walks the chain of pages and remembers where it has been: a loose end is an error, a loop only a
  * warning, after which it would go on as if the chain ended there. */
 static uf_status find_page(reader *r, uf_error *error)
@@ -126,10 +133,7 @@ static uf_status find_page(reader *r, uf_error *error)
         return damaged(r, error, "the chain of pages is broken");
     r->pages = (int)pages;
     if (r->page < 0 || r->page >= r->pages)
-        return uf_fail(error, UF_INPUT,
-                       "%.400s: has %d page%s, page %.0f was asked for (counted from 1); ask for one that is "
-                       "there",
-                       r->path, r->pages, r->pages == 1 ? "" : "s", r->page + 1.0);
+        return no_such_page(r, error);
     if (r->page > 0 && !TIFFSetDirectory(r->tiff, (tdir_t)r->page))
         return damaged(r, error, "the page's header cannot be read");
     return UF_OK;
@@ -519,22 +523,28 @@ static const char *description_of(const reader *r)
     return TIFFGetField(r->tiff, TIFFTAG_IMAGEDESCRIPTION, &text) ? text : NULL;
 }
 
-/* Of the image whose plane the page holds. An XML that cannot be read says nothing: the sheet's check tells why. */
-static void take_ome_pixel_size(const reader *r, uf_image_info *info)
+/* What the first page's OME-XML says; empty where there is none. An XML that cannot be read says nothing: making a sheet
+ * tells why. Afterwards the first page is the one in hand. */
+static uf_ome read_ome(const reader *r)
 {
-    uf_ome ome;
+    uf_ome ome = {0};
     const char *text = description_of(r);
-    if (!uf_ome_is(text) || uf_ome_parse(&ome, text, strlen(text), r->path, NULL) != UF_OK)
-        return;
-    const uf_ome_image *image = uf_ome_image_of(&ome, r->page);
-    if (image && image->pixel_size_x_um > 0 && image->pixel_size_y_um > 0) {
-        info->pixel_size_x_um = image->pixel_size_x_um;
-        info->pixel_size_y_um = image->pixel_size_y_um;
-    }
-    uf_ome_free(&ome);
+    if (uf_ome_is(text) && uf_ome_parse(&ome, text, strlen(text), r->path, NULL) != UF_OK)
+        ome = (uf_ome){0};
+    return ome;
 }
 
-/* All but the fingerprint. Afterwards the first page is the one in hand. */
+/* Of the image whose plane the page holds. */
+static void take_ome_pixel_size(const uf_ome *ome, int page, uf_image_info *info)
+{
+    const uf_ome_image *image = uf_ome_image_of(ome, page);
+    if (!image || !(image->pixel_size_x_um > 0) || !(image->pixel_size_y_um > 0))
+        return;
+    info->pixel_size_x_um = image->pixel_size_x_um;
+    info->pixel_size_y_um = image->pixel_size_y_um;
+}
+
+/* What the page in hand says of itself. */
 static void describe(const reader *r, const layout *l, uf_image_info *info)
 {
     *info = (uf_image_info){.width = l->width,
@@ -545,7 +555,6 @@ static void describe(const reader *r, const layout *l, uf_image_info *info)
                             .pixel_size_x_um = pixel_size_um(r, TIFFTAG_XRESOLUTION),
                             .pixel_size_y_um = pixel_size_um(r, TIFFTAG_YRESOLUTION),
                             .file_bytes = r->file_bytes};
-    take_ome_pixel_size(r, info);
 }
 
 /* ---- all of it ------------------------------------------------------------------------------- */
@@ -578,6 +587,9 @@ static uf_status read_page(reader *r, uf_work *work, double max_pixels, uf_plane
         status = check_finite(r, *plane, error);
     if (!status && info) {
         describe(r, &l, info);
+        uf_ome ome = read_ome(r);
+        take_ome_pixel_size(&ome, r->page, info);
+        uf_ome_free(&ome);
         status = fingerprint_of(r, work, &info->fingerprint, error);
     }
     return status;
@@ -612,39 +624,73 @@ uf_status uf_image_read(uf_work *work, const char *path, int page, const uf_imag
 
 /* ---- without pixels -------------------------------------------------------------------------- */
 
-static uf_status probe_page(reader *r, double max_pixels, uf_image_info *info, uf_text *description, uf_error *error)
+/* Goes forward to a page, directory by directory: choosing one by its number would walk the chain from its start. */
+static uf_status go_to_page(reader *r, int page, int *at, uf_error *error)
 {
-    layout l = {0};
-    uf_status status = open_tiff(r, error);
-    if (!status)
-        status = find_page(r, error);
-    if (!status)
-        status = read_layout(r, &l, max_pixels, error);
-    if (!status)
-        describe(r, &l, info);
-    if (!status && description) {
-        const char *text = description_of(r);
-        uf_text_add(description, text ? text : "");
-        status = uf_text_check(description, r->path, error);
-    }
-    return status;
+    r->page = page;
+    if (page < 0 || page >= r->pages)
+        return no_such_page(r, error);
+    r->complaint.text[0] = '\0';
+    for (; *at < page; ++*at)
+        if (!TIFFReadDirectory(r->tiff))
+            return damaged(r, error, "the page's header cannot be read");
+    return UF_OK;
 }
 
-uf_status uf_image_probe(const char *path, int page, const uf_image_limits *limits, uf_image_info *info,
-                         uf_text *description, uf_error *error)
+static uf_status probe_page(reader *r, double max_pixels, const uf_ome *ome, int *at, uf_page_probe *probe)
 {
-    reader r = {.path = path, .page = page};
-    *info = (uf_image_info){0};
-    if (description)
-        description->length = 0;
-    uf_status status = uf_input_open(path, &r.descriptor, &r.file_bytes, error);
+    layout l = {0};
+    uf_status status = go_to_page(r, probe->page, at, &probe->error);
+    if (!status)
+        status = read_layout(r, &l, max_pixels, &probe->error);
     if (status)
         return status;
-    status = check_signature(&r, error);
+    describe(r, &l, &probe->info);
+    take_ome_pixel_size(ome, probe->page, &probe->info);
+    return UF_OK;
+}
+
+static void probe_pages(reader *r, double max_pixels, uf_page_probe *probes, int count, uf_text *description)
+{
+    uf_ome ome = read_ome(r);
+    int at = 0;
+    const char *text = description ? description_of(r) : NULL;
+    if (text)
+        uf_text_add(description, text);
+    for (int k = 0; k < count; k++)
+        probes[k].status = probe_page(r, max_pixels, &ome, &at, &probes[k]);
+    uf_ome_free(&ome);
+}
+
+static uf_status open_for_probe(reader *r, uf_error *error)
+{
+    uf_status status = uf_input_open(r->path, &r->descriptor, &r->file_bytes, error);
+    if (status)
+        return status;
+    status = check_signature(r, error);
     if (!status)
-        status = probe_page(&r, limits ? limits->max_pixels : default_max_pixels, info, description, error);
+        status = open_tiff(r, error);
+    return status ? status : find_page(r, error);
+}
+
+void uf_image_probe_pages(const char *path, const uf_image_limits *limits, uf_page_probe *probes, int count,
+                          uf_text *description)
+{
+    reader r = {.path = path, .descriptor = -1};
+    uf_error error = {0};
+    if (description)
+        description->length = 0;
+    for (int k = 0; k < count; k++)
+        probes[k].info = (uf_image_info){0};
+    uf_status status = open_for_probe(&r, &error);
+    if (!status)
+        probe_pages(&r, limits ? limits->max_pixels : default_max_pixels, probes, count, description);
+    for (int k = 0; status && k < count; k++) {
+        probes[k].status = status;
+        probes[k].error = error;
+    }
     if (r.tiff)
         TIFFCleanup(r.tiff);
-    (void)close(r.descriptor);
-    return status;
+    if (r.descriptor >= 0)
+        (void)close(r.descriptor);
 }

@@ -40,6 +40,8 @@ typedef struct check_job {
     uf_sheet sheet;
     image *images; /* sorted by path and page */
     int image_count;
+    int *files; /* index of each file's first image, and the end */
+    int file_count;
     bench *benches; /* sorted by path */
     int bench_count;
 } check_job;
@@ -147,28 +149,52 @@ static uf_status list_images(check_job *job, uf_error *error)
     return UF_OK;
 }
 
-static void look_at(void *context, int hand, int index)
+/* Pages of one file, which lie together: each is looked at once. */
+static void look_at_file(void *context, int hand, int index)
 {
     check_job *job = context;
-    image *i = &job->images[index];
-    uf_error error = {0};
+    int from = job->files[index], to = job->files[index + 1], count = 0;
     (void)hand;
-    if (i->first != index)
-        return;
-    /* The first page is asked for first: a file that cannot be read is another fault than a page that is not there. */
-    i->status = uf_image_probe(i->path, 0, NULL, &i->info, NULL, &error);
-    if (i->status == UF_OK && i->page > 1)
-        i->status = uf_image_probe(i->path, i->page - 1, NULL, &i->info, NULL, &error);
-    i->missing = i->status != UF_OK && !uf_path_exists(i->path);
-    memcpy(i->text, error.text, sizeof i->text);
+    uf_page_probe *probes = calloc((size_t)(to - from), sizeof *probes);
+    for (int k = from; k < to; k++) {
+        job->images[k].status = UF_MEMORY;
+        if (probes && job->images[k].first == k)
+            probes[count++].page = job->images[k].page - 1;
+    }
+    if (probes)
+        uf_image_probe_pages(job->images[from].path, NULL, probes, count, NULL);
+    for (int k = from, p = -1; probes && k < to; k++) {
+        image *i = &job->images[k];
+        p += i->first == k;
+        i->status = probes[p].status;
+        i->info = probes[p].info;
+        memcpy(i->text, probes[p].error.text, sizeof i->text);
+        i->missing = i->status != UF_OK && !uf_path_exists(i->path);
+    }
+    free(probes);
+}
+
+/* Where the images of each file begin, and the end after the last. */
+static uf_status list_files(check_job *job, uf_error *error)
+{
+    job->files = malloc(((size_t)job->image_count + 1) * sizeof *job->files);
+    if (!job->files)
+        return uf_fail_memory(error, "the checks of a sheet");
+    for (int k = 0; k < job->image_count; k++)
+        if (k == 0 || strcmp(job->images[k].path, job->images[k - 1].path) != 0)
+            job->files[job->file_count++] = k;
+    job->files[job->file_count] = job->image_count;
+    return UF_OK;
 }
 
 static uf_status look_at_images(check_job *job, uf_error *error)
 {
     uf_pool *pool = NULL;
-    uf_status status = uf_pool_new(&pool, job->request->threads, error);
+    uf_status status = list_files(job, error);
     if (status == UF_OK)
-        uf_pool_run(pool, job->image_count, look_at, job);
+        status = uf_pool_new(&pool, job->request->threads, error);
+    if (status == UF_OK)
+        uf_pool_run(pool, job->file_count, look_at_file, job);
     uf_pool_free(&pool);
     for (int k = 0; status == UF_OK && k < job->image_count; k++) {
         const image *i = &job->images[k], *found = &job->images[i->first];
@@ -346,6 +372,7 @@ static void free_job(check_job *job)
         uf_settings_free(&job->benches[k].settings);
     free(job->benches);
     free(job->images);
+    free(job->files);
     uf_sheet_free(&job->sheet);
     free(job);
 }

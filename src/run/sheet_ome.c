@@ -154,11 +154,16 @@ static uf_status add_image(build_job *job, const uf_ome *ome, int number, const 
 static uf_status add_ome(build_job *job, const char *path, const uf_draft_row *like)
 {
     uf_error error = {0};
-    uf_image_info info;
+    uf_page_probe first = {.page = 0};
     uf_text xml = {0};
     uf_ome ome = {0};
-    uf_status status = uf_image_probe(path, 0, NULL, &info, &xml, &error);
-    if (status == UF_OK && !uf_ome_is(xml.bytes))
+    uf_image_probe_pages(path, NULL, &first, 1, &xml);
+    uf_status status = first.status;
+    if (status != UF_OK)
+        error = first.error;
+    if (status == UF_OK && xml.failed)
+        status = uf_fail_memory(&error, path);
+    if (status == UF_OK && !uf_ome_is(xml.length ? xml.bytes : NULL))
         status = uf_fail(
             &error, UF_INPUT,
             "%.400s: has no OME-XML to find the channels by; put {channel} into --name, or give --near-page and "
@@ -167,7 +172,7 @@ static uf_status add_ome(build_job *job, const char *path, const uf_draft_row *l
     if (status == UF_OK)
         status = uf_ome_parse(&ome, xml.bytes, xml.length, path, &error);
     if (status == UF_OK)
-        status = uf_ome_check_pages(&ome, info.pages, path, &error);
+        status = uf_ome_check_pages(&ome, first.info.pages, path, &error);
     uf_text_free(&xml);
     if (status == UF_INPUT) {
         uf_fault_add(&job->summary->faults, UF_FAULT, "image", (uf_place){NULL, 0, NULL}, "%s", error.text);

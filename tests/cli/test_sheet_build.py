@@ -550,3 +550,34 @@ def test_usage(tmp_path):
                             ([str(tmp_path), "-o", "s.csv", "--nam", "x"], "--name")):
         run = Run(["sheet", "build", *arguments], cwd=str(tmp_path))
         assert run.status == 2 and word in run.err, run.err
+
+
+def test_ome_with_several_images_in_a_file(tmp_path):
+    with tifffile.TiffWriter(tmp_path / "A01.ome.tif", ome=True) as file:
+        for _ in range(3):
+            file.write(numpy.zeros((2, 16, 20), numpy.uint16), photometric="minisblack",
+                       metadata={"axes": "CYX", "Channel": {"Name": ["near488", "wide488"]}})
+    rows = built(tmp_path, "{well}.ome.tif", channels=OME_CHANNELS)
+    assert [(row["field"], row["near_page"], row["wide_page"]) for row in rows] == [("1", "1", "2"), ("2", "3", "4"), ("3", "5", "6")]
+    # every page has its own image's size, and the sheet can be checked
+    assert Run(["sheet", "check", str(tmp_path / "sheet.csv")]).status == 0
+
+
+def test_many_time_points(tmp_path):
+    ome(tmp_path / "A01.ome.tif", (300, 2, 16, 20), "TCYX", ["near488", "wide488"], TimeIncrement=60, TimeIncrementUnit="s")
+    rows = built(tmp_path, "{well}.ome.tif", channels=OME_CHANNELS)
+    assert len(rows) == 300 and rows[-1]["time_min"] == "299"
+    assert Run(["sheet", "check", str(tmp_path / "sheet.csv")]).status == 0
+
+
+def test_instrument_files_are_found_beside_who_names_them(tmp_path):
+    pairs(tmp_path, ["images/p1_A01", "images/p2_A01"])
+    os.makedirs(tmp_path / "bench")
+    for name in ("bench/mon.ini", "here.ini"):
+        (tmp_path / name).write_text("[pixel]\nsize_um = 0.16\n")
+    (tmp_path / "bench/days.csv").write_text("plate,instrument\np1,mon.ini\np2,/elsewhere/none.ini\n")
+    base = ["sheet", "build", "images", "-o", "sheets/s.csv", "--name", "{plate}_{well}_{channel}.tif", *CHANNELS]
+    assert Run([*base, "--layout", "bench/days.csv"], cwd=str(tmp_path)).status == 0
+    assert [row["instrument"] for row in table(tmp_path / "sheets/s.csv")] == ["../bench/mon.ini", "/elsewhere/none.ini"]
+    assert Run([*base, "--set", "instrument=here.ini"], cwd=str(tmp_path)).status == 0
+    assert {row["instrument"] for row in table(tmp_path / "sheets/s.csv")} == {"../here.ini"}
