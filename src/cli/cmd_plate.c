@@ -16,7 +16,8 @@ typedef struct plate_arguments {
     const char *instruments[MOST_FILES], *assays[MOST_FILES], *operands[MOST_PARTS];
     int instrument_count, assay_count, operand_count;
     const char *out, *threads, *exclude, *shard, *sheet;
-    bool quiet, json, fresh, prepare, help;
+    const char *give_up;
+    bool quiet, json, fresh, prepare, follow, help;
 } plate_arguments;
 
 /* ---- stopping ------------------------------------------------------------------------------------ */
@@ -160,12 +161,19 @@ static uf_status fill_request(const plate_arguments *a, uf_plate_request *r, uf_
                             .exclude_path = a->exclude,
                             .fresh = a->fresh,
                             .prepare = a->prepare,
+                            .follow = a->follow,
                             .stop = &stop_asked};
     if (!a->out)
         return uf_fail(error, UF_USAGE, "a folder for the results is needed: -o OUT");
     uf_status status = read_shard(a->shard, &r->shard, &r->shards, error);
     if (status == UF_OK && a->prepare && a->shard)
         status = uf_fail(error, UF_USAGE, "--prepare and --shard exclude each other: first the plan, then its parts");
+    r->give_up_min = 60;
+    if (status == UF_OK && a->give_up && (!uf_parse_number(a->give_up, &r->give_up_min) || r->give_up_min <= 0))
+        status = uf_fail(error, UF_USAGE, "--give-up-min %.40s: expected minutes above 0, like 60", a->give_up);
+    if (status == UF_OK && a->follow && (a->shard || a->prepare))
+        status = uf_fail(error, UF_USAGE,
+                         "--follow goes with neither --shard nor --prepare: one run follows a microscope");
     return status == UF_OK ? uf_threads(a->threads, &r->threads, error) : status;
 }
 
@@ -197,6 +205,10 @@ static int command_plate(int argc, char **argv)
         {"threads", 't', "N", "fields at once, default one a processor; results do not depend on it", &a.threads,
          NULL, NULL, NULL, 0},
         {"fresh", 0, NULL, "measure all again, whatever is there", NULL, &a.fresh, NULL, NULL, 0},
+        {"follow", 0, NULL, "measure while the microscope still writes (sheet build --expect)", NULL, &a.follow, NULL,
+         NULL, 0},
+        {"give-up-min", 0, "M", "with --follow: end when nothing came for so long (60)", &a.give_up, NULL, NULL, NULL,
+         0},
         {"prepare", 0, NULL, "write the plan (with references) and stop", NULL, &a.prepare, NULL, NULL, 0},
         {"shard", 0, "i/n", "only every n-th field, from the i-th on, by a prepared plan", &a.shard, NULL, NULL, NULL,
          0}};

@@ -27,7 +27,8 @@ static const note notes[] = {
     {UF_CAMERA_NARROW_RANGE, 0, "narrow_range",
      "the exposures span less than a factor of 3: add shorter and longer ones"},
     {UF_CAMERA_FLICKER, 0, "flicker", "the light flickers by more than 5 % within a pair"},
-    {UF_CAMERA_FEW_DARKS, 0, "few_darks", "fewer than 8 dark frames: single noisy pixels are not told well; take more"},
+    {UF_CAMERA_FEW_DARKS, 0, "few_darks",
+     "fewer than 8 dark frames: single noisy pixels are not told well; take more"},
     {UF_CAMERA_ROUNDING, 0, "rounding", "the dark noise drowns in rounding: the read noise is an upper limit"}};
 enum { NOTES = sizeof notes / sizeof notes[0] };
 

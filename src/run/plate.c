@@ -14,6 +14,7 @@
 #include "io/output.h"
 #include "run/field_pictures.h"
 #include "run/field_warnings.h"
+#include "run/plate_follow.h"
 #include "run/plate_json.h"
 #include "run/plate_plan.h"
 #include "run/plate_record.h"
@@ -23,7 +24,8 @@
 enum { COMMIT_FIELDS = 24 };
 static const double commit_seconds = 3, tell_seconds = 0.5;
 
-typedef enum row_state { ROW_WAITING, ROW_KEPT, ROW_MEASURED, ROW_OTHER_SHARD } row_state;
+/* ROW_NOT_COMPLETE: with --follow, its files are not there yet. */
+typedef enum row_state { ROW_WAITING, ROW_KEPT, ROW_MEASURED, ROW_OTHER_SHARD, ROW_NOT_COMPLETE } row_state;
 
 typedef struct plate_job {
     const uf_plate_request *request;
@@ -43,6 +45,7 @@ typedef struct plate_job {
     int since_commit, done, total, measured;
     double started, committed, told;
     const char *telling;
+    uf_follow follow;
     uf_status status; /* of what ends the whole run */
     uf_error error;
 } plate_job;
@@ -219,6 +222,59 @@ static uf_status pool_group(plate_job *job, int group, uf_work *work, uf_error *
     return status;
 }
 
+/* ---- following a microscope ------------------------------------------------------------------ */
+
+static int has_given_up(const plate_job *job)
+{
+    return now_seconds() - job->follow.changed > 60 * job->request->give_up_min;
+}
+
+/* Until every field that a reference is to come from is complete. */
+static uf_status await_references(plate_job *job, uf_error *error)
+{
+    int missing = 1;
+    while (missing && !is_stopped(job)) {
+        double now = now_seconds();
+        missing = 0;
+        for (int k = 0; k < job->plan.sheet.count; k++)
+            if (uf_plate_is_reference(&job->plan, k) && !uf_follow_is_complete(&job->follow, k, now))
+                missing++;
+        if (missing && has_given_up(job))
+            return uf_fail(
+                error, UF_INPUT,
+                "%d fields that the reference is to come from have not come; acquire them first, or give a measured "
+                "reference",
+                missing);
+        if (missing)
+            uf_watch_wait(&job->follow.watch, 1);
+    }
+    return UF_OK;
+}
+
+/* Measures what is complete, again and again, until all is or nothing comes any more; what is still missing then fails as a
+ * missing file does. */
+static void follow_fields(plate_job *job, uf_task *task)
+{
+    int count = job->plan.sheet.count, open_rows = 1;
+    while (open_rows && !is_ended(job)) {
+        double now = now_seconds();
+        int given_up = has_given_up(job), ready = 0;
+        open_rows = 0;
+        for (int k = 0; k < count; k++) {
+            if (job->states[k] != ROW_WAITING && job->states[k] != ROW_NOT_COMPLETE)
+                continue;
+            int complete = uf_follow_is_complete(&job->follow, k, now) || given_up;
+            job->states[k] = complete ? ROW_WAITING : ROW_NOT_COMPLETE;
+            ready += complete;
+            open_rows += !complete;
+        }
+        if (ready)
+            uf_pool_run(job->pool, count, task, job);
+        else if (open_rows)
+            uf_watch_wait(&job->follow.watch, 1);
+    }
+}
+
 static uf_status find_references(plate_job *job, uf_error *error)
 {
     int count = job->plan.sheet.count, wanted = 0;
@@ -227,6 +283,9 @@ static uf_status find_references(plate_job *job, uf_error *error)
     job->reference_cells = calloc((size_t)count + 1, sizeof *job->reference_cells);
     if (!job->references || !job->reference_cells)
         return uf_fail_memory(error, "the references");
+    uf_status status = job->request->follow ? await_references(job, error) : UF_OK;
+    if (status != UF_OK)
+        return status;
     for (int k = 0; k < count; k++)
         wanted += uf_plate_is_reference(&job->plan, k);
     begin_telling(job, "references", 0, wanted);
@@ -234,7 +293,6 @@ static uf_status find_references(plate_job *job, uf_error *error)
     tell(job, 1);
     if (is_stopped(job))
         return uf_fail(error, UF_STOPPED, "stopped before the references were known; the same command starts over");
-    uf_status status = UF_OK;
     for (int k = 0; status == UF_OK && k < job->plan.group_count; k++)
         if (job->plan.groups[k].estimated)
             status = pool_group(job, k, &work, error);
@@ -600,7 +658,7 @@ static int waiting_rows(const plate_job *job)
 {
     int waiting = 0;
     for (int k = 0; k < job->plan.sheet.count; k++)
-        waiting += job->states[k] == ROW_WAITING;
+        waiting += job->states[k] == ROW_WAITING || job->states[k] == ROW_NOT_COMPLETE;
     return waiting;
 }
 
@@ -612,7 +670,10 @@ static uf_status measure_fields(plate_job *job, uf_error *error)
     if (status != UF_OK)
         return status;
     begin_telling(job, "fields", job->summary->kept, job->summary->fields);
-    uf_pool_run(job->pool, job->plan.sheet.count, field_task, job);
+    if (job->request->follow)
+        follow_fields(job, field_task);
+    else
+        uf_pool_run(job->pool, job->plan.sheet.count, field_task, job);
     job->summary->measured = job->measured;
     tell(job, 1);
     /* What is finished is kept even when the run ends here. */
@@ -644,6 +705,8 @@ static uf_status run(plate_job *job, uf_error *error)
         status = take_lock(job, error);
     if (status == UF_OK)
         status = start_hands(job, error);
+    if (status == UF_OK && r->follow)
+        status = uf_follow_start(&job->follow, &job->plan, now_seconds(), error);
     if (status == UF_OK)
         status = settle_plan(job, error);
     tell_references(job);
@@ -676,6 +739,7 @@ static void free_job(plate_job *job)
     free(job->seconds);
     free(job->references);
     free(job->reference_cells);
+    uf_follow_free(&job->follow);
     uf_output_batch_drop(&job->batch);
     uf_pool_free(&job->pool);
     uf_plate_plan_free(&job->plan);

@@ -19,7 +19,9 @@ typedef struct uf_plate_request {
     const char *out_dir;
     const char *exclude_path; /* fields that must not enter the reference; NULL: none */
     int threads;
-    int fresh;           /* measure all again */
+    int fresh;  /* measure all again */
+    int follow; /* measure as files come, until all have or none came for give_up_min */
+    double give_up_min;
     int prepare;         /* write the plan and stop */
     int shard, shards;   /* 1 .. shards: only every so many-th field, by a plan that must be there; 0: all */
     const char *command; /* what the user typed, for the log */

@@ -8,6 +8,7 @@
 #include "fit/robust.h"
 #include "io/csv.h"
 #include "run/plate_tables.h"
+#include "stats/share.h"
 
 enum { MOST_METRICS = 80 };
 
@@ -239,14 +240,12 @@ static void put_real(uf_text *out, double value)
     uf_text_number(out, value, 6);
 }
 
-/* Wilson's score interval (Wilson 1927, J. Am. Stat. Assoc. 22:209). */
 static void put_share(uf_text *out, int attached, int n)
 {
-    double z = 1.959963984540054, p = (double)attached / n, below = 1 + z * z / n;
-    double middle = (p + z * z / (2 * n)) / below, half = z * sqrt(p * (1 - p) / n + z * z / (4.0 * n * n)) / below;
-    put_real(out, n ? p : (double)NAN);
-    put_real(out, n ? fmax(0, middle - half) : (double)NAN);
-    put_real(out, n ? fmin(1, middle + half) : (double)NAN);
+    uf_share share = uf_wilson(attached, n, 0.95);
+    put_real(out, share.share);
+    put_real(out, share.low);
+    put_real(out, share.high);
 }
 
 /* Mean with the cells' edge weights; median, sd and MAD (as it is, not scaled) without. */

@@ -271,7 +271,7 @@ def commands_in(page):
     return "\n".join(line for block in blocks for line in block.split("\n") if line.startswith("underfoot"))
 
 
-@pytest.mark.parametrize("page", ["README.md", "docs/measurement.md", "docs/optics.md", "docs/calibration.md"])
+@pytest.mark.parametrize("page", ["README.md", "docs/measurement.md", "docs/optics.md", "docs/calibration.md", "docs/plates.md"])
 def test_every_command_in_the_docs_runs(page, tmp_path):
     script = commands_in(page)
     assert script, f"{page} shows no command"
