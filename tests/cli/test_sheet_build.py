@@ -141,9 +141,9 @@ def test_broken_templates(tmp_path, template):
 
 
 def test_nothing_fits_says_what_is_there(tmp_path):
-    touch(tmp_path, "image_A01.lsm")
+    touch(tmp_path, "image_A01.img")
     run, _ = build(tmp_path, "{well}_{channel}.tif")
-    assert run.status == 2 and "image_A01.lsm" in run.err
+    assert run.status == 2 and "image_A01.img" in run.err
     run = Run(["sheet", "build", str(tmp_path / "none"), "-o", str(tmp_path / "s.csv"), "--name", "{well}.tif", *CHANNELS])
     assert run.status == 2 and "none" in run.err
 

@@ -209,7 +209,7 @@ static void test_spreadsheet_damage(void **state)
 {
     static const char *const damaged[] = {"1-Sep", "Sep-01", "10-Mar-2024", "1/9/2024", "2024-09-01", "2024-09-01 00:00:00",
                                           "1.2E+05", "#REF!", "#NAME?", "######"};
-    static const char *const sound[] = {"", "thrift", "t01", "4-AP", "GSK-3", "sep", "sept-7", "12-15-LOX", "1/2", "E-64", "#3"};
+    static const char *const sound[] = {"", "thrift", "t01", "4-AP", "KX-3", "sep", "sept-7", "12-15-X", "1/2", "E-64", "#3"};
     (void)state;
     for (size_t k = 0; k < sizeof damaged / sizeof damaged[0]; k++)
         assert_non_null(uf_spreadsheet_damage(damaged[k]));
