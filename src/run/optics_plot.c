@@ -4,10 +4,8 @@
 #include <stdio.h>
 #include <stdlib.h>
 
-#include "io/image_encode.h"
-#include "io/output.h"
-#include "report/plot.h"
 #include "run/optics_numbers.h"
+#include "run/report_parts.h"
 
 enum { POINTS = 241, WIDTH = 1160, HEIGHT = 560 };
 static const double farthest_nm = 300, deepest_nm = 400;
@@ -59,7 +57,7 @@ static void name_third(const uf_optics_numbers *n, char *name, size_t size)
                        100 * (in_force ? n->law.stray.fraction : uf_usual_stray.fraction));
 }
 
-static uf_status draw(const uf_optics_numbers *n, uf_work *work, curves *c, uf_indexed *picture, uf_error *error)
+static uf_status draw(const uf_optics_numbers *n, const curves *c, const char *path, uf_error *error)
 {
     char third[64], cutoff[64], cell[64];
     double low = n->depth_nm - n->depth_sd_nm, high = n->depth_nm + n->depth_sd_nm, none = (double)NAN;
@@ -100,26 +98,17 @@ static uf_status draw(const uf_optics_numbers *n, uf_work *work, curves *c, uf_i
          n->cutoff_nm < farthest_nm,
          NULL,
          0}};
-    return uf_plot_draw(work, panels, 2, WIDTH, HEIGHT, picture, NULL, error);
+    return uf_plot_file(panels, 2, WIDTH, HEIGHT, path, error);
 }
 
 uf_status uf_optics_plot(const uf_optics_numbers *numbers, const char *path, uf_error *error)
 {
-    uf_work work = {0};
-    uf_indexed picture;
-    uf_text png = {0};
-    curves *c;
-    uf_status status = uf_take(&work, 1, sizeof *c, "a plot", &c, error);
-    if (status == UF_OK) {
-        fill_depths(numbers, c);
-        fill_decays(numbers, c);
-        status = draw(numbers, &work, c, &picture, error);
-    }
-    if (status == UF_OK)
-        status = uf_encode_indexed_png(&png, &picture, error);
-    if (status == UF_OK)
-        status = uf_output_file(path, png.bytes, png.length, error);
-    uf_text_free(&png);
-    uf_arena_free(&work.arena);
+    curves *c = malloc(sizeof *c);
+    if (!c)
+        return uf_fail_memory(error, "a plot");
+    fill_depths(numbers, c);
+    fill_decays(numbers, c);
+    uf_status status = draw(numbers, c, path, error);
+    free(c);
     return status;
 }

@@ -22,7 +22,7 @@ void uf_json_number(json_t *object, const char *name, double value)
 
 uf_status uf_json_finish(uf_text *out, json_t *object, uf_error *error)
 {
-    char *text = json_dumps(object, JSON_INDENT(2) | JSON_PRESERVE_ORDER);
+    char *text = json_dumps(object, JSON_INDENT(2) | JSON_REAL_PRECISION(12));
     json_decref(object);
     if (!text)
         return uf_fail_memory(error, "the report");

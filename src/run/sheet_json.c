@@ -4,19 +4,11 @@
 #include <jansson.h>
 #include <stdlib.h>
 
-/* Null for no text; bytes that are no UTF-8 (of a file's name) become '?'. */
+#include "run/run_json_parts.h"
+
 static json_t *text_or_null(const char *text)
 {
-    json_t *value = text ? json_string(text) : json_null();
-    if (value)
-        return value;
-    char *copy = uf_copy_string(text);
-    for (char *p = copy; p && *p; p++)
-        if ((unsigned char)*p > 127)
-            *p = '?';
-    value = copy ? json_string(copy) : NULL;
-    free(copy);
-    return value;
+    return text ? uf_json_text(text) : json_null();
 }
 
 /* Without memory a member would be missing in silence: *lost tells. */
