@@ -53,6 +53,9 @@ int uf_print_all(const uf_text *text);
 UF_MUST_USE uf_status uf_read_settings(const char **instruments, int instrument_count, const char **assays,
                                        int assay_count, uf_settings **settings, uf_error *error);
 
+/* The command as it was typed, for logs: "underfoot NAME arg arg". */
+void uf_join_command(uf_text *out, const char *name, int argc, char **argv);
+
 /* Threads from --threads, or the number of processors. UF_USAGE unless 1 .. 256. */
 UF_MUST_USE uf_status uf_threads(const char *text, int *threads, uf_error *error);
 

@@ -76,7 +76,8 @@ static uf_status check_arguments(const measure_arguments *a, uf_error *error)
     return UF_OK;
 }
 
-static uf_status run_measure(const measure_arguments *a, uf_measure_summary *summary, uf_error *error)
+static uf_status run_measure(const measure_arguments *a, int argc, char **argv, uf_measure_summary *summary,
+                             uf_error *error)
 {
     uf_settings *settings = NULL;
     uf_measure_request request = {.near_path = a->images[0],
@@ -85,7 +86,7 @@ static uf_status run_measure(const measure_arguments *a, uf_measure_summary *sum
                                   .nuclei_path = a->nuclei,
                                   .out_dir = a->out};
     uf_text command = {0};
-    uf_text_printf(&command, "underfoot measure %s %s", a->images[0], a->image_count > 1 ? a->images[1] : "");
+    uf_join_command(&command, "measure", argc, argv);
     request.command = command.bytes;
     uf_status status = uf_threads(a->threads, &request.threads, error);
     if (status == UF_OK)
@@ -134,7 +135,7 @@ static int command_measure(int argc, char **argv)
     if (status == UF_OK)
         status = check_arguments(&a, &error);
     if (status == UF_OK)
-        status = run_measure(&a, &summary, &error);
+        status = run_measure(&a, argc, argv, &summary, &error);
     if (status != UF_OK)
         return uf_report_error(&error);
     if (a.quiet)

@@ -229,7 +229,7 @@ static int command_plate(int argc, char **argv)
         status = fill_request(&a, &request, &error);
     if (status != UF_OK)
         return uf_report_error(&error);
-    uf_text_printf(&command, "underfoot plate %s -o %s", a.sheet, a.out);
+    uf_join_command(&command, "plate", argc, argv);
     request.command = command.bytes;
     request.progress = a.quiet ? NULL : tell_progress;
     request.progress_context = &t;

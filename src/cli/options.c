@@ -184,6 +184,13 @@ uf_status uf_read_settings(const char **instruments, int instrument_count, const
     return status;
 }
 
+void uf_join_command(uf_text *out, const char *name, int argc, char **argv)
+{
+    uf_text_printf(out, "underfoot %s", name);
+    for (int k = 0; k < argc; k++)
+        uf_text_printf(out, " %s", argv[k]);
+}
+
 uf_status uf_threads(const char *text, int *threads, uf_error *error)
 {
     if (!text) {

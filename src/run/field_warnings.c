@@ -107,7 +107,12 @@ static void warn_field(warning_job *job)
             "angles_deg, power and the indices, and whether the cells moved or bleached between pages\n",
             field->series_chi_square);
     if (field->flags >> UF_FLAG_EMPTY & 1u)
-        uf_text_add(job->out, "no cells were found\n");
+        uf_text_printf(
+            job->out,
+            "no cells were found: the field is %.4g x %.4g um, and what is smaller than min_area_um2 = %.4g does "
+            "not count; check [pixel] size_um, and look at the wide image\n",
+            job->result->wide.image.width * job->plan->pixel_size_um,
+            job->result->wide.image.height * job->plan->pixel_size_um, job->settings->cells.min_area_um2);
 }
 
 void uf_field_warn(uf_text *out, const uf_settings *settings, const uf_plan *plan, const uf_field_result *result)

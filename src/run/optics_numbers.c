@@ -167,7 +167,7 @@ static uf_status wish_agreement(const uf_bench *b, double cutoff_nm, uf_optics_w
         return uf_fail(
             error, UF_INPUT,
             "between n sin(angle) %.4f and %.4f an exponential nowhere agrees with layered within %.3g nm at "
-            "gaps of %.4g and %.4g nm; ask for less, or use model = layered",
+            "gaps of %.4g and %.4g nm; ask for more nm, or use model = layered",
             first, most, wish->within_nm, cutoff_nm, 2 * cutoff_nm);
     wish->angle_low_deg = uf_angle_from_na(wish->na_low, b->substrate_n);
     wish->angle_high_deg = uf_angle_from_na(wish->na_high, b->substrate_n);

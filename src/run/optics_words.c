@@ -160,7 +160,9 @@ static void put_change(uf_text *out, double change)
 static void put_moves(uf_text *out, const uf_optics_numbers *n)
 {
     int steps = 0;
-    uf_text_printf(out, "\n%-38s%12s%22s\n", "if the truth is larger by", "depth", "a gap at the cutoff");
+    char cutoff[48];
+    (void)snprintf(cutoff, sizeof cutoff, "a gap of %.4g nm", n->cutoff_nm);
+    uf_text_printf(out, "\n%-38s%12s%22s\n", "if the truth is larger by", "depth", cutoff);
     for (int k = 0; k < UF_OPTICS_MOVES; k++) {
         const uf_optics_move *m = &n->moves[k];
         char what[80];
@@ -211,9 +213,9 @@ static void put_verdict(uf_text *out, const uf_optics_numbers *n)
                        b->objective_na);
     if (fabs(n->layered_effect_nm) > 3 && n->law.model == UF_FIELD_EXPONENTIAL && b->na_effective > b->cell_n)
         uf_text_printf(out,
-                       "At the cutoff an exponential is off by %+.1f nm: use model = layered, or ask\n"
+                       "At the cutoff of %.4g nm an exponential is off by %+.1f nm: use model = layered, or ask\n"
                        "--for-agreement-nm 2 for the angles where it is not.\n",
-                       n->layered_effect_nm);
+                       n->cutoff_nm, n->layered_effect_nm);
 }
 
 void uf_optics_put_words(uf_text *out, const uf_optics_numbers *numbers)

@@ -3,6 +3,7 @@
 
 #include <math.h>
 
+#include "base/constants.h"
 #include "image/restore.h"
 #include "optics/refractive.h"
 #include "optics/systematic.h"
@@ -89,6 +90,9 @@ uf_status uf_bench_make(const uf_settings *s, uf_bench *bench, uf_error *error)
         return status;
     find_na(s, bench);
     bench->na_effective = uf_round_digits(bench->na_effective, 12);
+    if (s->interface.angle_deg < UF_PI / 2)
+        return uf_fail(error, UF_INPUT, "angle_deg = %.4g: angles are in degrees (%.4g radians are %.2f deg)",
+                       s->interface.angle_deg, s->interface.angle_deg, s->interface.angle_deg * 180 / UF_PI);
     return uf_bench_check(bench, error);
 }
 

@@ -3,6 +3,7 @@
 
 #include <math.h>
 #include <stdlib.h>
+#include <string.h>
 
 #include "io/image_encode.h"
 #include "io/output.h"
@@ -35,6 +36,9 @@ uf_status uf_json_finish(uf_text *out, json_t *object, uf_error *error)
 uf_status uf_plot_file(const uf_plot_panel *panels, int count, int width, int height, const char *path,
                        uf_error *error)
 {
+    size_t length = strlen(path);
+    if (length && (length < 4 || strcmp(path + length - 4, ".png") != 0))
+        return uf_fail(error, UF_USAGE, "--plot %.200s: plots are PNG; give a name that ends in .png", path);
     uf_work work = {0};
     uf_indexed picture;
     uf_text png = {0};
