@@ -105,7 +105,7 @@ uf_status uf_nonlinear_solve(const uf_nonlinear *problem, uf_nonlinear_fit *fit,
     fit->converged = 0;
     fit->steps = 0;
     fit->residual_sd = fit->sum_of_squares = (double)NAN;
-    gsl_error_handler_t *before = gsl_set_error_handler_off();
+    gsl_set_error_handler_off(); /* for good: another thread may be in GSL as well */
     gsl_multifit_nlinear_workspace *space =
         gsl_multifit_nlinear_alloc(gsl_multifit_nlinear_trust, &how, problem->rows, (size_t)problem->parameters);
     fit_job job = {problem, malloc(problem->rows * sizeof(double)), malloc(problem->rows * sizeof(double))};
@@ -115,6 +115,5 @@ uf_status uf_nonlinear_solve(const uf_nonlinear *problem, uf_nonlinear_fit *fit,
     gsl_multifit_nlinear_free(space);
     free(job.above);
     free(job.below);
-    gsl_set_error_handler(before);
     return has_room ? UF_OK : uf_fail_memory(error, "a fit");
 }

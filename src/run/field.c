@@ -114,6 +114,15 @@ static uf_status remove_halos(uf_work *work, const uf_plan *plan, uf_field_resul
     return UF_OK;
 }
 
+/* Where blank fields say what shines without cells, that is the background, and not what is found between these cells. */
+static void take_blank(const uf_settings *s, uf_channel_name which, uf_channel *channel)
+{
+    if (isnan(s->camera[which].background_adu))
+        return;
+    channel->background_adu = s->camera[which].background_adu;
+    channel->background_sd_adu = s->camera[which].background_sd_adu;
+}
+
 static uf_status judge_focus(uf_work *work, const uf_plan *plan, uf_field_result *r, uf_error *error)
 {
     double psf_px = plan->psf_sigma_um / plan->pixel_size_um;
@@ -197,6 +206,10 @@ uf_status uf_field_run(uf_work *work, const uf_plan *plan, const uf_settings *se
         status = find_cells(work, plan, settings, result, error);
     if (status == UF_OK)
         status = remove_halos(work, plan, result, error);
+    if (status == UF_OK && !plan->series.count) {
+        take_blank(settings, UF_NEAR, &result->near);
+        take_blank(settings, UF_WIDE, &result->wide);
+    }
     if (status == UF_OK)
         status = judge_focus(work, plan, result, error);
     if (status == UF_OK)

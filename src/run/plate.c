@@ -10,6 +10,7 @@
 #include <time.h>
 #include <unistd.h>
 
+#include "fit/robust.h"
 #include "io/csv.h"
 #include "io/output.h"
 #include "run/field_pictures.h"
@@ -40,6 +41,10 @@ typedef struct plate_job {
     double *seconds;               /* of each row measured in this run */
     uf_reference_unit *references; /* of each row; ratio NaN where it has none */
     int *reference_cells;
+    struct {
+        int known;
+        double adu[UF_CHANNELS];
+    } * blanks;            /* of each row */
     pthread_mutex_t mutex; /* guards all below, and the progress */
     uf_output_batch batch;
     int since_commit, done, total, measured;
@@ -134,6 +139,92 @@ static void measure_reference(void *context, int hand, int index)
     tell(job, 0);
     pthread_mutex_unlock(&job->mutex);
 }
+
+/* ---- blanks ---------------------------------------------------------------------------------- */
+
+static uf_status median_of_channel(uf_reader *reader, uf_channel_name which, const uf_field_files *files,
+                                   double *median, uf_error *error)
+{
+    enum { SAMPLE = 1 << 16 };
+    const char *path = which == UF_NEAR ? files->near_path : files->wide_path;
+    uf_channel channel;
+    double pixel_um, *values;
+    uf_status status = uf_read_channel(reader, which, path, which == UF_NEAR ? files->near_page : files->wide_page,
+                                       &channel, 1, &pixel_um, error);
+    if (status == UF_OK)
+        status = uf_take(reader->work, SAMPLE, sizeof *values, "a blank field", &values, error);
+    if (status != UF_OK)
+        return status;
+    int64_t pixels = (int64_t)channel.image.width * channel.image.height, step = pixels / SAMPLE + 1;
+    size_t count = 0;
+    for (int64_t k = 0; k < pixels && count < SAMPLE; k += step)
+        values[count++] =
+            (double)uf_plane_row(channel.image, (int)(k / channel.image.width))[k % channel.image.width];
+    *median = uf_median(values, count);
+    return UF_OK;
+}
+
+/* A blank field that cannot be read lends nothing, and is told when it is measured. */
+static void look_at_blank(plate_job *job, int hand, int index)
+{
+    uf_work work = {.arena = job->arenas[hand]};
+    struct uf_settings settings = uf_plate_reference_settings(&job->plan, index);
+    uf_field_files files = uf_plate_files(&job->plan, index);
+    uf_reader reader = {.work = &work, .settings = &settings};
+    double near, wide;
+    uf_error error;
+    uf_arena_mark mark = uf_arena_now(&work.arena);
+    if (median_of_channel(&reader, UF_NEAR, &files, &near, &error) == UF_OK &&
+        median_of_channel(&reader, UF_WIDE, &files, &wide, &error) == UF_OK) {
+        job->blanks[index].adu[UF_NEAR] = near;
+        job->blanks[index].adu[UF_WIDE] = wide;
+        job->blanks[index].known = 1;
+    }
+    uf_reader_free(&reader);
+    uf_arena_back(&work.arena, mark);
+    job->arenas[hand] = work.arena;
+}
+
+static void blank_task(void *context, int hand, int index)
+{
+    plate_job *job = context;
+    if (uf_plate_is_blank(&job->plan, index) && !is_ended(job))
+        look_at_blank(job, hand, index);
+}
+
+/* Mean over a group's blank fields, and the sd of that mean (of one field: none is known, 0). */
+static void pool_blanks(plate_job *job, int group)
+{
+    uf_plate_group *g = &job->plan.groups[group];
+    for (int c = 0; c < UF_CHANNELS; c++) {
+        double sum = 0, squares = 0;
+        int n = 0;
+        for (int k = 0; k < job->plan.sheet.count; k++)
+            if (job->plan.rows[k].group == group && job->blanks[k].known) {
+                sum += job->blanks[k].adu[c];
+                n++;
+            }
+        for (int k = 0; k < job->plan.sheet.count; k++)
+            if (job->plan.rows[k].group == group && job->blanks[k].known)
+                squares += (job->blanks[k].adu[c] - sum / n) * (job->blanks[k].adu[c] - sum / n);
+        g->blanks = n;
+        g->blank_adu[c] = n ? uf_round_digits(sum / n, 12) : (double)NAN;
+        g->blank_sd_adu[c] = n > 1 ? uf_round_digits(sqrt(squares / (n - 1) / n), 12) : 0;
+    }
+}
+
+static uf_status find_blanks(plate_job *job, uf_error *error)
+{
+    job->blanks = calloc((size_t)job->plan.sheet.count + 1, sizeof *job->blanks);
+    if (!job->blanks)
+        return uf_fail_memory(error, "the blank fields");
+    uf_pool_run(job->pool, job->plan.sheet.count, blank_task, job);
+    for (int k = 0; k < job->plan.group_count; k++)
+        pool_blanks(job, k);
+    return UF_OK;
+}
+
+/* ---- references pooled ------------------------------------------------------------------------ */
 
 /* Pooling all cells of one treatment would make its own effect the reference. */
 static uf_status check_pooled(const plate_job *job, int group, uf_error *error)
@@ -237,7 +328,8 @@ static uf_status await_references(plate_job *job, uf_error *error)
         double now = now_seconds();
         missing = 0;
         for (int k = 0; k < job->plan.sheet.count; k++)
-            if (uf_plate_is_reference(&job->plan, k) && !uf_follow_is_complete(&job->follow, k, now))
+            if ((uf_plate_is_reference(&job->plan, k) || uf_plate_is_blank(&job->plan, k)) &&
+                !uf_follow_is_complete(&job->follow, k, now))
                 missing++;
         if (missing && has_given_up(job))
             return uf_fail(
@@ -284,6 +376,9 @@ static uf_status find_references(plate_job *job, uf_error *error)
     if (!job->references || !job->reference_cells)
         return uf_fail_memory(error, "the references");
     uf_status status = job->request->follow ? await_references(job, error) : UF_OK;
+    if (status != UF_OK)
+        return status;
+    status = find_blanks(job, error);
     if (status != UF_OK)
         return status;
     for (int k = 0; k < count; k++)
@@ -739,6 +834,7 @@ static void free_job(plate_job *job)
     free(job->seconds);
     free(job->references);
     free(job->reference_cells);
+    free(job->blanks);
     uf_follow_free(&job->follow);
     uf_output_batch_drop(&job->batch);
     uf_pool_free(&job->pool);

@@ -48,6 +48,7 @@ static uf_status find_group(uf_plate_plan *plan, const uf_sheet_row *row, int se
                                                          .settings = settings,
                                                          .estimated = is_estimated(plan->all.settings[settings]),
                                                          .exposure_ms = {(double)NAN, (double)NAN},
+                                                         .blank_adu = {(double)NAN, (double)NAN},
                                                          .worst_well = ""};
     return UF_OK;
 }
@@ -132,10 +133,19 @@ void uf_plate_plan_free(uf_plate_plan *plan)
 
 /* ---- references ------------------------------------------------------------------------------ */
 
+int uf_plate_is_blank(const uf_plate_plan *plan, int index)
+{
+    const uf_plate_row *r = &plan->rows[index];
+    return r->row->role == UF_ROLE_BLANK && !r->excluded && r->row->wide_path;
+}
+
 int uf_plate_needs_references(const uf_plate_plan *plan)
 {
     for (int k = 0; k < plan->group_count; k++)
         if (plan->groups[k].estimated)
+            return 1;
+    for (int k = 0; k < plan->sheet.count; k++)
+        if (uf_plate_is_blank(plan, k))
             return 1;
     return 0;
 }
@@ -168,12 +178,22 @@ static void set_exposures(const uf_sheet_row *row, struct uf_settings *s)
             s->camera[k].exposure_ms = ms[k];
 }
 
+/* Blank wells of the plate are nearer to its fields than what an instrument file says. */
+static void set_blanks(const uf_plate_group *g, struct uf_settings *s)
+{
+    for (int k = 0; k < UF_CHANNELS && g->blanks; k++) {
+        s->camera[k].background_adu = g->blank_adu[k];
+        s->camera[k].background_sd_adu = g->blank_sd_adu[k];
+    }
+}
+
 struct uf_settings uf_plate_settings(const uf_plate_plan *plan, int index)
 {
     const uf_plate_row *r = &plan->rows[index];
     const uf_plate_group *g = &plan->groups[r->group];
     struct uf_settings s = *plan->all.settings[r->settings];
     set_exposures(r->row, &s);
+    set_blanks(g, &s);
     if (!g->estimated)
         return s;
     s.reference.from = UF_SETTING_NOT_GIVEN;
@@ -193,6 +213,7 @@ struct uf_settings uf_plate_reference_settings(const uf_plate_plan *plan, int in
 {
     struct uf_settings s = *plan->all.settings[plan->rows[index].settings];
     set_exposures(plan->rows[index].row, &s);
+    set_blanks(&plan->groups[plan->rows[index].group], &s);
     s.reference.from = UF_FROM_CELL;
     s.reference.ratio = (double)NAN;
     return s;
@@ -262,6 +283,13 @@ static json_t *group_json(const uf_plate_group *g, int with_reference)
     json_object_set_new(o, "plate", text_json(g->plate));
     json_object_set_new(o, "session", text_json(g->session));
     json_object_set_new(o, "settings", json_integer(g->settings));
+    if (with_reference && g->blanks) {
+        put_number(o, "near_blank_adu", g->blank_adu[UF_NEAR]);
+        put_number(o, "near_blank_sd_adu", g->blank_sd_adu[UF_NEAR]);
+        put_number(o, "wide_blank_adu", g->blank_adu[UF_WIDE]);
+        put_number(o, "wide_blank_sd_adu", g->blank_sd_adu[UF_WIDE]);
+        json_object_set_new(o, "blanks", json_integer(g->blanks));
+    }
     if (!g->estimated || !with_reference)
         return o;
     put_number(o, "ratio", g->pool.ratio);
@@ -331,6 +359,13 @@ static int whole_of(const json_t *o, const char *name)
 
 static int take_group(uf_plate_plan *plan, uf_plate_group *g, const json_t *o)
 {
+    g->blanks = whole_of(o, "blanks");
+    g->blank_adu[UF_NEAR] = number_of(o, "near_blank_adu");
+    g->blank_sd_adu[UF_NEAR] = number_of(o, "near_blank_sd_adu");
+    g->blank_adu[UF_WIDE] = number_of(o, "wide_blank_adu");
+    g->blank_sd_adu[UF_WIDE] = number_of(o, "wide_blank_sd_adu");
+    if (!g->estimated)
+        return 1;
     const char *worst = json_string_value(json_object_get(o, "worst_well"));
     g->pool = (uf_reference_pool){.ratio = number_of(o, "ratio"),
                                   .ratio_sd = number_of(o, "ratio_sd"),
@@ -356,8 +391,7 @@ int uf_plate_plan_take_references(uf_plate_plan *plan, const uf_text *json)
     const json_t *groups = json_object_get(o, "references");
     int taken = draft && strcmp(draft, plan->draft) == 0 && (int)json_array_size(groups) == plan->group_count;
     for (int k = 0; taken && k < plan->group_count; k++)
-        if (plan->groups[k].estimated)
-            taken = take_group(plan, &plan->groups[k], json_array_get(groups, (size_t)k));
+        taken = take_group(plan, &plan->groups[k], json_array_get(groups, (size_t)k));
     json_decref(o);
     return taken;
 }

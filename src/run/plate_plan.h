@@ -21,6 +21,8 @@ typedef struct uf_plate_group {
     int estimated;                   /* its reference comes from its own fields (from = wells or pooled) */
     double exposure_ms[UF_CHANNELS]; /* of the estimated reference; NaN: not told */
     uf_reference_pool pool;          /* estimated: ratio at gap 0 */
+    double blank_adu[UF_CHANNELS], blank_sd_adu[UF_CHANNELS]; /* of its blank wells, above the offset; NaN: none */
+    int blanks;                                               /* fields they come from */
     int cells;
     const char *worst_well;
 } uf_plate_group;
@@ -52,6 +54,9 @@ UF_MUST_USE uf_status uf_plate_plan_read(uf_plate_plan *plan, const char *sheet_
 void uf_plate_plan_free(uf_plate_plan *plan);
 
 int uf_plate_needs_references(const uf_plate_plan *plan);
+
+/* Whether a row is a field without cells that tells the background: role blank. */
+int uf_plate_is_blank(const uf_plate_plan *plan, int row);
 
 /* Whether a row belongs to the fields its group's reference comes from. */
 int uf_plate_is_reference(const uf_plate_plan *plan, int row);

@@ -38,10 +38,11 @@ typedef enum uf_yes_no { UF_YES, UF_NO } uf_yes_no;
 
 typedef struct uf_camera_settings {
     double offset_adu, gain_e_per_adu, read_noise_e, full_scale_adu, excess_noise, exposure_ms;
+    double background_adu, background_sd_adu;
     char *dark, *defects;
 } uf_camera_settings;
 
-enum { UF_SETTINGS_LIMIT = 112, UF_SETTING_NOT_GIVEN = -1, UF_REALS_LIMIT = 32 };
+enum { UF_SETTINGS_LIMIT = 128, UF_SETTING_NOT_GIVEN = -1, UF_REALS_LIMIT = 32 };
 
 /* A list of numbers as one setting holds it; count 0: not given. */
 typedef struct uf_reals {

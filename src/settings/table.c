@@ -43,6 +43,9 @@
              "Excess noise factor of an amplifying camera (about 1.41), 1 for others.")                        \
     , I_REAL(section, "exposure_ms", camera[channel].exposure_ms, 1e-6, 1e9, NONE,                              \
              "Exposure of the images; with the reference's own, a ratio taken at others is converted.")         \
+    , I_REAL(section, "background_adu", camera[channel].background_adu, -1e6, 1e6, NONE,                       \
+             "Light of a blank field above the offset. Default: blank wells of the sheet, else each field's own.") \
+    , I_REAL(section, "background_sd_adu", camera[channel].background_sd_adu, 0, 1e6, 0, "1 sigma of it.")      \
     , I_PATH(section, "dark", camera[channel].dark, "Dark image subtracted instead of offset_adu.")            \
     , I_PATH(section, "defects", camera[channel].defects,                                                      \
              "Map of bad pixels: those not 0 are replaced from their neighbours.")

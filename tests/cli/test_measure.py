@@ -254,7 +254,7 @@ def test_tiny_fields_are_measured_or_empty(demo, tmp_path, size):
 
 def test_a_constant_image_is_empty(demo, tmp_path):
     for name in ("near", "wide"):
-        tifffile.imwrite(tmp_path / f"{name}.tif", numpy.full((97, 83), 300, numpy.uint16))
+        tifffile.imwrite(tmp_path / f"{name}.tif", numpy.full((97, 83), 300 + (name == "wide"), numpy.uint16))
     (tmp_path / "i.ini").write_text(instrument_without_flats(demo))
     run = Run(measure_arguments(demo, tmp_path / "out", near=tmp_path / "near.tif", wide=tmp_path / "wide.tif",
                                 instrument=tmp_path / "i.ini"), program=os.path.join(ROOT, "build/asan/underfoot"))

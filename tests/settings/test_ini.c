@@ -164,7 +164,7 @@ static void test_faults_name_line_and_mend(void **state)
     refused("[light]\nblue light\n", "/bench/day1.ini:2: ", "neither");
     refused("[light\n", "/bench/day1.ini:1: ", "no section");
     refused("[light] x\n", "/bench/day1.ini:1: ", "no section");
-    refused("[reference]\nfrom = wells\n", "/bench/day1.ini:2: ", "not in this version");
+    refused("[reference]\nfrom = well\n", "/bench/day1.ini:2: ", "wells or pooled or cell");
     refused("[interface]\nmedium_n = 1.33\nmedium = water\n", "/bench/day1.ini:3: ", "contradicts medium_n in line 2");
     refused("[series]\nangles_deg = 69, 71x\n", "/bench/day1.ini:2: ", "number 2 of the list");
     refused("[series]\nangles_deg = 69,, 71\n", "/bench/day1.ini:2: ", "number 2 of the list");
