@@ -72,7 +72,7 @@ SONAME  := libunderfoot.so.0
 SHARED  := $(BUILD)/$(SONAME)
 
 .DEFAULT_GOAL := all
-.PHONY: bead-truth truth cover all debug asan tsan probe build-flavour unit check demo bench install uninstall clean help packages packages-test docs docs-pictures
+.PHONY: bead-truth stats-truth truth cover all debug asan tsan probe build-flavour unit check demo bench install uninstall clean help packages packages-test docs docs-pictures
 
 all: packages ## the command and the libraries, optimised and hardened, in build/release
 	@$(MAKE) --no-print-directory FLAVOUR=release build-flavour
@@ -166,13 +166,16 @@ cover: all ## how often the 95 % intervals hold the truth, into tests/bench/cove
 	@$(MAKE) --no-print-directory FLAVOUR=release $(BUILD)/tests/bench/truth
 	$(BUILD)/tests/bench/truth cover > tests/bench/cover.csv
 
-$(BUILD)/tests/bench/beads: tests/bench/beads.c $(STATIC)
+$(BUILD)/tests/bench/beads $(BUILD)/tests/bench/stats: $(BUILD)/tests/bench/%: tests/bench/%.c $(STATIC)
 	@mkdir -p $(@D)
 	$(call say,bench $@)
 	$(CC) $(CFLAGS_ALL) $(LINK_ALL) -MMD -MP -o $@ $< $(STATIC) $(LINK_LIBS)
 bead-truth: all ## how right calibrate bead is over 200 simulated experiments a row, into tests/bench/beads.csv
 	@$(MAKE) --no-print-directory FLAVOUR=release $(BUILD)/tests/bench/beads
 	$(BUILD)/tests/bench/beads > tests/bench/beads.csv
+stats-truth: all ## false positives and coverage of the statistics on invented experiments, into tests/bench/stats.csv
+	@$(MAKE) --no-print-directory FLAVOUR=release $(BUILD)/tests/bench/stats
+	$(BUILD)/tests/bench/stats > tests/bench/stats.csv
 
 docs: all ## the pages that come from the tables in the code
 	$(PROGRAM) docs settings > docs/settings.md

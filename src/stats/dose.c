@@ -11,7 +11,7 @@
 #include "stats/variance.h"
 
 enum { PURE_DEGREES_LEAST = 3, MOST_HALVINGS = 60 };
-static const double farthest_decades = 2.5, slope_steepest = 15, slope_flattest = 1 / 15.0;
+static const double farthest_decades = 2.5, slope_steepest = 15, slope_flattest = 1 / 15.0, misfit_level = 0.01;
 
 const char *uf_dose_status_word(uf_dose_status status)
 {
@@ -108,6 +108,18 @@ static void test_against_constant(const dose_job *job, const uf_curve *curve, in
     fit->effect_p = uf_f_above(fit->effect_f, parameters - 1, df);
 }
 
+/* What the curve leaves beyond the scatter within doses. */
+static void test_misfit(const dose_job *job, const uf_curve *curve, int parameters, const uf_one_way *between,
+                        uf_dose_fit *fit)
+{
+    double pure = between->ms_within * between->df_within, df = (double)(job->groups - parameters);
+    if (!curve->found || !(df > 0) || !(between->ms_within > 0))
+        return;
+    fit->misfit_p = uf_f_above(fmax(0, curve->rss - pure) / df / between->ms_within, df, between->df_within);
+    if (fit->misfit_p < misfit_level)
+        fit->notes |= UF_NOTE_MISFIT;
+}
+
 static uf_status test_effect(const dose_job *job, const uf_curve *curve, int parameters, uf_dose_fit *fit,
                              uf_error *error)
 {
@@ -117,6 +129,7 @@ static uf_status test_effect(const dose_job *job, const uf_curve *curve, int par
     if (status != UF_OK)
         return status;
     if (between.df_within >= PURE_DEGREES_LEAST) {
+        test_misfit(job, curve, parameters, &between, fit);
         fit->effect_f = between.ms_within > 0 ? between.f : between.ms_between > 0 ? INFINITY : (double)NAN;
         fit->effect_p = between.ms_within > 0 ? between.p : between.ms_between > 0 ? 0 : 1;
     } else if (curve->found)
@@ -273,7 +286,7 @@ uf_status uf_dose_fit_one(const uf_dose_point *points, size_t count, double alph
         (uf_dose_fit){.status = UF_DOSE_NO_FIT, .dose_min = nan, .dose_max = nan, .effect_f = nan, .effect_p = nan};
     fit->zero = fit->full = fit->log10_ec50 = fit->hill_slope = fit->bottom = fit->top = nan;
     fit->zero_se = fit->full_se = fit->log10_ec50_se = fit->hill_slope_se = nan;
-    fit->ec50 = fit->ec50_low = fit->ec50_high = fit->rss = fit->df = fit->residual_sd = nan;
+    fit->ec50 = fit->ec50_low = fit->ec50_high = fit->rss = fit->df = fit->residual_sd = fit->misfit_p = nan;
     uf_status status = job_new(&job, points, count) ? UF_OK : uf_fail_memory(error, "a dose curve");
     if (status == UF_OK) {
         describe_doses(&job, fit);

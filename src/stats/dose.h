@@ -49,6 +49,7 @@ typedef struct uf_dose_fit {
         ec50_high; /* profile likelihood; for other states than ok the one that exists is a one-sided bound
                                    of the same level */
     double rss, df, residual_sd;
+    double misfit_p; /* F test of the curve against the means of the doses; NaN where no dose is repeated */
 } uf_dose_fit;
 
 /*
@@ -61,6 +62,9 @@ typedef struct uf_dose_fit {
  * (UF_NOTE_SLOPE_AT_LIMIT at its ends). The interval is the profile likelihood's: all EC50 whose best curve has at most
  * rss (1 + F(level; 1, df) / df) (Bates and Watts 1988, Nonlinear Regression Analysis, 6.1). It holds the scatter of wells
  * of one replicate only, not that between replicates.
+ *
+ * Whatever the status, UF_NOTE_MISFIT warns of data that are no such curve (a hump, a second step): misfit_p below 0.01 by F,
+ * what the curve leaves beyond the scatter within doses (Bates and Watts 1988, 1.3).
  *
  * Points whose dose or response is NaN, or whose dose is negative, take no part. UF_MEMORY is the only failure.
  */

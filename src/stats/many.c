@@ -239,6 +239,11 @@ uf_status uf_holm(const double *p, size_t count, double *adjusted, uf_error *err
     return UF_OK;
 }
 
+double uf_bonferroni_level(double level, size_t count)
+{
+    return count ? 1 - (1 - level) / (double)count : (double)NAN;
+}
+
 int uf_rejects(double p, double alpha)
 {
     return p <= alpha * (1 + 1e-12);

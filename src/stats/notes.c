@@ -19,6 +19,7 @@ static const char *const texts[UF_NOTE_BITS] = {
     "no repeated dose: curve tested against a constant",
     "some replicates only bound the value",
     "not reached with the most replicates allowed",
+    "the curve does not follow the doses",
 };
 
 const char *uf_note_text(unsigned note)

@@ -29,9 +29,10 @@ enum {
     UF_NOTE_SLOPE_FIXED = 2048,       /* too few doses for a Hill slope: held at 1 */
     UF_NOTE_NO_PURE_ERROR = 4096,     /* no dose was repeated: the curve itself is tested against a constant */
     UF_NOTE_CENSORED = 8192,          /* some replicates only bound the value */
-    UF_NOTE_OUT_OF_REACH = 16384      /* not reached with the most that was allowed */
+    UF_NOTE_OUT_OF_REACH = 16384,     /* not reached with the most that was allowed */
+    UF_NOTE_MISFIT = 32768            /* the curve misses the means of the doses by more than wells scatter */
 };
-enum { UF_NOTE_BITS = 15 };
+enum { UF_NOTE_BITS = 16 };
 
 /* A short clause for one note (a single bit), NULL for anything else. */
 const char *uf_note_text(unsigned note);

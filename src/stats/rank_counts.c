@@ -53,7 +53,7 @@ static int sum_of(const int *ranks, size_t count)
 /* Row j holds, by sum, the share of choices of j among the ranks seen so far; each new rank moves part of a row into the next. As
  * a share of all choices of `chosen` at the end, it is kept in range by dividing as it grows: the chance that the rank is
  * taken given how many are still to come and to take. */
-uf_status uf_shares_of_choices(const int *ranks, size_t count, size_t chosen, uf_rank_shares *shares, uf_error *error)
+static uf_status shares_of_few(const int *ranks, size_t count, size_t chosen, uf_rank_shares *shares, uf_error *error)
 {
     size_t width = (size_t)sum_of(ranks, count) + 1;
     *shares = (uf_rank_shares){NULL, (int)width - 1};
@@ -83,6 +83,19 @@ uf_status uf_shares_of_choices(const int *ranks, size_t count, size_t chosen, uf
         shares->share[s] = rows[chosen * width + s];
     free(rows);
     return UF_OK;
+}
+
+/* The ranks left out are a choice too, and often the smaller one. */
+uf_status uf_shares_of_choices(const int *ranks, size_t count, size_t chosen, uf_rank_shares *shares, uf_error *error)
+{
+    int mirrored = 2 * chosen > count;
+    uf_status status = shares_of_few(ranks, count, mirrored ? count - chosen : chosen, shares, error);
+    for (int s = 0; status == UF_OK && mirrored && 2 * s < shares->top; s++) {
+        double swap = shares->share[s];
+        shares->share[s] = shares->share[shares->top - s];
+        shares->share[shares->top - s] = swap;
+    }
+    return status;
 }
 
 uf_status uf_shares_of_signs(const int *ranks, size_t count, uf_rank_shares *shares, uf_error *error)

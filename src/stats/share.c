@@ -64,8 +64,14 @@ uf_wells_share uf_share_of_wells(const double *hits, const double *trials, size_
     }
     if (hit <= 0 || hit >= all)
         s.notes = UF_NOTE_DISPERSION_UNKNOWN;
-    s.design_effect = s.notes ? 1 : fmax(1, design_effect_of(hits, trials, wells, hit / all, all, used));
+    double effect = s.notes ? 1 : design_effect_of(hits, trials, wells, hit / all, all, used);
+    s.design_effect = fmax(1, effect);
     s.effective_n = all / s.design_effect;
-    s.share = uf_wilson_by(hit / s.design_effect, s.effective_n, uf_t_factor(level, used - 1));
+    s.share = uf_wilson(hit, all, level);
+    if (!(effect > 0)) /* wells exactly alike: what is left is chance */
+        return s;
+    uf_share spread = uf_wilson_by(hit / effect, all / effect, uf_t_factor(level, used - 1));
+    s.share.low = fmin(s.share.low, spread.low);
+    s.share.high = fmax(s.share.high, spread.high);
     return s;
 }

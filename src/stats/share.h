@@ -33,7 +33,8 @@ typedef struct uf_wells_share {
  * Share of all cells over wells, with the wells as what was sampled (Rao and Scott 1992, Biometrics 48:577): the variance of the
  * ratio sum hits / sum trials between wells, over the binomial one, is the design effect; hits and trials are divided by
  * it and go into Wilson's interval, with Student's quantile of wells - 1 degrees (Korn and Graubard 1998, Surv. Methodol. 24:193).
- * It supposes no distribution of the wells' shares; a design effect below 1 counts as 1.
+ * It supposes no distribution of the wells' shares. The interval is never narrower than that of independent cells, and a design
+ * effect below 1 is shown as 1: wells do not differ less than chance, they only happen to.
  *
  * Interval NaN below UF_REPLICATES_LEAST wells with cells (UF_NOTE_TOO_FEW). Where all cells are hits, or none, nothing tells
  * how wells differ: the design effect is taken as 1 and UF_NOTE_DISPERSION_UNKNOWN set; the interval is then too narrow if they do.

@@ -43,7 +43,7 @@ DosePoint = structure("DosePoint", [(DOUBLE, "dose response")])
 DoseFit = structure("DoseFit", [
     (INT, "status"), (UINT, "notes"), (SIZE, "points"), (INT, "doses"),
     (DOUBLE, "dose_min dose_max effect_f effect_p zero full log10_ec50 hill_slope zero_se full_se log10_ec50_se "
-             "hill_slope_se bottom top"), (INT, "direction"), (DOUBLE, "ec50 ec50_low ec50_high rss df residual_sd")])
+             "hill_slope_se bottom top"), (INT, "direction"), (DOUBLE, "ec50 ec50_low ec50_high rss df residual_sd misfit_p")])
 Plan = structure("Plan", [(INT, "scale"), (DOUBLE, "detect power level"), (INT, "paired"), (DOUBLE, "variance variance_df")])
 
 

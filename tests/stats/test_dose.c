@@ -16,9 +16,10 @@
 
 /* Inderjit, Streibig and Olofsdotter 2002, Physiol. Plant. 114:422: root length (cm) of ryegrass under ferulic acid (mM). */
 static const uf_dose_point ryegrass[] = {
-    {0, 7.58},    {0, 8},        {0, 8.3286},   {0, 7.25},     {0, 7.375},    {0, 7.9625},   {0.94, 8.3556}, {0.94, 6.9143},
-    {0.94, 7.75}, {1.88, 6.8714}, {1.88, 6.45},  {1.88, 5.9222}, {3.75, 1.925}, {3.75, 2.8857}, {3.75, 4.2333}, {7.5, 1.1875},
-    {7.5, 0.8571}, {7.5, 1.0571}, {15, 0.6875}, {15, 0.525},   {15, 0.825},   {30, 0.25},    {30, 0.22},     {30, 0.44}};
+    {0, 7.58},      {0, 8},         {0, 8.3286},    {0, 7.25},      {0, 7.375},    {0, 7.9625},
+    {0.94, 8.3556}, {0.94, 6.9143}, {0.94, 7.75},   {1.88, 6.8714}, {1.88, 6.45},  {1.88, 5.9222},
+    {3.75, 1.925},  {3.75, 2.8857}, {3.75, 4.2333}, {7.5, 1.1875},  {7.5, 0.8571}, {7.5, 1.0571},
+    {15, 0.6875},   {15, 0.525},    {15, 0.825},    {30, 0.25},     {30, 0.22},    {30, 0.44}};
 
 static uf_dose_fit fit_of(const uf_dose_point *points, size_t count)
 {
@@ -88,8 +89,8 @@ static void test_profile_interval(void **state)
 
 /* ---- invented curves ------------------------------------------------------------------------------ */
 
-static size_t make(uf_dose_point *points, double zero, double full, double ec50, double slope, double noise, int doses,
-                   double lowest, double ratio, uint64_t seed)
+static size_t make(uf_dose_point *points, double zero, double full, double ec50, double slope, double noise,
+                   int doses, double lowest, double ratio, uint64_t seed)
 {
     uf_random random;
     size_t n = 0;
@@ -182,7 +183,8 @@ static void test_not_bracketed(void **state)
 static void test_no_repeats(void **state)
 {
     (void)state;
-    static const uf_dose_point points[] = {{0, 10.5}, {0.1, 11}, {0.3, 12.25}, {1, 17}, {3, 27.5}, {10, 36}, {30, 38.5}};
+    static const uf_dose_point points[] = {{0, 10.5}, {0.1, 11}, {0.3, 12.25}, {1, 17},
+                                           {3, 27.5}, {10, 36},  {30, 38.5}};
     uf_dose_fit fit = fit_of(points, COUNT_OF(points));
     double mean = 0, constant = 0;
     for (size_t k = 0; k < COUNT_OF(points); k++)
@@ -204,11 +206,38 @@ static void test_step(void **state)
     assert_true(pow(10, fit.log10_ec50) > 0.18 && pow(10, fit.log10_ec50) < 0.54);
 }
 
+/* A hump is no Hill curve: F of what the curve leaves, written out from the pure error. The curve of test_ryegrass passes. */
+static void test_misfit(void **state)
+{
+    (void)state;
+    uf_dose_point points[64];
+    size_t n = make(points, 10, 50, 0.3, 1.2, 1, 7, 0.02, 3, 4);
+    for (size_t k = n - 6; k < n; k++)
+        points[k].response -= 25; /* the two highest doses fall again */
+    uf_dose_fit fit = fit_of(points, n);
+    double pure = 0;
+    for (size_t k = 0; k < n; k++) {
+        double mean = 0, alike = 0;
+        for (size_t j = 0; j < n; j++)
+            if (points[j].dose == points[k].dose) {
+                mean += points[j].response;
+                alike++;
+            }
+        pure += pow(points[k].response - mean / alike, 2);
+    }
+    double f = (fit.rss - pure) / 4 / (pure / (double)(n - 8));
+    assert_near_rel(fit.misfit_p, uf_f_above(f, 4, (double)n - 8), 1e-9);
+    assert_true(fit.misfit_p < 1e-6 && (fit.notes & UF_NOTE_MISFIT));
+    fit = fit_of(ryegrass, COUNT_OF(ryegrass));
+    assert_true(fit.misfit_p > 0.05 && !(fit.notes & UF_NOTE_MISFIT));
+}
+
 /* ---- over replicates ------------------------------------------------------------------------------ */
 
 static uf_dose_fit replicate(uf_dose_status status, double ec50)
 {
-    uf_dose_fit fit = {.status = status, .log10_ec50 = log10(ec50), .hill_slope = 1.5, .dose_min = 0.1, .dose_max = 100};
+    uf_dose_fit fit = {
+        .status = status, .log10_ec50 = log10(ec50), .hill_slope = 1.5, .dose_min = 0.1, .dose_max = 100};
     return fit;
 }
 
@@ -267,6 +296,7 @@ int main(void)
                                        cmocka_unit_test(test_not_bracketed),
                                        cmocka_unit_test(test_no_repeats),
                                        cmocka_unit_test(test_step),
+                                       cmocka_unit_test(test_misfit),
                                        cmocka_unit_test(test_combined),
                                        cmocka_unit_test(test_combined_with_bounds),
                                        cmocka_unit_test(test_words)};

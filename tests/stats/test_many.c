@@ -190,6 +190,7 @@ static void test_missing_p_is_no_member(void **state)
     (void)state;
     const double p[] = {0.02, NAN, 0.04};
     double adjusted[3];
+    assert_near_rel(uf_bonferroni_level(0.95, 10), 0.995, 1e-14);
     assert_int_equal(uf_holm(p, 3, adjusted, NULL), UF_OK);
     assert_near_rel(adjusted[0], 0.04, 1e-14);
     assert_true(isnan(adjusted[1]) && !uf_rejects(adjusted[1], 0.05));
@@ -198,10 +199,14 @@ static void test_missing_p_is_no_member(void **state)
 
 int main(void)
 {
-    const struct CMUnitTest tests[] = {cmocka_unit_test(test_dunnett_1955), cmocka_unit_test(test_one_sided),
-                                       cmocka_unit_test(test_tables),       cmocka_unit_test(test_more_digits),
-                                       cmocka_unit_test(test_closed_forms), cmocka_unit_test(test_many_arms),
-                                       cmocka_unit_test(test_blocked_family), cmocka_unit_test(test_holm),
+    const struct CMUnitTest tests[] = {cmocka_unit_test(test_dunnett_1955),
+                                       cmocka_unit_test(test_one_sided),
+                                       cmocka_unit_test(test_tables),
+                                       cmocka_unit_test(test_more_digits),
+                                       cmocka_unit_test(test_closed_forms),
+                                       cmocka_unit_test(test_many_arms),
+                                       cmocka_unit_test(test_blocked_family),
+                                       cmocka_unit_test(test_holm),
                                        cmocka_unit_test(test_missing_p_is_no_member)};
     return cmocka_run_group_tests_name("many comparisons", tests, NULL, NULL);
 }

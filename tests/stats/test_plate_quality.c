@@ -24,7 +24,8 @@ static uf_plate_quality quality_of(const double *control, size_t n, const double
 static void test_eight_and_eight(void **state)
 {
     (void)state;
-    static const double positive[] = {98, 102, 101, 99, 100, 103, 97, 100}, negative[] = {10, 12, 9, 11, 8, 10, 11, 9};
+    static const double positive[] = {98, 102, 101, 99, 100, 103, 97, 100},
+                        negative[] = {10, 12, 9, 11, 8, 10, 11, 9};
     uf_plate_quality q = quality_of(negative, 8, positive, 8);
     assert_near_abs(q.z_prime.value, 0.8896897553, 1e-9);
     assert_near_abs(q.z_prime_robust.value, 0.8764498151, 1e-9);
@@ -59,7 +60,8 @@ static void test_separations(void **state)
 static void test_no_verdict(void **state)
 {
     (void)state;
-    static const double few[] = {1, 2, 3, 2, 1, 2, 3}, many[] = {11, 12, 13, 12, 11, 12, 13, 14, NAN}, same[] = {5, 5, 5};
+    static const double few[] = {1, 2, 3, 2, 1, 2, 3}, many[] = {11, 12, 13, 12, 11, 12, 13, 14, NAN},
+                        same[] = {5, 5, 5};
     uf_plate_quality q = quality_of(few, 7, many, 9);
     assert_true(q.verdict == UF_PLATE_NO_VERDICT && (q.notes & UF_NOTE_TOO_FEW) && !isnan(q.z_prime.value));
     assert_int_equal(q.n_positive, 8);
@@ -170,7 +172,8 @@ static void test_cohen(void **state)
     assert_int_equal(needed(0.8, 0.8, 0, 1), 26);
     assert_int_equal(needed(1.0, 0.8, 0, 1), 17);
     assert_int_equal(needed(0.5, 0.9, 0, 1), 86); /* 85 gives 0.8994 */
-    assert_int_equal(needed(0.5, 0.8, 1, 0.5), 34); /* pairs whose difference has unit variance: table 2.4.1 adapted, 33.4 */
+    assert_int_equal(needed(0.5, 0.8, 1, 0.5),
+                     34); /* pairs whose difference has unit variance: table 2.4.1 adapted, 33.4 */
     assert_int_equal(needed(0.001, 0.8, 0, 1), 0);
 }
 
@@ -185,7 +188,8 @@ static void test_power_limits(void **state)
     assert_near_rel(uf_plan_power(&up, 0.02, 5), uf_plan_power(&down, 0.02, 5), 1e-10);
     uf_plan_answer a = uf_plan_replicates(&up);
     assert_true(a.power >= 0.8 && uf_plan_power(&up, 0.02, a.replicates - 1) < 0.8);
-    assert_near_rel(a.variance_upper, 0.02 * 4 / 1.648777, 1e-6); /* chi-square of 4 degrees, 20 %: any table has 1.649 */
+    assert_near_rel(a.variance_upper, 0.02 * 4 / 1.648777,
+                    1e-6); /* chi-square of 4 degrees, 20 %: any table has 1.649 */
     assert_true(a.replicates_upper > a.replicates && a.power_upper >= 0.8);
     assert_near_abs(uf_plan_power(&up, 1e-9, 3), 1, 1e-12);
     assert_true(isnan(uf_plan_power(&up, 0, 3)) && isnan(uf_plan_power(&up, 1, 1)));
@@ -195,8 +199,14 @@ static void test_power_limits(void **state)
 static void test_plan_variance(void **state)
 {
     (void)state;
-    uf_components c = {.mean = 4, .mean_square = {10, 3, 2}, .df = {4, 10, 45}, .well_size = 4, .replicate_well_size = 4,
-                       .replicate_size = 12, .variance = {7.0 / 12, 0.25, 2}, .variance_signed = {7.0 / 12, 0.25, 2}};
+    uf_components c = {.mean = 4,
+                       .mean_square = {10, 3, 2},
+                       .df = {4, 10, 45},
+                       .well_size = 4,
+                       .replicate_well_size = 4,
+                       .replicate_size = 12,
+                       .variance = {7.0 / 12, 0.25, 2},
+                       .variance_signed = {7.0 / 12, 0.25, 2}};
     double df;
     assert_near_rel(uf_plan_variance(&c, UF_SCALE_DIFFERENCE, 3, 4, &df), 10.0 / 12, 1e-12);
     assert_near_rel(df, 4, 1e-9);
@@ -206,11 +216,14 @@ static void test_plan_variance(void **state)
 
 int main(void)
 {
-    const struct CMUnitTest tests[] = {
-        cmocka_unit_test(test_eight_and_eight),   cmocka_unit_test(test_separations),
-        cmocka_unit_test(test_no_verdict),        cmocka_unit_test(test_intervals_hold),
-        cmocka_unit_test(test_scattered_layout),  cmocka_unit_test(test_confounded_layouts),
-        cmocka_unit_test(test_cohen),             cmocka_unit_test(test_power_limits),
-        cmocka_unit_test(test_plan_variance)};
+    const struct CMUnitTest tests[] = {cmocka_unit_test(test_eight_and_eight),
+                                       cmocka_unit_test(test_separations),
+                                       cmocka_unit_test(test_no_verdict),
+                                       cmocka_unit_test(test_intervals_hold),
+                                       cmocka_unit_test(test_scattered_layout),
+                                       cmocka_unit_test(test_confounded_layouts),
+                                       cmocka_unit_test(test_cohen),
+                                       cmocka_unit_test(test_power_limits),
+                                       cmocka_unit_test(test_plan_variance)};
     return cmocka_run_group_tests_name("plates and planning", tests, NULL, NULL);
 }

@@ -12,8 +12,8 @@
 static uf_rank_test mann_whitney(const double *x, size_t n, const double *y, size_t m, double level)
 {
     uf_rank_test test;
-    assert_int_equal(
-        uf_mann_whitney((uf_arm){x, n}, (uf_arm){y, m}, UF_SCALE_DIFFERENCE, level, 1, &test, NULL), UF_OK);
+    assert_int_equal(uf_mann_whitney((uf_arm){x, n}, (uf_arm){y, m}, UF_SCALE_DIFFERENCE, level, 1, &test, NULL),
+                     UF_OK);
     return test;
 }
 
@@ -44,9 +44,8 @@ static void test_full_separation(void **state)
     assert_near_abs(t.statistic, 0, 1e-15);
     assert_near_rel(t.p, 2.0 / 35, 1e-12);
     assert_true(isnan(t.shift_low) && (t.notes & UF_NOTE_LEVEL_OUT_OF_REACH));
-    assert_int_equal(uf_mann_whitney((uf_arm){x, 3}, (uf_arm){y, 4}, UF_SCALE_DIFFERENCE, 0.95, UF_RANKS_LEAST, &t,
-                                     NULL),
-                     UF_OK);
+    assert_int_equal(
+        uf_mann_whitney((uf_arm){x, 3}, (uf_arm){y, 4}, UF_SCALE_DIFFERENCE, 0.95, UF_RANKS_LEAST, &t, NULL), UF_OK);
     assert_true(isnan(t.p) && isnan(t.shift_low) && (t.notes & UF_NOTE_TOO_FEW));
     assert_near_rel(t.shift, -3.85, 1e-12);
 }
@@ -137,8 +136,10 @@ static void test_signed_ranks_with_ties(void **state)
 
 int main(void)
 {
-    const struct CMUnitTest tests[] = {cmocka_unit_test(test_no_ties), cmocka_unit_test(test_full_separation),
-                                       cmocka_unit_test(test_ties), cmocka_unit_test(test_sleep_and_large_samples),
+    const struct CMUnitTest tests[] = {cmocka_unit_test(test_no_ties),
+                                       cmocka_unit_test(test_full_separation),
+                                       cmocka_unit_test(test_ties),
+                                       cmocka_unit_test(test_sleep_and_large_samples),
                                        cmocka_unit_test(test_ratio_and_all_alike),
                                        cmocka_unit_test(test_signed_ranks),
                                        cmocka_unit_test(test_signed_ranks_with_ties)};

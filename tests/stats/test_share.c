@@ -68,7 +68,7 @@ static void test_wells_that_tell_little(void **state)
     uf_wells_share s = uf_share_of_wells(none, trials, 3, 0.95);
     assert_true(s.notes == UF_NOTE_DISPERSION_UNKNOWN && s.design_effect == 1 && s.share.low == 0);
     s = uf_share_of_wells(even, trials, 3, 0.95);
-    assert_true(s.design_effect == 1 && s.notes == 0);
+    assert_true(s.design_effect == 1 && s.notes == 0 && s.share.low == uf_wilson(60, 120, 0.95).low);
     s = uf_share_of_wells(even, trials, 2, 0.95);
     assert_true(s.notes == UF_NOTE_TOO_FEW && isnan(s.share.low) && s.share.share == 0.5);
     s = uf_share_of_wells(even, trials, 0, 0.95);
@@ -97,13 +97,12 @@ static void test_bootstrap_width(void **state)
     make_arm(a, 12, 0.5);
     make_arm(b, 10, 0.25);
     uf_boot_arm treated = {a, REPLICATES * WELLS, REPLICATES}, control = {b, REPLICATES * WELLS, REPLICATES};
-    assert_int_equal(
-        uf_bootstrap_effect(treated, control, 0, UF_SCALE_DIFFERENCE, 0.95, 4000, 11, &r, NULL), UF_OK);
+    assert_int_equal(uf_bootstrap_effect(treated, control, 0, UF_SCALE_DIFFERENCE, 0.95, 4000, 11, &r, NULL), UF_OK);
     double variance = (REPLICATES * REPLICATES - 1) / 12.0 * (0.25 + 0.0625) / REPLICATES;
     assert_near_rel(r.effect, 2 + 7.5 * 0.25, 1e-12);
     assert_near_rel(r.high - r.low, 2 * 1.96 * sqrt(variance), 0.06);
-    assert_int_equal(
-        uf_bootstrap_effect(treated, control, 0, UF_SCALE_DIFFERENCE, 0.95, 4000, 11, &again, NULL), UF_OK);
+    assert_int_equal(uf_bootstrap_effect(treated, control, 0, UF_SCALE_DIFFERENCE, 0.95, 4000, 11, &again, NULL),
+                     UF_OK);
     assert_true(again.low == r.low && again.high == r.high && r.draws == 4000);
 }
 
@@ -116,8 +115,7 @@ static void test_bootstrap_of_blocks(void **state)
     make_arm(a, 12, 0.5);
     make_arm(b, 10, 0.25);
     uf_boot_arm treated = {a, REPLICATES * WELLS, REPLICATES}, control = {b, REPLICATES * WELLS, REPLICATES};
-    assert_int_equal(
-        uf_bootstrap_effect(treated, control, 1, UF_SCALE_DIFFERENCE, 0.95, 4000, 11, &r, NULL), UF_OK);
+    assert_int_equal(uf_bootstrap_effect(treated, control, 1, UF_SCALE_DIFFERENCE, 0.95, 4000, 11, &r, NULL), UF_OK);
     double variance = (REPLICATES * REPLICATES - 1) / 12.0 * 0.0625 / REPLICATES;
     assert_near_rel(r.high - r.low, 2 * 1.96 * sqrt(variance), 0.06);
     treated.count = 9 * WELLS; /* nine blocks hold both */
@@ -132,8 +130,8 @@ static void test_bootstrap_of_blocks(void **state)
 int main(void)
 {
     const struct CMUnitTest tests[] = {
-        cmocka_unit_test(test_newcombe), cmocka_unit_test(test_rule_for_none), cmocka_unit_test(test_wells),
-        cmocka_unit_test(test_wells_that_tell_little), cmocka_unit_test(test_bootstrap_width),
-        cmocka_unit_test(test_bootstrap_of_blocks)};
+        cmocka_unit_test(test_newcombe),        cmocka_unit_test(test_rule_for_none),
+        cmocka_unit_test(test_wells),           cmocka_unit_test(test_wells_that_tell_little),
+        cmocka_unit_test(test_bootstrap_width), cmocka_unit_test(test_bootstrap_of_blocks)};
     return cmocka_run_group_tests_name("shares and bootstrap", tests, NULL, NULL);
 }

@@ -40,8 +40,8 @@ static void test_nist(void **state)
     check(atmwtag_data, atmwtag_groups, COUNT_OF(atmwtag_data), 2,
           (certified){3.638341875e-9, 2.28155932971014e-10, 15.9467335677930, 0.257426544538321, 1.51048314446410e-5},
           1e-8);
-    check(smls01_data, smls01_groups, COUNT_OF(smls01_data), 9,
-          (certified){0.21, 0.01, 21.0, 0.482758620689655, 0.1}, 1e-12);
+    check(smls01_data, smls01_groups, COUNT_OF(smls01_data), 9, (certified){0.21, 0.01, 21.0, 0.482758620689655, 0.1},
+          1e-12);
 }
 
 /* Shrout and Fleiss 1979, Psychol. Bull. 86:420, table 2: six targets by four judges. ICC(1) 0.17; F 1.8 on 5 and 18 degrees,
@@ -130,10 +130,10 @@ static void test_davies(void **state)
 static void test_unequal_sizes(void **state)
 {
     (void)state;
-    static const uf_nested_row rows[] = {
-        {2.385, 1, 1, 1}, {3.5, 1, 1, 1},   {2.75, 1, 1, 1}, {4.125, 1, 1, 2}, {4.5, 1, 1, 2}, {5.25, 1, 2, 1},
-        {6.5, 1, 2, 1},   {8.125, 2, 1, 1}, {7.5, 2, 1, 2},  {9.75, 2, 1, 2},  {NAN, 2, 1, 2}, {10.5, 2, 2, 7},
-        {12.25, 2, 2, 7}, {11, 2, 2, 7},    {11.5, 2, 2, 9}};
+    static const uf_nested_row rows[] = {{2.385, 1, 1, 1}, {3.5, 1, 1, 1},  {2.75, 1, 1, 1}, {4.125, 1, 1, 2},
+                                         {4.5, 1, 1, 2},   {5.25, 1, 2, 1}, {6.5, 1, 2, 1},  {8.125, 2, 1, 1},
+                                         {7.5, 2, 1, 2},   {9.75, 2, 1, 2}, {NAN, 2, 1, 2},  {10.5, 2, 2, 7},
+                                         {12.25, 2, 2, 7}, {11, 2, 2, 7},   {11.5, 2, 2, 9}};
     uf_components c;
     assert_int_equal(uf_components_fit(rows, COUNT_OF(rows), &c, NULL), UF_OK);
     assert_true(c.cells == 14 && c.wells == 7 && c.replicates == 4 && c.treatments == 2);
@@ -146,8 +146,7 @@ static void test_unequal_sizes(void **state)
     assert_near_rel(c.replicate_size, (14 - 29 / 7.0 - 25 / 7.0) / 2, 1e-14);
     double cell = c.variance_signed[UF_STRATUM_CELL], well = c.variance_signed[UF_STRATUM_WELL];
     assert_near_rel(cell + c.well_size * well, c.mean_square[UF_STRATUM_WELL], 1e-12);
-    assert_near_rel(cell + c.replicate_well_size * well +
-                        c.replicate_size * c.variance_signed[UF_STRATUM_REPLICATE],
+    assert_near_rel(cell + c.replicate_well_size * well + c.replicate_size * c.variance_signed[UF_STRATUM_REPLICATE],
                     c.mean_square[UF_STRATUM_REPLICATE], 1e-12);
 }
 
@@ -187,10 +186,12 @@ static void test_negative_shown_as_zero(void **state)
 
 int main(void)
 {
-    const struct CMUnitTest tests[] = {
-        cmocka_unit_test(test_nist),          cmocka_unit_test(test_shrout_and_fleiss),
-        cmocka_unit_test(test_negative_icc_and_too_few), cmocka_unit_test(test_davies),
-        cmocka_unit_test(test_unequal_sizes), cmocka_unit_test(test_one_well_each),
-        cmocka_unit_test(test_negative_shown_as_zero)};
+    const struct CMUnitTest tests[] = {cmocka_unit_test(test_nist),
+                                       cmocka_unit_test(test_shrout_and_fleiss),
+                                       cmocka_unit_test(test_negative_icc_and_too_few),
+                                       cmocka_unit_test(test_davies),
+                                       cmocka_unit_test(test_unequal_sizes),
+                                       cmocka_unit_test(test_one_well_each),
+                                       cmocka_unit_test(test_negative_shown_as_zero)};
     return cmocka_run_group_tests_name("variance", tests, NULL, NULL);
 }
