@@ -1,6 +1,6 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
-/* value ~ block + group. Blocks are swept out exactly (each value less its block's mean), which leaves as many equations as
- * there are groups however many blocks there are. */
+/* value ~ block + group. Blocks are swept out exactly (each value less its block's mean), which leaves as many
+ * equations as there are groups however many blocks there are. */
 #include <assert.h>
 #include <gsl/gsl_errno.h>
 #include <gsl/gsl_linalg.h>

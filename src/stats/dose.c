@@ -149,8 +149,8 @@ static uf_status over_limit(const dose_job *job, const uf_curve *best, double pl
     return status;
 }
 
-/* Where the profile passes the limit between an EC50 inside and one outside, by regula falsi with the staying end's weight
- * halved (Dowell and Jarratt 1971, BIT 11:168). */
+/* Where the profile passes the limit between an EC50 inside and one outside, by regula falsi with the staying end's
+ * weight halved (Dowell and Jarratt 1971, BIT 11:168). */
 static uf_status find_crossing(const dose_job *job, const uf_curve *best, double inside, double outside,
                                double over_in, double over_out, double limit, double *end, uf_error *error)
 {

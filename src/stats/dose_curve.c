@@ -5,8 +5,8 @@
 
 static const double ln10 = 2.30258509299404568402;
 
-/* Slope and place are fitted through a tanh that keeps them in range and is next to the identity in the middle: a step between
- * two doses has no steepest slope, a curve without plateau no farthest EC50. */
+/* Slope and place are fitted through a tanh that keeps them in range and is next to the identity in the middle: a
+ * step between two doses has no steepest slope, a curve without plateau no farthest EC50. */
 static const double slope_reach = 2.99573227355399099344; /* ln 20 */
 static const double decades_beyond = 3;
 
@@ -89,8 +89,8 @@ typedef struct start {
     double zero, full, place, slope, rss;
 } start;
 
-/* The plateaus by linear least squares, place and slope given. Where all doses are equally far gone there is no second
- * plateau. */
+/* The plateaus by linear least squares, place and slope given. Where all doses are equally far gone there is no
+ * second plateau. */
 static start plateaus_at(const uf_dose_data *d, double place, double slope)
 {
     double n = (double)d->count, g_mean = 0, y_mean = 0, gg = 0, gy = 0, rss = 0;

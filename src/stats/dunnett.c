@@ -1,8 +1,9 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
 /*
- * Dunnett's distribution by quadrature. Given the common factor z and the estimated over the true standard deviation s, the
- * statistics are independent, so that the probability is the integral over both of a product of normal probabilities. Like
- * loadings are taken together as powers: a plate of compounds with as many replicates each costs no more than one.
+ * Dunnett's distribution by quadrature. Given the common factor z and the estimated over the true standard deviation
+ * s, the statistics are independent, so that the probability is the integral over both of a product of normal
+ * probabilities. Like loadings are taken together as powers: a plate of compounds with as many replicates each costs
+ * no more than one.
  */
 #include <math.h>
 #include <string.h>
@@ -70,7 +71,8 @@ double uf_dunnett_below(double limit, double df, const double *loading, size_t c
     return fmin(1, uf_integral(given_sd, &d, low, high, 4));
 }
 
-/* Regula falsi that halves the weight of the end that stays (Dowell and Jarratt 1971, BIT 11:168): some ten quadratures. */
+/* Regula falsi that halves the weight of the end that stays (Dowell and Jarratt 1971, BIT 11:168): some ten
+ * quadratures. */
 double uf_dunnett_factor(double level, double df, const double *loading, size_t count, uf_sides sides)
 {
     double low = sides == UF_TWO_SIDED ? 0 : -10, high = 4, at = high;

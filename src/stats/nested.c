@@ -1,6 +1,7 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
-/* Replicate, well, cell. Rows are sorted by who they belong to, so that each treatment, replicate and well is one run of rows, and
- * the sums of squares and the coefficients of their expectation fall out of one walk through the runs. */
+/* Replicate, well, cell. Rows are sorted by who they belong to, so that each treatment, replicate and well is one
+ * run of rows, and the sums of squares and the coefficients of their expectation fall out of one walk through the
+ * runs. */
 #include <math.h>
 #include <stdlib.h>
 
@@ -173,7 +174,8 @@ uf_status uf_components_fit(const uf_nested_row *rows, size_t count, uf_componen
 
 /* ---- what a replicate mean varies by ------------------------------------------------------------ */
 
-/* The variance as a sum of mean squares, each times its share: c_cell MS(cells) and so on. Components shown as 0 leave it. */
+/* The variance as a sum of mean squares, each times its share: c_cell MS(cells) and so on. Components shown as 0
+ * leave it. */
 static void mean_square_shares(const uf_components *c, double wells, double cells, double *share)
 {
     int has_well = c->variance[UF_STRATUM_WELL] > 0, has_replicate = c->variance[UF_STRATUM_REPLICATE] > 0;

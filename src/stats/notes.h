@@ -1,13 +1,13 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
 /*
- * What the statistics share: scales, and notes that say why a number is missing or how it was made. Nothing here is an
- * error: an experiment with two replicates has values and a difference, it merely has no interval.
+ * What the statistics share: scales, and notes that say why a number is missing or how it was made. Nothing here is
+ * an error: an experiment with two replicates has values and a difference, it merely has no interval.
  */
 #ifndef UF_STATS_NOTES_H
 #define UF_STATS_NOTES_H
 
-/* Areas, lengths and counts per cell are compared by ratio (of geometric means: all arithmetic on natural logarithms), gaps,
- * fractions and alignment by difference. */
+/* Areas, lengths and counts per cell are compared by ratio (of geometric means: all arithmetic on natural
+ * logarithms), gaps, fractions and alignment by difference. */
 typedef enum uf_scale { UF_SCALE_DIFFERENCE, UF_SCALE_RATIO } uf_scale;
 
 /* Fewer replicates in an arm than this, and there is neither interval nor p. */

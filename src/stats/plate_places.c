@@ -1,6 +1,6 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
-/* Row, column and edge effects. A kind of place sorts wells into classes (the rows, the columns, rim and inside); what follows is
- * the same for all three. */
+/* Row, column and edge effects. A kind of place sorts wells into classes (the rows, the columns, rim and inside);
+ * what follows is the same for all three. */
 #include <assert.h>
 #include <math.h>
 #include <stdlib.h>

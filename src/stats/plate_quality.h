@@ -38,13 +38,14 @@ typedef struct uf_plate_quality {
  *                  Biomol. Screen. 2:159)
  * and, robust, with medians and 1.4826 median absolute deviations in place of m and s.
  *
- * Intervals by error propagation under normal scatter: variances s^2 / n of a mean and s^2 / (2 (n - 1)) of a standard deviation; pi/2
- * and 2.72 times as much for a median and a scaled median deviation (their asymptotic efficiencies, Rousseeuw and Croux 1993,
- * J. Am. Stat. Assoc. 88:1273); Student's t of n1 + n2 - 2 degrees; for Z' on the logarithm of 1 - Z', which is a ratio. They
- * know the wells' scatter on this plate, nothing of other plates. Robust ones are rough below some 16 wells.
+ * Intervals by error propagation under normal scatter: variances s^2 / n of a mean and s^2 / (2 (n - 1)) of a
+ * standard deviation; pi/2 and 2.72 times as much for a median and a scaled median deviation (their asymptotic
+ * efficiencies, Rousseeuw and Croux 1993, J. Am. Stat. Assoc. 88:1273); Student's t of n1 + n2 - 2 degrees; for Z' on
+ * the logarithm of 1 - Z', which is a ratio. They know the wells' scatter on this plate, nothing of other plates.
+ * Robust ones are rough below some 16 wells.
  *
- * NaN below two wells of either, and what has no spread or no distance to divide by (UF_NOTE_NO_SPREAD). UF_MEMORY is the only
- * failure.
+ * NaN below two wells of either, and what has no spread or no distance to divide by (UF_NOTE_NO_SPREAD). UF_MEMORY is
+ * the only failure.
  */
 UF_MUST_USE uf_status uf_plate_quality_of(const double *control, size_t n_control, const double *positive,
                                           size_t n_positive, double level, uf_plate_quality *quality,
@@ -73,12 +74,12 @@ typedef struct uf_place_effects {
 } uf_place_effects;
 
 /*
- * Residuals are values less the median of their treatment on the plate. A row's effect is the median residual of its wells less
- * the median of all; the edge's the median of wells at the rim less that of the others. Only treatments that stand in
- * two or more rows (columns; at the rim and not) say anything, and the effect is confounded unless such treatments join all rows
- * (columns, sides) that hold values into one chain. Treatments in few rows share an effect out between their wells, so that
- * a row's effect comes out too small there: by a half for pairs. Standard errors are 1.2533 sd / sqrt(n) of a median.
- * Wells whose value is NaN take no part. UF_MEMORY is the only failure.
+ * Residuals are values less the median of their treatment on the plate. A row's effect is the median residual of its
+ * wells less the median of all; the edge's the median of wells at the rim less that of the others. Only treatments
+ * that stand in two or more rows (columns; at the rim and not) say anything, and the effect is confounded unless such
+ * treatments join all rows (columns, sides) that hold values into one chain. Treatments in few rows share an effect
+ * out between their wells, so that a row's effect comes out too small there: by a half for pairs. Standard errors are
+ * 1.2533 sd / sqrt(n) of a median. Wells whose value is NaN take no part. UF_MEMORY is the only failure.
  */
 UF_MUST_USE uf_status uf_place_effects_of(const uf_plate_well *wells, size_t count, int rows, int columns,
                                           int treatments, uf_place_effects *effects, uf_error *error);

@@ -50,9 +50,9 @@ static int sum_of(const int *ranks, size_t count)
     return sum;
 }
 
-/* Row j holds, by sum, the share of choices of j among the ranks seen so far; each new rank moves part of a row into the next. As
- * a share of all choices of `chosen` at the end, it is kept in range by dividing as it grows: the chance that the rank is
- * taken given how many are still to come and to take. */
+/* Row j holds, by sum, the share of choices of j among the ranks seen so far; each new rank moves part of a row
+ * into the next. As a share of all choices of `chosen` at the end, it is kept in range by dividing as it grows: the
+ * chance that the rank is taken given how many are still to come and to take. */
 static uf_status shares_of_few(const int *ranks, size_t count, size_t chosen, uf_rank_shares *shares, uf_error *error)
 {
     size_t width = (size_t)sum_of(ranks, count) + 1;

@@ -13,8 +13,8 @@ typedef struct uf_rank_shares {
     int top;
 } uf_rank_shares;
 
-/* Twice the mean rank of each of `count` values (1-based; ties share), so that all are whole. Returns the sum over ties of
- * t^3 - t. UF_MEMORY is the only failure. */
+/* Twice the mean rank of each of `count` values (1-based; ties share), so that all are whole. Returns the sum over
+ * ties of t^3 - t. UF_MEMORY is the only failure. */
 UF_MUST_USE uf_status uf_double_midranks(const double *values, size_t count, int *ranks, double *ties,
                                          uf_error *error);
 

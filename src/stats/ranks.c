@@ -33,8 +33,8 @@ static size_t take_values(uf_arm arm, uf_scale scale, double *values, uf_rank_te
 
 /* ---- p ------------------------------------------------------------------------------------------ */
 
-/* From shares of sums of doubled ranks; what is observed and expected is in the same unit. Sums are whole and their expectation
- * a fraction, hence the hair's breadth that keeps a sum as far away as the observed one in. */
+/* From shares of sums of doubled ranks; what is observed and expected is in the same unit. Sums are whole and their
+ * expectation a fraction, hence the hair's breadth that keeps a sum as far away as the observed one in. */
 static void p_by_counting(uf_rank_test *test, const uf_rank_shares *shares, double observed, double expected)
 {
     double hair = 1e-9 * (1 + fabs(expected)), away = fabs(observed - expected);
@@ -58,8 +58,8 @@ static void p_by_normal(uf_rank_test *test)
 
 /* ---- shift -------------------------------------------------------------------------------------- */
 
-/* The largest c >= 0 with P(statistic <= c - 1) <= (1 - level) / 2, without ties: so many differences are left out at each end
- * but one. 0: there is none. */
+/* The largest c >= 0 with P(statistic <= c - 1) <= (1 - level) / 2, without ties: so many differences are left out
+ * at each end but one. 0: there is none. */
 static double ends_by_counting(const uf_rank_shares *shares, double lowest_sum, double level, double *coverage)
 {
     double below = 0, c = 0;
@@ -100,7 +100,8 @@ static void forget_test(uf_rank_test *test)
 
 /* ---- Mann and Whitney --------------------------------------------------------------------------- */
 
-/* What both halves of a rank test work on: n treated values first, then m of the control; scratch for ranks and pairs. */
+/* What both halves of a rank test work on: n treated values first, then m of the control; scratch for ranks and
+ * pairs. */
 typedef struct two_arms {
     size_t n, m;
     double *values, *pairwise;

@@ -1,12 +1,13 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
 /*
- * How right the statistics are: invented experiments with known truth, one line each of what share of runs ended as said.
+ * How right the statistics are: invented experiments with known truth, one line each of what share of runs ended as
+ * said.
  *
  *     stats > tests/bench/stats.csv
  *
- * Cells differ between replicates, wells and each other by stated variances; seeds are fixed, so that the table changes only
- * when the program does. A replicate's share of the variance (its ICC) is what makes cells poor witnesses: the line of the
- * cell-level test shows what counting them as independent costs.
+ * Cells differ between replicates, wells and each other by stated variances; seeds are fixed, so that the table
+ * changes only when the program does. A replicate's share of the variance (its ICC) is what makes cells poor
+ * witnesses: the line of the cell-level test shows what counting them as independent costs.
  */
 #include <math.h>
 #include <stdio.h>
@@ -43,8 +44,8 @@ static void print_line(const char *figure, const char *experiment, double hits, 
 
 /* ---- an experiment ------------------------------------------------------------------------------ */
 
-/* Variances of replicates, of wells in them, and of cells, summing to 1. In blocks the replicate's part is made of a day common to
- * all arms and of what the day does to each. */
+/* Variances of replicates, of wells in them, and of cells, summing to 1. In blocks the replicate's part is made of
+ * a day common to all arms and of what the day does to each. */
 typedef struct design {
     double replicate, well, cell, day;
     int replicates;
@@ -292,7 +293,8 @@ static void make_curve(double log10_ec50, double noise, uf_random *random, uf_do
         }
 }
 
-/* log10 EC50 varies by 0.2 between replicates: the t interval over replicates holds it, one replicate's own does not pretend to. */
+/* log10 EC50 varies by 0.2 between replicates: the t interval over replicates holds it, one replicate's own does
+ * not pretend to. */
 static void bench_doses(const char *name, int replicates, double sd, double noise, uint64_t seed)
 {
     double held = 0, own_held = 0, runs = 0, own_runs = 0;

@@ -15,8 +15,8 @@
 static const double sleep_a[] = {0.7, -1.6, -0.2, -1.2, -0.1, 3.4, 3.7, 0.8, 0.0, 2.0};
 static const double sleep_b[] = {1.9, 0.8, 1.1, 0.1, -0.1, 4.4, 5.5, 1.6, 4.6, 3.4};
 
-/* Help page of R's t.test: t -1.8608, df 17.776, p 0.07939, interval -3.3654832 .. 0.2054832, means 0.75 and 2.33; more
- * digits computed in exact arithmetic. */
+/* Help page of R's t.test: t -1.8608, df 17.776, p 0.07939, interval -3.3654832 .. 0.2054832, means 0.75 and 2.33;
+ * more digits computed in exact arithmetic. */
 static void test_welch_on_sleep(void **state)
 {
     (void)state;
@@ -46,8 +46,8 @@ static void test_welch_of_unlike_spreads(void **state)
     assert_near_rel(c.p, 0.0213780015, 1e-8);
 }
 
-/* Definition: a ratio is the exponential of a difference of logarithms, interval and all, and t and p are those of the
- * logarithms. */
+/* Definition: a ratio is the exponential of a difference of logarithms, interval and all, and t and p are those of
+ * the logarithms. */
 static void test_ratio_is_difference_of_logarithms(void **state)
 {
     (void)state;
@@ -82,8 +82,8 @@ static void test_too_few_and_no_spread(void **state)
     assert_true(isnan(c.effect) && c.mean_control == 4);
 }
 
-/* Hedges 1981: the factor is 1 / sqrt(pi) for two degrees and Gamma(3/2) / sqrt(3/2) for three (closed forms). Like arms
- * of ten have df 18: the factor is close to 1 - 3 / (4 df - 1) (his approximation, good to 1e-4 there). */
+/* Hedges 1981: the factor is 1 / sqrt(pi) for two degrees and Gamma(3/2) / sqrt(3/2) for three (closed forms). Like
+ * arms of ten have df 18: the factor is close to 1 - 3 / (4 df - 1) (his approximation, good to 1e-4 there). */
 static void test_hedges_g(void **state)
 {
     (void)state;
@@ -95,8 +95,9 @@ static void test_hedges_g(void **state)
     assert_true(c.hedges_g_low < c.hedges_g && c.hedges_g < c.hedges_g_high);
 }
 
-/* Cumming and Finch 2001, Educ. Psychol. Meas. 61:532, make the interval of a standardised difference from noncentral t: for an
- * effect of 0 it is symmetric, and its end is where P(T <= 0) = Phi(-delta) = 0.025 (closed form). */
+/* Cumming and Finch 2001, Educ. Psychol. Meas. 61:532, make the interval of a standardised difference from
+ * noncentral t: for an effect of 0 it is symmetric, and its end is where P(T <= 0) = Phi(-delta) = 0.025 (closed
+ * form). */
 static void test_interval_of_no_effect(void **state)
 {
     (void)state;
@@ -117,8 +118,9 @@ static size_t sleep_rows(uf_blocked_row *rows)
     return 20;
 }
 
-/* Student 1908 gives the mean of the differences 1.58 and their standard deviation 1.17 (divisor n; 1.23 with n - 1); the
- * paired t is -4.0621 on 9 degrees, p 0.002833, interval -2.4598858 .. -0.7001142 (R's t.test, values from memory). */
+/* Student 1908 gives the mean of the differences 1.58 and their standard deviation 1.17 (divisor n; 1.23 with n -
+ * 1); the paired t is -4.0621 on 9 degrees, p 0.002833, interval -2.4598858 .. -0.7001142 (R's t.test, values from
+ * memory). */
 static void test_pairs(void **state)
 {
     (void)state;
@@ -137,8 +139,8 @@ static void test_pairs(void **state)
     uf_blocked_free(&fit);
 }
 
-/* Complete blocks, three arms: effects are differences of means, the residual is that of two-way analysis of variance, and any
- * contrast has the variance 2 s^2 / blocks (Scheffe 1959, 4.2; worked out by hand below). */
+/* Complete blocks, three arms: effects are differences of means, the residual is that of two-way analysis of
+ * variance, and any contrast has the variance 2 s^2 / blocks (Scheffe 1959, 4.2; worked out by hand below). */
 static void test_complete_blocks(void **state)
 {
     (void)state;

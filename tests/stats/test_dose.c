@@ -14,7 +14,8 @@
 
 #define COUNT_OF(array) (sizeof array / sizeof array[0])
 
-/* Inderjit, Streibig and Olofsdotter 2002, Physiol. Plant. 114:422: root length (cm) of ryegrass under ferulic acid (mM). */
+/* Inderjit, Streibig and Olofsdotter 2002, Physiol. Plant. 114:422: root length (cm) of ryegrass under ferulic acid
+ * (mM). */
 static const uf_dose_point ryegrass[] = {
     {0, 7.58},      {0, 8},         {0, 8.3286},    {0, 7.25},      {0, 7.375},    {0, 7.9625},
     {0.94, 8.3556}, {0.94, 6.9143}, {0.94, 7.75},   {1.88, 6.8714}, {1.88, 6.45},  {1.88, 5.9222},
@@ -28,8 +29,9 @@ static uf_dose_fit fit_of(const uf_dose_point *points, size_t count)
     return fit;
 }
 
-/* Ritz, Baty, Streibig and Gerhard 2015, PLoS ONE 10:e0146021, fit these data: the R package drc prints ED50 3.057955 and
- * residual sum 5.400215, which is 5e-6 from the optimum; that was computed with 40 digits, and so were the standard errors. */
+/* Ritz, Baty, Streibig and Gerhard 2015, PLoS ONE 10:e0146021, fit these data: the R package drc prints ED50
+ * 3.057955 and residual sum 5.400215, which is 5e-6 from the optimum; that was computed with 40 digits, and so were
+ * the standard errors. */
 static void test_ryegrass(void **state)
 {
     (void)state;
@@ -50,8 +52,8 @@ static void test_ryegrass(void **state)
     assert_true(fit.direction == -1 && fit.doses == 6 && fit.notes == 0 && fit.effect_p < 1e-10);
 }
 
-/* The profile interval by its definition: at each end the best curve with the EC50 held there has the sum that F allows. The
- * inner search here is a plain grid refined around its best, plateaus by two sums. */
+/* The profile interval by its definition: at each end the best curve with the EC50 held there has the sum that F
+ * allows. The inner search here is a plain grid refined around its best, plateaus by two sums. */
 static double best_sum_at(double log10_ec50)
 {
     double low = log(0.3), high = log(12), best = INFINITY, at = 0;
@@ -206,7 +208,8 @@ static void test_step(void **state)
     assert_true(pow(10, fit.log10_ec50) > 0.18 && pow(10, fit.log10_ec50) < 0.54);
 }
 
-/* A hump is no Hill curve: F of what the curve leaves, written out from the pure error. The curve of test_ryegrass passes. */
+/* A hump is no Hill curve: F of what the curve leaves, written out from the pure error. The curve of test_ryegrass
+ * passes. */
 static void test_misfit(void **state)
 {
     (void)state;

@@ -101,8 +101,8 @@ static void test_more_digits(void **state)
     assert_near_abs(uf_dunnett_factor(0.95, 12, loading, 2, UF_TWO_SIDED), 2.5134829036, 1e-8);
 }
 
-/* Closed forms: one arm is Student's t, whatever its loading; and without correlation and with endless degrees of freedom
- * (here 1e7) arms are independent normals. */
+/* Closed forms: one arm is Student's t, whatever its loading; and without correlation and with endless degrees of
+ * freedom (here 1e7) arms are independent normals. */
 static void test_closed_forms(void **state)
 {
     (void)state;

@@ -1,5 +1,6 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
-/* Plate quality against worked figures, closed forms and plates made with known effects; planning against printed tables. */
+/* Plate quality against worked figures, closed forms and plates made with known effects; planning against printed
+ * tables. */
 #include <setjmp.h>
 #include <stdarg.h>
 #include <stddef.h>
@@ -38,8 +39,8 @@ static void test_eight_and_eight(void **state)
     assert_near_abs(q.ssmd.value, -37.6497011940, 1e-8);
 }
 
-/* Closed form: unit sd, separation 6, 12, 18 gives Z' 0, 1/2, 2/3, and SSMD 12 / sqrt 2 (Zhang, Chung and Oldenburg 1999; Zhang
- * 2007). */
+/* Closed form: unit sd, separation 6, 12, 18 gives Z' 0, 1/2, 2/3, and SSMD 12 / sqrt 2 (Zhang, Chung and Oldenburg
+ * 1999; Zhang 2007). */
 static void test_separations(void **state)
 {
     (void)state;
@@ -71,8 +72,8 @@ static void test_no_verdict(void **state)
     assert_true(isnan(q.z_prime.value) && isnan(q.ssmd.value) && (q.notes & UF_NOTE_NO_SPREAD));
 }
 
-/* The intervals hold the truth as often as they say, give or take what propagation costs (simulated, fixed seed: 2000 plates of 16 +
- * 16 wells; unlike spreads). */
+/* The intervals hold the truth as often as they say, give or take what propagation costs (simulated, fixed seed:
+ * 2000 plates of 16 + 16 wells; unlike spreads). */
 static void test_intervals_hold(void **state)
 {
     (void)state;
@@ -109,7 +110,8 @@ static double value_at(int row, int column, int treatment, uf_random *random)
     return 100 + 15.0 * treatment + (rim ? 9 : 0) + (row == 3 ? -14 : 0) + uf_random_normal(random);
 }
 
-/* Treatments scattered over the plate (like a Latin square): what was put in comes out, within four standard errors. */
+/* Treatments scattered over the plate (like a Latin square): what was put in comes out, within four standard
+ * errors. */
 static void test_scattered_layout(void **state)
 {
     (void)state;
@@ -129,7 +131,8 @@ static void test_scattered_layout(void **state)
     assert_true(e.edge.sigma > 4);
 }
 
-/* One treatment a row: rows and treatments are one. All controls at the rim and samples inside: no edge effect can be told. */
+/* One treatment a row: rows and treatments are one. All controls at the rim and samples inside: no edge effect can
+ * be told. */
 static void test_confounded_layouts(void **state)
 {
     (void)state;
@@ -162,8 +165,8 @@ static int needed(double effect, double power, int paired, double variance)
     return uf_plan_replicates(&plan).replicates;
 }
 
-/* Cohen 1988, table 2.4.1 (two-sided 5 %): standardised 0.2, 0.5, 0.8 and 1.0 at power 0.80 need 393, 64, 26 and 17 an arm, 0.5 at
- * 0.90 needs 85 (from memory). Cohen's 393 comes of his approximation; the exact test needs 394. */
+/* Cohen 1988, table 2.4.1 (two-sided 5 %): standardised 0.2, 0.5, 0.8 and 1.0 at power 0.80 need 393, 64, 26 and 17
+ * an arm, 0.5 at 0.90 needs 85 (from memory). Cohen's 393 comes of his approximation; the exact test needs 394. */
 static void test_cohen(void **state)
 {
     (void)state;
@@ -177,7 +180,8 @@ static void test_cohen(void **state)
     assert_int_equal(needed(0.001, 0.8, 0, 1), 0);
 }
 
-/* No effect at all is seen as often as the level says; the sign of a difference, and which way a ratio goes, do not matter. */
+/* No effect at all is seen as often as the level says; the sign of a difference, and which way a ratio goes, do not
+ * matter. */
 static void test_power_limits(void **state)
 {
     (void)state;

@@ -17,8 +17,9 @@ static uf_rank_test mann_whitney(const double *x, size_t n, const double *y, siz
     return test;
 }
 
-/* Hollander and Wolfe 1973, p. 69 (permeability of membranes): U 35, one-sided exact p 0.1272 = 382/3003. The shift 0.305 with its
- * exact interval -0.15 .. 0.76 is in the manual of R's exact rank tests (from memory; computed again). */
+/* Hollander and Wolfe 1973, p. 69 (permeability of membranes): U 35, one-sided exact p 0.1272 = 382/3003. The shift
+ * 0.305 with its exact interval -0.15 .. 0.76 is in the manual of R's exact rank tests (from memory; computed
+ * again). */
 static void test_no_ties(void **state)
 {
     (void)state;
@@ -50,8 +51,8 @@ static void test_full_separation(void **state)
     assert_near_rel(t.shift, -3.85, 1e-12);
 }
 
-/* SAS/STAT User's Guide, procedure NPAR1WAY, examples 3 and 4: rank sums 110.5 and 79.5, expected 130 and 60, standard
- * deviation 11.004784; shift 0.35. The exact p were computed by counting all 27132 choices. */
+/* SAS/STAT User's Guide, procedure NPAR1WAY, examples 3 and 4: rank sums 110.5 and 79.5, expected 130 and 60,
+ * standard deviation 11.004784; shift 0.35. The exact p were computed by counting all 27132 choices. */
 static void test_ties(void **state)
 {
     (void)state;
@@ -66,8 +67,9 @@ static void test_ties(void **state)
     assert_near_rel(t.shift, 0.35, 1e-12);
 }
 
-/* Sleep data of Student 1908: U 25.5 and p 0.06933 by the normal approximation in R's output; here the approximation is
- * called by a sample so large that it is not counted, and checked by its formula (Lehmann 1975, 1.3 and appendix). */
+/* Sleep data of Student 1908: U 25.5 and p 0.06933 by the normal approximation in R's output; here the
+ * approximation is called by a sample so large that it is not counted, and checked by its formula (Lehmann 1975,
+ * 1.3 and appendix). */
 static void test_sleep_and_large_samples(void **state)
 {
     (void)state;
@@ -101,9 +103,9 @@ static void test_ratio_and_all_alike(void **state)
 
 /* ---- signed ranks ------------------------------------------------------------------------------- */
 
-/* Hollander and Wolfe 1973, p. 29 (depression scale before and after a tranquilliser): sum of positive ranks 40 of 45, one-sided
- * exact p 0.0195 = 10/512 (R's help page of wilcox.test; from memory). Shift 0.46, interval 0.01 .. 0.786 at 96.1 %: computed by
- * hand from the 45 means. */
+/* Hollander and Wolfe 1973, p. 29 (depression scale before and after a tranquilliser): sum of positive ranks 40 of
+ * 45, one-sided exact p 0.0195 = 10/512 (R's help page of wilcox.test; from memory). Shift 0.46, interval 0.01 ..
+ * 0.786 at 96.1 %: computed by hand from the 45 means. */
 static void test_signed_ranks(void **state)
 {
     (void)state;
@@ -120,7 +122,8 @@ static void test_signed_ranks(void **state)
     assert_near_rel(t.coverage, 1 - 2 * 10.0 / 512, 1e-12);
 }
 
-/* Differences 1, 1, 1, -1, 0: the four ones share rank 2.5, and of 16 changes of sign 5 have at least 7.5 (by hand). */
+/* Differences 1, 1, 1, -1, 0: the four ones share rank 2.5, and of 16 changes of sign 5 have at least 7.5 (by
+ * hand). */
 static void test_signed_ranks_with_ties(void **state)
 {
     (void)state;

@@ -41,8 +41,8 @@ static void test_rule_for_none(void **state)
     assert_near_rel(uf_clopper_pearson(0, 37, 0.9).high, 1 - pow(0.05, 1 / 37.0), 1e-10);
 }
 
-/* Rao and Scott 1992's variance written out: wells of like size, so that the design effect is the variance between shares over
- * p (1 - p) / m. */
+/* Rao and Scott 1992's variance written out: wells of like size, so that the design effect is the variance between
+ * shares over p (1 - p) / m. */
 static void test_wells(void **state)
 {
     (void)state;
@@ -87,8 +87,8 @@ static void make_arm(uf_boot_well *wells, double level, double step)
     }
 }
 
-/* The mean of n drawn values has the variance of the values with divisor n, over n (Efron and Tibshirani 1993, ch. 5): with both
- * arms that gives the interval's width, to the normal approximation and 4000 draws. */
+/* The mean of n drawn values has the variance of the values with divisor n, over n (Efron and Tibshirani 1993, ch.
+ * 5): with both arms that gives the interval's width, to the normal approximation and 4000 draws. */
 static void test_bootstrap_width(void **state)
 {
     (void)state;

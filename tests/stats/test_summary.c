@@ -1,6 +1,6 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
-/* Means, spreads and middles against NIST StRD (univariate summary statistics) and closed forms; the distributions they are
- * judged by against published tables. */
+/* Means, spreads and middles against NIST StRD (univariate summary statistics) and closed forms; the distributions
+ * they are judged by against published tables. */
 #include <setjmp.h>
 #include <stdarg.h>
 #include <stddef.h>
@@ -33,8 +33,8 @@ static void test_nist(void **state)
     assert_near_rel(michelso.sd, 0.0790105478190518, 1e-11);
 }
 
-/* NIST StRD NumAcc4 by its rule: 10000000.2, then 10000000.1 and 10000000.3 in turn; certified mean 10000000.2, sd 0.1. One
- * pass over squares keeps no digit here. */
+/* NIST StRD NumAcc4 by its rule: 10000000.2, then 10000000.1 and 10000000.3 in turn; certified mean 10000000.2, sd
+ * 0.1. One pass over squares keeps no digit here. */
 static void test_numacc4(void **state)
 {
     (void)state;
@@ -92,9 +92,9 @@ static void test_nothing_and_one(void **state)
     assert_true(s.moments.mean == 4.5 && isnan(s.moments.sd) && s.median == 4.5 && s.mad == 0);
 }
 
-/* Owen 1968 (Technometrics 10:445): a one-sided normal tolerance factor is k = t'(0.95; n - 1, z_p sqrt n) / sqrt n; n = 10,
- * 90 % of the population with 95 % confidence is 2.355 in every printed table (value from memory). Then closed forms: with
- * delta 0 Student's own, and t = 0 leaves Phi(-delta). */
+/* Owen 1968 (Technometrics 10:445): a one-sided normal tolerance factor is k = t'(0.95; n - 1, z_p sqrt n) / sqrt
+ * n; n = 10, 90 % of the population with 95 % confidence is 2.355 in every printed table (value from memory). Then
+ * closed forms: with delta 0 Student's own, and t = 0 leaves Phi(-delta). */
 static void test_noncentral_t(void **state)
 {
     (void)state;

@@ -1,5 +1,6 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
-/* Analysis of variance against NIST StRD, intraclass correlation and variance components against published examples. */
+/* Analysis of variance against NIST StRD, intraclass correlation and variance components against published
+ * examples. */
 #include <setjmp.h>
 #include <stdarg.h>
 #include <stddef.h>
@@ -30,8 +31,8 @@ static void check(const double *values, const int *from_one, size_t count, int g
     assert_near_rel(fit.residual_sd, c.residual_sd, digits);
 }
 
-/* NIST StRD, analysis of variance. AtmWtAg has seven constant leading digits: reading it into doubles already costs half of
- * the digits. */
+/* NIST StRD, analysis of variance. AtmWtAg has seven constant leading digits: reading it into doubles already costs
+ * half of the digits. */
 static void test_nist(void **state)
 {
     (void)state;
@@ -44,8 +45,8 @@ static void test_nist(void **state)
           1e-12);
 }
 
-/* Shrout and Fleiss 1979, Psychol. Bull. 86:420, table 2: six targets by four judges. ICC(1) 0.17; F 1.8 on 5 and 18 degrees,
- * p 0.16477 and interval -0.133 .. 0.72 as the R package psych prints them; more digits computed. */
+/* Shrout and Fleiss 1979, Psychol. Bull. 86:420, table 2: six targets by four judges. ICC(1) 0.17; F 1.8 on 5 and
+ * 18 degrees, p 0.16477 and interval -0.133 .. 0.72 as the R package psych prints them; more digits computed. */
 static void test_shrout_and_fleiss(void **state)
 {
     (void)state;
@@ -94,9 +95,9 @@ static double scale_for(double sum_of_squares, int count, double times)
     return sqrt(sum_of_squares / (squares * times));
 }
 
-/* Davies 1967, Statistical Methods in Research and Production, a nested sampling of 9 batches x 3 samples x 2 tests: mean squares
- * 99.110 (8 degrees), 1.406 (18), 0.747 (27), variances 16.2841, 0.3294, 0.7470, standard error of the mean 1.355 (as worked in a
- * public note). The values are made so that they have these mean squares. */
+/* Davies 1967, Statistical Methods in Research and Production, a nested sampling of 9 batches x 3 samples x 2
+ * tests: mean squares 99.110 (8 degrees), 1.406 (18), 0.747 (27), variances 16.2841, 0.3294, 0.7470, standard error
+ * of the mean 1.355 (as worked in a public note). The values are made so that they have these mean squares. */
 static void test_davies(void **state)
 {
     (void)state;
@@ -125,8 +126,9 @@ static void test_davies(void **state)
     assert_int_equal(c.notes, 0);
 }
 
-/* Unequal sizes by the definitions written out: two treatments, replicates of 2, 1 and 2, 2 wells. The coefficients are those of
- * Searle, Casella and McCulloch 1992: a matrix of zeros and ones per stratum, its trace within the space of a mean square. */
+/* Unequal sizes by the definitions written out: two treatments, replicates of 2, 1 and 2, 2 wells. The coefficients
+ * are those of Searle, Casella and McCulloch 1992: a matrix of zeros and ones per stratum, its trace within the
+ * space of a mean square. */
 static void test_unequal_sizes(void **state)
 {
     (void)state;
