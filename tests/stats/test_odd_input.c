@@ -7,7 +7,6 @@
 #include <stdint.h>
 #include <cmocka.h>
 
-#include <math.h>
 
 #include "base/random.h"
 #include "stats/bootstrap.h"
