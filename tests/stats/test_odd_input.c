@@ -1,12 +1,12 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
 /* Missing, like, zero, negative and very large values, in any number: whatever comes in, a p lies in 0 .. 1, an interval holds its
  * estimate, and what has no interval says why (definitions). */
+#include <math.h>
 #include <setjmp.h>
 #include <stdarg.h>
 #include <stddef.h>
 #include <stdint.h>
 #include <cmocka.h>
-
 
 #include "base/random.h"
 #include "stats/bootstrap.h"
