@@ -292,6 +292,7 @@ static uf_status measure_field(plate_job *job, int index, field_work *f, uf_erro
                                 .result = &f->result,
                                 .key = job->plan.rows[index].key,
                                 .title = job->plan.rows[index].row->field_id,
+                                .thumbnail = 1,
                                 .put = put_picture,
                                 .context = job};
     return uf_pictures_write(&f->pictures, error);
@@ -370,7 +371,7 @@ static void set_failed(uf_plate_record *record, const char *why)
 /* Measures, writes pictures, then the record. Only what cannot be written ends the run. */
 static uf_status do_field(plate_job *job, int index, field_work *f, uf_error *error)
 {
-    uf_plate_record record = {0};
+    uf_plate_record record = {.thumbnail_white_adu = (double)NAN};
     uf_status status = measure_field(job, index, f, error);
     char why[UF_ERROR_TEXT];
     if (status == UF_OUTPUT)
@@ -384,6 +385,7 @@ static uf_status do_field(plate_job *job, int index, field_work *f, uf_error *er
         record.spots = f->result.spots;
         record.warnings = f->warnings.bytes;
         record.overlay = *f->pictures.overlay_name ? f->pictures.overlay_name : NULL;
+        record.thumbnail_white_adu = f->pictures.thumbnail_white_adu;
         record.depth_nm = f->plan.depth_nm;
         record.contact_cutoff_nm = f->settings.contact.cutoff_nm;
     }
@@ -733,7 +735,7 @@ static uf_status copy_field(plate_job *job, const uf_output *part, int index, uf
     static const struct {
         const char *folder, *ending;
     } files[] = {
-        {"overlay", ".png"}, {"outlines", ".json"}, {"gap", ".tif"}, {"labels", ".tif"}, {UF_RECORDS, ".record"}};
+        {"overlay", ".png"}, {"outlines", ".json"}, {"gap", ".tif"}, {"labels", ".tif"}, {"thumb", ".png"}, {UF_RECORDS, ".record"}};
     uf_status status = UF_OK;
     for (size_t k = 0; status == UF_OK && k < sizeof files / sizeof files[0]; k++) {
         uf_text name = {0};
