@@ -15,6 +15,7 @@
 #include "run/field_pictures.h"
 #include "run/field_warnings.h"
 #include "run/plate_json.h"
+#include "run/plate_pictures.h"
 #include "run/plate_plan.h"
 #include "run/plate_record.h"
 #include "run/plate_tables.h"
@@ -573,9 +574,13 @@ static uf_status write_timing(plate_job *job, uf_error *error)
 static uf_status finish_tables(plate_job *job, uf_error *error)
 {
     uf_text json = {0};
+    uf_plate_well_list wells = {0};
     uf_status status = uf_output_remove(&job->output, NULL, "run.json", error);
     if (status == UF_OK)
-        status = uf_plate_tables(&job->output, &job->plan, job->summary, error);
+        status = uf_plate_tables(&job->output, &job->plan, job->summary, &wells, error);
+    if (status == UF_OK)
+        status = uf_plate_pictures(&job->output, &job->plan, &wells, job->pool, error);
+    uf_plate_well_list_free(&wells);
     if (status == UF_OK)
         status = uf_plate_json(&json, &job->output, &job->plan, job->summary, job->request->command, error);
     if (status == UF_OK)
