@@ -6,7 +6,7 @@
 
 #include "report/overlay_parts.h"
 
-enum { MARGIN = 14, GAP = 10, LEAST_SIDE = 128, LEAST_WIDTH = 420, FLAG_LINES = 2, WHY_LINES = 6 };
+enum { MARGIN = 14, GAP = 10, LEAST_SIDE = 192, LEAST_WIDTH = 420, FLAG_LINES = 2, WHY_LINES = 8 };
 
 typedef struct page {
     const uf_contact_sheet *sheet;

@@ -17,7 +17,8 @@ enum {
     BAR_WIDTH = 420,
     BAR_HEIGHT = 16,
     TICK = 4,
-    PIECES = 8, /* ticks on the bar */
+    PIECES = 8, /* of round numbers that the range is made of */
+    PX_A_PIECE = 48, /* least distance of labels on the bar */
     SAMPLE = 26,
     LEAST_WIDTH = 2 * MARGIN + 480
 };
@@ -38,7 +39,7 @@ typedef struct page {
     uf_plate_grid grid;
     int line, bar_top, bar_width, legend_top;
     double from, to;
-    bool names_fit, shown[HATCHES];
+    bool names_fit, shown[HATCHES], framed[UF_MAP_DOUBLE + 1];
 } page;
 
 /* ---- colours --------------------------------------------------------------------------------- */
@@ -69,6 +70,11 @@ static void fill_palette(uf_indexed *picture)
 void uf_well_map_range(double least, double most, double *from, double *to)
 {
     const uf_plot_axis axis = {.from = (double)NAN, .to = (double)NAN};
+    double middle = (least + most) / 2;
+    if (middle > 0) {
+        least = fmin(least, 0.75 * middle);
+        most = fmax(most, 1.25 * middle);
+    }
     plot_range(&axis, least, most, PIECES, from, to);
 }
 
@@ -91,6 +97,7 @@ static void look_at_wells(page *p)
     for (int k = 0; k < p->map->rows * p->map->columns; k++) {
         const uf_value_well *well = &p->map->wells[k];
         p->shown[hatch_of(well)] = true;
+        p->framed[well->frame] = true;
         if (well->state != UF_WELL_ABSENT &&
             uf_font_width(UF_FONT_SMALL, well->first) > p->grid.cell_width - 2 * (INSET + GAP))
             p->names_fit = false;
@@ -104,7 +111,7 @@ static void measure(page *p, int *width, int *height)
                                 uf_font_line_height(UF_FONT_LARGE) + 2 * p->line + 3 * GAP);
     *width = p->grid.left + p->grid.columns * p->grid.cell_width + MARGIN;
     *width = *width < LEAST_WIDTH ? LEAST_WIDTH : *width;
-    p->bar_width = *width - 2 * MARGIN < BAR_WIDTH ? *width - 2 * MARGIN : BAR_WIDTH;
+    p->bar_width = (*width - 2 * MARGIN) / 2 < BAR_WIDTH ? (*width - 2 * MARGIN) / 2 : BAR_WIDTH;
     p->bar_top = p->grid.top + p->grid.rows * p->grid.cell_height + 5 * GAP;
     p->legend_top = p->bar_top + BAR_HEIGHT + TICK + p->line + 3 * GAP;
     *height = p->legend_top + 3 * (p->line + GAP) + MARGIN;
@@ -159,7 +166,7 @@ static void draw_word(const page *p, uf_canvas cell, int line, const char *text,
 /* The treatment first, or its beginning; then the value; the dose only where there is room for all three. */
 static void draw_words(const page *p, uf_canvas cell, const uf_value_well *well, uint8_t ground)
 {
-    int room = (p->grid.cell_height - 2 * INSET - 2) / p->line, line = 0;
+    int room = (p->grid.cell_height - 2 * INSET) / p->line, line = 0;
     bool hatched = hatch_of(well) != UF_WELL_MEASURED;
     char value[UF_NUMBER_TEXT] = "";
     if (!isnan(well->value))
@@ -209,7 +216,7 @@ static void draw_well(const page *p, int row, int column)
 static void draw_bar(const page *p)
 {
     plot_tick ticks[PLOT_TICKS];
-    int count = plot_ticks(p->from, p->to, 0, PIECES, ticks), y = p->bar_top + BAR_HEIGHT;
+    int count = plot_ticks(p->from, p->to, 0, p->bar_width / PX_A_PIECE, ticks), y = p->bar_top + BAR_HEIGHT;
     for (int x = 0; x < p->bar_width; x++) {
         int step = x * UF_WELL_MAP_STEPS / p->bar_width;
         uf_canvas_fill(p->canvas, (uf_box){MARGIN + x, p->bar_top, MARGIN + x + 1, y},
@@ -246,9 +253,12 @@ static void draw_legend(const page *p)
         x = uf_font_draw(p->canvas, UF_FONT_SMALL, x + SAMPLE + 2 * GAP, y + p->line - 4, words[order[k]], MAP_TEXT) +
             6 * GAP;
     }
+    x = MARGIN;
     y += 2 * (p->line + GAP);
-    uf_font_draw(p->canvas, UF_FONT_SMALL, MARGIN, y, "Heavy frame: control; double frame: positive control.",
-                 MAP_TEXT);
+    if (p->framed[UF_MAP_HEAVY])
+        x = uf_font_draw(p->canvas, UF_FONT_SMALL, x, y, "Heavy frame: control.", MAP_TEXT) + 2 * GAP;
+    if (p->framed[UF_MAP_DOUBLE])
+        (void)uf_font_draw(p->canvas, UF_FONT_SMALL, x, y, "Double frame: positive control.", MAP_TEXT);
 }
 
 static void draw_title(const page *p)

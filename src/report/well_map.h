@@ -43,7 +43,8 @@ enum {
     UF_WELL_MAP_PAGE = UF_WELL_MAP_STEPS * UF_WELL_MAP_STEP
 };
 
-/* What the ends of the ramp stand for: round numbers that hold `least` and `most`. */
+/* What the ends of the ramp stand for: round numbers that hold `least` and `most`, and a quarter of what lies between them to
+ * both sides, so that wells that hardly differ do not look as if they did. */
 void uf_well_map_range(double least, double most, double *from, double *to);
 
 /* The step of a value, 0 .. UF_WELL_MAP_STEPS - 1; its colour is palette index step * UF_WELL_MAP_STEP. */

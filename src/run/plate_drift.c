@@ -16,10 +16,10 @@ static const struct {
     size_t offset;
     double from;
 } panels[] = {
-    {"Near focus", "near_focus, 1 is sharp", offsetof(plate_fact, near_focus), 0},
+    {"Near focus", "near_focus (about 0.6 in focus)", offsetof(plate_fact, near_focus), 0},
     {"Near background", "near_background_adu (ADU)", offsetof(plate_fact, near_background_adu), (double)NAN},
     {"Cells a field", "cells", 0, 0},
-    {"Wide focus", "wide_focus, 1 is sharp", offsetof(plate_fact, wide_focus), 0},
+    {"Wide focus", "wide_focus (about 0.45 in focus)", offsetof(plate_fact, wide_focus), 0},
     {"Wide background", "wide_background_adu (ADU)", offsetof(plate_fact, wide_background_adu), (double)NAN},
 };
 enum { FACTS = sizeof panels / sizeof *panels, CELLS = 2 };
@@ -114,14 +114,14 @@ static void name_plates(drift_job *job)
         (void)snprintf(job->names[MOST_NAMES], NAME_TEXT, "and %d more plates", job->plates - MOST_NAMES);
 }
 
-/* Twelve plates differ in ink or mark; the amber is kept for flags. */
+/* Three inks and four marks, each plate the next of both: twelve plates differ. The amber is kept for flags. */
 static uf_plot_series plate_series(const drift_job *job, int p, int is_named)
 {
     static const uf_plot_ink inks[] = {UF_PLOT_BLUE, UF_PLOT_DARK, UF_PLOT_PINE};
     static const uf_plot_mark marks[] = {UF_MARK_DISC, UF_MARK_SQUARE, UF_MARK_DIAMOND, UF_MARK_TRIANGLE};
     return (uf_plot_series){.name = is_named && p <= MOST_NAMES ? job->names[p] : NULL,
                             .ink = inks[p % 3],
-                            .mark = marks[p / 3 % 4]};
+                            .mark = marks[p % 4]};
 }
 
 /* ---- panels ---------------------------------------------------------------------------------- */
@@ -172,6 +172,34 @@ static uf_status fill_series(drift_job *job, int panel, int p, int only_flagged,
     return UF_OK;
 }
 
+/* A range that is never narrower than a tenth of the mean to both sides: differences that do not matter must not look as if they
+ * did. */
+static uf_status hold_range(drift_job *job, double sum, int count, uf_plot_series *series, uf_error *error)
+{
+    double *x, *y;
+    uf_status status = take_points(job, 2, &x, &y, error);
+    *series = (uf_plot_series){0};
+    if (status != UF_OK || !count)
+        return status;
+    x[0] = x[1] = 0;
+    y[0] = 0.9 * sum / count;
+    y[1] = 1.1 * sum / count;
+    *series = (uf_plot_series){.count = 2, .x = x, .y = y};
+    return UF_OK;
+}
+
+static uf_status hold_facts(drift_job *job, int panel, uf_plot_series *series, uf_error *error)
+{
+    double sum = 0;
+    int count = 0;
+    for (int k = 0; isnan(panels[panel].from) && k < job->rows; k++) {
+        double value = fact_value(job, k, panel);
+        sum += isnan(value) ? 0 : value;
+        count += !isnan(value);
+    }
+    return hold_range(job, sum, count, series, error);
+}
+
 static uf_status fill_panel(drift_job *job, int panel, uf_plot_series *series, uf_error *error)
 {
     uf_status status = UF_OK;
@@ -181,7 +209,9 @@ static uf_status fill_panel(drift_job *job, int panel, uf_plot_series *series, u
     }
     series[job->plates] = (uf_plot_series){
         .name = panel == 0 ? "flagged" : NULL, .ink = UF_PLOT_AMBER, .mark = UF_MARK_AROUND};
-    return status == UF_OK ? fill_series(job, panel, -1, 1, &series[job->plates], error) : status;
+    if (status == UF_OK)
+        status = fill_series(job, panel, -1, 1, &series[job->plates], error);
+    return status == UF_OK ? hold_facts(job, panel, &series[job->plates + 1], error) : status;
 }
 
 /* Middle of the fields of a plate and session. */
@@ -201,6 +231,8 @@ static double group_x(const drift_job *job, int group)
 static uf_status fill_references(drift_job *job, uf_plot_series *series, uf_error *error)
 {
     const uf_plate_plan *plan = job->all->plan;
+    double sum = 0;
+    int count = 0;
     for (int p = 0; p < job->plates; p++) {
         double *x, *y, *low, *high;
         uf_status status = take_points(job, plan->group_count, &x, &y, error);
@@ -223,9 +255,12 @@ static uf_status fill_references(drift_job *job, uf_plot_series *series, uf_erro
             y[n] = group->pool.ratio;
             low[n] = y[n] - group->pool.ratio_sd;
             high[n] = y[n] + group->pool.ratio_sd;
+            sum += y[n];
+            count++;
         }
     }
-    return UF_OK;
+    series[job->plates] = (uf_plot_series){0};
+    return hold_range(job, sum, count, &series[job->plates + 1], error);
 }
 
 static uf_status draw_drift(drift_job *job, uf_indexed *picture, uf_error *error)
@@ -237,7 +272,7 @@ static uf_status draw_drift(drift_job *job, uf_indexed *picture, uf_error *error
     for (int k = 0; status == UF_OK && k < count; k++) {
         uf_plot_series *series;
         int is_reference = k == FACTS;
-        status = uf_take(&job->work, (size_t)job->plates + 1, sizeof *series, "a plot", &series, error);
+        status = uf_take(&job->work, (size_t)job->plates + 2, sizeof *series, "a plot", &series, error);
         if (status == UF_OK)
             status = is_reference ? fill_references(job, series, error) : fill_panel(job, k, series, error);
         drawn[k] = (uf_plot_panel){
@@ -246,7 +281,7 @@ static uf_status draw_drift(drift_job *job, uf_indexed *picture, uf_error *error
             .y = {is_reference ? "reference ratio at gap 0, 1 sd" : panels[k].words,
                   is_reference ? (double)NAN : panels[k].from, (double)NAN, 0},
             .series = series,
-            .series_count = is_reference ? job->plates : job->plates + 1};
+            .series_count = job->plates + 2};
     }
     if (status == UF_OK)
         status = uf_plot_rows(&job->work, drawn, count, COLUMNS, WIDTH, HEIGHT, picture, NULL, error);
