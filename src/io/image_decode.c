@@ -88,8 +88,8 @@ uf_status uf_decode_indexed_png(uf_work *work, const uf_text *bytes, int most_si
     if (r.info)
         good = read_head(&r, most_side, picture);
     if (good)
-        status = uf_take(work, (size_t)picture->width * (size_t)picture->height, 1, "a picture", &picture->data,
-                         error);
+        status =
+            uf_take(work, (size_t)picture->width * (size_t)picture->height, 1, "a picture", &picture->data, error);
     if (good && status == UF_OK)
         good = read_rows(&r, picture);
     png_destroy_read_struct(&r.png, &r.info, NULL);

@@ -76,7 +76,8 @@ static void draw_thumbnail(const page *p, const uf_contact_tile *tile, uf_box bo
 /* At most `lines` of them: the rest of a long reason stands in the table. */
 static void draw_lines(uf_canvas canvas, int x, int y, int width, int lines, const char *text)
 {
-    uf_canvas part = uf_canvas_part(canvas, (uf_box){x, y, x + width, y + lines * uf_font_line_height(UF_FONT_SMALL)});
+    uf_canvas part =
+        uf_canvas_part(canvas, (uf_box){x, y, x + width, y + lines * uf_font_line_height(UF_FONT_SMALL)});
     (void)overlay_draw_wrapped(part, 0, 0, width, text);
 }
 
@@ -126,8 +127,7 @@ uf_status uf_contact_sheet_draw(uf_work *work, const uf_contact_sheet *sheet, uf
     measure(&p, &width, &height);
     *picture = (uf_indexed){.width = width, .height = height};
     uf_palette_fill(picture);
-    uf_status status =
-        uf_take(work, (size_t)width * (size_t)height, 1, "a contact sheet", &picture->data, error);
+    uf_status status = uf_take(work, (size_t)width * (size_t)height, 1, "a contact sheet", &picture->data, error);
     if (status != UF_OK)
         return status;
     memset(picture->data, UF_INK_PAGE, (size_t)width * (size_t)height);

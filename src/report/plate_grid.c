@@ -25,14 +25,12 @@ void uf_plate_grid_names(uf_canvas canvas, const uf_plate_grid *grid, const char
     for (int c = 0; c < grid->columns; c++) {
         char number[16];
         (void)snprintf(number, sizeof number, "%d", c + 1);
-        int x = grid->left + c * grid->cell_width +
-                (grid->cell_width - uf_font_width(UF_FONT_SMALL, number)) / 2;
+        int x = grid->left + c * grid->cell_width + (grid->cell_width - uf_font_width(UF_FONT_SMALL, number)) / 2;
         (void)uf_font_draw(canvas, UF_FONT_SMALL, x, grid->top - GAP, number, ink);
     }
     for (int r = 0; r < grid->rows; r++) {
         int x = grid->left - 2 * GAP - uf_font_width(UF_FONT_SMALL, row_names[r]);
-        int y = grid->top + r * grid->cell_height +
-                (grid->cell_height + uf_font_faces[UF_FONT_SMALL].cap_height) / 2;
+        int y = grid->top + r * grid->cell_height + (grid->cell_height + uf_font_faces[UF_FONT_SMALL].cap_height) / 2;
         (void)uf_font_draw(canvas, UF_FONT_SMALL, x, y, row_names[r], ink);
     }
 }

@@ -24,7 +24,7 @@ typedef struct map_sheet {
     const uf_plate_map *map;
     uf_canvas canvas;
     uf_plate_grid grid;
-    int line;                               /* height of a line of words */
+    int line; /* height of a line of words */
     int legend_columns, legend_rows, legend_top;
     bool names_fit;
 } map_sheet;

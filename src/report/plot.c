@@ -372,7 +372,8 @@ uf_status uf_plot_rows(uf_work *work, const uf_plot_panel *panels, int count, in
     memset(picture->data, PLOT_PAGE, (size_t)width * (size_t)height);
     s.canvas = uf_canvas_of(picture);
     int rows_of_panels = (count + columns - 1) / columns;
-    int each = (width - MARGIN * (columns + 1)) / columns, high = (height - MARGIN * (rows_of_panels + 1)) / rows_of_panels;
+    int each = (width - MARGIN * (columns + 1)) / columns,
+        high = (height - MARGIN * (rows_of_panels + 1)) / rows_of_panels;
     for (int k = 0; k < count; k++) {
         s.panel = &panels[k];
         int rows = lay_legend(&s, (uf_canvas){0}, 0, 0, each - LEGEND_INSET);

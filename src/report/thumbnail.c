@@ -45,8 +45,8 @@ static int32_t label_at(uf_labels labels, int factor, const uf_indexed *picture,
 {
     if (x < 0 || y < 0 || x >= picture->width || y >= picture->height)
         return -1;
-    return uf_labels_row(labels, smaller(y * factor + factor / 2, labels.height - 1))[smaller(
-        x * factor + factor / 2, labels.width - 1)];
+    return uf_labels_row(labels, smaller(y * factor + factor / 2,
+                                         labels.height - 1))[smaller(x * factor + factor / 2, labels.width - 1)];
 }
 
 /* As in overlays: a pixel of a cell with a neighbour that is not of it; a cell cut by the edge stays open there. */

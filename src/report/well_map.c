@@ -17,7 +17,7 @@ enum {
     BAR_WIDTH = 420,
     BAR_HEIGHT = 16,
     TICK = 4,
-    PIECES = 8, /* of round numbers that the range is made of */
+    PIECES = 8,      /* of round numbers that the range is made of */
     PX_A_PIECE = 48, /* least distance of labels on the bar */
     SAMPLE = 26,
     LEAST_WIDTH = 2 * MARGIN + 480
@@ -107,8 +107,8 @@ static void look_at_wells(page *p)
 static void measure(page *p, int *width, int *height)
 {
     p->line = uf_font_line_height(UF_FONT_SMALL);
-    p->grid = uf_plate_grid_lay(p->map->rows, p->map->columns,
-                                uf_font_line_height(UF_FONT_LARGE) + 2 * p->line + 3 * GAP);
+    p->grid =
+        uf_plate_grid_lay(p->map->rows, p->map->columns, uf_font_line_height(UF_FONT_LARGE) + 2 * p->line + 3 * GAP);
     *width = p->grid.left + p->grid.columns * p->grid.cell_width + MARGIN;
     *width = *width < LEAST_WIDTH ? LEAST_WIDTH : *width;
     p->bar_width = (*width - 2 * MARGIN) / 2 < BAR_WIDTH ? (*width - 2 * MARGIN) / 2 : BAR_WIDTH;

@@ -23,8 +23,8 @@ typedef enum uf_well_state {
 
 typedef struct uf_value_well {
     uf_well_state state;
-    double value;              /* NaN: there is none */
-    uf_map_frame frame;        /* heavy: control; double: positive control */
+    double value;               /* NaN: there is none */
+    uf_map_frame frame;         /* heavy: control; double: positive control */
     const char *first, *second; /* treatment and dose; may be empty */
 } uf_value_well;
 
@@ -51,7 +51,7 @@ void uf_well_map_range(double least, double most, double *from, double *to);
 int uf_well_map_step(double value, double from, double to);
 
 /* Draws the map; the picture's pixels lie in `work`'s arena. `grid` (may be NULL) is where the wells are. UF_MEMORY. */
-UF_MUST_USE uf_status uf_well_map_draw(uf_work *work, const uf_well_map *map, uf_indexed *picture, uf_plate_grid *grid,
-                                       uf_error *error);
+UF_MUST_USE uf_status uf_well_map_draw(uf_work *work, const uf_well_map *map, uf_indexed *picture,
+                                       uf_plate_grid *grid, uf_error *error);
 
 #endif

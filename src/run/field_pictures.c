@@ -175,8 +175,7 @@ static uf_status draw_thumbnail(picture_job *job, uf_text *png, uf_error *error)
     uf_thumbnail_input input = {.near_adu = r->gaps.near_adu, .labels = r->cells.labels, .near_background_adu = 0};
     uf_arena_mark mark = uf_arena_now(&job->in->work->arena);
     uf_indexed picture;
-    uf_status status =
-        uf_thumbnail_draw(job->in->work, &input, &picture, &job->in->thumbnail_white_adu, error);
+    uf_status status = uf_thumbnail_draw(job->in->work, &input, &picture, &job->in->thumbnail_white_adu, error);
     if (status == UF_OK)
         status = uf_encode_indexed_png(png, &picture, error);
     uf_arena_back(&job->in->work->arena, mark);

@@ -739,8 +739,8 @@ static uf_status copy_field(plate_job *job, const uf_output *part, int index, uf
 {
     static const struct {
         const char *folder, *ending;
-    } files[] = {
-        {"overlay", ".png"}, {"outlines", ".json"}, {"gap", ".tif"}, {"labels", ".tif"}, {"thumb", ".png"}, {UF_RECORDS, ".record"}};
+    } files[] = {{"overlay", ".png"}, {"outlines", ".json"}, {"gap", ".tif"},
+                 {"labels", ".tif"},  {"thumb", ".png"},     {UF_RECORDS, ".record"}};
     uf_status status = UF_OK;
     for (size_t k = 0; status == UF_OK && k < sizeof files / sizeof files[0]; k++) {
         uf_text name = {0};

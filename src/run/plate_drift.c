@@ -119,9 +119,8 @@ static uf_plot_series plate_series(const drift_job *job, int p, int is_named)
 {
     static const uf_plot_ink inks[] = {UF_PLOT_BLUE, UF_PLOT_DARK, UF_PLOT_PINE};
     static const uf_plot_mark marks[] = {UF_MARK_DISC, UF_MARK_SQUARE, UF_MARK_DIAMOND, UF_MARK_TRIANGLE};
-    return (uf_plot_series){.name = is_named && p <= MOST_NAMES ? job->names[p] : NULL,
-                            .ink = inks[p % 3],
-                            .mark = marks[p % 4]};
+    return (uf_plot_series){
+        .name = is_named && p <= MOST_NAMES ? job->names[p] : NULL, .ink = inks[p % 3], .mark = marks[p % 4]};
 }
 
 /* ---- panels ---------------------------------------------------------------------------------- */
@@ -207,8 +206,8 @@ static uf_status fill_panel(drift_job *job, int panel, uf_plot_series *series, u
         series[p] = plate_series(job, p, panel == 0);
         status = fill_series(job, panel, p, 0, &series[p], error);
     }
-    series[job->plates] = (uf_plot_series){
-        .name = panel == 0 ? "flagged" : NULL, .ink = UF_PLOT_AMBER, .mark = UF_MARK_AROUND};
+    series[job->plates] =
+        (uf_plot_series){.name = panel == 0 ? "flagged" : NULL, .ink = UF_PLOT_AMBER, .mark = UF_MARK_AROUND};
     if (status == UF_OK)
         status = fill_series(job, panel, -1, 1, &series[job->plates], error);
     return status == UF_OK ? hold_facts(job, panel, &series[job->plates + 1], error) : status;
@@ -275,13 +274,12 @@ static uf_status draw_drift(drift_job *job, uf_indexed *picture, uf_error *error
         status = uf_take(&job->work, (size_t)job->plates + 2, sizeof *series, "a plot", &series, error);
         if (status == UF_OK)
             status = is_reference ? fill_references(job, series, error) : fill_panel(job, k, series, error);
-        drawn[k] = (uf_plot_panel){
-            .title = is_reference ? "Reference" : panels[k].title,
-            .x = {job->x_words, -margin, job->most_x + margin, 0},
-            .y = {is_reference ? "reference ratio at gap 0, 1 sd" : panels[k].words,
-                  is_reference ? (double)NAN : panels[k].from, (double)NAN, 0},
-            .series = series,
-            .series_count = job->plates + 2};
+        drawn[k] = (uf_plot_panel){.title = is_reference ? "Reference" : panels[k].title,
+                                   .x = {job->x_words, -margin, job->most_x + margin, 0},
+                                   .y = {is_reference ? "reference ratio at gap 0, 1 sd" : panels[k].words,
+                                         is_reference ? (double)NAN : panels[k].from, (double)NAN, 0},
+                                   .series = series,
+                                   .series_count = job->plates + 2};
     }
     if (status == UF_OK)
         status = uf_plot_rows(&job->work, drawn, count, COLUMNS, WIDTH, HEIGHT, picture, NULL, error);

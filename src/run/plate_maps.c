@@ -59,8 +59,8 @@ static int is_view(const map_view *view, const uf_sheet_row *row)
 static void larger_plate(map_view *view, const uf_sheet_row *row)
 {
     uf_vessel said;
-    uf_vessel vessel = uf_vessel_parse(row->text[UF_SHEET_VESSEL], &said) && said.wells ? said
-                                                                                        : uf_vessel_holding(row->well);
+    uf_vessel vessel =
+        uf_vessel_parse(row->text[UF_SHEET_VESSEL], &said) && said.wells ? said : uf_vessel_holding(row->well);
     if (vessel.wells > view->vessel.wells)
         view->vessel = vessel;
 }
@@ -162,9 +162,7 @@ static void find_ranges(maps_job *job)
 
 static uf_map_frame frame_of(const uf_sheet_row *row)
 {
-    return row->role == UF_ROLE_CONTROL    ? UF_MAP_HEAVY
-           : row->role == UF_ROLE_POSITIVE ? UF_MAP_DOUBLE
-                                           : UF_MAP_THIN;
+    return row->role == UF_ROLE_CONTROL ? UF_MAP_HEAVY : row->role == UF_ROLE_POSITIVE ? UF_MAP_DOUBLE : UF_MAP_THIN;
 }
 
 /* What was done to the well; where the sheet does not say, its role; of what is no sample, at least that. */
@@ -175,7 +173,8 @@ static const char *first_word(const uf_sheet_row *row)
     return row->role == UF_ROLE_SAMPLE ? "" : uf_role_words[row->role];
 }
 
-static uf_status put_wells(const maps_job *job, uf_work *work, int v, int metric, uf_value_well *wells, uf_error *error)
+static uf_status put_wells(const maps_job *job, uf_work *work, int v, int metric, uf_value_well *wells,
+                           uf_error *error)
 {
     const map_view *view = &job->views[v];
     uf_status status = UF_OK;
@@ -194,9 +193,8 @@ static uf_status put_wells(const maps_job *job, uf_work *work, int v, int metric
         (void)snprintf(dose, DOSE_TEXT, "%.20s%s%.20s", row->text[UF_SHEET_DOSE],
                        *row->text[UF_SHEET_DOSE] && *row->text[UF_SHEET_DOSE_UNIT] ? " " : "",
                        *row->text[UF_SHEET_DOSE] ? row->text[UF_SHEET_DOSE_UNIT] : "");
-        wells[row->well.row * view->vessel.columns + row->well.column] =
-            (uf_value_well){job->all->wells->wells[w].state, value_of(job, w, metric), frame_of(row), first_word(row),
-                            dose};
+        wells[row->well.row * view->vessel.columns + row->well.column] = (uf_value_well){
+            job->all->wells->wells[w].state, value_of(job, w, metric), frame_of(row), first_word(row), dose};
     }
     return status;
 }

@@ -125,8 +125,8 @@ static void read_fact(void *context, int hand, int index)
     uf_arena_mark mark = uf_arena_now(&work->arena);
     uf_status status = uf_plate_record_of(job->output, job->plan, index, &work->arena, &r, &found, &error);
     if (status == UF_OK && !found)
-        status = uf_fail(&error, UF_INPUT,
-                         "a record vanished while the pictures were made; run the same command again");
+        status =
+            uf_fail(&error, UF_INPUT, "a record vanished while the pictures were made; run the same command again");
     if (status == UF_OK)
         job->facts[index] = (plate_fact){r.field.status,
                                          r.field.cells,

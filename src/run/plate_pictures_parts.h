@@ -19,9 +19,9 @@ typedef struct plate_pictures {
     const uf_plate_plan *plan;
     const uf_plate_well_list *wells;
     uf_pool *pool;
-    uf_work *works;    /* one a hand */
-    plate_fact *facts; /* of each row */
-    double *white_adu; /* of each of the plan's groups: what contact sheets draw white */
+    uf_work *works;        /* one a hand */
+    plate_fact *facts;     /* of each row */
+    double *white_adu;     /* of each of the plan's groups: what contact sheets draw white */
     pthread_mutex_t mutex; /* guards all below */
     uf_output_batch batch;
     uf_status status; /* the first that went wrong */

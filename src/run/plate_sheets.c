@@ -85,7 +85,8 @@ static uf_status cut_into_pages(sheets_job *job, const sorted_row *sorted, uf_er
 static uf_status name_apart(sheets_job *job, uf_error *error)
 {
     const char **names;
-    uf_status status = uf_take(&job->work, (size_t)job->page_count + 1, sizeof *names, "contact sheets", &names, error);
+    uf_status status =
+        uf_take(&job->work, (size_t)job->page_count + 1, sizeof *names, "contact sheets", &names, error);
     if (status != UF_OK)
         return status;
     for (int k = 0; k < job->page_count; k++)
@@ -225,7 +226,9 @@ static void put_note(double white_adu, uf_text *out)
         return;
     uf_text_add(out, " White is ");
     uf_text_number(out, white_adu, 3);
-    uf_text_add(out, " ADU above background in all wells of this plate and session (black: background, greys by square root).");
+    uf_text_add(
+        out,
+        " ADU above background in all wells of this plate and session (black: background, greys by square root).");
 }
 
 static uf_status draw_page(sheets_job *job, uf_work *work, const well_page *page, uf_error *error)
