@@ -196,6 +196,10 @@ docs-pictures: demo ## the pictures of README and docs
 	$(PROGRAM) sheet layout -o $(DEMO)/plan.csv --treatment 'thrift: 0.1, 1, 10 uM' --treatment 'sedge: 0.1, 1, 10 uM' \
 	    --control vehicle --plates 3 --plate-name P --seed 7 --quiet
 	cp $(DEMO)/plan_map1.png docs/pictures/plate-map.png
+	$(PROGRAM) demo build/demo_screen --scenario screen --quiet
+	$(PROGRAM) plate build/demo_screen/sheet.csv -i build/demo_screen/screen1.ini -a build/demo_screen/assay.ini --quiet \
+	    -o build/demo_screen/results
+	cp build/demo_screen/results/maps/screen1_gap_median_nm.png docs/pictures/plate-gap.png
 
 # ---- install ---------------------------------------------------------------------------------------------
 

@@ -167,7 +167,7 @@ uf_status overlay_measure_near(uf_work *work, overlay_scene *scene, uf_error *er
 
 /* ---- pixels ---------------------------------------------------------------------------------- */
 
-static void near_inks(const overlay_scene *scene, const float *near, const uint8_t *contact, uint8_t *out)
+void overlay_near_inks(const overlay_scene *scene, const float *near, const uint8_t *contact, uint8_t *out)
 {
     const float scale = 1.0f / (scene->white - scene->black), top = (float)(UF_NEAR_LEVELS - 1);
     for (int x = 0; x < scene->width; x++) {
@@ -175,7 +175,7 @@ static void near_inks(const overlay_scene *scene, const float *near, const uint8
         share = share > 0.0f ? share : 0.0f; /* also for NaN */
         share = share < 1.0f ? share : 1.0f;
         int level = (int)(top * sqrtf(share) + 0.5f);
-        out[x] = (uint8_t)((contact[x] ? UF_INK_CONTACT : UF_INK_NEAR) + level);
+        out[x] = (uint8_t)((contact && contact[x] ? UF_INK_CONTACT : UF_INK_NEAR) + level);
     }
 }
 
@@ -215,7 +215,7 @@ static void draw_row(const overlay_scene *scene, const row_scratch *rows, uf_can
     uint8_t *near_out = uf_canvas_row(near, y), *gap_out = uf_canvas_row(gap, y);
     outline_row(scene, y, rows->label, rows->outline);
     contact_row(scene, y, rows->contact);
-    near_inks(scene, near_row(scene, y, rows->values), rows->contact, near_out);
+    overlay_near_inks(scene, near_row(scene, y, rows->values), rows->contact, near_out);
     gap_inks(scene, gap_row(scene, y, rows->values), rows->label, y, gap_out);
     for (int x = 0; x < scene->width; x++)
         if (rows->outline[x])

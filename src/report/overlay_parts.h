@@ -3,6 +3,8 @@
 #ifndef UF_REPORT_OVERLAY_PARTS_H
 #define UF_REPORT_OVERLAY_PARTS_H
 
+#include <stdbool.h>
+
 #include "report/canvas.h"
 #include "report/overlay.h"
 #include "report/palette.h"
@@ -27,6 +29,9 @@ static inline double overlay_at(const overlay_scene *scene, double px)
 /* Sets black and white: background, and the 99.7th percentile of what the panel shows. Takes scratch. */
 UF_MUST_USE uf_status overlay_measure_near(uf_work *work, overlay_scene *scene, uf_error *error);
 
+/* Indices of one row of near values; `contact` may be NULL. */
+void overlay_near_inks(const overlay_scene *scene, const float *near, const uint8_t *contact, uint8_t *out);
+
 /* Draws both panels, each on a canvas of its own size, with outlines, spots and numbers. Takes scratch. */
 UF_MUST_USE uf_status overlay_draw_panels(uf_work *work, const overlay_scene *scene, uf_canvas near, uf_canvas gap,
                                           uf_error *error);
@@ -42,6 +47,9 @@ void overlay_draw_bar(uf_canvas canvas, const overlay_scene *scene, int x, int t
 
 /* Draws one line with the baseline y; the middle of what is too long becomes an ellipsis. */
 void overlay_draw_line(uf_canvas canvas, uf_font font, int x, int y, int width, const char *text);
+
+/* Draws text below row y in lines of at most `width` pixels and returns the row below it. */
+int overlay_draw_wrapped(uf_canvas canvas, int x, int y, int width, const char *text);
 
 /* Draws scale bar, legend, near scale, settings and flags below row y, wrapped to `width`, and returns the
  * row below them. On the zeroed canvas it only measures. */

@@ -62,7 +62,7 @@ void overlay_draw_line(uf_canvas canvas, uf_font font, int x, int y, int width, 
 }
 
 /* Draws text below row y, broken at spaces, and returns the row below it. */
-static int draw_wrapped(uf_canvas canvas, int x, int y, int width, const char *text)
+int overlay_draw_wrapped(uf_canvas canvas, int x, int y, int width, const char *text)
 {
     const uf_font font = UF_FONT_SMALL;
     while (*text) {
@@ -263,7 +263,7 @@ static int draw_near_words(uf_canvas canvas, const overlay_scene *scene, int x, 
         words, sizeof words,
         "Near image, square-root scale: black at %s ADU (background), white at %s ADU (99.7th percentile).%s", black,
         white, scene->reduction == 2 ? " Drawn 2:1, one pixel for 2 × 2 of the image." : "");
-    return draw_wrapped(canvas, x, y, width, words);
+    return overlay_draw_wrapped(canvas, x, y, width, words);
 }
 
 int overlay_draw_footer(uf_canvas canvas, const overlay_scene *scene, int x, int y, int width)
@@ -277,9 +277,9 @@ int overlay_draw_footer(uf_canvas canvas, const overlay_scene *scene, int x, int
     gap_entries(&at);
     y = at.y + uf_font_faces[UF_FONT_SMALL].descent + PARAGRAPH;
     y = draw_near_words(canvas, scene, x, y, width);
-    y = draw_wrapped(canvas, x, y, width, scene->input->settings);
+    y = overlay_draw_wrapped(canvas, x, y, width, scene->input->settings);
     const char *flags = scene->input->flags;
     char words[1024];
     (void)snprintf(words, sizeof words, "Flags: %s", flags[0] ? flags : "none");
-    return draw_wrapped(canvas, x, y, width, words);
+    return overlay_draw_wrapped(canvas, x, y, width, words);
 }

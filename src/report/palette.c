@@ -1,10 +1,8 @@
 /* SPDX-License-Identifier: GPL-3.0-or-later */
 #include "report/palette.h"
 
-#include "report/colour.h"
-
 /* Chroma is as high in the middle as the sRGB gamut allows along this path, and low at both ends. */
-static uf_oklab gap_colour(double t)
+uf_oklab uf_ramp_colour(double t)
 {
     const double top = 0.6;
     double off = t < top ? (top - t) / top : (t - top) / (1.0 - top);
@@ -27,7 +25,7 @@ static void put_ramps(uint8_t palette[256][3])
         uf_colour_put(palette[UF_INK_CONTACT + k], contact_colour(level));
     }
     for (int k = 0; k < UF_GAP_LEVELS; k++)
-        uf_colour_put(palette[UF_INK_GAP + k], gap_colour((double)k / (UF_GAP_LEVELS - 1)));
+        uf_colour_put(palette[UF_INK_GAP + k], uf_ramp_colour((double)k / (UF_GAP_LEVELS - 1)));
 }
 
 void uf_palette_fill(uf_indexed *picture)

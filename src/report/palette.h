@@ -12,6 +12,7 @@
 #define UF_REPORT_PALETTE_H
 
 #include "image/indexed.h"
+#include "report/colour.h"
 #include "report/font.h"
 
 enum { UF_NEAR_LEVELS = 76, UF_GAP_LEVELS = 80 };
@@ -32,6 +33,9 @@ enum uf_ink {
     UF_INK_CUTOFF, /* contact cutoff on the colour bar */
     UF_INK_COUNT
 };
+
+/* The gap ramp, t from 0 (light) to 1 (dark): whatever is drawn by value is drawn by it. */
+uf_oklab uf_ramp_colour(double t);
 
 /* Fills in palette and number of colours. */
 void uf_palette_fill(uf_indexed *picture);

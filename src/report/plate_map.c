@@ -8,16 +8,7 @@
 #include "report/colour.h"
 #include "report/font.h"
 
-enum {
-    WIDEST = 1180,
-    MARGIN = 24,
-    ROW_NAMES = 30,
-    SMALLEST = 34,
-    LARGEST = 92,
-    BAR = 6,
-    GAP = 4,
-    LEGEND_WIDTH = 230
-};
+enum { MARGIN = UF_GRID_MARGIN, BAR = 6, GAP = 4, LEGEND_WIDTH = 230 };
 
 enum map_index {
     MAP_PAGE,
@@ -32,8 +23,8 @@ enum map_index {
 typedef struct map_sheet {
     const uf_plate_map *map;
     uf_canvas canvas;
-    int cell_width, cell_height, left, top; /* of the wells */
-    int line;                               /* height of a line of words */
+    uf_plate_grid grid;
+    int line; /* height of a line of words */
     int legend_columns, legend_rows, legend_top;
     bool names_fit;
 } map_sheet;
@@ -68,7 +59,7 @@ static int clamp(int value, int low, int high)
 static bool all_names_fit(const map_sheet *s)
 {
     for (int k = 0; k < s->map->key_count; k++)
-        if (uf_font_width(UF_FONT_SMALL, s->map->keys[k].name) > s->cell_width - 2 * GAP)
+        if (uf_font_width(UF_FONT_SMALL, s->map->keys[k].name) > s->grid.cell_width - 2 * GAP)
             return false;
     return true;
 }
@@ -78,17 +69,15 @@ static void measure(map_sheet *s, int *width, int *height)
     enum { MOST_LEGEND_ROWS = 40 };
     const uf_plate_map *map = s->map;
     s->line = uf_font_line_height(UF_FONT_SMALL);
-    s->cell_width = clamp((WIDEST - 2 * MARGIN - ROW_NAMES) / map->columns, SMALLEST, LARGEST);
-    s->cell_height = clamp(s->cell_width * 3 / 4, s->line + BAR + GAP, 2 * s->line + BAR + 3 * GAP);
-    s->left = MARGIN + ROW_NAMES;
-    s->top = MARGIN + uf_font_line_height(UF_FONT_LARGE) + s->line + 2 * GAP;
-    *width = s->left + map->columns * s->cell_width + MARGIN;
+    s->grid = uf_plate_grid_lay(map->rows, map->columns, uf_font_line_height(UF_FONT_LARGE) + s->line + 2 * GAP);
+    s->grid.cell_height = clamp(s->grid.cell_width * 3 / 4, s->line + BAR + GAP, 2 * s->line + BAR + 3 * GAP);
+    *width = s->grid.left + map->columns * s->grid.cell_width + MARGIN;
     *width = *width < 2 * LEGEND_WIDTH + 2 * MARGIN ? 2 * LEGEND_WIDTH + 2 * MARGIN : *width;
     s->names_fit = all_names_fit(s);
     s->legend_columns = (*width - 2 * MARGIN) / LEGEND_WIDTH;
     s->legend_rows = (map->key_count + s->legend_columns - 1) / s->legend_columns;
     s->legend_rows = s->legend_rows > MOST_LEGEND_ROWS ? MOST_LEGEND_ROWS : s->legend_rows;
-    s->legend_top = s->top + map->rows * s->cell_height + 4 * GAP;
+    s->legend_top = s->grid.top + map->rows * s->grid.cell_height + 4 * GAP;
     *height = s->legend_top + (s->legend_rows + 2) * (s->line + GAP) + MARGIN;
 }
 
@@ -102,20 +91,14 @@ static void draw_fitted(uf_canvas canvas, int x, int y, int width, const char *t
 
 static void draw_frame(uf_canvas canvas, uf_box box, uf_map_frame frame)
 {
-    const uint8_t dark = MAP_TEXT + UF_FONT_LEVELS - 1;
-    uf_canvas_frame(canvas, box, frame == UF_MAP_THIN ? MAP_GRID : dark);
-    for (int k = 1; k < 3 && frame != UF_MAP_THIN; k++) {
-        uf_box inner = {box.x0 + k, box.y0 + k, box.x1 - k, box.y1 - k};
-        if (frame == UF_MAP_HEAVY || k == 2)
-            uf_canvas_frame(canvas, inner, dark);
-    }
+    uf_plate_grid_frame(canvas, box, frame, MAP_GRID, MAP_TEXT + UF_FONT_LEVELS - 1);
 }
 
 static void draw_words(const map_sheet *s, uf_canvas cell, const uf_map_well *well)
 {
     char number[16];
-    int width = s->cell_width - 2 * GAP, base = BAR + GAP + uf_font_faces[UF_FONT_SMALL].cap_height + 1;
-    bool two = *well->second && s->cell_height >= 2 * s->line + BAR + GAP;
+    int width = s->grid.cell_width - 2 * GAP, base = BAR + GAP + uf_font_faces[UF_FONT_SMALL].cap_height + 1;
+    bool two = *well->second && s->grid.cell_height >= 2 * s->line + BAR + GAP;
     (void)snprintf(number, sizeof number, "%d", well->key + 1);
     const char *name = s->names_fit ? s->map->keys[well->key].name : number;
     if (!two && !s->names_fit && uf_font_width(UF_FONT_SMALL, name) > width)
@@ -128,8 +111,7 @@ static void draw_words(const map_sheet *s, uf_canvas cell, const uf_map_well *we
 static void draw_well(const map_sheet *s, int row, int column)
 {
     const uf_map_well *well = &s->map->wells[row * s->map->columns + column];
-    int x = s->left + column * s->cell_width, y = s->top + row * s->cell_height;
-    uf_canvas cell = uf_canvas_part(s->canvas, (uf_box){x, y, x + s->cell_width + 1, y + s->cell_height + 1});
+    uf_canvas cell = uf_canvas_part(s->canvas, uf_plate_grid_well(&s->grid, row, column));
     uf_box whole = {0, 0, cell.width, cell.height};
     if (well->key < 0) {
         uf_canvas_line(cell, 0, cell.height - 1, cell.width - 1, 0, MAP_EMPTY);
@@ -140,22 +122,6 @@ static void draw_well(const map_sheet *s, int row, int column)
     draw_words(s, cell, well);
     draw_frame(cell, (uf_box){1, 1, cell.width - 1, cell.height - 1}, s->map->keys[well->key].frame);
     uf_canvas_frame(cell, whole, MAP_GRID);
-}
-
-static void draw_names(const map_sheet *s)
-{
-    const uf_plate_map *map = s->map;
-    for (int c = 0; c < map->columns; c++) {
-        char number[16];
-        (void)snprintf(number, sizeof number, "%d", c + 1);
-        int x = s->left + c * s->cell_width + (s->cell_width - uf_font_width(UF_FONT_SMALL, number)) / 2;
-        (void)uf_font_draw(s->canvas, UF_FONT_SMALL, x, s->top - GAP, number, MAP_TEXT);
-    }
-    for (int r = 0; r < map->rows; r++) {
-        int x = s->left - 2 * GAP - uf_font_width(UF_FONT_SMALL, map->row_names[r]);
-        int y = s->top + r * s->cell_height + (s->cell_height + uf_font_faces[UF_FONT_SMALL].cap_height) / 2;
-        (void)uf_font_draw(s->canvas, UF_FONT_SMALL, x, y, map->row_names[r], MAP_TEXT);
-    }
 }
 
 static void draw_legend(const map_sheet *s)
@@ -195,7 +161,7 @@ uf_status uf_plate_map_draw(uf_work *work, const uf_plate_map *map, uf_indexed *
     s.canvas = uf_canvas_of(picture);
     (void)uf_font_draw(s.canvas, UF_FONT_LARGE, MARGIN, MARGIN + uf_font_faces[UF_FONT_LARGE].cap_height, map->title,
                        MAP_TEXT);
-    draw_names(&s);
+    uf_plate_grid_names(s.canvas, &s.grid, map->row_names, MAP_TEXT);
     for (int r = 0; r < map->rows; r++)
         for (int c = 0; c < map->columns; c++)
             draw_well(&s, r, c);

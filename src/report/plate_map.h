@@ -8,8 +8,7 @@
 
 #include "base/work.h"
 #include "image/indexed.h"
-
-typedef enum uf_map_frame { UF_MAP_THIN, UF_MAP_HEAVY, UF_MAP_DOUBLE } uf_map_frame;
+#include "report/plate_grid.h"
 
 /* One line of the legend: a treatment. */
 typedef struct uf_map_key {

@@ -355,6 +355,12 @@ static size_t longest_series(const uf_plot_panel *panels, int count)
 uf_status uf_plot_draw(uf_work *work, const uf_plot_panel *panels, int count, int width, int height,
                        uf_indexed *picture, uf_plot_frame *frames, uf_error *error)
 {
+    return uf_plot_rows(work, panels, count, count, width, height, picture, frames, error);
+}
+
+uf_status uf_plot_rows(uf_work *work, const uf_plot_panel *panels, int count, int columns, int width, int height,
+                       uf_indexed *picture, uf_plot_frame *frames, uf_error *error)
+{
     sheet s = {0};
     *picture = (uf_indexed){.width = width, .height = height};
     uf_status status = uf_take(work, (size_t)width * (size_t)height, 1, "a plot", &picture->data, error);
@@ -365,16 +371,18 @@ uf_status uf_plot_draw(uf_work *work, const uf_plot_panel *panels, int count, in
     plot_palette(picture);
     memset(picture->data, PLOT_PAGE, (size_t)width * (size_t)height);
     s.canvas = uf_canvas_of(picture);
-    int each = (width - MARGIN * (count + 1)) / count;
+    int rows_of_panels = (count + columns - 1) / columns;
+    int each = (width - MARGIN * (columns + 1)) / columns,
+        high = (height - MARGIN * (rows_of_panels + 1)) / rows_of_panels;
     for (int k = 0; k < count; k++) {
         s.panel = &panels[k];
         int rows = lay_legend(&s, (uf_canvas){0}, 0, 0, each - LEGEND_INSET);
         s.legend_rows = rows > s.legend_rows ? rows : s.legend_rows;
     }
     for (int k = 0; k < count; k++) {
-        int left = MARGIN + k * (each + MARGIN);
+        int left = MARGIN + k % columns * (each + MARGIN), top = MARGIN + k / columns * (high + MARGIN);
         s.panel = &panels[k];
-        s.cell = (uf_box){left, MARGIN, left + each, height - MARGIN};
+        s.cell = (uf_box){left, top, left + each, top + high};
         draw_panel(&s);
         if (frames)
             frames[k] = s.frame;

@@ -18,7 +18,8 @@ typedef enum uf_plot_mark {
     UF_MARK_RING,
     UF_MARK_SQUARE,
     UF_MARK_DIAMOND,
-    UF_MARK_TRIANGLE
+    UF_MARK_TRIANGLE,
+    UF_MARK_AROUND /* a wide ring around another mark */
 } uf_plot_mark;
 typedef enum uf_plot_spread { UF_SPREAD_NONE, UF_SPREAD_BARS, UF_SPREAD_BAND } uf_plot_spread;
 
@@ -83,5 +84,9 @@ double uf_plot_step(double range, int most);
  * `frames` (one a panel) may be NULL. UF_MEMORY is the only failure. */
 UF_MUST_USE uf_status uf_plot_draw(uf_work *work, const uf_plot_panel *panels, int count, int width, int height,
                                    uf_indexed *picture, uf_plot_frame *frames, uf_error *error);
+
+/* The same in rows of `columns` panels, `height` pixels high in all. */
+UF_MUST_USE uf_status uf_plot_rows(uf_work *work, const uf_plot_panel *panels, int count, int columns, int width,
+                                   int height, uf_indexed *picture, uf_plot_frame *frames, uf_error *error);
 
 #endif

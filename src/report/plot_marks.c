@@ -5,7 +5,7 @@
 #include "report/colour.h"
 #include "report/plot_parts.h"
 
-static const double line_half_width = 0.9, rim_half_width = 0.8, mark_radius = 4.2;
+static const double line_half_width = 0.9, rim_half_width = 0.8, mark_radius = 4.2, around_radius = 6.2;
 
 /* ---- palette --------------------------------------------------------------------------------- */
 
@@ -150,6 +150,8 @@ static double mark_distance(uf_plot_mark mark, double x, double y)
         return (fabs(x) + fabs(y)) * 0.70710678 - 0.95 * mark_radius;
     case UF_MARK_TRIANGLE:
         return fmax(y - 0.6 * mark_radius, fabs(x) * 0.866 - y * 0.5 - 0.6 * mark_radius);
+    case UF_MARK_AROUND:
+        return fabs(hypot(x, y) - around_radius) - rim_half_width;
     default:
         return hypot(x, y) - mark_radius;
     }
@@ -159,8 +161,8 @@ void plot_mark(uf_canvas canvas, double x, double y, uf_plot_mark mark, uint8_t 
 {
     if (mark == UF_MARK_NONE || !(fabs(x) < 1e6) || !(fabs(y) < 1e6))
         return;
-    for (int v = (int)floor(y - 7); v <= (int)ceil(y + 7); v++)
-        for (int u = (int)floor(x - 7); u <= (int)ceil(x + 7); u++) {
+    for (int v = (int)floor(y - 8); v <= (int)ceil(y + 8); v++)
+        for (int u = (int)floor(x - 8); u <= (int)ceil(x + 8); u++) {
             double distance = mark_distance(mark, u - x, v - y);
             if (mark == UF_MARK_RING && distance < 0)
                 uf_canvas_put(canvas, u, v, PLOT_PAGE);

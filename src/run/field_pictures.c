@@ -9,6 +9,7 @@
 #include "io/output.h"
 #include "report/outlines.h"
 #include "report/overlay.h"
+#include "report/thumbnail.h"
 
 typedef struct picture_job {
     uf_pictures *in;
@@ -168,12 +169,40 @@ static uf_status write_overlay(picture_job *job, uf_error *error)
     return status;
 }
 
+static uf_status draw_thumbnail(picture_job *job, uf_text *png, uf_error *error)
+{
+    const uf_field_result *r = job->in->result;
+    uf_thumbnail_input input = {.near_adu = r->gaps.near_adu, .labels = r->cells.labels, .near_background_adu = 0};
+    uf_arena_mark mark = uf_arena_now(&job->in->work->arena);
+    uf_indexed picture;
+    uf_status status = uf_thumbnail_draw(job->in->work, &input, &picture, &job->in->thumbnail_white_adu, error);
+    if (status == UF_OK)
+        status = uf_encode_indexed_png(png, &picture, error);
+    uf_arena_back(&job->in->work->arena, mark);
+    return status;
+}
+
+/* Kept by every field as soon as there are overlays at all: a contact sheet shows all fields of a well. */
+static uf_status write_thumbnail(picture_job *job, uf_error *error)
+{
+    uf_text png = {0};
+    int wanted = job->in->settings->output.overlay != UF_OVERLAY_NO;
+    uf_status status = wanted ? draw_thumbnail(job, &png, error) : UF_OK;
+    if (status == UF_OK)
+        status = write_or_remove(job, "thumb", ".png", wanted ? &png : NULL, error);
+    uf_text_free(&png);
+    return status;
+}
+
 uf_status uf_pictures_write(uf_pictures *pictures, uf_error *error)
 {
     picture_job job = {pictures};
     pictures->overlay_name[0] = '\0';
     uf_status status = write_overlay(&job, error);
-    return status == UF_OK ? write_maps(&job, error) : status;
+    pictures->thumbnail_white_adu = (double)NAN;
+    if (status == UF_OK)
+        status = write_maps(&job, error);
+    return status == UF_OK && pictures->thumbnail ? write_thumbnail(&job, error) : status;
 }
 
 void uf_picture_key(uf_text *out, const char *path)

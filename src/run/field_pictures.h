@@ -18,7 +18,9 @@ typedef struct uf_pictures {
     const char *title; /* in the overlay */
     uf_put_picture *put;
     void *context;
-    char overlay_name[300]; /* filled: "overlay/KEY.png", empty without one */
+    int thumbnail;              /* wanted, as far as overlays are at all */
+    double thumbnail_white_adu; /* filled: what its white stands for above background; NaN without one */
+    char overlay_name[300];     /* filled: "overlay/KEY.png", empty without one */
 } uf_pictures;
 
 UF_MUST_USE uf_status uf_pictures_write(uf_pictures *pictures, uf_error *error);

@@ -17,6 +17,7 @@
 #include "run/field_warnings.h"
 #include "run/plate_follow.h"
 #include "run/plate_json.h"
+#include "run/plate_pictures.h"
 #include "run/plate_plan.h"
 #include "run/plate_record.h"
 #include "run/plate_tables.h"
@@ -445,6 +446,7 @@ static uf_status measure_field(plate_job *job, int index, field_work *f, uf_erro
                                 .result = &f->result,
                                 .key = job->plan.rows[index].key,
                                 .title = job->plan.rows[index].row->field_id,
+                                .thumbnail = 1,
                                 .put = put_picture,
                                 .context = job};
     return uf_pictures_write(&f->pictures, error);
@@ -523,7 +525,7 @@ static void set_failed(uf_plate_record *record, const char *why)
 /* Measures, writes pictures, then the record. Only what cannot be written ends the run. */
 static uf_status do_field(plate_job *job, int index, field_work *f, uf_error *error)
 {
-    uf_plate_record record = {0};
+    uf_plate_record record = {.thumbnail_white_adu = (double)NAN};
     uf_status status = measure_field(job, index, f, error);
     char why[UF_ERROR_TEXT];
     if (status == UF_OUTPUT)
@@ -537,6 +539,7 @@ static uf_status do_field(plate_job *job, int index, field_work *f, uf_error *er
         record.spots = f->result.spots;
         record.warnings = f->warnings.bytes;
         record.overlay = *f->pictures.overlay_name ? f->pictures.overlay_name : NULL;
+        record.thumbnail_white_adu = f->pictures.thumbnail_white_adu;
         record.depth_nm = f->plan.depth_nm;
         record.contact_cutoff_nm = f->settings.contact.cutoff_nm;
     }
@@ -724,9 +727,13 @@ static uf_status write_timing(plate_job *job, uf_error *error)
 static uf_status finish_tables(plate_job *job, uf_error *error)
 {
     uf_text json = {0};
+    uf_plate_well_list wells = {0};
     uf_status status = uf_output_remove(&job->output, NULL, "run.json", error);
     if (status == UF_OK)
-        status = uf_plate_tables(&job->output, &job->plan, job->summary, error);
+        status = uf_plate_tables(&job->output, &job->plan, job->summary, &wells, error);
+    if (status == UF_OK)
+        status = uf_plate_pictures(&job->output, &job->plan, &wells, job->pool, error);
+    uf_plate_well_list_free(&wells);
     if (status == UF_OK)
         status = uf_plate_json(&json, &job->output, &job->plan, job->summary, job->request->command, error);
     if (status == UF_OK)
@@ -892,8 +899,8 @@ static uf_status copy_field(plate_job *job, const uf_output *part, int index, uf
 {
     static const struct {
         const char *folder, *ending;
-    } files[] = {
-        {"overlay", ".png"}, {"outlines", ".json"}, {"gap", ".tif"}, {"labels", ".tif"}, {UF_RECORDS, ".record"}};
+    } files[] = {{"overlay", ".png"}, {"outlines", ".json"}, {"gap", ".tif"},
+                 {"labels", ".tif"},  {"thumb", ".png"},     {UF_RECORDS, ".record"}};
     uf_status status = UF_OK;
     for (size_t k = 0; status == UF_OK && k < sizeof files / sizeof files[0]; k++) {
         uf_text name = {0};

@@ -3,7 +3,7 @@
 
 #include <string.h>
 
-static const char magic[] = "underfoot record 1\n";
+static const char magic[] = "underfoot record 2\n";
 enum { MAGIC_BYTES = sizeof magic - 1, CHECKSUM_BYTES = 8 };
 
 /* ---- out ------------------------------------------------------------------------------------- */
@@ -32,6 +32,7 @@ void uf_plate_record_put(uf_text *out, const char *plan_hash, const char *field_
     uf_pack_real(out, r->contact_cutoff_nm);
     uf_pack_text(out, r->warnings);
     uf_pack_text(out, r->overlay);
+    uf_pack_real(out, r->thumbnail_white_adu);
     put_inputs(out, r);
     uf_pack_count(out, (uint64_t)r->field.cells);
     for (int k = 0; k < r->field.cells; k++)
@@ -115,6 +116,7 @@ int uf_plate_record_take(const uf_text *bytes, const char *plan_hash, const char
     r->contact_cutoff_nm = uf_unpack_real(&in);
     r->warnings = uf_unpack_text(&in);
     r->overlay = uf_unpack_text(&in);
+    r->thumbnail_white_adu = uf_unpack_real(&in);
     take_inputs(&in, r);
     take_rows(&in, r);
     return !in.broken && in.at == in.end;

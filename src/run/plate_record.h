@@ -22,8 +22,9 @@ typedef struct uf_plate_record {
     uf_cell *cells;
     uf_spot *spots;
     double depth_nm, contact_cutoff_nm;
-    const char *warnings; /* one a line */
-    const char *overlay;  /* "overlay/KEY.png", NULL: none */
+    const char *warnings;       /* one a line */
+    const char *overlay;        /* "overlay/KEY.png", NULL: none */
+    double thumbnail_white_adu; /* of thumb/KEY.png (report/thumbnail.h); NaN: there is none */
     uf_record_input *inputs;
     int input_count;
 } uf_plate_record;

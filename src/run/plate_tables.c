@@ -201,7 +201,7 @@ static uf_status put_references(const uf_output *output, const uf_plate_plan *pl
 }
 
 uf_status uf_plate_tables(const uf_output *output, const uf_plate_plan *plan, uf_plate_summary *summary,
-                          uf_error *error)
+                          uf_plate_well_list *wells, uf_error *error)
 {
     tables_job job = {.output = output, .plan = plan, .summary = summary};
     uf_status status = put_long_tables(&job, error);
@@ -211,5 +211,5 @@ uf_status uf_plate_tables(const uf_output *output, const uf_plate_plan *plan, uf
     uf_arena_free(&job.arena);
     if (status == UF_OK)
         status = put_references(output, plan, error);
-    return status == UF_OK ? uf_plate_wells(output, plan, summary, error) : status;
+    return status == UF_OK ? uf_plate_wells(output, plan, summary, wells, error) : status;
 }

@@ -10,8 +10,6 @@
 #include "run/plate_tables.h"
 #include "stats/share.h"
 
-enum { MOST_METRICS = 80 };
-
 /* ---- which cells' columns are metrics -------------------------------------------------------- */
 
 static int is_place(const char *name)
@@ -26,7 +24,7 @@ static int is_place(const char *name)
 static int find_metrics(const uf_column **metrics)
 {
     int count = 0;
-    for (int k = 0; k < uf_table_cells.count && count < MOST_METRICS; k++) {
+    for (int k = 0; k < uf_table_cells.count && count < UF_WELL_METRICS; k++) {
         const uf_column *c = &uf_table_cells.columns[k];
         if ((c->kind == UF_COLUMN_REAL || c->kind == UF_COLUMN_COUNT) && !is_place(c->name))
             metrics[count++] = c;
@@ -36,21 +34,13 @@ static int find_metrics(const uf_column **metrics)
 
 /* ---- wells and replicates as lists of rows --------------------------------------------------- */
 
-typedef struct well {
-    int first_row;              /* of the plan: stands for what the sheet says of the well */
-    int row_count, next_member; /* rows of it are members[next_member ..] */
-    int replicate;
-    double used;   /* cells that count */
-    double *means; /* of each metric */
-} well;
-
 typedef struct wells_job {
     const uf_output *output;
     const uf_plate_plan *plan;
     uf_plate_summary *summary;
-    const uf_column *metrics[MOST_METRICS];
+    const uf_column *metrics[UF_WELL_METRICS];
     int metric_count;
-    well *wells;
+    uf_plate_well *wells;
     int well_count, *well_of_row, *members;
     uf_arena arena;
     uf_text table;
@@ -157,7 +147,7 @@ static uf_status sort_into_wells(wells_job *job, uf_error *error)
         job->wells[w].row_count = 0;
     }
     for (int k = 0; status == UF_OK && k < plan->sheet.count; k++) {
-        well *w = &job->wells[job->well_of_row[k]];
+        uf_plate_well *w = &job->wells[job->well_of_row[k]];
         job->members[w->next_member + w->row_count++] = k;
     }
     return status;
@@ -204,7 +194,7 @@ static void add_field(well_sums *sums, const uf_plate_record *r, double threshol
 }
 
 /* All fields of a well, their cells in the arena. */
-static uf_status read_well(wells_job *job, const well *w, well_sums *sums, uf_error *error)
+static uf_status read_well(wells_job *job, const uf_plate_well *w, well_sums *sums, uf_error *error)
 {
     uf_plate_record *records = NULL;
     int most = 0, found = 1;
@@ -225,13 +215,19 @@ static uf_status read_well(wells_job *job, const well *w, well_sums *sums, uf_er
     return status;
 }
 
-static const char *state_of(const well_sums *s)
+const char *const uf_well_state_words[UF_WELL_STATES] = {[UF_WELL_ABSENT] = "",
+                                                         [UF_WELL_MEASURED] = "ok",
+                                                         [UF_WELL_EMPTY] = "empty",
+                                                         [UF_WELL_FAILED] = "failed",
+                                                         [UF_WELL_NOT_IMAGED] = "not_imaged"};
+
+static uf_well_state state_of(const well_sums *s)
 {
     if (s->not_imaged == s->fields)
-        return "not_imaged";
+        return UF_WELL_NOT_IMAGED;
     if (s->failed == s->fields)
-        return "failed";
-    return s->cells ? "ok" : "empty";
+        return UF_WELL_FAILED;
+    return s->cells ? UF_WELL_MEASURED : UF_WELL_EMPTY;
 }
 
 static void put_real(uf_text *out, double value)
@@ -275,7 +271,7 @@ static double put_metric(wells_job *job, const uf_column *metric, const well_sum
     return n ? sum / weight : (double)NAN;
 }
 
-static uf_status put_well(wells_job *job, well *w, uf_error *error)
+static uf_status put_well(wells_job *job, uf_plate_well *w, uf_error *error)
 {
     well_sums s;
     double *values = NULL;
@@ -289,14 +285,16 @@ static uf_status put_well(wells_job *job, well *w, uf_error *error)
     if (status != UF_OK)
         return status;
     w->used = s.used;
+    w->state = state_of(&s);
     uf_put_sheet_cells(&job->table, &job->plan->sheet, row, well_column);
-    uf_text_printf(&job->table, "%s,%d,%d,", state_of(&s), s.fields, s.failed);
+    uf_text_printf(&job->table, "%s,%d,%d,", uf_well_state_words[w->state], s.fields, s.failed);
     int measured = s.fields > s.failed;
+    w->cells_per_mm2 = measured ? s.counted / s.area_mm2 : (double)NAN;
     if (measured)
         uf_text_printf(&job->table, "%d,%d", s.cells, s.used);
     else
         uf_text_add(&job->table, ",");
-    put_real(&job->table, measured ? s.counted / s.area_mm2 : (double)NAN);
+    put_real(&job->table, w->cells_per_mm2);
     put_real(&job->table, measured ? s.contact_um2 / s.area_mm2 : (double)NAN);
     put_share(&job->table, s.attached, s.reported);
     for (int k = 0; k < job->metric_count; k++)
@@ -351,11 +349,11 @@ static int sort_into_replicates(wells_job *job)
 /* Unweighted mean of wells' means; wells with too few cells are left out of it. */
 static void put_replicate(wells_job *job, int replicate)
 {
-    const well *first = NULL;
+    const uf_plate_well *first = NULL;
     double cells = 0;
     int wells = 0, used = 0;
     for (int w = 0; w < job->well_count; w++) {
-        const well *here = &job->wells[w];
+        const uf_plate_well *here = &job->wells[w];
         if (here->replicate != replicate)
             continue;
         first = first ? first : here;
@@ -372,7 +370,7 @@ static void put_replicate(wells_job *job, int replicate)
         double sum = 0;
         int n = 0;
         for (int w = 0; w < job->well_count; w++) {
-            const well *here = &job->wells[w];
+            const uf_plate_well *here = &job->wells[w];
             if (here->replicate != replicate || here->used < least || isnan(here->means[k]))
                 continue;
             sum += here->means[k];
@@ -396,8 +394,19 @@ static uf_status put_replicates(wells_job *job, uf_error *error)
     return finish(job, "replicates.csv", error);
 }
 
+/* Hands over what pictures of wells are made of. */
+static void keep_wells(wells_job *job, uf_plate_well_list *list)
+{
+    *list = (uf_plate_well_list){.wells = job->wells,
+                                 .count = job->well_count,
+                                 .members = job->members,
+                                 .metric_count = job->metric_count,
+                                 .arena = job->arena};
+    memcpy(list->metrics, job->metrics, sizeof list->metrics);
+}
+
 uf_status uf_plate_wells(const uf_output *output, const uf_plate_plan *plan, uf_plate_summary *summary,
-                         uf_error *error)
+                         uf_plate_well_list *list, uf_error *error)
 {
     wells_job job = {.output = output, .plan = plan, .summary = summary};
     job.metric_count = find_metrics(job.metrics);
@@ -408,6 +417,12 @@ uf_status uf_plate_wells(const uf_output *output, const uf_plate_plan *plan, uf_
         status = put_replicates(&job, error);
     summary->wells = job.well_count;
     uf_text_free(&job.table);
-    uf_arena_free(&job.arena);
+    keep_wells(&job, list);
     return status;
+}
+
+void uf_plate_well_list_free(uf_plate_well_list *list)
+{
+    uf_arena_free(&list->arena);
+    *list = (uf_plate_well_list){0};
 }
