@@ -106,7 +106,9 @@ static void put_words(uf_text *out, const plate_arguments *a, const uf_plate_sum
     if (*s->slowest)
         uf_text_printf(out, "Slowest: %s, %.2f s\n", s->slowest, s->slowest_seconds);
     uf_text_printf(
-        out, "Results in %s: cells.csv, spots.csv, fields.csv, wells.csv, replicates.csv, reference.csv, run.json\n",
+        out,
+        "Results in %s: cells.csv, spots.csv, fields.csv, wells.csv, replicates.csv, reference.csv, run.json; "
+        "pictures in maps, wells and drift.png\n",
         a->out);
 }
 

@@ -1,6 +1,5 @@
 """Pictures of a plate run against its tables. Places are worked out here from the geometry of microplates (rows A.. from the top,
 columns 1.. from the left) and the page's margins; colours are read from the map's own scale."""
-import calendar
 import csv
 import math
 import os
@@ -269,3 +268,18 @@ def test_no_thumbnails_without_overlays(inputs, tmp_path):
     assert run.status == 1, run.err
     names = os.listdir(tmp_path / "out")
     assert "thumb" not in names and "wells" not in names and "maps" in names and "drift.png" in names
+
+
+def test_coverslips_have_sheets_of_their_own_and_no_maps(inputs, tmp_path):
+    (tmp_path / "sheet.csv").write_text(
+        "near,wide,plate,well,vessel\n"
+        f"{inputs}/day1_a_near.tif,{inputs}/day1_a_wide.tif,a,b_c,coverslip\n"
+        f"{inputs}/day1_b_near.tif,{inputs}/day1_b_wide.tif,a_b,c,coverslip\n"
+        f"{inputs}/day1_c_near.tif,{inputs}/day1_c_wide.tif,,,\n")
+    run = Run(["plate", str(tmp_path / "sheet.csv"), "-i", f"{inputs}/day1.ini", "-a", f"{inputs}/assay.ini", "-o",
+               str(tmp_path / "out")])
+    assert run.status == 0, run.err
+    # Both would be a_b_c; the field without a well is on no sheet.
+    assert sorted(os.listdir(tmp_path / "out" / "wells")) == ["a_b_c.png", "a_b_c=2.png"]
+    assert not os.path.exists(tmp_path / "out" / "maps")
+    assert len(os.listdir(tmp_path / "out" / "thumb")) == 3
