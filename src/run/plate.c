@@ -23,8 +23,8 @@
 #include "run/plate_tables.h"
 
 /* Records are committed after so many fields or seconds: what a power cut can cost. */
-enum { COMMIT_FIELDS = 24 };
-static const double commit_seconds = 3, tell_seconds = 0.5;
+enum { COMMIT_FIELDS = 16 };
+static const double commit_seconds = 0.5, tell_seconds = 0.5;
 
 /* ROW_NOT_COMPLETE: with --follow, its files are not there yet. */
 typedef enum row_state { ROW_WAITING, ROW_KEPT, ROW_MEASURED, ROW_OTHER_SHARD, ROW_NOT_COMPLETE } row_state;

@@ -85,7 +85,7 @@ def test_killed_again_and_again(plate, undisturbed, tmp_path):
     rng = numpy.random.default_rng(3)
     for _ in range(8):
         process = subprocess.Popen([PROGRAM, *arguments(plate, tmp_path, "-q", "--threads", "2")])
-        time.sleep(float(rng.uniform(0.005, 0.25)))
+        time.sleep(float(rng.uniform(0.01, 0.9)))
         process.send_signal(signal.SIGKILL)
         process.wait()
     assert Run(arguments(plate, tmp_path, "-q")).status == 0
