@@ -157,10 +157,12 @@ static void cut_at_full_scale(uf_plane counts, double full_scale_adu)
             uf_plane_row(counts, y)[x] = fminf(uf_plane_row(counts, y)[x], (float)full_scale_adu);
 }
 
-/* Sharing a point's light among four pixels and the blur's own interpolation are triangles of variance 1/6 each. */
-static double blur_left(double sigma)
+/* The blur's own interpolation is a triangle of variance 1/6, and so is sharing a point's light among four pixels, which
+ * only dye on surfaces does. */
+static double blur_left(const uf_bead_scene *s)
 {
-    return sqrt(fmax(sigma * sigma - 1.0 / 3, 0));
+    double sigma = s->psf_sigma_um / s->pixel_size_um * FINE, already = s->immersed ? 1.0 / 6 : 1.0 / 3;
+    return sqrt(fmax(sigma * sigma - already, 0));
 }
 
 uf_status uf_scene_beads(uf_work *work, const uf_bead_scene *s, uf_plane *counts, uf_bead_truth *truth,
@@ -178,7 +180,7 @@ uf_status uf_scene_beads(uf_work *work, const uf_bead_scene *s, uf_plane *counts
     if (status == UF_OK) {
         lay_out(s, &layout, truth);
         draw(s, truth, &traits, fine);
-        status = uf_psf_blur(work, fine, blur_left(s->psf_sigma_um / s->pixel_size_um * FINE), 0, 0, fine, error);
+        status = uf_psf_blur(work, fine, blur_left(s), 0, 0, fine, error);
     }
     if (status == UF_OK) {
         uf_scene_camera c = {s->offset_adu, s->gain_e_per_adu, s->read_noise_e};
