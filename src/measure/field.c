@@ -68,17 +68,20 @@ static uf_flags channel_flags(const uf_measure_input *input, const uf_field *fie
     return flag_if(near->saturated_fraction > 0 || wide->saturated_fraction > 0, UF_FLAG_SATURATED) |
            flag_if(near->clipped_fraction > 0.01 || wide->clipped_fraction > 0.01, UF_FLAG_CLIPPED) |
            flag_if(near->display_scaled || wide->display_scaled, UF_FLAG_DISPLAY_SCALED) |
-           flag_if(fabs(input->plan->layered_effect_nm) > 3, UF_FLAG_LAYERED_EFFECT) |
+           flag_if(input->plan->has_gap && fabs(input->plan->layered_effect_nm) > 3, UF_FLAG_LAYERED_EFFECT) |
            flag_if(input->plan->bench.na_effective <= input->plan->bench.cell_n, UF_FLAG_NOT_REFLECTED) |
            flag_if(field->near_unevenness > most_unevenness || field->wide_unevenness > most_unevenness,
                    UF_FLAG_UNEVEN);
 }
 
-/* An empty field is empty and nothing else. */
+/* What may be why nothing was found: an overexposed field is no count of zero. */
+static const uf_flags told_of_empty = 1u << UF_FLAG_SATURATED | 1u << UF_FLAG_CLIPPED | 1u << UF_FLAG_DISPLAY_SCALED;
+
+/* An empty field is empty, and flags that are about cells are not for it. */
 static uf_flags field_flags(const uf_measure_input *input, const uf_cell *rows, int count, const uf_field *field)
 {
     if (!count)
-        return 1u << UF_FLAG_EMPTY;
+        return 1u << UF_FLAG_EMPTY | (channel_flags(input, field) & told_of_empty);
     /* A membrane's wide image is the evener one; cytosol is not. */
     int swapped = input->plan->signal == UF_SIGNAL_RATIO &&
                   most_cells_exceed(input, rows, count, variation_ratio, swapped_variation);

@@ -83,6 +83,9 @@ uf_status uf_decay_law_make(const uf_settings *s, uf_decay_law *law, uf_error *e
                                             [UF_DECAY_TABLE] = UF_FIELD_TABLE};
     *law = (uf_decay_law){.model = models[s->decay.model],
                           .stray = {s->decay.scattered_fraction, s->decay.scattered_depth_nm}};
+    if (law->model != UF_FIELD_TABLE && s->decay.file)
+        return uf_fail(error, UF_INPUT, "[decay] file = %s needs model = table; with another model take the line out",
+                       s->decay.file);
     if (law->model != UF_FIELD_TABLE)
         return UF_OK;
     if (!s->decay.file)

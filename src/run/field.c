@@ -48,6 +48,38 @@ static void choose_shift(const uf_settings *s, const uf_shift_estimate *found, u
         field->flags |= 1u << UF_FLAG_SHIFT_UNSURE;
 }
 
+/* The faults of a pixel after the shift: those of the pixels around the place it was interpolated at, the worst first. Beyond
+ * the border nothing is known to be wrong. */
+static uint8_t shifted_fault(uf_mask mask, int x, int y)
+{
+    uint8_t fault = UF_PIXEL_FINE;
+    for (int v = y; v <= y + 1; v++)
+        for (int u = x; u <= x + 1; u++) {
+            int inside = u >= 0 && v >= 0 && u < mask.width && v < mask.height;
+            uint8_t here = inside ? uf_mask_row(mask, v)[u] : (uint8_t)UF_PIXEL_FINE;
+            fault = here == UF_PIXEL_SATURATED || fault == UF_PIXEL_FINE ? here : fault;
+        }
+    return fault;
+}
+
+/* Which pixels lie must move with the image. A shift by whole pixels has one source, not four. */
+static uf_status shift_faults(uf_work *work, double dx, double dy, uf_mask *mask, uf_error *error)
+{
+    uf_mask before = *mask;
+    if (!before.data)
+        return UF_OK;
+    uf_status status = uf_mask_take(work, before.width, before.height, mask, error);
+    int whole = dx == floor(dx) && dy == floor(dy), x0 = (int)floor(dx), y0 = (int)floor(dy);
+    for (int y = 0; status == UF_OK && y < before.height; y++)
+        for (int x = 0; x < before.width; x++) {
+            int inside = x + x0 >= 0 && y + y0 >= 0 && x + x0 < before.width && y + y0 < before.height;
+            uf_mask_row(*mask, y)[x] = !whole   ? shifted_fault(before, x + x0, y + y0)
+                                       : inside ? uf_mask_row(before, y + y0)[x + x0]
+                                                : (uint8_t)UF_PIXEL_FINE;
+        }
+    return status;
+}
+
 static uf_status align(uf_work *work, const uf_settings *settings, uf_field_result *r, uf_error *error)
 {
     uf_shift_estimate found = {0};
@@ -64,6 +96,8 @@ static uf_status align(uf_work *work, const uf_settings *settings, uf_field_resu
     if (r->field.shift_dx_px == 0 && r->field.shift_dy_px == 0)
         return UF_OK;
     status = uf_shift(work, r->wide.image, r->field.shift_dx_px, r->field.shift_dy_px, r->wide.image, error);
+    if (status == UF_OK)
+        status = shift_faults(work, r->field.shift_dx_px, r->field.shift_dy_px, &r->wide.saturated, error);
     uf_plane nuclei = r->nuclei.image;
     if (status == UF_OK && nuclei.data)
         status = uf_shift(work, nuclei, r->field.shift_dx_px, r->field.shift_dy_px, nuclei, error);

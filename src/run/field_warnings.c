@@ -28,7 +28,7 @@ static void warn_optics(warning_job *job)
             "with this stray light the series cannot tell gaps beyond %.0f nm from closer ones; places darker "
             "than that are left unresolved\n",
             plan->series.farthest_nm);
-    if (fabs(plan->layered_effect_nm) > 3)
+    if (plan->has_gap && fabs(plan->layered_effect_nm) > 3)
         uf_text_printf(
             job->out,
             "a layered model reads the %.4g nm cutoff %+.1f nm differently from the exponential in force; %s\n",

@@ -163,3 +163,35 @@ def test_an_angle_that_lights_cells_is_flagged(demo, tmp_path):
     (tmp_path / "low.ini").write_text(text.replace("angle_deg = 70", "angle_deg = 63"))
     run = Run(measure_arguments(demo, str(tmp_path / "out"), instrument=str(tmp_path / "low.ini")))
     assert run.status == 0 and "not_reflected" in run.out
+
+
+def test_saturated_dye_moves_with_the_shift(demo, tmp_path):
+    """A wide image moved by whole pixels, and a bench that says so, is the same field: saturated dye stays where it is."""
+    near = tifffile.imread(f"{demo}/day1_a_near.tif")
+    wide = numpy.minimum(tifffile.imread(f"{demo}/day1_a_wide.tif"), 3000)
+    text = open(f"{demo}/day1.ini").read().replace("file = day1_flat_near", f"file = {demo}/day1_flat_near")
+    text = text.replace("\n[wide.flat]\nfile = day1_flat_wide.tif\n", "\n")
+    text = text.replace("full_scale_adu = 65535", "full_scale_adu = 3000").replace("full_scale_adu = 3000", "full_scale_adu = 65535", 1)
+    tables = []
+    for name, dx in (("still", 0), ("moved", 12)):
+        tifffile.imwrite(tmp_path / f"{name}.tif", numpy.roll(wide, dx, axis=1))
+        (tmp_path / f"{name}.ini").write_text(text.replace("estimate = yes", f"estimate = no\ndx_px = {dx}"))
+        tifffile.imwrite(tmp_path / "near.tif", near)
+        run = Run(["measure", str(tmp_path / "near.tif"), str(tmp_path / f"{name}.tif"), "-i", str(tmp_path / f"{name}.ini"), "-a",
+                   f"{demo}/assay.ini", "-o", str(tmp_path / name)])
+        assert run.status == 0, run.err
+        tables.append({(round(float(row["x_px"])), round(float(row["y_px"]))): row for row in rows(tmp_path / name / "cells.csv")
+                       if 40 < float(row["x_px"]) < 440})
+    shared = [place for place in tables[0] if place in tables[1]]
+    assert len(shared) >= 4
+    for place in shared:
+        for column in ("contact_area_um2", "gap_median_nm"):
+            a, b = tables[0][place][column], tables[1][place][column]
+            assert a == b or abs(float(a) - float(b)) < 0.02 * abs(float(a)) + 0.05, (place, column, a, b)
+
+
+def test_an_overexposed_field_is_not_just_empty(demo, tmp_path):
+    near = tifffile.imread(f"{demo}/day1_a_near.tif")
+    tifffile.imwrite(tmp_path / "white.tif", numpy.full(near.shape, 65535, numpy.uint16))
+    run = Run(measure_arguments(demo, str(tmp_path / "out"), wide=str(tmp_path / "white.tif")))
+    assert run.status == 0 and "empty:" in run.out and "saturated:" in run.out

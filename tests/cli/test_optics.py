@@ -200,3 +200,10 @@ def test_decays_that_no_field_has_are_refused(tmp_path, rows, where, word):
     bench.write_text("[decay]\nmodel = table\nfile = decay.csv\n")
     run = Run(["optics", *BENCH, "--angle-deg", "70", "-i", str(bench)])
     assert run.status == 2 and where in run.err and word in run.err, run.err
+
+
+def test_a_decay_file_without_its_model_is_refused(tmp_path):
+    (tmp_path / "decay.csv").write_text("gap_nm,relative\n0,1\n100,0.3\n")
+    (tmp_path / "bench.ini").write_text("[decay]\nfile = decay.csv\n")
+    run = Run(["optics", *BENCH, "--angle-deg", "70", "-i", str(tmp_path / "bench.ini")])
+    assert run.status == 2 and "needs model = table" in run.err
