@@ -717,9 +717,13 @@ static uf_status write_timing(plate_job *job, uf_error *error)
                            job->plan.rows[k].row->field_id);
         }
     }
-    uf_status status = uf_text_check(&out, "timing.csv", error);
+    /* Shards write at once: each has a file of its own. */
+    char name[64] = "timing.csv";
+    if (job->request->shards)
+        (void)snprintf(name, sizeof name, "timing-%d-of-%d.csv", job->request->shard, job->request->shards);
+    uf_status status = uf_text_check(&out, name, error);
     if (status == UF_OK)
-        status = uf_output_write(&job->output, "log", "timing.csv", out.bytes, out.length, error);
+        status = uf_output_write(&job->output, "log", name, out.bytes, out.length, error);
     uf_text_free(&out);
     return status;
 }
